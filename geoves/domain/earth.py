@@ -1,0 +1,65 @@
+"""Layered models of the ground under a sounding."""
+
+from collections.abc import Mapping
+
+import attrs
+import numpy as np
+
+from geoves.domain.arrays import FloatArray, array_field
+
+
+@attrs.frozen
+class LayeredModel:
+    """Horizontal layers over a half-space: thickness m (k-1,), resistivity ohm m (k,), top first."""
+
+    thickness: FloatArray = array_field()
+    resistivity: FloatArray = array_field()
+
+    @property
+    def top_depth(self) -> FloatArray:
+        """Depth of each layer's top, m (k,)."""
+        return np.concatenate([[0.0], np.cumsum(self.thickness)])
+
+
+@attrs.frozen
+class ModelEnsemble:
+    """Models of one layer count that fit one curve: thickness m (m, k-1), resistivity ohm m (m, k), weight (m,)."""
+
+    thickness: FloatArray = array_field()
+    resistivity: FloatArray = array_field()
+    weight: FloatArray = array_field()
+
+
+@attrs.frozen
+class Inverted:
+    """What one curve says by itself.
+
+    model            the blocky model that the criterion chose
+    ensemble         models drawn from its linearised uncertainty
+    log_covariance   of (ln thickness, ln resistivity), (2k-1, 2k-1)
+    segment_factor   factor on each segment's apparent resistivity, 1 for the first, (segments,)
+    predicted        apparent resistivity of the model at each reading, without factors, ohm m (n,)
+    robust_weight    0 to 1 for each reading: near 0 for what the robust misfit set aside (n,)
+    rms_percent      root mean square relative misfit of the used readings, outliers down-weighted
+    noise            relative error found from the residuals
+    criterion        value of the choosing criterion for each layer count tried; the least is best
+    investigated_depth  m: below it a change of resistivity alters the curve by less than its error
+    remarks          what a person should know, in words
+    """
+
+    sounding: str
+    model: LayeredModel
+    ensemble: ModelEnsemble
+    log_covariance: FloatArray = array_field()
+    segment_factor: FloatArray = array_field()
+    predicted: FloatArray = array_field()
+    robust_weight: FloatArray = array_field()
+    rms_percent: float
+    noise: float
+    criterion: Mapping[int, float]
+    investigated_depth: float
+    remarks: tuple[str, ...] = ()
+
+    @property
+    def n_layers(self) -> int:
+        return self.model.resistivity.size

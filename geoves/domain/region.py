@@ -1,0 +1,52 @@
+"""One job: what region.toml says."""
+
+from collections.abc import Mapping
+from pathlib import Path
+from types import MappingProxyType
+from typing import Any, Literal
+
+import attrs
+
+from geoves.domain.units import Template
+
+LengthUnit = Literal["m", "ft", "us-ft"]
+
+# Metres in one unit. The international foot is exact; the US survey foot is 1200/3937 m (NIST SP 811, appendix B.6).
+METRES = MappingProxyType({"m": 1.0, "ft": 0.3048, "us-ft": 1200.0 / 3937.0})
+
+
+@attrs.frozen
+class Delivery:
+    """Who made it and who answers for it, and which extra columns stay at home."""
+
+    organisation: str = ""
+    contact: str = ""
+    use_limits: str = ""
+    withhold: tuple[str, ...] = ()
+
+
+@attrs.frozen
+class Region:
+    """A region's settings. `crs` as typed; `crs_unit_metres` the length of its unit in m; cell_size in that unit.
+
+    `settings` holds the tables for the steps ("inversion", "interpretation", "surfaces", ...) as typed.
+    `files` names each input as typed with its path resolved; `fingerprints` their SHA-256.
+    """
+
+    name: str
+    path: Path
+    crs: str
+    crs_unit_metres: float
+    vertical_datum: str | None
+    length_unit: LengthUnit
+    cell_size: float
+    random_seed: int
+    template: Template
+    method: Literal["each"] = "each"
+    delivery: Delivery = Delivery()
+    settings: Mapping[str, Mapping[str, Any]] = attrs.field(factory=dict)
+    files: Mapping[str, Path] = attrs.field(factory=dict)
+
+    @property
+    def metres_per_length_unit(self) -> float:
+        return METRES[self.length_unit]

@@ -1,0 +1,130 @@
+"""What came home from the field: soundings with their curves, wells with their logs, permits, picks."""
+
+from collections.abc import Mapping
+from types import MappingProxyType
+from typing import Any, Literal
+
+import attrs
+
+from geoves.domain.arrays import FloatArray, array_field
+from geoves.domain.findings import Finding
+from geoves.domain.grids import Grid
+
+Array = Literal["schlumberger", "wenner"]
+PickStatus = Literal["at", "below", "absent"]
+
+
+def _extra() -> Any:
+    """Columns beyond the contract's, carried through as they were typed."""
+    return attrs.field(factory=dict, converter=lambda columns: MappingProxyType(dict(columns)), eq=dict)
+
+
+@attrs.frozen
+class Curve:
+    """One sounding's readings, in the order of `segment` and then of `half_spacing`.
+
+    half_spacing AB/2 m (n,), potential_half_spacing MN/2 m (n,), apparent_resistivity ohm m (n,),
+    relative_error one standard deviation as a fraction (n,), NaN until one is assigned,
+    segment int (n,): 0 for the first MN, 1 after its first change, and so on; used bool (n,): False where the
+    reading is kept and drawn but not fitted; reason str (n,): why it is not used, empty where it is;
+    row int (n,): its row in the table of readings.
+    """
+
+    half_spacing: FloatArray = array_field()
+    potential_half_spacing: FloatArray = array_field()
+    apparent_resistivity: FloatArray = array_field()
+    relative_error: FloatArray = array_field()
+    segment: Any = array_field(int)
+    used: Any = array_field(bool)
+    reason: tuple[str, ...] = ()
+    row: Any = array_field(int, default=())
+
+
+@attrs.frozen
+class Sounding:
+    """One vertical electrical sounding; ground elevation in m, NaN where none is known."""
+
+    name: str
+    easting: float
+    northing: float
+    ground_elevation: float
+    curve: Curve
+    array: Array = "schlumberger"
+    azimuth_deg: float | None = None
+    date: str = ""
+    note: str = ""
+    extra: Mapping[str, Any] = _extra()
+
+
+@attrs.frozen
+class LogInterval:
+    """A stretch of a driller's log: depths in m, the driller's words, and the unit's code where it was typed."""
+
+    top: float
+    bottom: float
+    description: str
+    unit: str | None = None
+    extra: Mapping[str, Any] = _extra()
+
+
+@attrs.frozen
+class Well:
+    """One control well: m and m below ground; specific conductance in µS/cm at 25 °C; location_accuracy a radius in m."""
+
+    name: str
+    easting: float
+    northing: float
+    ground_elevation: float
+    total_depth: float
+    intervals: tuple[LogInterval, ...] = ()
+    water_level: float | None = None
+    specific_conductance: float | None = None
+    location_accuracy: float | None = None
+    extra: Mapping[str, Any] = _extra()
+
+
+@attrs.frozen
+class Permit:
+    """One well permit; requested_depth in m, location_accuracy a radius in m."""
+
+    name: str
+    easting: float
+    northing: float
+    requested_depth: float | None = None
+    use: str = ""
+    location_accuracy: float | None = None
+    extra: Mapping[str, Any] = _extra()
+
+
+@attrs.frozen
+class Pick:
+    """An interpreter's decision about the top of a unit at a sounding or a well; depth and its error in m."""
+
+    place: str
+    unit: str
+    status: PickStatus
+    depth: float | None
+    depth_error: float | None
+    interpreter: str
+    reason: str
+
+
+@attrs.frozen
+class Ground:
+    """Elevation of the land surface (m) on the region's grid, NaN where the raster had none."""
+
+    grid: Grid
+    elevation: FloatArray = array_field()
+
+
+@attrs.frozen
+class Survey:
+    """All that the inputs hold, in the region's CRS and SI units, with the doubts met while reading."""
+
+    soundings: tuple[Sounding, ...]
+    wells: tuple[Well, ...] = ()
+    permits: tuple[Permit, ...] = ()
+    picks: tuple[Pick, ...] = ()
+    ground: Ground | None = None
+    boundary: Any = None  # a shapely (Multi)Polygon in the region's CRS
+    doubts: tuple[Finding, ...] = ()

@@ -1,0 +1,109 @@
+"""Where units begin under each place, and what is known of it: a bound is data, not a missing row."""
+
+from typing import Literal
+
+import attrs
+
+from geoves.domain.arrays import FloatArray, array_field
+from geoves.domain.survey import Pick
+
+PlaceKind = Literal["sounding", "well", "pick"]
+TopStatus = Literal["at", "below", "absent"]
+BedrockStatus = Literal["seen", "not_distinct", "deeper_than"]
+
+
+@attrs.frozen
+class Top:
+    """The top of `unit` at a place. Depth, elevation and standard error in m.
+
+    status  "at": the top lies at `depth`; "below": it is deeper than `depth`; "absent": the unit is not there
+    contact what the row speaks of in the surfaces: "basal" (top of gravel-or-rock, the contact that a curve can see),
+            "bedrock", or the role of the unit
+    source  in words: which kind of evidence, who decided
+    """
+
+    place: str
+    kind: PlaceKind
+    easting: float
+    northing: float
+    unit: str
+    contact: str
+    status: TopStatus
+    depth: float
+    elevation: float
+    standard_error: float
+    source: str
+
+
+@attrs.frozen
+class Thickness:
+    """Thickness (m) of the units of a role at a place; 0 where absent; `at_least` where the place ended inside it."""
+
+    place: str
+    kind: PlaceKind
+    easting: float
+    northing: float
+    role: str
+    thickness: float
+    standard_error: float
+    at_least: bool
+    source: str
+
+
+@attrs.frozen
+class ShallowResistivity:
+    """Natural log of the shallow aquifer's resistivity (ohm m) at a place, with its standard error."""
+
+    place: str
+    easting: float
+    northing: float
+    log_resistivity: float
+    standard_error: float
+
+
+@attrs.frozen
+class UnitColumn:
+    """One sounding read through the template.
+
+    unit              the code that each layer is given, from the best path in order of the column (k,)
+    unit_probability  probability of that code for each layer (k,)
+    probability       probability of each unit for each layer (k, units)
+    bedrock_status    what the curve says of bedrock; `bedrock_depth` m with `bedrock_depth_error` m for "seen" and
+                      "not_distinct" (NaN where it says nothing), the bound for "deeper_than"
+    sentence          in words: what is resolved and what is not
+    """
+
+    sounding: str
+    unit: tuple[str, ...]
+    unit_probability: FloatArray = array_field()
+    probability: FloatArray = array_field()
+    bedrock_status: BedrockStatus
+    bedrock_depth: float
+    bedrock_depth_error: float
+    sentence: str
+    picks: tuple[Pick, ...] = ()
+
+
+@attrs.frozen
+class WellReading:
+    """One log interval with the unit that the driller's words were taken to mean, None where nothing claims them."""
+
+    well: str
+    top: float
+    bottom: float
+    description: str
+    unit: str | None
+    confidence: float  # 0 to 1: 1 for a typed code or an exact term
+
+
+@attrs.frozen
+class Interpretation:
+    """Every place read through the template: what is handed to the surfaces."""
+
+    columns: tuple[UnitColumn, ...]
+    well_readings: tuple[WellReading, ...]
+    tops: tuple[Top, ...]
+    thicknesses: tuple[Thickness, ...]
+    shallow_resistivities: tuple[ShallowResistivity, ...]
+    unmapped_words: tuple[str, ...] = ()
+    remarks: tuple[str, ...] = ()
