@@ -9,7 +9,7 @@ Severity = Literal["fault", "doubt"]
 
 @attrs.frozen
 class Finding:
-    """One fault or doubt. ``row`` is the line of the file as an editor or a spreadsheet numbers it, 0 where none applies."""
+    """One fault or doubt. `row` is the line of the file as a spreadsheet numbers it, 0 where none applies."""
 
     severity: Severity
     file: str

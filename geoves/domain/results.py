@@ -16,7 +16,8 @@ from geoves.domain.tops import Interpretation
 @attrs.frozen
 class Results:
     """The whole of a job. `layers` are GeoDataFrames in the region's CRS with SI columns, by the contract's names:
-    bedrock_contours, thickness_contours, valley_axis, gravel_extent, permits. `doubts` are all that were met."""
+    bedrock_contours, thickness_contours, valley_axis, gravel_extent, permits. `doubts` are all that were met.
+    """
 
     region: Region
     survey: Survey

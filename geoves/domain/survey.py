@@ -69,7 +69,7 @@ class LogInterval:
 
 @attrs.frozen
 class Well:
-    """One control well: m and m below ground; specific conductance in µS/cm at 25 °C; location_accuracy a radius in m."""
+    """One control well: depths in m; specific conductance in µS/cm at 25 °C; location_accuracy a radius in m."""
 
     name: str
     easting: float
