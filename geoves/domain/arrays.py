@@ -1,38 +1,50 @@
-"""Read-only float arrays as fields of frozen things."""
+"""Read-only arrays as fields of frozen things: `attrs.field(converter=floats, eq=by_value, repr=shape)`."""
 
-from collections.abc import Callable
 from typing import Any
 
 import attrs
 import numpy as np
-from numpy.typing import ArrayLike, DTypeLike, NDArray
+from numpy.typing import ArrayLike, NDArray
 
 FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+BoolArray = NDArray[np.bool_]
 
 
-def frozen_array(dtype: DTypeLike) -> Callable[[ArrayLike], NDArray[Any]]:
-    """A converter that copies into `dtype` and clears the write flag."""
+def _frozen(array: NDArray[Any]) -> NDArray[Any]:
+    array.flags.writeable = False
+    return array
 
-    def convert(values: ArrayLike) -> NDArray[Any]:
-        array = np.array(values, dtype=dtype)
-        array.flags.writeable = False
-        return array
 
-    return convert
+def floats(values: ArrayLike) -> FloatArray:
+    """A read-only copy as float64."""
+    return _frozen(np.array(values, dtype=np.float64))
+
+
+def integers(values: ArrayLike) -> IntArray:
+    """A read-only copy as int64."""
+    return _frozen(np.array(values, dtype=np.int64))
+
+
+def booleans(values: ArrayLike) -> BoolArray:
+    """A read-only copy as bool."""
+    return _frozen(np.array(values, dtype=np.bool_))
+
+
+def optional_floats(values: ArrayLike | None) -> FloatArray | None:
+    """A read-only copy as float64, or None."""
+    return None if values is None else floats(values)
 
 
 def _same(left: Any, right: Any) -> bool:
     if left is None or right is None:
         return left is right
-    return bool(np.array_equal(left, right, equal_nan=np.issubdtype(np.asarray(left).dtype, np.floating)))
+    return bool(np.array_equal(left, right, equal_nan=np.issubdtype(left.dtype, np.floating)))
 
 
-def array_field(dtype: DTypeLike = np.float64, *, optional: bool = False, **options: Any) -> Any:
-    """An attrs field that holds a read-only array and compares by value, NaN equal to NaN."""
-    convert = frozen_array(dtype)
-    return attrs.field(
-        converter=attrs.converters.optional(convert) if optional else convert,
-        eq=attrs.cmp_using(eq=_same),
-        repr=lambda values: "None" if values is None else f"array{np.shape(values)}",
-        **options,
-    )
+by_value = attrs.cmp_using(eq=_same)
+
+
+def shape(values: Any) -> str:
+    """How an array shows itself in a repr."""
+    return "None" if values is None else f"array{np.shape(values)}"

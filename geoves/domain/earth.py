@@ -5,15 +5,15 @@ from collections.abc import Mapping
 import attrs
 import numpy as np
 
-from geoves.domain.arrays import FloatArray, array_field
+from geoves.domain.arrays import FloatArray, by_value, floats, shape
 
 
 @attrs.frozen
 class LayeredModel:
     """Horizontal layers over a half-space: thickness m (k-1,), resistivity ohm m (k,), top first."""
 
-    thickness: FloatArray = array_field()
-    resistivity: FloatArray = array_field()
+    thickness: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    resistivity: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
 
     @property
     def top_depth(self) -> FloatArray:
@@ -25,9 +25,9 @@ class LayeredModel:
 class ModelEnsemble:
     """Models of one layer count that fit one curve: thickness m (m, k-1), resistivity ohm m (m, k), weight (m,)."""
 
-    thickness: FloatArray = array_field()
-    resistivity: FloatArray = array_field()
-    weight: FloatArray = array_field()
+    thickness: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    resistivity: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    weight: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
 
 
 @attrs.frozen
@@ -50,10 +50,10 @@ class Inverted:
     sounding: str
     model: LayeredModel
     ensemble: ModelEnsemble
-    log_covariance: FloatArray = array_field()
-    segment_factor: FloatArray = array_field()
-    predicted: FloatArray = array_field()
-    robust_weight: FloatArray = array_field()
+    log_covariance: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    segment_factor: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    predicted: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    robust_weight: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
     rms_percent: float
     noise: float
     criterion: Mapping[int, float]

@@ -1,12 +1,21 @@
 """The one grid of a region and what stands on it."""
 
 from collections.abc import Mapping
-from typing import Any
 
 import attrs
 import numpy as np
 
-from geoves.domain.arrays import FloatArray, array_field
+from geoves.domain.arrays import (
+    BoolArray,
+    FloatArray,
+    IntArray,
+    booleans,
+    by_value,
+    floats,
+    integers,
+    optional_floats,
+    shape,
+)
 
 
 @attrs.frozen
@@ -26,12 +35,12 @@ class Grid:
     @property
     def easting(self) -> FloatArray:
         """Centres of the columns (n_columns,)."""
-        return self.west + (np.arange(self.n_columns) + 0.5) * self.cell_size
+        return np.asarray(self.west + (np.arange(self.n_columns) + 0.5) * self.cell_size)
 
     @property
     def northing(self) -> FloatArray:
         """Centres of the rows, from north to south (n_rows,)."""
-        return self.north - (np.arange(self.n_rows) + 0.5) * self.cell_size
+        return np.asarray(self.north - (np.arange(self.n_rows) + 0.5) * self.cell_size)
 
     @property
     def bounds(self) -> tuple[float, float, float, float]:
@@ -55,10 +64,10 @@ class Surface:
     title: str
     quantity: str  # "elevation", "depth", "thickness", "resistivity" or "probability"
     grid: Grid
-    estimate: FloatArray = array_field()
-    standard_error: FloatArray | None = array_field(optional=True, default=None)
-    p05: FloatArray | None = array_field(optional=True, default=None)
-    p95: FloatArray | None = array_field(optional=True, default=None)
+    estimate: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    standard_error: FloatArray | None = attrs.field(default=None, converter=optional_floats, eq=by_value, repr=shape)
+    p05: FloatArray | None = attrs.field(default=None, converter=optional_floats, eq=by_value, repr=shape)
+    p95: FloatArray | None = attrs.field(default=None, converter=optional_floats, eq=by_value, repr=shape)
 
 
 @attrs.frozen
@@ -78,9 +87,9 @@ class Variogram:
     azimuth_deg: float
     ratio: float
     n_data: int
-    lag: FloatArray = array_field()
-    semivariance: FloatArray = array_field()
-    pairs: Any = array_field(int)
+    lag: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    semivariance: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    pairs: IntArray = attrs.field(converter=integers, eq=by_value, repr=shape)
     remark: str = ""
 
 
@@ -92,9 +101,9 @@ class CrossValidation:
     unit: str
     place: tuple[str, ...]
     kind: tuple[str, ...]  # sounding, well or pick
-    measured: FloatArray = array_field()
-    predicted: FloatArray = array_field()
-    standard_error: FloatArray = array_field()
+    measured: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    predicted: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    standard_error: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
 
 
 @attrs.frozen
@@ -102,8 +111,10 @@ class SurfaceStack:
     """All surfaces of a region on one grid, with the ground they were capped at and why they should be believed."""
 
     grid: Grid
-    ground: FloatArray = array_field()
-    covered: Any = array_field(bool)  # inside the boundary and the data's reach
+    ground: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    covered: BoolArray = attrs.field(
+        converter=booleans, eq=by_value, repr=shape
+    )  # inside the boundary and the data's reach
     surfaces: Mapping[str, Surface] = attrs.field(factory=dict)
     variograms: tuple[Variogram, ...] = ()
     cross_validations: tuple[CrossValidation, ...] = ()

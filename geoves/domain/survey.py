@@ -6,7 +6,7 @@ from typing import Any, Literal
 
 import attrs
 
-from geoves.domain.arrays import FloatArray, array_field
+from geoves.domain.arrays import BoolArray, FloatArray, IntArray, booleans, by_value, floats, integers, shape
 from geoves.domain.findings import Finding
 from geoves.domain.grids import Grid
 
@@ -30,14 +30,14 @@ class Curve:
     row int (n,): its row in the table of readings.
     """
 
-    half_spacing: FloatArray = array_field()
-    potential_half_spacing: FloatArray = array_field()
-    apparent_resistivity: FloatArray = array_field()
-    relative_error: FloatArray = array_field()
-    segment: Any = array_field(int)
-    used: Any = array_field(bool)
+    half_spacing: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    potential_half_spacing: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    apparent_resistivity: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    relative_error: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    segment: IntArray = attrs.field(converter=integers, eq=by_value, repr=shape)
+    used: BoolArray = attrs.field(converter=booleans, eq=by_value, repr=shape)
     reason: tuple[str, ...] = ()
-    row: Any = array_field(int, default=())
+    row: IntArray = attrs.field(default=(), converter=integers, eq=by_value, repr=shape)
 
 
 @attrs.frozen
@@ -114,7 +114,7 @@ class Ground:
     """Elevation of the land surface (m) on the region's grid, NaN where the raster had none."""
 
     grid: Grid
-    elevation: FloatArray = array_field()
+    elevation: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
 
 
 @attrs.frozen

@@ -4,7 +4,7 @@ from typing import Literal
 
 import attrs
 
-from geoves.domain.arrays import FloatArray, array_field
+from geoves.domain.arrays import FloatArray, by_value, floats, shape
 from geoves.domain.survey import Pick
 
 PlaceKind = Literal["sounding", "well", "pick"]
@@ -75,8 +75,8 @@ class UnitColumn:
 
     sounding: str
     unit: tuple[str, ...]
-    unit_probability: FloatArray = array_field()
-    probability: FloatArray = array_field()
+    unit_probability: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    probability: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
     bedrock_status: BedrockStatus
     bedrock_depth: float
     bedrock_depth_error: float
