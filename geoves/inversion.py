@@ -1,0 +1,284 @@
+"""Survey -> Inverted: what each curve says by itself, blind to the template.
+
+Blocky models of two to six layers are fitted to every curve from several starts, each by damped least squares with a
+robust misfit and a factor for each later segment. The layer count is chosen by the evidence (Laplace's approximation
+under broad priors), which charges a layer for the freedom that the readings do not use.
+"""
+
+from collections.abc import Callable, Iterable, Sequence
+from functools import partial
+from itertools import chain
+from typing import Any
+
+import attrs
+import numpy as np
+
+from geoves.domain.arrays import FloatArray
+from geoves.domain.earth import Inverted, LayeredModel, ModelEnsemble
+from geoves.domain.survey import Curve, Sounding, Survey
+from geoves.kernels import damped_steps, layered_earth
+from geoves.kernels.damped_steps import Curves, Fit, Prior, Readings
+
+Blocks = Iterable[Any]
+Map = Callable[[Callable[[Any], Any], Blocks], Iterable[Any]]
+
+
+@attrs.frozen
+class InversionOptions:
+    """least_layers, most_layers   the layer counts tried
+    default_error           relative error of a reading that has none typed, before the survey's own is known
+    segment_deviation       prior standard deviation of the log factor of a segment
+    draws                   models drawn from the linearised uncertainty of each sounding
+    fewest_readings         used readings that a sounding needs
+    block                   soundings inverted at a time: bounds the memory
+    """
+
+    least_layers: int = 2
+    most_layers: int = 6
+    default_error: float = 0.03
+    segment_deviation: float = 0.05
+    draws: int = 60
+    fewest_readings: int = 5
+    block: int = 32
+    random_seed: int = 0
+
+
+# Broad priors of the blind inversion, standard deviations in natural logs, and the bounds of its search.
+RESISTIVITY_DEVIATION, THICKNESS_DEVIATION = 1.2, 1.0
+LEAST_RESISTIVITY, MOST_RESISTIVITY = 0.5, 50_000.0
+LEAST_THICKNESS, MOST_THICKNESS = 0.2, 500.0
+# Depth of the first and the last interface that the prior expects, in shortest and longest AB/2.
+FIRST_INTERFACE, LAST_INTERFACE = 0.8, 0.35
+# A change is felt where halving or doubling all below alters the curve by this chi-square.
+FELT_CHI_SQUARE = 4.0
+# The survey's noise is not believed outside of these factors of the default.
+LEAST_NOISE_FACTOR, MOST_NOISE_FACTOR = 0.5, 4.0
+
+
+def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map = map) -> tuple[Inverted, ...]:  # noqa: A002 - the seam is named for what it replaces
+    """The blocky model of each sounding, in the order of the survey; soundings with too few readings are left out.
+
+    Two passes: the first finds the survey's noise from the residuals of the readings without a typed error, the
+    second inverts with it.
+    """
+    options = options or InversionOptions()
+    fitting = [s for s in survey.soundings if np.sum(s.curve.used) >= options.fewest_readings]
+    if not fitting:
+        return ()
+    wavenumber = wavenumbers(fitting)
+    blocks = [fitting[i : i + options.block] for i in range(0, len(fitting), options.block)]
+    first = partial(_pooled_residuals, options=options, wavenumber=wavenumber)
+    noise = _survey_noise(np.concatenate(list(map(first, blocks))), options)
+    second = partial(invert_block, options=options, wavenumber=wavenumber, noise=noise)
+    return tuple(chain.from_iterable(map(second, blocks)))
+
+
+def wavenumbers(soundings: Sequence[Sounding]) -> FloatArray:
+    """One grid of wavenumbers (l,) that serves all used readings."""
+    used = [(s.curve.half_spacing[s.curve.used], s.curve.potential_half_spacing[s.curve.used]) for s in soundings]
+    shortest = min(float(np.min(a - b)) for a, b in used)
+    longest = max(float(np.max(a + b)) for a, b in used)
+    return layered_earth.wavenumber_grid(shortest, longest)
+
+
+def invert_block(
+    soundings: Sequence[Sounding], *, options: InversionOptions, wavenumber: FloatArray, noise: float
+) -> list[Inverted]:
+    """The blocky models of some soundings with a known noise."""
+    curves = damped_steps.stack_curves([_readings(s, noise) for s in soundings], wavenumber)
+    fits = _fit_all_counts(curves, soundings, options)
+    evidence = np.array([fit.log_evidence for fit in fits.values()])
+    counts = list(fits)
+    chosen = [counts[i] for i in np.argmax(evidence, axis=0)]
+    return [
+        _describe(sounding, curves.take(np.array([i])), fits[k].take(i), noise, options, -evidence[:, i])
+        for i, (sounding, k) in enumerate(zip(soundings, chosen, strict=True))
+    ]
+
+
+def _readings(sounding: Sounding, noise: float) -> Readings:
+    curve, used = sounding.curve, sounding.curve.used
+    error = np.where(np.isnan(curve.relative_error), noise, curve.relative_error)
+    _, segment = np.unique(curve.segment[used], return_inverse=True)
+    return Readings(
+        curve.half_spacing[used],
+        curve.potential_half_spacing[used],
+        curve.apparent_resistivity[used],
+        error[used],
+        segment,
+    )
+
+
+def _pooled_residuals(
+    soundings: Sequence[Sounding], *, options: InversionOptions, wavenumber: FloatArray
+) -> FloatArray:
+    """Log residuals of the readings without a typed error, widened for the degrees of freedom that the fit took."""
+    pooled = []
+    for sounding, inverted in zip(
+        soundings,
+        invert_block(soundings, options=options, wavenumber=wavenumber, noise=options.default_error),
+        strict=True,
+    ):
+        curve = sounding.curve
+        factor = inverted.segment_factor[np.unique(curve.segment, return_inverse=True)[1]]
+        with np.errstate(invalid="ignore", divide="ignore"):
+            residual = np.log(curve.apparent_resistivity / (inverted.predicted * factor))
+        untyped = curve.used & np.isnan(curve.relative_error)
+        n_used = int(np.sum(curve.used))
+        taken = 2 * inverted.n_layers - 1 + inverted.segment_factor.size - 1
+        pooled.append(residual[untyped] * np.sqrt(n_used / max(n_used - taken, 1)))
+    return np.concatenate(pooled)
+
+
+def _survey_noise(residual: FloatArray, options: InversionOptions) -> float:
+    """Relative error of a reading: the normal-consistent median absolute residual, which outliers do not move."""
+    if not residual.size:
+        return options.default_error
+    spread = float(np.median(np.abs(residual))) / 0.6745
+    return float(np.clip(spread, LEAST_NOISE_FACTOR * options.default_error, MOST_NOISE_FACTOR * options.default_error))
+
+
+def _fit_all_counts(curves: Curves, soundings: Sequence[Sounding], options: InversionOptions) -> dict[int, Fit]:
+    """The best fit of each layer count: from two schedules of interface depths, and from one layer fewer, split."""
+    fits: dict[int, Fit] = {}
+    for k in range(options.least_layers, options.most_layers + 1):
+        prior, starts = _prior_and_starts(curves, soundings, k, options)
+        if k - 1 in fits:
+            starts.append(_split_thickest(fits[k - 1].unknowns, k - 1))
+        best: Fit | None = None
+        for start in starts:
+            fit = damped_steps.fit_layers(start, k, curves, prior)
+            best = fit if best is None else damped_steps.keep_better(best, fit)
+        if best is not None:
+            fits[k] = best
+    return fits
+
+
+def _prior_and_starts(
+    curves: Curves, soundings: Sequence[Sounding], k: int, options: InversionOptions
+) -> tuple[Prior, list[FloatArray]]:
+    n_segments = curves.segments.shape[2]
+    shape = (len(soundings), 2 * k - 1 + n_segments)
+    mean, deviation = np.zeros(shape), np.empty(shape)
+    deep, shallow = np.zeros(shape), np.zeros(shape)
+    for i, sounding in enumerate(soundings):
+        used = sounding.curve.used
+        spacing = np.log(sounding.curve.half_spacing[used])
+        value = np.log(sounding.curve.apparent_resistivity[used])
+        order = np.argsort(spacing, kind="stable")
+        spacing, value = spacing[order], value[order]
+        for start, reach in ((deep, LAST_INTERFACE), (shallow, 0.4 * LAST_INTERFACE)):
+            interface = np.linspace(
+                spacing[0] + np.log(FIRST_INTERFACE), np.maximum(spacing[-1] + np.log(reach), spacing[0] + 0.1), k - 1
+            )
+            depth = np.exp(interface)
+            start[i, : k - 1] = np.log(np.diff(depth, prepend=0.0))
+            # A layer shows itself at a spacing of some two to three times its depth.
+            felt = np.log(2.5) + np.append(interface - 0.3, interface[-1] + 0.5)
+            start[i, k - 1 : 2 * k - 1] = np.interp(felt, spacing, value)
+        mean[i, : k - 1] = deep[i, : k - 1]
+        mean[i, k - 1 : 2 * k - 1] = np.median(value)
+    deviation[:, : k - 1] = THICKNESS_DEVIATION
+    deviation[:, k - 1 : 2 * k - 1] = RESISTIVITY_DEVIATION
+    deviation[:, 2 * k - 1 :] = options.segment_deviation
+    lowest, highest = np.full(shape, -0.7), np.full(shape, 0.7)
+    lowest[:, : k - 1], highest[:, : k - 1] = np.log(LEAST_THICKNESS), np.log(MOST_THICKNESS)
+    lowest[:, k - 1 : 2 * k - 1], highest[:, k - 1 : 2 * k - 1] = np.log([LEAST_RESISTIVITY, MOST_RESISTIVITY])
+    return Prior(mean, deviation, lowest, highest), [deep, shallow]
+
+
+def _split_thickest(unknowns: FloatArray, k: int) -> FloatArray:
+    """A start with k + 1 layers: the layer that spans most of the log depth is cut in two, unlike a little."""
+    top = np.cumsum(np.exp(unknowns[:, : k - 1]), axis=1)
+    span = np.diff(np.log(top), axis=1, prepend=np.log(top[:, :1]) - 1.0)
+    start = np.empty((unknowns.shape[0], unknowns.shape[1] + 2))
+    for i, cut in enumerate(np.argmax(span, axis=1)):
+        thickness, rest = unknowns[i, : k - 1], unknowns[i, k - 1 :]
+        half = thickness[cut] - np.log(2.0)
+        start[i] = np.concatenate(
+            [thickness[:cut], [half, half], thickness[cut + 1 :], rest[:cut], rest[cut] + [0.3, -0.3], rest[cut + 1 :]]
+        )
+    return start
+
+
+def _describe(
+    sounding: Sounding, curves: Curves, fit: Fit, noise: float, options: InversionOptions, criterion: FloatArray
+) -> Inverted:
+    """What one sounding says, from its curve (a batch of one) and its chosen fit (likewise)."""
+    curve = sounding.curve
+    unknowns = fit.unknowns[0]
+    k = (unknowns.size - curves.segments.shape[2] + 1) // 2
+    n_model = 2 * k - 1
+    model = LayeredModel(np.exp(unknowns[: k - 1]), np.exp(unknowns[k - 1 : n_model]))
+    n_segments = np.unique(curve.segment[curve.used]).size
+    n_used = int(np.sum(curve.used))
+    robust = np.zeros(curve.half_spacing.size)
+    robust[curve.used] = fit.robust_weight[0, :n_used]
+    residual = (curves.log_apparent_resistivity[0] - fit.log_response[0] - curves.segments[0] @ unknowns[n_model:])[
+        :n_used
+    ]
+    trusted = fit.robust_weight[0, :n_used]
+    rms = float(np.sqrt(np.sum(trusted * residual**2) / np.sum(trusted)))
+    generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
+    draws = damped_steps.laplace_draws(fit, generator.standard_normal((options.draws, 1, unknowns.size)))[:, 0]
+    draws = np.exp(np.clip(draws[:, :n_model], np.log(0.05), np.log(1e5)))
+    return Inverted(
+        sounding=sounding.name,
+        model=model,
+        ensemble=ModelEnsemble(draws[:, : k - 1], draws[:, k - 1 :], np.full(options.draws, 1.0 / options.draws)),
+        log_covariance=np.linalg.inv(fit.hessian[0])[:n_model, :n_model],
+        segment_factor=np.concatenate([[1.0], np.exp(unknowns[n_model : n_model + n_segments - 1])]),
+        predicted=layered_earth.apparent_resistivity(
+            curve.half_spacing, curve.potential_half_spacing, model.thickness[None], model.resistivity[None]
+        )[0],
+        robust_weight=robust,
+        rms_percent=100.0 * rms,
+        noise=noise,
+        criterion=dict(enumerate(criterion.tolist(), options.least_layers)),
+        investigated_depth=_investigated_depth(model, curves),
+        remarks=_remarks(curve, trusted, rms, noise),
+    )
+
+
+def _remarks(curve: Curve, trusted: FloatArray, rms: float, noise: float) -> tuple[str, ...]:
+    remarks = []
+    set_aside = curve.half_spacing[curve.used][trusted < 0.5]
+    if set_aside.size:
+        spacings = ", ".join(f"{spacing:g}" for spacing in set_aside)
+        remarks.append(f"readings at AB/2 {spacings} m fit no layered ground here and were set aside")
+    if rms > 2.5 * noise:
+        remarks.append("no layered model fits within the errors")
+    return tuple(remarks)
+
+
+def _investigated_depth(model: LayeredModel, curves: Curves) -> float:
+    """Depth (m) below which halving or doubling the resistivity of all that lies there goes unnoticed."""
+    known = np.isfinite(curves.deviation[0])
+    depth = np.geomspace(0.5, 1000.0, 67)
+    top = np.append(model.top_depth, np.inf)
+    # The model cut at each depth: layers above keep their thickness, the cut layer is split.
+    upper = np.clip(depth[:, None] - top[:-1], 1e-3, np.diff(top))
+    changed = []
+    for factor in (0.5, 2.0):
+        thickness, resistivity = [], []
+        for i in range(model.resistivity.size):
+            thickness.append(upper[:, i])
+            resistivity.append(np.full(depth.size, model.resistivity[i]))
+            rest = np.maximum(top[i + 1] - np.maximum(top[i], depth), 1e-3)
+            thickness.append(rest)
+            resistivity.append(np.where(top[i + 1] > depth, factor * model.resistivity[i], model.resistivity[i]))
+        changed.append((np.stack(thickness, axis=1)[:, :-1], np.stack(resistivity, axis=1)))
+    plain = layered_earth.response(curves.weights, curves.wavenumber, model.thickness[None], model.resistivity[None])
+    chi_square = [
+        np.sum(
+            (
+                np.log(layered_earth.response(curves.weights, curves.wavenumber, h, r) / plain)[:, known]
+                / curves.deviation[0, known]
+            )
+            ** 2,
+            axis=1,
+        )
+        for h, r in changed
+    ]
+    felt = np.min(chi_square, axis=0) >= FELT_CHI_SQUARE
+    return float(depth[np.flatnonzero(felt)[-1]]) if np.any(felt) else 0.0
