@@ -1,0 +1,377 @@
+"""What each raster, layer and column is called and means: the one place for the words of the delivery."""
+
+from collections.abc import Mapping
+from types import MappingProxyType
+from typing import Any, Literal
+
+import attrs
+
+from geoves.domain.region import LengthUnit
+
+Kind = Literal[
+    "text", "count", "flag", "length", "area", "resistivity", "percent", "fraction", "slope", "angle", "conductance"
+]
+Part = Literal["estimate", "standard_error", "p05", "p95"]
+Geometry = Literal["Point", "LineString", "Polygon"]
+
+LENGTH_UNITS = MappingProxyType({"m": "metres", "ft": "feet", "us-ft": "US survey feet"})
+PART_TITLES: Mapping[Part, str] = MappingProxyType(
+    {
+        "estimate": "",
+        "standard_error": "standard error",
+        "p05": "5 % quantile",
+        "p95": "95 % quantile",
+    }
+)
+
+
+@attrs.frozen
+class Column:
+    """One column: its kind fixes its unit; `codes` names what a coded text may say, `span` what a number may be."""
+
+    name: str
+    title: str
+    description: str
+    kind: Kind = "text"
+    codes: Mapping[str, str] = attrs.field(factory=dict)
+    span: tuple[float, float] | None = None
+
+
+@attrs.frozen
+class LayerWords:
+    """One layer of the GeoPackage; its columns in the order in which they are written."""
+
+    name: str
+    title: str
+    description: str
+    geometry: Geometry
+    columns: tuple[Column, ...]
+
+
+@attrs.frozen
+class RasterWords:
+    """One surface as rasters: which of its parts are delivered, and what its values are."""
+
+    name: str
+    title: str
+    description: str
+    kind: Literal["length", "resistivity", "fraction"]
+    parts: tuple[Part, ...] = ("estimate",)
+    elevation: bool = False
+
+
+_ALL_PARTS: tuple[Part, ...] = ("estimate", "standard_error", "p05", "p95")
+
+RASTERS: Mapping[str, RasterWords] = MappingProxyType(
+    {
+        words.name: words
+        for words in (
+            RasterWords(
+                "bedrock_elevation",
+                "Bedrock elevation",
+                "Elevation of the top of bedrock: the mean of what the data allow.",
+                "length",
+                _ALL_PARTS,
+                elevation=True,
+            ),
+            RasterWords(
+                "bedrock_depth",
+                "Depth to bedrock",
+                "Depth from the land surface to the top of bedrock.",
+                "length",
+            ),
+            RasterWords(
+                "deep_gravel_thickness",
+                "Thickness of the deep gravel",
+                "Thickness of the deep aquifer, its absence counted as 0: the mean of what the data allow.",
+                "length",
+                _ALL_PARTS,
+            ),
+            RasterWords(
+                "deep_gravel_top_elevation",
+                "Elevation of the top of the deep gravel",
+                "Bedrock elevation plus thickness of the deep gravel; blank where its probability is below 0.05.",
+                "length",
+                elevation=True,
+            ),
+            RasterWords(
+                "deep_gravel_probability",
+                "Probability of deep gravel",
+                "Probability that at least 1 m of the deep aquifer is there.",
+                "fraction",
+            ),
+            RasterWords(
+                "shallow_aquifer_resistivity",
+                "Resistivity of the shallow aquifer",
+                "Resistivity of the shallow aquifer: the median, kriged in logarithms.",
+                "resistivity",
+                ("estimate", "p05", "p95"),
+            ),
+            RasterWords(
+                "shallow_aquifer_probability",
+                "Probability of the shallow aquifer",
+                "Probability that at least 1 m of the shallow aquifer is there.",
+                "fraction",
+            ),
+        )
+    }
+)
+
+_BEDROCK_STATUS = MappingProxyType(
+    {
+        "seen": "the curve shows where bedrock begins",
+        "not_distinct": "bedrock and what lies on it are not told apart by resistivity",
+        "deeper_than": "the curve ends above bedrock: its depth is a lower bound",
+    }
+)
+_TOP_STATUS = MappingProxyType(
+    {
+        "at": "the top lies at this depth",
+        "below": "the top is deeper than this depth",
+        "absent": "the unit is not there",
+    }
+)
+_PLACE_KIND = MappingProxyType(
+    {"sounding": "read from a curve", "well": "read from a driller's log", "pick": "decided by the interpreter"}
+)
+_ARRAY = MappingProxyType(
+    {"schlumberger": "Schlumberger array", "wenner": "Wenner array, as AB/2 = 1.5 a and MN/2 = 0.5 a"}
+)
+_LIKELIHOOD = MappingProxyType(
+    {"likely": "probability of deep gravel of 0.66 or more", "possible": "probability of deep gravel of 0.33 to 0.66"}
+)
+
+
+def _banded(name: str, title: str, description: str) -> tuple[Column, ...]:
+    """A length with its 5 % and 95 % quantiles."""
+    return (
+        Column(name, title, description, "length"),
+        Column(
+            f"{name}_p05", f"{title}, 5 % quantile", f"{description} One chance in twenty that it is less.", "length"
+        ),
+        Column(
+            f"{name}_p95", f"{title}, 95 % quantile", f"{description} One chance in twenty that it is more.", "length"
+        ),
+    )
+
+
+_SOUNDING = Column("sounding", "Sounding", "Name of the sounding.")
+_WELL = Column("well", "Well", "Name of the well.")
+_UNIT = Column("unit", "Unit", "Code of the unit in the resistivity template.")
+_GROUND = Column("ground_elevation", "Ground elevation", "Elevation of the land surface at the place.", "length")
+_RADIUS = Column(
+    "location_accuracy", "Location accuracy", "Radius of the circle in which the place lies; empty: none.", "length"
+)
+
+LAYERS: Mapping[str, LayerWords] = MappingProxyType(
+    {
+        words.name: words
+        for words in (
+            LayerWords(
+                "soundings",
+                "Soundings",
+                "Vertical electrical soundings with what each curve says by itself.",
+                "Point",
+                (
+                    _SOUNDING,
+                    Column("rms_percent", "Misfit", "Root mean square misfit of the used readings.", "percent"),
+                    Column("n_layers", "Layers", "Number of layers that the criterion chose.", "count"),
+                    Column("bedrock_status", "Bedrock", "What the curve says of bedrock.", codes=_BEDROCK_STATUS),
+                    Column("bedrock_depth", "Bedrock depth", "Depth to bedrock, or its lower bound.", "length"),
+                    Column("bedrock_depth_error", "Bedrock depth error", "Standard error of that depth.", "length"),
+                    _GROUND,
+                    Column(
+                        "investigated_depth",
+                        "Investigated depth",
+                        "Below it a change of resistivity alters the curve by less than its error.",
+                        "length",
+                    ),
+                    Column("largest_ab2", "Largest AB/2", "Largest half spacing of the current electrodes.", "length"),
+                    Column("n_readings", "Readings", "Number of readings that were used.", "count"),
+                    Column("n_set_aside", "Readings set aside", "Number of readings that were not used.", "count"),
+                    Column("array", "Array", "Electrode array.", codes=_ARRAY),
+                    Column("azimuth", "Azimuth", "Direction of the spread, clockwise from north.", "angle"),
+                    Column("date", "Date", "Date as typed."),
+                    Column("note", "Note", "Note as typed."),
+                    Column("segment_factors", "Segment factors", "Factor on each MN segment, the first being 1."),
+                    Column("sentence", "In words", "What is resolved and what is not."),
+                    Column("remarks", "Remarks", "What a person should know of this curve."),
+                    Column("interpreter", "Interpreter", "Who decided, where a pick outranks the curve."),
+                ),
+            ),
+            LayerWords(
+                "model_layers",
+                "Layers of the sounding models",
+                "A row a layer of each sounding, at the sounding's place.",
+                "Point",
+                (
+                    _SOUNDING,
+                    Column("layer", "Layer", "Number of the layer, 1 at the top.", "count"),
+                    Column("top_depth", "Depth of top", "Depth to the layer's top.", "length"),
+                    Column("bottom_depth", "Depth of bottom", "Depth to its bottom; empty for the last.", "length"),
+                    Column("top_elevation", "Elevation of top", "Elevation of the layer's top.", "length"),
+                    Column("resistivity", "Resistivity", "Resistivity of the layer.", "resistivity"),
+                    Column("resistivity_p05", "Resistivity, 5 % quantile", "Over models that fit.", "resistivity"),
+                    Column("resistivity_p95", "Resistivity, 95 % quantile", "Over models that fit.", "resistivity"),
+                    _UNIT,
+                    Column(
+                        "unit_probability", "Probability of unit", "Of that code here.", "fraction", span=(0.0, 1.0)
+                    ),
+                ),
+            ),
+            LayerWords(
+                "tops",
+                "Tops that were kriged",
+                "Where a unit begins under a place, or the bound that is known: what the surfaces were made from.",
+                "Point",
+                (
+                    Column("place", "Place", "Name of the sounding or the well."),
+                    Column("kind", "Kind", "Which kind of evidence.", codes=_PLACE_KIND),
+                    _UNIT,
+                    Column("contact", "Contact", "Which contact of the surfaces it speaks of."),
+                    Column("status", "Status", "How the depth is meant.", codes=_TOP_STATUS),
+                    Column("depth", "Depth", "Depth of the top, or the bound.", "length"),
+                    Column("elevation", "Elevation", "Elevation of the top, or the bound.", "length"),
+                    Column("standard_error", "Standard error", "Standard error of that depth.", "length"),
+                    Column("source", "Source", "Evidence, and who decided."),
+                ),
+            ),
+            LayerWords(
+                "wells",
+                "Control wells",
+                "Wells with a driller's log.",
+                "Point",
+                (
+                    _WELL,
+                    _GROUND,
+                    Column("total_depth", "Total depth", "Depth of the hole.", "length"),
+                    Column("reached_bedrock", "Reached bedrock", "Whether the log ends in bedrock.", "flag"),
+                    Column("water_level", "Water level", "Depth to water.", "length"),
+                    Column("specific_conductance", "Specific conductance", "Of the water, at 25 °C.", "conductance"),
+                    _RADIUS,
+                ),
+            ),
+            LayerWords(
+                "well_intervals",
+                "Intervals of the driller's logs",
+                "A row an interval of each well, at the well's place, with the unit that its words were taken to mean.",
+                "Point",
+                (
+                    _WELL,
+                    Column("top", "Depth of top", "Depth to the interval's top.", "length"),
+                    Column("bottom", "Depth of bottom", "Depth to the interval's bottom.", "length"),
+                    Column("description", "Description", "The driller's words."),
+                    _UNIT,
+                    Column(
+                        "confidence", "Confidence", "1 for a typed code or an exact term.", "fraction", span=(0.0, 1.0)
+                    ),
+                ),
+            ),
+            LayerWords(
+                "bedrock_contours",
+                "Contours of bedrock elevation",
+                "Lines of equal estimated bedrock elevation.",
+                "LineString",
+                (
+                    Column("elevation", "Elevation", "Bedrock elevation along the line.", "length"),
+                    Column("major", "Index contour", "Every fifth contour.", "flag"),
+                ),
+            ),
+            LayerWords(
+                "thickness_contours",
+                "Contours of deep gravel thickness",
+                "Lines of equal estimated thickness of the deep gravel.",
+                "LineString",
+                (
+                    Column("thickness", "Thickness", "Thickness of the deep gravel along the line.", "length"),
+                    Column("major", "Index contour", "Every fifth contour.", "flag"),
+                ),
+            ),
+            LayerWords(
+                "valley_axis",
+                "Axis of the buried valley",
+                "A line along the floor of the buried valley, drawn downstream; tributaries are lines of their own.",
+                "LineString",
+                (
+                    Column("order", "Order", "1 for a main valley, 2 for its tributaries, and so on.", "count"),
+                    Column("length", "Length", "Length of the line on the ground.", "length"),
+                    Column("lowest_elevation", "Lowest bedrock", "Lowest bedrock elevation along the line.", "length"),
+                    Column("highest_elevation", "Highest bedrock", "Highest bedrock elevation along it.", "length"),
+                    Column("mean_slope", "Mean slope", "Fall of the floor in the line's direction.", "slope"),
+                ),
+            ),
+            LayerWords(
+                "gravel_extent",
+                "Extent of the deep gravel",
+                "Where deep gravel is likely (probability 0.66 or more) or possible (0.33 to 0.66).",
+                "Polygon",
+                (
+                    Column("likelihood", "Likelihood", "How sure the gravel is.", codes=_LIKELIHOOD),
+                    Column("least_probability", "Least probability", "In this class.", "fraction", span=(0.0, 1.0)),
+                    Column("area", "Area", "Area of the polygon.", "area"),
+                ),
+            ),
+            LayerWords(
+                "permits",
+                "Well permits",
+                "Each permit with what the surfaces say at its place, and how sure; averaged over its circle where its "
+                "location is uncertain.",
+                "Point",
+                (
+                    Column("permit", "Permit", "Name of the permit."),
+                    Column("use", "Use", "Use of the water, as typed."),
+                    Column("requested_depth", "Requested depth", "Depth that was asked for.", "length"),
+                    _RADIUS,
+                    Column("covered", "Covered", "Whether the surfaces reach this place.", "flag"),
+                    Column("covered_share", "Covered share", "Of the circle of location.", "fraction", span=(0.0, 1.0)),
+                    *_banded("bedrock_depth", "Bedrock depth", "Depth to bedrock."),
+                    *_banded("gravel_top_depth", "Depth to the deep gravel", "Depth to its top, if it is there."),
+                    *_banded("gravel_thickness", "Thickness of the deep gravel", "Absence counts as 0."),
+                    Column(
+                        "gravel_probability",
+                        "Probability of deep gravel",
+                        "Probability that at least 1 m of the deep aquifer is there.",
+                        "fraction",
+                        span=(0.0, 1.0),
+                    ),
+                ),
+            ),
+        )
+    }
+)
+
+
+def name_unit(kind: Kind, length_unit: LengthUnit) -> str:
+    """The unit of a kind of column as it stands in the delivery; empty where it has none.
+
+    >>> name_unit("length", "us-ft"), name_unit("area", "ft"), name_unit("resistivity", "m")
+    ('us-ft', 'mi²', 'ohm m')
+    """
+    units = {
+        "length": length_unit,
+        "area": "km²" if length_unit == "m" else "mi²",
+        "resistivity": "ohm m",
+        "percent": "%",
+        "angle": "degrees",
+        "conductance": "µS/cm",
+    }
+    return units.get(kind, "")
+
+
+def name_part(name: str, part: Part) -> str:
+    """A raster's name without its ending.
+
+    >>> name_part("bedrock_elevation", "p05")
+    'bedrock_elevation_p05'
+    """
+    return name if part == "estimate" else f"{name}_{part}"
+
+
+def convert_to_delivery(values: Any, kind: Kind, metres_per_length_unit: float) -> Any:
+    """SI values of a kind in the delivery's unit: lengths in the region's, areas in km² or square miles."""
+    if kind == "length":
+        return values / metres_per_length_unit
+    if kind == "area":
+        square_mile = (5280.0 * metres_per_length_unit) ** 2
+        return values / (1e6 if metres_per_length_unit == 1.0 else square_mile)
+    return values
