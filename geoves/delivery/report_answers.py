@@ -1,0 +1,132 @@
+"""The report's first chapter: the map, three numbers with their ranges, the confidence in plain words, the cautions."""
+
+import numpy as np
+import shapely
+
+from geoves.delivery.cautions import list_cautions
+from geoves.delivery.markup import Markup, element, format_length, joined
+from geoves.delivery.sections import describe_depth, draw_overview, main_axis
+from geoves.domain.grids import CrossValidation
+from geoves.domain.results import Results
+
+
+def write_answers(results: Results) -> Markup:
+    numbers = [_valley_length(results), _gravel_area(results), _deepest_rock(results)]
+    shown = [
+        element("div", {}, element("dt", {}, asked), element("dd", {}, element("strong", {}, number), words))
+        for asked, number, words in numbers
+    ]
+    caption = (
+        "Black circle: bedrock seen; grey diamond: rock and what lies on it not told apart; white triangle: bedrock is "
+        "deeper than the curve reached; square: well. White line: the valley’s axis; A, B, C: the sections across it."
+    )
+    scroll = {"class": "scroll", "tabindex": "0", "role": "region", "aria-label": "Map of bedrock elevation"}
+    return joined(
+        [
+            element("dl", {"class": "numbers"}, *shown),
+            element("figure", {}, element("div", scroll, draw_overview(results)), element("figcaption", {}, caption)),
+            element("h3", {}, "How sure"),
+            *(element("p", {}, words) for words in confidence_in_words(results)),
+            element("h3", {}, "Cautions"),
+            element("ul", {"class": "cautions"}, *(element("li", {}, caution) for caution in list_cautions())),
+        ]
+    )
+
+
+def _far(results: Results, metres: float) -> str:
+    """A long distance: km, or miles in a region that counts in feet."""
+    return f"{metres / 1000:.1f} km" if results.region.length_unit == "m" else f"{metres / 1609.344:.1f} mi"
+
+
+def _wide(results: Results, square_metres: float) -> str:
+    if results.region.length_unit == "m":
+        return f"{square_metres / 1e6:.1f} km²"
+    return f"{square_metres / 1609.344**2:.1f} sq mi"
+
+
+def _valley_length(results: Results) -> tuple[str, str, str]:
+    axis = results.layers.get("valley_axis")
+    asked = "Length of valley found"
+    if axis is None or not len(axis):
+        return asked, "none", "no axis could be followed"
+    metres = results.region.crs_unit_metres
+    main = main_axis(results)
+    supported = _supported_length(results)
+    words = (
+        f"of it {_far(results, main.length * metres)} in the main valley; {_far(results, supported)} of the whole lies "
+        f"within {_far(results, 1000.0)} of a sounding that saw bedrock or a well that reached it"
+    )
+    return asked, _far(results, float(axis.length.sum()) * metres), words
+
+
+def _supported_length(results: Results) -> float:
+    """Length of the axis (m) within 1 km of a place where the depth to bedrock is known."""
+    known = [
+        shapely.Point(top.easting, top.northing)
+        for top in results.interpretation.tops
+        if top.contact in ("bedrock", "basal") and top.status == "at"
+    ]
+    if not known:
+        return 0.0
+    metres = results.region.crs_unit_metres
+    near = shapely.union_all(known).buffer(1000.0 / metres)
+    return float(results.layers["valley_axis"].geometry.intersection(near).length.sum()) * metres
+
+
+def _gravel_area(results: Results) -> tuple[str, str, str]:
+    asked = "Area where deep gravel is likely"
+    surface = results.stack.surfaces.get("deep_gravel_probability")
+    if surface is None or not np.isfinite(surface.estimate).any():
+        return asked, "not mapped", "the template names no deep aquifer"
+    cell = (results.stack.grid.cell_size * results.region.crs_unit_metres) ** 2
+    likely, nearly_sure, possible = (float((surface.estimate >= p).sum()) * cell for p in (0.5, 0.8, 0.2))
+    words = (
+        f"where the probability is 0.5 or more; {_wide(results, nearly_sure)} at 0.8 or more, "
+        f"{_wide(results, possible)} at 0.2 or more"
+    )
+    return asked, _wide(results, likely), words
+
+
+def _deepest_rock(results: Results) -> tuple[str, str, str]:
+    asked = "Deepest bedrock"
+    surface = results.stack.surfaces.get("bedrock_depth")
+    if surface is None or not np.isfinite(surface.estimate).any():
+        return asked, "not mapped", "no depth to bedrock could be estimated"
+    row, column = np.unravel_index(int(np.nanargmax(surface.estimate)), surface.estimate.shape)
+    said = describe_depth(results, "bedrock_depth", int(row), int(column))
+    number, _, band = said.partition(" (")
+    median = format_length(float(np.nanmedian(surface.estimate)), results.region.length_unit)
+    words = f"below the ground, {band.rstrip(')')} with 90 % probability; over the region the median is {median}"
+    return asked, number, words
+
+
+def confidence_in_words(results: Results) -> list[str]:
+    """What leaving out each place in turn says of the surfaces, in sentences."""
+    said = [_confidence(results, crossed) for crossed in results.stack.cross_validations]
+    return [words for words in said if words] or ["No surface could be tested by leaving places out."]
+
+
+def _confidence(results: Results, crossed: CrossValidation) -> str:
+    misfit = np.abs(crossed.measured - crossed.predicted)
+    known = np.isfinite(misfit)
+    if known.sum() < 3:
+        return ""
+    inside = misfit[known] <= 1.645 * crossed.standard_error[known]
+    half, most = (float(value) for value in np.quantile(misfit[known], [0.5, 0.9]))
+    if crossed.unit == "m":
+        unit = results.region.length_unit
+        half_said, most_said = format_length(half, unit, 1), format_length(most, unit, 1)
+    else:
+        half_said, most_said = f"{half:.2g} {crossed.unit}", f"{most:.2g} {crossed.unit}"
+    share = float(inside.mean())
+    if share >= 0.85:
+        verdict = "The bands are about as wide as they should be."
+    elif share >= 0.75:
+        verdict = "The bands are somewhat too narrow: treat them as optimistic."
+    else:
+        verdict = "The bands are too narrow: treat every range on this page as too hopeful."
+    return (
+        f"{crossed.title}: each of {int(known.sum())} places was left out in turn and predicted from the others. "
+        f"Half were met within {half_said}, nine in ten within {most_said}. The 90 % bands held {share:.0%} of them. "
+        f"{verdict}"
+    )

@@ -1,0 +1,129 @@
+"""report.html: the whole job on one page that opens with no network and runs no script."""
+
+from collections.abc import Callable, Iterable, Mapping
+from functools import partial
+from importlib.resources import files
+from pathlib import Path
+from typing import Any
+
+from geoves.delivery.cautions import SHORT_CAUTION
+from geoves.delivery.markup import Markup, element, joined, place_name
+from geoves.delivery.report_answers import write_answers
+from geoves.delivery.report_places import StripJob, draw_strip, gather_strips, write_wells_and_template
+from geoves.delivery.report_trust import write_decisions, write_doubts, write_making, write_trust
+from geoves.delivery.sections import draw_section, section_lines
+from geoves.delivery.unit_look import pattern_definitions, unit_key
+from geoves.domain.results import Results
+
+CONTENT_POLICY = "default-src 'none'; style-src 'unsafe-inline'; img-src data:; base-uri 'none'; form-action 'none'"
+
+HEADINGS = {
+    "answers": "Asked and answered",
+    "sections": "Along the valley and across it",
+    "soundings": "Each sounding",
+    "wells": "Wells and the resistivity template",
+    "trust": "Why believe the surfaces",
+    "doubts": "Faults and doubts",
+    "decisions": "The interpreter’s decisions",
+    "making": "How it was made",
+}
+
+Map = Callable[[Callable[[StripJob], str], Iterable[StripJob]], Iterable[str]]
+
+
+def write_report_page(results: Results, path: Path, record: Mapping[str, Any], *, map: Map = map) -> Path:  # noqa: A002 - the seam's name throughout
+    """The written page at `path`. `record` says how the job was made; `map` draws the soundings' strips."""
+    template = results.region.template
+    strips = [Markup(one) for one in map(partial(draw_strip, template=template), gather_strips(results))]
+    bodies = {
+        "answers": write_answers(results),
+        "sections": _write_sections(results),
+        "soundings": _write_soundings(results, strips),
+        "wells": write_wells_and_template(results),
+        "trust": write_trust(results),
+        "doubts": write_doubts(results),
+        "decisions": write_decisions(results),
+        "making": write_making(results, record),
+    }
+    sections = [
+        element("section", {"id": key}, element("h2", {}, f"{number}. {HEADINGS[key]}"), body)
+        for number, (key, body) in enumerate(bodies.items(), start=1)
+    ]
+    page = _page(results, joined([pattern_definitions(template), _contents(), *sections]))
+    path.write_text(page, encoding="utf-8")
+    return path
+
+
+def _page(results: Results, body: Markup) -> str:
+    name = results.region.name
+    style = Markup((files("geoves.delivery") / "pages" / "report.css").read_text(encoding="utf-8"))
+    head = joined(
+        [
+            Markup('<meta charset="utf-8">'),
+            Markup('<meta name="viewport" content="width=device-width, initial-scale=1">'),
+            Markup(f'<meta http-equiv="Content-Security-Policy" content="{CONTENT_POLICY}">'),
+            Markup('<meta name="generator" content="geoves">'),
+            element("title", {}, f"{name}: report"),
+            element("style", {}, style),
+        ],
+        "\n",
+    )
+    top = element(
+        "header",
+        {"class": "top"},
+        element("h1", {}, "What lies under ", place_name(name)),
+        element("p", {"class": "aside"}, _made_for(results)),
+    )
+    caution = element("p", {"class": "caution", "role": "note"}, SHORT_CAUTION)
+    whole = joined([caution, top, element("main", {}, body)])
+    return f'<!DOCTYPE html>\n<html lang="en">\n<head>\n{head}\n</head>\n<body>\n{whole}\n</body>\n</html>\n'
+
+
+def _made_for(results: Results) -> str:
+    delivery = results.region.delivery
+    counted = f"{len(results.survey.soundings)} soundings, {len(results.survey.wells)} wells"
+    said = [f"Report of a resistivity survey: {counted}, {len(results.survey.permits)} permits"]
+    said += [words for words in (delivery.organisation, delivery.contact, delivery.use_limits) if words]
+    return ". ".join(words.rstrip(".") for words in said) + "."
+
+
+def _contents() -> Markup:
+    items = [element("li", {}, element("a", {"href": f"#{key}"}, words)) for key, words in HEADINGS.items()]
+    return element("nav", {"aria-label": "Contents"}, element("ol", {}, *items))
+
+
+def _write_sections(results: Results) -> Markup:
+    drawn = [(title, draw_section(results, title, section)) for title, section in section_lines(results)]
+    figures = [
+        element(
+            "figure",
+            {},
+            element("div", {"class": "scroll", "tabindex": "0", "role": "region", "aria-label": title}, svg),
+        )
+        for title, svg in drawn
+        if svg
+    ]
+    if not figures:
+        return element("p", {}, "No valley axis was found, so that no section could be laid along it.")
+    words = (
+        "Ground in green, bedrock as a bold line within its 90 % band, gravel where it is more likely than not. "
+        "Soundings near the section stand as broad columns of their most probable units, wells as narrow ones; "
+        "an orange bar is an interpreter’s pick. A, B and C are dashed on the map above, read from west to east."
+    )
+    return joined([element("p", {}, words), unit_key(results.region.template), *figures])
+
+
+def _write_soundings(results: Results, strips: list[Markup]) -> Markup:
+    words = (
+        "Left, the curve: readings with one standard deviation, a mark of its own for each potential spacing, readings "
+        "set aside hollow and orange, the model’s response in orange. Middle, the models: the chosen one bold, in grey "
+        "some that fit as well, and above them the template’s ranges. Right, what the layers may be: each unit’s "
+        "probability, stacked; the bracket is the 90 % band of the depth to bedrock, an arrow a depth that it must "
+        "exceed. Beside it the nearest well’s log on the same depths, where one is within 3 km."
+    )
+    names = [
+        element("a", {"href": f"#sounding-{number}"}, place_name(sounding.name))
+        for number, sounding in enumerate(results.survey.soundings)
+    ]
+    parts = [element("p", {}, words), unit_key(results.region.template), element("p", {}, joined(names, ", "))]
+    return joined([*parts, *strips])

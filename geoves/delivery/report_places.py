@@ -1,0 +1,166 @@
+"""The report's strips, one for each sounding, and its chapter on wells and the template."""
+
+from collections import Counter
+from collections.abc import Iterator
+
+import attrs
+import numpy as np
+
+from geoves.delivery.figures import NearWell, draw_columns, draw_curve, draw_models, readings_aside
+from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table
+from geoves.domain.earth import Inverted
+from geoves.domain.region import LengthUnit
+from geoves.domain.results import Results
+from geoves.domain.survey import Sounding
+from geoves.domain.tops import UnitColumn
+from geoves.domain.units import Template
+
+NEAR_WELL = 3000.0  # m: a log farther away would suggest a likeness that nothing supports
+
+STATUS_WORDS = {
+    "seen": "bedrock seen",
+    "not_distinct": "bedrock not distinct",
+    "deeper_than": "bedrock deeper than",
+}
+
+
+@attrs.frozen
+class StripJob:
+    """All that one sounding's strip is drawn from."""
+
+    number: int
+    sounding: Sounding
+    inverted: Inverted | None
+    column: UnitColumn | None
+    near_well: NearWell | None
+    unit: LengthUnit
+
+
+def gather_strips(results: Results) -> Iterator[StripJob]:
+    models = {one.sounding: one for one in results.inverted}
+    columns = {one.sounding: one for one in results.interpretation.columns}
+    for number, sounding in enumerate(results.survey.soundings):
+        near, unit = nearest_logged_well(results, sounding), results.region.length_unit
+        yield StripJob(number, sounding, models.get(sounding.name), columns.get(sounding.name), near, unit)
+
+
+def nearest_logged_well(results: Results, sounding: Sounding) -> NearWell | None:
+    """The nearest well with a log within NEAR_WELL, None where there is none."""
+    crs_metres, nearest = results.region.crs_unit_metres, None
+    for well in results.survey.wells:
+        distance = crs_metres * np.hypot(well.easting - sounding.easting, well.northing - sounding.northing)
+        if well.intervals and distance <= NEAR_WELL and (nearest is None or distance < nearest[0]):
+            nearest = (float(distance), well)
+    if nearest is None:
+        return None
+    readings = tuple(one for one in results.interpretation.well_readings if one.well == nearest[1].name)
+    return NearWell(readings, nearest[0], nearest[1].total_depth) if readings else None
+
+
+def draw_strip(job: StripJob, *, template: Template) -> str:
+    """One sounding's strip: curve, models, columns, the sentence, what was set aside and what to know."""
+    sounding, unit = job.sounding, job.unit
+    heading = element("h3", {}, place_name(sounding.name))
+    if job.inverted is None or job.column is None:
+        body = element("p", {"class": "sentence"}, "No model was made of this sounding.")
+        return element("article", {"class": "strip", "id": f"sounding-{job.number}"}, heading, body)
+    drawings = element(
+        "div",
+        {"class": "drawings"},
+        draw_curve(sounding, job.inverted, unit),
+        draw_models(sounding, job.inverted, template, unit),
+        draw_columns(job.column, job.inverted, template, unit, job.near_well),
+    )
+    notes = _strip_notes(job, job.inverted, job.column)
+    sentence = element("p", {"class": "sentence"}, job.column.sentence)
+    facts = element("p", {"class": "under"}, _strip_facts(job, job.inverted, job.column))
+    return element(
+        "article", {"class": "strip", "id": f"sounding-{job.number}"}, heading, facts, drawings, sentence, notes
+    )
+
+
+def _strip_facts(job: StripJob, inverted: Inverted, column: UnitColumn) -> str:
+    spacing = job.sounding.curve.half_spacing
+    facts = [
+        STATUS_WORDS[column.bedrock_status],
+        f"{inverted.n_layers} layers",
+        f"misfit {inverted.rms_percent:.1f} %",
+        f"AB/2 to {format_length(float(np.nanmax(spacing)), job.unit)}" if spacing.size else "",
+        f"reaches to about {format_length(inverted.investigated_depth, job.unit)}",
+        f"spread towards {job.sounding.azimuth_deg:.0f}°" if job.sounding.azimuth_deg is not None else "",
+        job.sounding.date,
+    ]
+    return "; ".join(fact for fact in facts if fact)
+
+
+def _strip_notes(job: StripJob, inverted: Inverted, column: UnitColumn) -> Markup:
+    notes: list[str] = []
+    factors = [f"{factor:.2f}" for factor in inverted.segment_factor[1:] if abs(factor - 1.0) > 0.005]
+    if factors:
+        notes.append(f"Later potential spacings were found shifted by a factor of {', '.join(factors)}.")
+    notes += [f"Hollow: {words}." for words in readings_aside(job.sounding.curve, inverted, job.unit)]
+    notes += inverted.remarks
+    for pick in column.picks:
+        depth = "" if pick.depth is None else f" {format_length(pick.depth, job.unit, 1)}"
+        notes.append(f"Pick by {pick.interpreter}: {pick.unit} {pick.status}{depth}; {pick.reason}")
+    if job.sounding.note:
+        notes.append(f"Field note: {job.sounding.note}")
+    if not notes:
+        return Markup("")
+    return element("ul", {"class": "under"}, *(element("li", {}, note) for note in notes))
+
+
+def write_wells_and_template(results: Results) -> Markup:
+    """Chapter 4: what the drillers' words were taken to mean, and what each unit shows against the template."""
+    found = results.interpretation
+    names = {unit.code: unit.name for unit in results.region.template.units}
+    mapped = Counter((reading.description, reading.unit) for reading in found.well_readings)
+    confidence = {(one.description, one.unit): one.confidence for one in found.well_readings}
+    rows = [
+        (
+            words,
+            names.get(code, code) if code else "no unit claims these words",
+            count,
+            f"{confidence[words, code]:.2f}",
+        )
+        for (words, code), count in sorted(mapped.items(), key=lambda one: (one[0][1] or "", one[0][0]))
+    ]
+    parts = [table(("driller’s words", "taken as", "times", "confidence"), rows, "Words of the logs")]
+    if found.unmapped_words:
+        unmapped = joined((element("q", {}, words) for words in found.unmapped_words), ", ")
+        parts.insert(0, element("p", {}, "Words that no unit claims, and that decide nothing: ", unmapped, "."))
+    else:
+        parts.insert(0, element("p", {}, "Every word of the logs was claimed by a unit."))
+    return joined([*parts, _template_table(results), _wells_table(results)])
+
+
+def _template_table(results: Results) -> Markup:
+    """Each unit's range as given, against what the soundings' layers of that unit show."""
+    models = {one.sounding: one.model for one in results.inverted}
+    shown: dict[str, list[float]] = {unit.code: [] for unit in results.region.template.units}
+    for column in results.interpretation.columns:
+        for code, rho, share in zip(
+            column.unit, models[column.sounding].resistivity, column.unit_probability, strict=True
+        ):
+            if share >= 0.5:
+                shown[code].append(float(rho))
+    rows = []
+    for unit in results.region.template.units:
+        values = np.array(shown[unit.code])
+        spread = "–" if not values.size else f"{np.quantile(values, 0.05):.0f} to {np.quantile(values, 0.95):.0f}"
+        given = f"{unit.resistivity_p05:g} to {unit.resistivity_p95:g}"
+        rows.append((place_name(unit.name), given, spread, values.size))
+    headings = ("unit", "template (Ω m, central 90 %)", "layers read as it (Ω m, central 90 %)", "layers")
+    return table(headings, rows, "The template and what the layers show")
+
+
+def _wells_table(results: Results) -> Markup:
+    unit, rock = results.region.length_unit, results.region.template.units[-1].code
+    rows = []
+    for well in results.survey.wells:
+        readings = [one for one in results.interpretation.well_readings if one.well == well.name]
+        top = min((one.top for one in readings if one.unit == rock), default=None)
+        total = format_length(well.total_depth, unit)
+        said = f"rock at {format_length(top, unit, 1)}" if top is not None else f"rock is deeper than {total}"
+        rows.append((place_name(well.name), total, said, len(well.intervals)))
+    return table(("well", "total depth", "what it says of rock", "intervals"), rows, "Control wells")

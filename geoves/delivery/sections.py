@@ -1,0 +1,322 @@
+"""Figures of the region: the overview map and the sections along and across the valley, as SVG."""
+
+from collections.abc import Iterable, Iterator
+from typing import Any
+
+import attrs
+import numpy as np
+import shapely
+from scipy.ndimage import map_coordinates
+
+from geoves.delivery.markup import Markup, element, format_length, joined, unit_label
+from geoves.delivery.ramps import QUANTITY_RAMPS, embedded_image, faded_colours, ramp_colours, value_range
+from geoves.delivery.svg import (
+    Frame,
+    Scale,
+    drawing,
+    even_ticks,
+    label,
+    line,
+    path_data,
+    polyline,
+    rectangle,
+    tick_text,
+)
+from geoves.domain.arrays import FloatArray
+from geoves.domain.grids import Grid
+from geoves.domain.results import Results
+from geoves.domain.survey import Sounding, Well
+from geoves.domain.tops import UnitColumn
+from geoves.domain.units import Role
+
+SAMPLES = 500
+WIDTH = 900
+
+
+def sample_cells(grid: Grid, values: FloatArray, points: FloatArray) -> FloatArray:
+    """The value of the cell that holds each place of `points` (n, 2) in the CRS; NaN outside the grid."""
+    column = np.floor((points[:, 0] - grid.west) / grid.cell_size).astype(int)
+    row = np.floor((grid.north - points[:, 1]) / grid.cell_size).astype(int)
+    inside = (column >= 0) & (column < grid.n_columns) & (row >= 0) & (row < grid.n_rows)
+    found = np.full(len(points), np.nan)
+    found[inside] = values[row[inside], column[inside]]
+    return found
+
+
+def sample_smoothly(grid: Grid, values: FloatArray, points: FloatArray) -> FloatArray:
+    """Bilinear between the centres of the cells; NaN beside a blank cell and outside the grid."""
+    row = (grid.north - points[:, 1]) / grid.cell_size - 0.5
+    column = (points[:, 0] - grid.west) / grid.cell_size - 0.5
+    # Half a cell at the edge has no neighbour beyond it: it takes the edge's own value.
+    row = np.where((row > -0.5) & (row < grid.n_rows - 0.5), np.clip(row, 0, grid.n_rows - 1), -9.0)
+    column = np.where((column > -0.5) & (column < grid.n_columns - 0.5), np.clip(column, 0, grid.n_columns - 1), -9.0)
+    return map_coordinates(values, [row, column], order=1, cval=np.nan)
+
+
+def lines_of(geometries: Iterable[Any]) -> Iterator[Any]:
+    """Every plain line among geometries, the outlines of polygons too."""
+    for geometry in geometries:
+        if geometry is None or geometry.is_empty:
+            continue
+        if geometry.geom_type in ("LineString", "LinearRing"):
+            yield geometry
+        elif geometry.geom_type == "Polygon":
+            yield from lines_of([geometry.exterior, *geometry.interiors])
+        elif hasattr(geometry, "geoms"):
+            yield from lines_of(geometry.geoms)
+
+
+def main_axis(results: Results) -> Any:
+    """The longest line of the valley's axis, None where there is none."""
+    axis = results.layers.get("valley_axis")
+    if axis is None or not len(axis):
+        return None
+    return max(lines_of(axis.geometry), key=lambda one: one.length, default=None)
+
+
+def section_lines(results: Results) -> list[tuple[str, Any]]:
+    """Titles and lines of the sections: along the axis, and three across it."""
+    axis = main_axis(results)
+    if axis is None or axis.length == 0:
+        return []
+    west, south, east, north = results.stack.grid.bounds
+    reach = 0.18 * float(np.hypot(east - west, north - south))
+    found = [("Along the valley", axis)]
+    # A wide step keeps a kink of one cell from turning the line across.
+    step = max(0.05 * axis.length, 2.0 * results.stack.grid.cell_size)
+    for share, name in ((0.2, "A"), (0.5, "B"), (0.8, "C")):
+        at = share * axis.length
+        before, here, after = (axis.interpolate(at + d) for d in (-step, 0.0, step))
+        along = np.array([after.x - before.x, after.y - before.y])
+        length = float(np.hypot(*along))
+        if length == 0:
+            continue
+        across = np.array([-along[1], along[0]]) / length * reach
+        if across[0] < 0 or (across[0] == 0 and across[1] < 0):
+            across = -across  # read from west to east
+        centre = np.array([here.x, here.y])
+        found.append((f"Across the valley at {name}", shapely.LineString([centre - across, centre + across])))
+    return found
+
+
+@attrs.frozen
+class Place:
+    """A sounding or a well near a section: how far along it (CRS units), its ground (m), and its stretches."""
+
+    name: str
+    kind: str
+    along: float
+    ground: float
+    stretches: tuple[tuple[float, float, str | None], ...]  # depth of top and bottom (m), code of the unit
+    picks: tuple[float, ...]
+
+
+def places_near(results: Results, section: Any, within: float) -> list[Place]:
+    """Soundings and wells no farther than `within` from a line."""
+    columns = {column.sounding: column for column in results.interpretation.columns}
+    models = {one.sounding: one for one in results.inverted}
+    found = []
+    for sounding in results.survey.soundings:
+        point = shapely.Point(sounding.easting, sounding.northing)
+        if sounding.name not in columns or section.distance(point) > within:
+            continue
+        column = columns[sounding.name]
+        tops = models[sounding.name].model.top_depth
+        bottoms = np.append(tops[1:], tops[-1] * 1.2 + 2.0)
+        parts = tuple(zip(tops.tolist(), bottoms.tolist(), column.unit, strict=True))
+        level, picks = _ground_level(results, sounding), _pick_depths(column)
+        found.append(Place(sounding.name, "sounding", section.project(point), level, parts, picks))
+    for well in results.survey.wells:
+        point = shapely.Point(well.easting, well.northing)
+        if section.distance(point) <= within:
+            readings = [one for one in results.interpretation.well_readings if one.well == well.name]
+            logged = tuple((one.top, one.bottom, one.unit) for one in readings)
+            level = _ground_level(results, well)
+            found.append(Place(well.name, "well", section.project(point), level, logged, ()))
+    return sorted(found, key=lambda place: place.along)
+
+
+def _pick_depths(column: UnitColumn) -> tuple[float, ...]:
+    return tuple(pick.depth for pick in column.picks if pick.depth is not None)
+
+
+def _ground_level(results: Results, place: Sounding | Well) -> float:
+    """Elevation of the ground at a place (m): its own, else the grid's."""
+    if np.isfinite(place.ground_elevation):
+        return place.ground_elevation
+    where = np.array([[place.easting, place.northing]])
+    return float(sample_cells(results.stack.grid, results.stack.ground, where)[0])
+
+
+def draw_section(results: Results, title: str, section: Any) -> Markup:
+    """Ground, bedrock with its 90 % band and gravel on it along a line, with the places near it."""
+    stack, region = results.stack, results.region
+    metres, crs_metres = region.metres_per_length_unit, region.crs_unit_metres
+    distance = np.linspace(0.0, section.length, SAMPLES)
+    points = shapely.get_coordinates(shapely.line_interpolate_point(section, distance))
+    ground = sample_smoothly(stack.grid, stack.ground, points) / metres
+    rock = stack.surfaces.get("bedrock_elevation")
+    if rock is None or not np.isfinite(ground).any():
+        return Markup("")
+    estimate = sample_smoothly(results.stack.grid, rock.estimate, points) / metres
+    low = estimate if rock.p05 is None else sample_smoothly(results.stack.grid, rock.p05, points) / metres
+    high = estimate if rock.p95 is None else sample_smoothly(results.stack.grid, rock.p95, points) / metres
+    places = places_near(results, section, max(4 * stack.grid.cell_size, 0.012 * section.length))
+    lowest = np.nanmin([np.nanmin(low, initial=np.inf), *(_foot(place) / metres for place in places)])
+    highest = np.nanmax([*ground, *(place.ground / metres for place in places)])
+    margin = 0.06 * (highest - lowest)
+    far, far_unit = (1609.344, "mi") if region.length_unit != "m" else (1000.0, "km")
+    x = distance * crs_metres / far
+    frame = Frame(Scale(0.0, float(x[-1]), 66, WIDTH - 46), Scale(lowest - margin, highest + 2.5 * margin, 262, 30))
+    bedrock_index = len(region.template.units) - 1
+    parts = [
+        frame.band(x, np.full_like(x, lowest - margin), estimate, "section-rock"),
+        _gravel(results, frame, x, estimate, points),
+        frame.axes(f"distance ({far_unit})", f"elevation ({unit_label(region.length_unit)})", x_ticks=8),
+        frame.band(x, low, high, "band"),
+        frame.line(x, estimate, "model"),
+        frame.line(x, ground, "ground"),
+        *(_section_place(results, frame, place, place.along * crs_metres / far) for place in places),
+    ]
+    shown = {unit: i for i, unit in enumerate(region.template.codes)}
+    parts[0] = element("g", {"fill": f"url(#unit-{shown[region.template.units[bedrock_index].code]})"}, parts[0])
+    vertical = abs(frame.y.end - frame.y.start) / ((frame.y.high - frame.y.low) * metres)
+    horizontal = (frame.x.end - frame.x.start) / (section.length * crs_metres)
+    parts.append(label(66, 18, f"{title}; heights drawn {vertical / horizontal:.0f} times larger than lengths", "axis"))
+    return drawing(WIDTH, 300, title, *parts)
+
+
+def _foot(place: Place) -> float:
+    return place.ground - max((bottom for _, bottom, _ in place.stretches), default=0.0)
+
+
+def _gravel(results: Results, frame: Frame, x: FloatArray, rock: FloatArray, points: FloatArray) -> Markup:
+    """Gravel on bedrock where it is more likely than not."""
+    thickness = results.stack.surfaces.get("deep_gravel_thickness")
+    present = results.stack.surfaces.get("deep_gravel_probability")
+    units = results.region.template.with_role(Role.DEEP_AQUIFER)
+    if thickness is None or present is None or not units:
+        return Markup("")
+    likely = sample_smoothly(results.stack.grid, present.estimate, points) >= 0.5
+    top = rock + sample_smoothly(results.stack.grid, thickness.estimate, points) / results.region.metres_per_length_unit
+    fill = f"url(#unit-{results.region.template.codes.index(units[0].code)})"
+    return element("g", {"fill": fill}, frame.band(x, rock, np.where(likely, top, np.nan), "section-gravel"))
+
+
+def _section_place(results: Results, frame: Frame, place: Place, at: float) -> Markup:
+    metres, codes = results.region.metres_per_length_unit, results.region.template.codes
+    x, half = float(frame.x.pixel(at)), 4.0 if place.kind == "sounding" else 2.5
+    boxes = []
+    for top, bottom, code in place.stretches:
+        y = frame.y.pixel((place.ground - np.array([top, bottom])) / metres)
+        fill = f"url(#unit-{codes.index(code)})" if code in codes else "none"
+        box = {"fill": fill, "class": f"column {place.kind}"}
+        boxes.append(rectangle(x - half, float(y[0]), 2 * half, float(y[1] - y[0]), box))
+    for depth in place.picks:
+        y_pick = float(frame.y.pixel((place.ground - depth) / metres))
+        boxes.append(line(x - 8, y_pick, x + 8, y_pick, "pick"))
+    top_pixel = float(frame.y.pixel(place.ground / metres))
+    turned = {"transform": f"translate({x + 3:.1f} {top_pixel - 5:.1f}) rotate(-50)", "class": "halo small"}
+    boxes.append(element("text", turned, ("" if place.kind == "sounding" else "well ") + place.name[:16]))
+    return joined(boxes)
+
+
+def draw_overview(results: Results) -> Markup:
+    """The region from above: bedrock elevation faded by doubt, the valley's axis, sections, soundings and wells."""
+    grid, region = results.stack.grid, results.region
+    west, south, east, north = grid.bounds
+    scale = min(640 / (east - west), 560 / (north - south))
+    wide, high = (east - west) * scale, (north - south) * scale
+    frame = Frame(Scale(west, east, 8, 8 + wide), Scale(south, north, 8 + high, 8))
+    surface = results.stack.surfaces.get("bedrock_elevation")
+    parts: list[Markup] = [rectangle(8, 8, wide, high, {"class": "frame nodata"})]
+    if surface is not None:
+        box = {"x": 8, "y": 8, "width": f"{wide:.1f}", "height": f"{high:.1f}"}
+        parts.append(embedded_image(faded_colours(surface), box))
+    if results.survey.boundary is not None:
+        parts += [_line(frame, one, "boundary") for one in lines_of([results.survey.boundary])]
+    axis = results.layers.get("valley_axis")
+    parts += [_line(frame, one, "valley") for one in (() if axis is None else lines_of(axis.geometry))]
+    for title, section in section_lines(results)[1:]:
+        end = section.coords[0]
+        at = float(frame.x.pixel(end[0])), float(frame.y.pixel(end[1]))
+        parts += [_line(frame, section, "cut"), label(*at, title[-1], "halo", "middle")]
+    parts += _overview_places(results, frame)
+    parts.append(_scale_bar(frame, region.crs_unit_metres, region.length_unit != "m"))
+    if surface is not None:
+        parts.append(_ramp_legend(results, 8 + wide + 24))
+    title = f"{region.name}: bedrock elevation, soundings and wells"
+    return drawing(int(wide + 170), int(max(high, 230) + 16), title, *parts)
+
+
+def _line(frame: Frame, one: Any, style: str) -> Markup:
+    x, y = np.asarray(one.coords)[:, :2].T
+    return polyline(frame.x.pixel(x), frame.y.pixel(y), style)
+
+
+def _overview_places(results: Results, frame: Frame) -> list[Markup]:
+    status = {column.sounding: column.bedrock_status for column in results.interpretation.columns}
+    marks = []
+    for sounding in results.survey.soundings:
+        x, y = float(frame.x.pixel(sounding.easting)), float(frame.y.pixel(sounding.northing))
+        shape = status_mark(status.get(sounding.name, "not_distinct"), x, y)
+        words = element("title", {}, sounding.name)
+        marks.append(element("path", {"d": shape, "class": f"mark {status.get(sounding.name, '')}"}, words))
+    for well in results.survey.wells:
+        x, y = float(frame.x.pixel(well.easting)), float(frame.y.pixel(well.northing))
+        cross = {"d": f"M{x - 4:.1f} {y - 4:.1f}h8v8h-8Z", "class": "mark well"}
+        marks.append(element("path", cross, element("title", {}, f"well {well.name}")))
+    return marks
+
+
+def status_mark(status: str, x: float, y: float) -> str:
+    """Circle: bedrock seen; diamond: not distinct; triangle pointing down: deeper than."""
+    return {
+        "seen": f"M{x - 4:.1f} {y:.1f}a4 4 0 1 0 8 0a4 4 0 1 0 -8 0Z",
+        "not_distinct": f"M{x:.1f} {y - 5:.1f}l5 5l-5 5l-5 -5Z",
+        "deeper_than": f"M{x - 4.6:.1f} {y - 4:.1f}h9.2l-4.6 8.4Z",
+    }[status]
+
+
+def _scale_bar(frame: Frame, crs_metres: float, miles: bool) -> Markup:
+    far, name = (1609.344, "mi") if miles else (1000.0, "km")
+    length = even_ticks(0.0, (frame.x.high - frame.x.low) * crs_metres / far, 5)[1]
+    pixels = length * far / crs_metres * (frame.x.end - frame.x.start) / (frame.x.high - frame.x.low)
+    x, y = 20.0, frame.y.start - 14
+    ends = path_data([x, x, x + pixels, x + pixels], [y - 5, y, y, y - 5])
+    return joined(
+        [
+            element("path", {"d": ends, "class": "scale-bar"}),
+            label(x + pixels / 2, y - 7, f"{tick_text(length)} {name}", "halo", "middle"),
+            element("path", {"d": f"M{x + 6} 50l6 -24l6 24l-6 -6Z", "class": "north"}),
+            label(x + 12, 22, "N", "halo", "middle"),
+        ]
+    )
+
+
+def _ramp_legend(results: Results, x: float) -> Markup:
+    surface = results.stack.surfaces["bedrock_elevation"]
+    low, high = value_range(surface.estimate)
+    metres = results.region.metres_per_length_unit
+    bar = ramp_colours(QUANTITY_RAMPS[surface.quantity])[::-1, None, :]
+    scale = Scale(low / metres, high / metres, 200, 34)
+    box = {"x": f"{x:.1f}", "y": 34, "width": 16, "height": 166}
+    return joined(
+        [
+            label(x, 20, f"bedrock ({unit_label(results.region.length_unit)})", "axis"),
+            embedded_image(bar, box),
+            *(label(x + 22, float(scale.pixel(tick)) + 4, tick_text(tick), "tick") for tick in scale.ticks(6)),
+            label(x, 222, "greyer: less sure", "tick"),
+        ]
+    )
+
+
+def describe_depth(results: Results, name: str, row: int, column: int) -> str:
+    """A surface's value at a cell with its 90 % band, in the region's unit."""
+    surface = results.stack.surfaces[name]
+    unit = results.region.length_unit
+    said = format_length(float(surface.estimate[row, column]), unit)
+    if surface.p05 is None or surface.p95 is None:
+        return said
+    low, high = float(surface.p05[row, column]), float(surface.p95[row, column])
+    return f"{said} (between {format_length(low, unit)} and {format_length(high, unit)})"
