@@ -174,13 +174,14 @@ def fit_by_least_squares(
 
 
 def variance_between_places(values: FloatArray, error_variance: FloatArray) -> float:
-    """Variance of the values that their own errors do not explain; never below a hundredth of what is seen.
+    """Variance of the values that their own errors do not explain; never below a hundredth of what their middle shows.
 
     Solves sum (y - m)² / (e + v) = n - 1 for v, m the weighted mean (Paule and Mandel 1982, J. Res. NBS 87, 377-385,
     from memory), so that a few values with large errors cannot inflate it. All values equal give a tiny number.
     """
     seen = float(np.var(values))
-    floor = max(0.01 * seen, 1e-6 * float(np.mean(values) ** 2), 1e-12)
+    middle = float(np.subtract(*np.percentile(values, (75, 25)))) / 1.349  # the deviation, were they normal
+    floor = max(0.01 * middle**2, 1e-6 * float(np.mean(values) ** 2), 1e-12)
 
     def excess(variance: float) -> float:
         weight = 1.0 / (error_variance + variance)

@@ -18,7 +18,15 @@ from geoves.kernels.covariances import (
     FloatArray,
     bounded_error_variance,
     covariance_matrix,
+    fit_covariance,
 )
+
+_SWEEPS = 400
+_DAMPING = 0.6
+_TOLERANCE = 1e-7  # of the posterior means, in deviations
+_ROUNDS = 10
+_SETTLED = 0.03  # of the logs of sill and length
+_TELLING = 100.0  # pseudo-variances beyond so many sills tell a fit nothing
 
 
 class Bounds(NamedTuple):
@@ -32,11 +40,6 @@ class Bounds(NamedTuple):
     bound: FloatArray
     side: FloatArray
     softness: FloatArray
-
-
-_SWEEPS = 400
-_DAMPING = 0.6
-_TOLERANCE = 1e-7  # of the posterior means, in deviations
 
 
 def _hazard(z: FloatArray) -> tuple[FloatArray, FloatArray]:
@@ -152,3 +155,30 @@ def bounds_as_values(
     working = np.where(idle, 1.0, precision)
     pseudo_variance = np.where(idle, ERROR_CEILING * covariance.sill, 1.0 / working)
     return np.where(idle, centre, mean + shift / working), pseudo_variance
+
+
+def fit_covariance_with_bounds(
+    points: FloatArray, values: FloatArray, error_variance: FloatArray, bounds: Bounds, model: str = "matern32"
+) -> tuple[Covariance, FloatArray, FloatArray]:
+    """Covariance fitted to data and bounds together, with the pseudo-values and pseudo-variances (m,) that go with it.
+
+    Bounds are turned into pseudo-data, the covariance fitted to all, and so on until both agree. At a fixed point of
+    expectation propagation the gradient of its evidence is that of the pseudo-data held fixed (Rasmussen and Williams
+    2006, sect. 5.5.2, from memory), so that what is settled on is the evidence of the bounds too, no draws needed.
+    Without bounds it is `fit_covariance`. Needs three data proper.
+    """
+    covariance = fit_covariance(points, values, error_variance, model)
+    for _ in range(_ROUNDS if len(bounds.bound) else 0):
+        pseudo_value, pseudo_variance = bounds_as_values(points, values, error_variance, bounds, covariance)
+        telling = pseudo_variance < _TELLING * covariance.sill
+        before = covariance
+        covariance = fit_covariance(
+            np.vstack((points, bounds.points[telling])),
+            np.concatenate((values, pseudo_value[telling])),
+            np.concatenate((error_variance, pseudo_variance[telling])),
+            model,
+        )
+        change = np.log([covariance.sill / before.sill, covariance.length / before.length])
+        if np.max(np.abs(change)) < _SETTLED:
+            break
+    return covariance, *bounds_as_values(points, values, error_variance, bounds, covariance)

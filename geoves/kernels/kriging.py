@@ -7,6 +7,7 @@ a cell is always a new place, so the nugget is in its variance, and no cell jump
 import numpy as np
 from pykrige.ok import OrdinaryKriging
 from scipy.linalg import cho_factor, cho_solve
+from threadpoolctl import threadpool_limits
 
 from geoves.kernels.covariances import (
     Covariance,
@@ -16,9 +17,6 @@ from geoves.kernels.covariances import (
     covariance_matrix,
     scale_coordinates,
 )
-
-# PyKrige's vectorised backend takes some 43 bytes a datum and cell: this many hold a block under 200 MB.
-_LARGEST_BLOCK = 4_000_000
 
 
 class _KrigingWithErrors(OrdinaryKriging):
@@ -53,6 +51,7 @@ class _KrigingWithErrors(OrdinaryKriging):
         return matrix
 
 
+@threadpool_limits.wrap(limits=1)  # blocks are small: threads cost more than they bring
 def krige(
     points: FloatArray,
     values: FloatArray,
@@ -60,15 +59,16 @@ def krige(
     cells: FloatArray,
     covariance: Covariance,
     *,
-    block: int = 4096,
+    block: int = 1024,
 ) -> tuple[FloatArray, FloatArray]:
     """Estimate and variance (m,) of the field at `cells` (m, 2), each taken as a new place.
 
     points : (n, 2), two or more, repeated places allowed      values, error_variance : (n,)
     The variance is that of the field about the estimate, nugget included, errors of the data not.
-    Cells are taken `block` at a time, fewer where data are many. Ordinary kriging: Matheron 1963; Isaaks and
-    Srivastava 1989, ch. 12. Checked in tests/published/test_ordinary_kriging.py, and against GSTools and dense
-    generalised least squares in tests/kernels/test_kriging.py.
+    Cells are taken `block` at a time, or n at a time where data are more; each holds some 43 bytes a datum and cell.
+    Ordinary kriging: Isaaks and Srivastava 1989, An Introduction to Applied Geostatistics, ch. 12. Checked in
+    tests/published/test_ordinary_kriging.py, and against GSTools and dense generalised least squares in
+    tests/kernels/test_kriging.py.
     """
     origin, level, sill = points.mean(axis=0), values.mean(), covariance.sill
     engine = _KrigingWithErrors(
@@ -78,7 +78,7 @@ def krige(
         covariance,
     )
     estimate, variance = np.empty(len(cells)), np.empty(len(cells))
-    step = max(1, min(block, _LARGEST_BLOCK // len(values)))
+    step = max(block, len(values))
     for start in range(0, len(cells), step):
         part = slice(start, start + step)
         scaled = scale_coordinates(cells[part], covariance, origin)
