@@ -1,0 +1,1 @@
+"""The invented county: its shapes, its truth, its soundings and its tables."""
