@@ -30,7 +30,8 @@ class Region:
     """A region's settings. `crs` as typed; `crs_unit_metres` the length of its unit in m; cell_size in that unit.
 
     `settings` holds the tables for the steps ("inversion", "interpretation", "surfaces", ...) as typed.
-    `files` names each input as typed with its path resolved; `fingerprints` their SHA-256.
+    `files` has the path of each input by its name ("soundings", "readings", ...); `typed_inputs` the same as typed, with
+    the sheet or layer after `#`; `input_length_units` those whose lengths are in another unit than length_unit.
     """
 
     name: str
@@ -46,6 +47,8 @@ class Region:
     delivery: Delivery = Delivery()
     settings: Mapping[str, Mapping[str, Any]] = attrs.field(factory=dict)
     files: Mapping[str, Path] = attrs.field(factory=dict)
+    typed_inputs: Mapping[str, str] = attrs.field(factory=dict)
+    input_length_units: Mapping[str, LengthUnit] = attrs.field(factory=dict)
 
     @property
     def metres_per_length_unit(self) -> float:

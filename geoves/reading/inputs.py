@@ -1,0 +1,37 @@
+"""The door: a region and its survey, or all faults at once."""
+
+from pathlib import Path
+
+from geoves.domain.grids import Grid
+from geoves.domain.region import Region
+from geoves.domain.survey import Survey
+from geoves.reading.faults import raise_faults
+from geoves.reading.region_file import parse_region
+from geoves.reading.survey import collect_survey
+
+
+def read_region(path: Path) -> Region:
+    """What region.toml says, every key checked.
+
+    Raises FaultyInputError (an InputError) with all its faults; those of the tables come with them where region.toml
+    says enough to read the tables.
+    """
+    file = parse_region(path)
+    if any(finding.severity == "fault" for finding in file.findings) and file.region is not None:
+        raise_faults((*file.findings, *collect_survey(file.region).findings))
+    raise_faults(file.findings)
+    if file.region is None:
+        raise AssertionError("a region without faults was not built")
+    return file.region
+
+
+def read_survey(region: Region) -> tuple[Survey, Grid]:
+    """All inputs in the region's CRS and in SI units, with the doubts met, and the grid for the surfaces.
+
+    Raises FaultyInputError (an InputError) with all faults of all inputs.
+    """
+    files = collect_survey(region)
+    raise_faults(files.findings)
+    if files.grid is None:
+        raise AssertionError("a survey without faults has no grid")
+    return files.survey, files.grid

@@ -1,0 +1,70 @@
+"""Places held against the ground raster and the boundary."""
+
+import math
+from collections.abc import Sequence
+from typing import Any
+
+import attrs
+import numpy as np
+import shapely
+
+from geoves.domain.findings import Finding
+from geoves.domain.grids import Grid
+from geoves.domain.region import METRES, Region
+from geoves.domain.survey import Permit
+from geoves.reading.grids import Place
+from geoves.reading.rasters import GroundReading
+from geoves.reading.tables import Row
+
+# A typed elevation further than this from the ground raster is doubted, m.
+ELEVATION_TOLERANCE = 10.0
+# Elevations in this ratio, either way, look like feet taken for metres.
+_FEET_IN_A_METRE = 1.0 / METRES["ft"]
+
+
+def check_elevations(places: Sequence[Place], rows: Sequence[Row], ground: GroundReading | None) -> list[Place]:
+    """The places, elevations that are not typed taken from the ground raster.
+
+    A fault where neither has one; a doubt where the typed one is further than ELEVATION_TOLERANCE from the raster.
+    """
+    at_places = [math.nan] * len(places) if ground is None else ground.at_places.tolist()
+    checked = []
+    for place, row, elevation in zip(places, rows, at_places, strict=True):
+        typed = place.ground_elevation
+        if math.isnan(typed) and not row.text("ground_elevation") and math.isnan(elevation):
+            where = "no ground raster is given" if ground is None else "the ground raster has none here"
+            row.complain("ground_elevation", f"empty; expected the elevation of the ground, as {where}")
+        elif abs(typed - elevation) > ELEVATION_TOLERANCE:
+            _doubt_elevation(row, typed, elevation)
+        checked.append(attrs.evolve(place, ground_elevation=elevation) if math.isnan(typed) else place)
+    return checked
+
+
+def _doubt_elevation(row: Row, typed: float, elevation: float) -> None:
+    ratio = typed / elevation if elevation else 0.0
+    feet = any(abs(ratio / factor - 1.0) < 0.05 for factor in (_FEET_IN_A_METRE, 1.0 / _FEET_IN_A_METRE))
+    hint = "; feet taken for metres, or the other way round?" if feet else "; is the place or the elevation right?"
+    row.doubt("ground_elevation", f"{typed:.1f} m, but the ground raster has {elevation:.1f} m here{hint}")
+
+
+def doubt_outside(places: Sequence[Place | Permit], rows: Sequence[Row], boundary: Any) -> None:
+    """A doubt for each place outside the boundary."""
+    shapely.prepare(boundary)
+    for place, row in zip(places, rows, strict=True):
+        known = math.isfinite(place.easting) and math.isfinite(place.northing)
+        if known and not shapely.intersects_xy(boundary, place.easting, place.northing):
+            row.doubt("x" if "x" in row.cells else "lon", "the place lies outside the boundary")
+
+
+def doubt_bare_cells(
+    region: Region, grid: Grid | None, ground: GroundReading | None, boundary: Any, findings: list[Finding]
+) -> None:
+    """A doubt where the ground raster leaves a part of the region without elevations."""
+    if grid is None or ground is None or ground.ground is None:
+        return
+    easting, northing = np.meshgrid(grid.easting, grid.northing)
+    inside = shapely.contains_xy(boundary, easting, northing)
+    bare = inside & np.isnan(ground.ground.elevation)
+    if bare.any():
+        words = f"the ground raster has no elevation in {bare.sum()} of the region's {inside.sum()} cells"
+        findings.append(Finding("doubt", region.typed_inputs["ground"], 0, "", "", words))

@@ -1,0 +1,175 @@
+"""All inputs of a region together: the survey and the grid that its surfaces will stand on."""
+
+from collections.abc import Callable, Sequence
+from typing import Any
+
+import attrs
+
+from geoves.domain.findings import Finding
+from geoves.domain.grids import Grid
+from geoves.domain.region import Region
+from geoves.domain.survey import Permit, Pick, Sounding, Survey, Well
+from geoves.reading.delimited import read_delimited
+from geoves.reading.faults import nearest
+from geoves.reading.grids import Place, lay_grid, locations
+from geoves.reading.permits import PERMIT_COLUMNS, read_permits
+from geoves.reading.picks import PICK_COLUMNS, read_picks
+from geoves.reading.places import check_elevations, doubt_bare_cells, doubt_outside
+from geoves.reading.rasters import read_ground
+from geoves.reading.readings import READING_COLUMNS
+from geoves.reading.soundings import SOUNDING_COLUMNS, read_soundings
+from geoves.reading.sources import Source, find_source
+from geoves.reading.tables import Row, Table, with_places
+from geoves.reading.vectors import VECTOR_SUFFIXES, read_boundary, read_point_table
+from geoves.reading.wells import LOG_COLUMNS, WELL_COLUMNS, read_wells
+
+# The tables: their columns, and the one that names a row's place.
+_TABLES = {
+    "soundings": (SOUNDING_COLUMNS, "sounding"),
+    "readings": (READING_COLUMNS, "sounding"),
+    "wells": (WELL_COLUMNS, "well"),
+    "well_logs": (LOG_COLUMNS, "well"),
+    "permits": (PERMIT_COLUMNS, "permit"),
+    "picks": (PICK_COLUMNS, "place"),
+}
+_CONTRACT_COLUMNS = {name for columns, _ in _TABLES.values() for name in columns.known}
+
+
+@attrs.frozen
+class SurveyFiles:
+    """What the inputs gave. Where there are faults the survey is in pieces, and the grid may be None."""
+
+    survey: Survey
+    grid: Grid | None
+    findings: tuple[Finding, ...]
+
+
+def collect_survey(region: Region) -> SurveyFiles:
+    """All inputs read, with all that is wrong or unlikely in them; nothing is raised."""
+    findings: list[Finding] = []
+    tables = {name: _read_table(region, name, findings) for name in _TABLES if name in region.files}
+    soundings, wells, permits, picks = _read_places(region, tables)
+    boundary = _read_with(region, "boundary", lambda source: read_boundary(source, region.crs, findings))
+    places: list[Place] = [*soundings, *wells]
+    grid = None
+    if boundary is not None or "boundary" not in region.files:
+        grid = lay_grid(region, boundary, places, findings)
+    ground = _read_with(
+        region, "ground", lambda source: read_ground(source, region.crs, grid, locations(places), findings)
+    )
+    rows = _rows_of(places, tables)
+    places = check_elevations(places, rows, ground)
+    if boundary is not None:
+        doubt_outside(places, rows, boundary)
+        doubt_outside(permits, _rows_of(permits, tables), boundary)
+        doubt_bare_cells(region, grid, ground, boundary, findings)
+    _check_withheld(region, tables, findings)
+    findings.extend(_doubt_region(region, tables))
+    ordered = _in_order(findings, region)
+    survey = Survey(
+        soundings=tuple(place for place in places if isinstance(place, Sounding)),
+        wells=tuple(place for place in places if isinstance(place, Well)),
+        permits=tuple(permits),
+        picks=tuple(picks),
+        ground=None if ground is None else ground.ground,
+        boundary=boundary,
+        doubts=tuple(finding for finding in ordered if finding.severity == "doubt"),
+    )
+    return SurveyFiles(survey, grid, ordered)
+
+
+def _read_with(region: Region, name: str, read: Callable[[Source], Any]) -> Any:
+    """What `read` makes of the input of that name, None where there is none."""
+    source = find_source(region, name)
+    return None if source is None else read(source)
+
+
+def _read_table(region: Region, name: str, findings: list[Finding]) -> Table | None:
+    columns, place_column = _TABLES[name]
+
+    def read(source: Source) -> Table | None:
+        if name == "permits" and source.suffix in VECTOR_SUFFIXES:
+            return read_point_table(source, region.crs, columns, findings)
+        return read_delimited(source, columns, findings)
+
+    table = _read_with(region, name, read)
+    return None if table is None else with_places(table, place_column)
+
+
+def _metres(region: Region, name: str) -> float:
+    source = find_source(region, name)
+    return region.metres_per_length_unit if source is None else source.metres
+
+
+def _read_places(
+    region: Region, tables: dict[str, Table | None]
+) -> tuple[list[Sounding], list[Well], list[Permit], list[Pick]]:
+    """Soundings, wells, permits and picks of the tables that could be read."""
+    found = {name: tables.get(name) for name in _TABLES}
+    metres = {name: _metres(region, name) for name in _TABLES}
+    soundings: list[Sounding] = []
+    wells: list[Well] = []
+    permits: list[Permit] = []
+    picks: list[Pick] = []
+    if (table := found["soundings"]) is not None:
+        both = metres["soundings"], metres["readings"]
+        soundings = read_soundings(table, found["readings"], region.crs, both)
+    if (table := found["wells"]) is not None:
+        both = metres["wells"], metres["well_logs"]
+        wells = read_wells(table, found["well_logs"], region.crs, both, region.template)
+    if (table := found["permits"]) is not None:
+        permits = read_permits(table, region.crs, metres["permits"])
+    places_known = found["soundings"] is not None and (found["wells"] is not None or "wells" not in region.files)
+    if (table := found["picks"]) is not None and places_known:
+        names = (_names(found[name], column) for name, column in (("soundings", "sounding"), ("wells", "well")))
+        picks = read_picks(table, metres["picks"], region.template, *names)
+    return soundings, wells, permits, picks
+
+
+def _names(table: Table | None, column: str) -> set[str]:
+    return set() if table is None else {row.text(column) for row in table.rows}
+
+
+def _rows_of(places: Sequence[Sounding | Well | Permit], tables: dict[str, Table | None]) -> list[Row]:
+    """The row of each place in its table."""
+    kinds = {Sounding: "soundings", Well: "wells", Permit: "permits"}
+    by_name: dict[tuple[str, str], Row] = {}
+    for kind in kinds.values():
+        table = tables.get(kind)
+        for row in () if table is None else table.rows:
+            by_name.setdefault((kind, row.place), row)
+    return [by_name[kinds[type(place)], place.name] for place in places]
+
+
+def _check_withheld(region: Region, tables: dict[str, Table | None], findings: list[Finding]) -> None:
+    """A fault for a column to withhold that no table has: a slip there would publish what should stay at home."""
+    read = [table for table in tables.values() if table is not None]
+    if len(read) < len(tables):
+        return
+    strangers = {heading for table in read for heading in table.headings} - _CONTRACT_COLUMNS
+    for column in region.delivery.withhold:
+        if column in _CONTRACT_COLUMNS:
+            words = "a column that geoves itself uses; only extra columns can be withheld"
+            findings.append(Finding("fault", region.path.name, 0, "delivery.withhold", column, words))
+        elif column not in strangers:
+            words = f"no table has such an extra column{nearest(column, sorted(strangers))}"
+            findings.append(Finding("fault", region.path.name, 0, "delivery.withhold", column, words))
+
+
+def _doubt_region(region: Region, tables: dict[str, Table | None]) -> list[Finding]:
+    doubts = []
+    if region.vertical_datum is None:
+        words = "no vertical datum is declared: nobody can say from which zero the elevations count"
+        doubts.append(Finding("doubt", region.path.name, 0, "region.vertical_datum", "", words))
+    wells = tables.get("wells")
+    shared = _names(tables.get("soundings"), "sounding") & _names(wells, "well")
+    for row in () if wells is None else wells.rows:
+        if row.place in shared:
+            row.doubt("well", "a sounding has this name too")
+    return doubts
+
+
+def _in_order(findings: Sequence[Finding], region: Region) -> tuple[Finding, ...]:
+    """By file in the order of region.toml, then by row."""
+    files = [region.path.name, *dict.fromkeys(region.typed_inputs.values())]
+    return tuple(sorted(findings, key=lambda finding: (files.index(finding.file), finding.row)))
