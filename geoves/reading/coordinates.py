@@ -41,10 +41,9 @@ def _project(degrees: Sequence[tuple[float, float]], crs: str) -> list[tuple[flo
     transformer = pyproj.Transformer.from_crs(LONGITUDE_LATITUDE, crs, always_xy=True)
     longitude, latitude = _columns(degrees)
     easting, northing = transformer.transform(longitude, latitude)
-    finite = np.isfinite(easting) & np.isfinite(northing)
-    return list(
-        zip(np.where(finite, easting, np.nan).tolist(), np.where(finite, northing, np.nan).tolist(), strict=True)
-    )
+    places = np.column_stack([easting, northing])
+    places[~np.isfinite(places).all(axis=1)] = np.nan
+    return [(float(east), float(north)) for east, north in places]
 
 
 def _doubt_far_places(rows: Sequence[Row], places: Sequence[tuple[float, float]], crs: str, column: str) -> None:

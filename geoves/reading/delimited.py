@@ -1,7 +1,7 @@
 """Tables in files: CSV of any separator, sheets of a workbook. Cells come back as text on one line."""
 
 import csv
-import datetime
+import datetime as dt
 import io
 import warnings
 import zipfile
@@ -121,13 +121,13 @@ def _without_blank_end(rows: Iterator[tuple[Any, ...]]) -> list[list[str]]:
 def cell_text(value: Any) -> str:
     """A typed cell as a person would type it: whole numbers without a point, days without an hour.
 
-    >>> cell_text(12.0), cell_text(0.5), cell_text(datetime.datetime(2024, 5, 1)), cell_text(None)
+    >>> cell_text(12.0), cell_text(0.5), cell_text(dt.datetime(2024, 5, 1)), cell_text(None)
     ('12', '0.5', '2024-05-01', '')
     """
     if value is None or value != value:  # noqa: PLR0124 - NaN is not itself, and stands for an empty cell
         return ""
     if isinstance(value, float) and value.is_integer() and abs(value) < 1e15:
         return str(int(value))
-    if isinstance(value, datetime.datetime) and value.time() == datetime.time():
+    if isinstance(value, dt.datetime) and value.time() == dt.time():
         return value.date().isoformat()
     return printable(str(value))

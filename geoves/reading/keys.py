@@ -3,7 +3,7 @@
 import math
 import re
 from collections.abc import Mapping, Sequence
-from typing import Any
+from typing import Any, TypeGuard
 
 import attrs
 
@@ -12,9 +12,9 @@ from geoves.reading.faults import in_words, nearest, printable
 
 
 def line_of(text: str, table: str, key: str, index: int = 0) -> int:
-    """The line of `key` in `table` (its `index`-th where it is an array of tables), the table's own, or 0.
+    r"""The line of `key` in `table` (its `index`-th where it is an array of tables), the table's own, or 0.
 
-    >>> line_of("[region]\\nname = 'L'\\n[[unit]]\\n[[unit]]\\ncode = 'g'", "unit", "code", 1)
+    >>> line_of("[region]\nname = 'L'\n[[unit]]\n[[unit]]\ncode = 'g'", "unit", "code", 1)
     5
     """
     opening, found, current, seen = 0, 0, "", -1
@@ -102,6 +102,6 @@ class Keys:
         return float(value[0]), float(value[1])
 
 
-def is_number(value: Any) -> bool:
+def is_number(value: Any) -> TypeGuard[float]:
     """Whether the value is a finite number, which true and false are not."""
     return isinstance(value, int | float) and not isinstance(value, bool) and math.isfinite(value)

@@ -54,7 +54,7 @@ def read_ground(
         refuse_file(source, f"not a raster that can be read ({printable(str(error))[:80]})", findings)
         return None
     _check_elevations(source, at_places if on_grid is None else on_grid, findings)
-    return GroundReading(None if grid is None else Ground(grid, on_grid), at_places)
+    return GroundReading(None if grid is None or on_grid is None else Ground(grid, on_grid), at_places)
 
 
 def _unfit(raster: rasterio.DatasetReader) -> str:
@@ -106,7 +106,7 @@ def _sample(raster: rasterio.DatasetReader, crs: str, places: Sequence[tuple[flo
 
 
 def _bilinear(raster: rasterio.DatasetReader, row: float, column: float) -> float:
-    """Between the centres of the four cells around; within half a cell of the raster's edge, from those that there are."""
+    """Between the centres of the four cells around; at the raster's edge, from those that there are."""
     if not (-0.5 <= row <= raster.height - 0.5 and -0.5 <= column <= raster.width - 0.5):
         return np.nan
     top, left = int(np.floor(row)), int(np.floor(column))

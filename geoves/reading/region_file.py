@@ -12,7 +12,6 @@ from pyproj.exceptions import CRSError
 
 from geoves.domain.findings import Finding
 from geoves.domain.region import METRES, Delivery, LengthUnit, Region
-from geoves.domain.units import Template
 from geoves.reading.faults import in_words, nearest, printable
 from geoves.reading.keys import Keys
 from geoves.reading.sources import INPUTS, REQUIRED_INPUTS, WITH_LENGTHS, split_part
@@ -238,8 +237,3 @@ def _read_settings(tables: Mapping[str, list[Keys]]) -> dict[str, dict[str, Any]
     settings = {name: dict(tables[name][0].values) for name in STEP_TABLES if tables[name][0].values}
     settings.get("interpretation", {}).pop("method", None)
     return {name: options for name, options in settings.items() if options}
-
-
-def empty_template(region: Region) -> bool:
-    """Whether the template has no unit that could be read."""
-    return region.template == Template(())

@@ -5,7 +5,7 @@ import math
 from geoves.domain.survey import Array, Sounding
 from geoves.reading.coordinates import locate_rows
 from geoves.reading.faults import in_words
-from geoves.reading.readings import READING_COLUMNS, read_curves
+from geoves.reading.readings import read_curves
 from geoves.reading.tables import COORDINATES, Columns, Range, Row, Table, extras, refuse_repeated
 
 SOUNDING_COLUMNS = Columns(
@@ -75,6 +75,3 @@ def _read_array(row: Row) -> Array:
     if typed not in _ARRAYS:
         row.complain("array", f"expected {in_words(['schlumberger', 'wenner'])}")
     return _ARRAYS.get(typed, "schlumberger")
-
-
-__all__ = ["ELEVATION", "READING_COLUMNS", "SOUNDING_COLUMNS", "read_elevation", "read_soundings"]

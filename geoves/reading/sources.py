@@ -19,7 +19,7 @@ _BESIDE_SHAPEFILE = (".dbf", ".shx", ".prj", ".cpg")
 
 @attrs.frozen
 class Source:
-    """One input: `typed` as region.toml names it, its file, the sheet or layer in it, and the metres in its length unit."""
+    """One input: as region.toml names it, its file, the sheet or layer in it, the metres in its length unit."""
 
     name: str
     typed: str

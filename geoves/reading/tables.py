@@ -173,9 +173,8 @@ def _refuse_cells_without_heading(row: Row, headings: Sequence[str], cells: Sequ
 def check_columns(table: Table, columns: Columns, findings: list[Finding]) -> bool:
     """Whether all needed columns are there; a fault for each that is not, with the heading that may be meant."""
     before = len(findings)
-    for name in columns.required:
-        if name not in table.headings:
-            findings.append(_missing(table, name, f"expected a column {name!r}", columns.known))
+    absent = [name for name in columns.required if name not in table.headings]
+    findings.extend(_missing(table, name, f"expected a column {name!r}", columns.known) for name in absent)
     for choice in columns.alternatives:
         if not any(table.has(*names) for names in choice):
             words = in_words([" with ".join(names) for names in choice])

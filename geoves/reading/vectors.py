@@ -83,11 +83,9 @@ def _read_features(source: Source, crs: str, findings: list[Finding]) -> gpd.Geo
     try:
         layer = _find_layer(source)
         features = gpd.read_file(source.path, layer=layer, engine="pyogrio")
-        if not isinstance(features, gpd.GeoDataFrame) or features.empty:
-            raise _LayerError("no features with a geometry; expected at least one")
-        if features.crs is None:
-            raise _LayerError("does not say its CRS; add it (a shapefile needs its .prj)")
-        return features.to_crs(crs)
+        if not (expected := _unfit(features)):
+            return features.to_crs(crs)
+        refuse_file(source, expected, findings)
     except _LayerError as error:
         refuse_file(source, str(error), findings)
     except _UNREADABLE as error:
@@ -96,7 +94,16 @@ def _read_features(source: Source, crs: str, findings: list[Finding]) -> gpd.Geo
 
 
 class _LayerError(Exception):
-    """The file has not the layer that is meant, or the layer not what is needed."""
+    """The file has not the layer that is meant."""
+
+
+def _unfit(features: Any) -> str:
+    """Why the features cannot be placed, in words; empty where they can."""
+    if not isinstance(features, gpd.GeoDataFrame) or features.empty:
+        return "no features with a geometry; expected at least one"
+    if features.crs is None:
+        return "does not say its CRS; add it (a shapefile needs its .prj)"
+    return ""
 
 
 def _find_layer(source: Source) -> str:
