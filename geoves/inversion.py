@@ -65,7 +65,9 @@ def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map 
     fitting = [s for s in survey.soundings if np.sum(s.curve.used) >= options.fewest_readings]
     if not fitting:
         return ()
-    wavenumber = wavenumbers(fitting)
+    wavenumber = layered_earth.shared_wavenumbers(
+        (s.curve.half_spacing, s.curve.potential_half_spacing) for s in fitting
+    )
     blocks = [fitting[i : i + options.block] for i in range(0, len(fitting), options.block)]
     first = partial(_pooled_residuals, options=options, wavenumber=wavenumber)
     noise = _survey_noise(np.concatenate(list(map(first, blocks))), options)
@@ -73,19 +75,11 @@ def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map 
     return tuple(chain.from_iterable(map(second, blocks)))
 
 
-def wavenumbers(soundings: Sequence[Sounding]) -> FloatArray:
-    """One grid of wavenumbers (l,) that serves all used readings."""
-    used = [(s.curve.half_spacing[s.curve.used], s.curve.potential_half_spacing[s.curve.used]) for s in soundings]
-    shortest = min(float(np.min(a - b)) for a, b in used)
-    longest = max(float(np.max(a + b)) for a, b in used)
-    return layered_earth.wavenumber_grid(shortest, longest)
-
-
 def invert_block(
     soundings: Sequence[Sounding], *, options: InversionOptions, wavenumber: FloatArray, noise: float
 ) -> list[Inverted]:
     """The blocky models of some soundings with a known noise."""
-    curves = damped_steps.stack_curves([_readings(s, noise) for s in soundings], wavenumber)
+    curves = damped_steps.stack_curves([Readings(*s.curve.readings(noise)) for s in soundings], wavenumber)
     fits = _fit_all_counts(curves, soundings, options)
     evidence = np.array([fit.log_evidence for fit in fits.values()])
     counts = list(fits)
@@ -94,19 +88,6 @@ def invert_block(
         _describe(sounding, curves.take(np.array([i])), fits[k].take(i), noise, options, -evidence[:, i])
         for i, (sounding, k) in enumerate(zip(soundings, chosen, strict=True))
     ]
-
-
-def _readings(sounding: Sounding, noise: float) -> Readings:
-    curve, used = sounding.curve, sounding.curve.used
-    error = np.where(np.isnan(curve.relative_error), noise, curve.relative_error)
-    _, segment = np.unique(curve.segment[used], return_inverse=True)
-    return Readings(
-        curve.half_spacing[used],
-        curve.potential_half_spacing[used],
-        curve.apparent_resistivity[used],
-        error[used],
-        segment,
-    )
 
 
 def _pooled_residuals(
@@ -228,8 +209,11 @@ def _describe(
         ensemble=ModelEnsemble(draws[:, : k - 1], draws[:, k - 1 :], np.full(options.draws, 1.0 / options.draws)),
         log_covariance=np.linalg.inv(fit.hessian[0])[:n_model, :n_model],
         segment_factor=np.concatenate([[1.0], np.exp(unknowns[n_model : n_model + n_segments - 1])]),
-        predicted=layered_earth.apparent_resistivity(
-            curve.half_spacing, curve.potential_half_spacing, model.thickness[None], model.resistivity[None]
+        predicted=layered_earth.response(
+            layered_earth.response_weights(curve.half_spacing, curve.potential_half_spacing, curves.wavenumber),
+            curves.wavenumber,
+            model.thickness[None],
+            model.resistivity[None],
         )[0],
         robust_weight=robust,
         rms_percent=100.0 * rms,

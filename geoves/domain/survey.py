@@ -5,6 +5,7 @@ from types import MappingProxyType
 from typing import Any, Literal
 
 import attrs
+import numpy as np
 
 from geoves.domain.arrays import BoolArray, FloatArray, IntArray, booleans, by_value, floats, integers, shape
 from geoves.domain.findings import Finding
@@ -38,6 +39,22 @@ class Curve:
     used: BoolArray = attrs.field(converter=booleans, eq=by_value, repr=shape)
     reason: tuple[str, ...] = ()
     row: IntArray = attrs.field(default=(), converter=integers, eq=by_value, repr=shape)
+
+    def readings(self, noise: float) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, IntArray]:
+        """The used readings as arrays: spacings, apparent resistivity, error (`noise` where none is typed), segment.
+
+        Segments are numbered anew, without gaps, so that 0 is the first that has a used reading.
+        """
+        used = self.used
+        error = np.where(np.isnan(self.relative_error), noise, self.relative_error)
+        _, segment = np.unique(self.segment[used], return_inverse=True)
+        return (
+            self.half_spacing[used],
+            self.potential_half_spacing[used],
+            self.apparent_resistivity[used],
+            error[used],
+            segment,
+        )
 
 
 @attrs.frozen

@@ -8,6 +8,7 @@ shared grid of wavenumbers and with the finite potential spread), T on the layer
 [2] Koefoed, O., 1979, Geosounding Principles 1, Elsevier: the recurrence of the resistivity transform.
 """
 
+from collections.abc import Iterable
 from functools import lru_cache
 
 import libdlf
@@ -22,6 +23,9 @@ SPLINE_DEGREE = 7
 POINTS_PER_DECADE = 16
 # Filter abscissae (wavenumber times spacing) outside of this range add less than 1e-8 of the response.
 LOWEST_ABSCISSA, HIGHEST_ABSCISSA = 3e-4, 400.0
+# The grid serves spacings down to this (m) whatever the array, so that T - rho_1 has died away at its upper end
+# over a first layer of a centimetre too.
+SHORTEST_SERVED = 0.25
 # Gauss-Legendre points over the potential spread: error 3e-8 at MN/AB = 1/5.
 SPREAD_NODES, SPREAD_WEIGHTS = np.polynomial.legendre.leggauss(4)
 
@@ -53,9 +57,17 @@ def geometric_factor(half_spacing: Floats, potential_half_spacing: Floats) -> Fl
 
 def wavenumber_grid(shortest: float, longest: float) -> Floats:
     """Wavenumbers (1/m), evenly spaced in the log, that serve all spacings from `shortest` to `longest` (m)."""
-    first, last = np.log(LOWEST_ABSCISSA / longest), np.log(HIGHEST_ABSCISSA / shortest)
+    first, last = np.log(LOWEST_ABSCISSA / longest), np.log(HIGHEST_ABSCISSA / min(shortest, SHORTEST_SERVED))
     count = int(np.ceil((last - first) / np.log(10.0) * POINTS_PER_DECADE)) + 1
     return np.exp(np.linspace(first, last, count))
+
+
+def shared_wavenumbers(spacings: Iterable[tuple[Floats, Floats]]) -> Floats:
+    """One grid of wavenumbers (1/m) that serves several curves, each given as (AB/2, MN/2) in m."""
+    pairs = list(spacings)
+    shortest = min(float(np.min(a - b)) for a, b in pairs)
+    longest = max(float(np.max(a + b)) for a, b in pairs)
+    return wavenumber_grid(shortest, longest)
 
 
 def response_weights(half_spacing: Floats, potential_half_spacing: Floats, wavenumber: Floats) -> Floats:
@@ -67,11 +79,23 @@ def response_weights(half_spacing: Floats, potential_half_spacing: Floats, waven
     A finite potential spread is the mean of the ideal response over u = 1/r, u uniform on [1/(a + b), 1/(a - b)]:
     the potential difference is the integral of the field, and the field goes with rho_a(r) / r².
     """
-    a, b = np.asarray(half_spacing)[:, None], np.asarray(potential_half_spacing)[:, None]
+    return _weights(
+        *(
+            np.ascontiguousarray(values, dtype=float).tobytes()
+            for values in (half_spacing, potential_half_spacing, wavenumber)
+        )
+    )
+
+
+@lru_cache(maxsize=1024)
+def _weights(half_spacing: bytes, potential_half_spacing: bytes, wavenumber_bytes: bytes) -> Floats:
+    """`response_weights`, remembered: crews keep to a few electrode layouts. Some 30 kB each."""
+    a, b = np.frombuffer(half_spacing)[:, None], np.frombuffer(potential_half_spacing)[:, None]
+    wavenumber = np.frombuffer(wavenumber_bytes)
     near, far = 1.0 / (a - b), 1.0 / (a + b)
     spacing = 1.0 / (0.5 * (near + far) + 0.5 * (near - far) * SPREAD_NODES)
     base, weight = _hankel_filter()
-    knots, collocation = _spline_basis(wavenumber.tobytes())
+    knots, collocation = _spline_basis(wavenumber_bytes)
     log_grid = np.log(wavenumber)
     log_points = (np.log(base) - np.log(spacing)[..., None]).reshape(-1)
     # Below the grid the transform is flat, above it T - rho_1 is nothing.
@@ -79,7 +103,9 @@ def response_weights(half_spacing: Floats, potential_half_spacing: Floats, waven
     folded = np.tile(np.outer(0.5 * SPREAD_WEIGHTS, weight).reshape(-1), a.shape[0]) * (log_points <= log_grid[-1])
     row = np.repeat(np.arange(a.shape[0]), folded.size // a.shape[0])
     fold = csr_array((folded, (row, np.arange(folded.size))), shape=(a.shape[0], folded.size))
-    return np.asarray(np.linalg.solve(collocation.T, (fold @ basis).toarray().T).T)
+    weights = np.linalg.solve(collocation.T, (fold @ basis).toarray().T).T
+    weights.flags.writeable = False
+    return np.asarray(weights)
 
 
 def response(weights: Floats, wavenumber: Floats, thickness: Floats, resistivity: Floats) -> Floats:
@@ -162,7 +188,7 @@ def apparent_resistivity_and_sensitivity(
 def layout(half_spacing: Floats, potential_half_spacing: Floats) -> tuple[Floats, Floats]:
     """`response_weights` (n, l) with a grid of wavenumbers (l,) of their own."""
     a, b = np.asarray(half_spacing, dtype=float), np.asarray(potential_half_spacing, dtype=float)
-    wavenumber = wavenumber_grid(float(np.min(a - b)), float(np.max(a + b)))
+    wavenumber = shared_wavenumbers([(a, b)])
     return response_weights(a, b, wavenumber), wavenumber
 
 

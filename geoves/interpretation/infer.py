@@ -1,0 +1,127 @@
+"""The step itself: all places of a survey, block by block."""
+
+from collections.abc import Callable, Iterable, Sequence
+from functools import partial
+from itertools import chain
+from typing import Any
+
+import attrs
+import numpy as np
+
+from geoves.domain.arrays import FloatArray
+from geoves.domain.earth import Inverted
+from geoves.domain.survey import Pick, Sounding, Survey, Well
+from geoves.domain.tops import Interpretation, ShallowResistivity, Thickness, Top, UnitColumn, WellReading
+from geoves.domain.units import Role, Template
+from geoves.interpretation import sequences, soundings, wells
+from geoves.interpretation.options import InterpretationOptions
+from geoves.kernels import damped_steps, layered_earth
+from geoves.kernels.damped_steps import Readings
+
+Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
+
+
+@attrs.frozen
+class PlaceReading:
+    """What one place adds to the interpretation."""
+
+    column: UnitColumn | None = None
+    well_readings: tuple[WellReading, ...] = ()
+    tops: tuple[Top, ...] = ()
+    thicknesses: tuple[Thickness, ...] = ()
+    shallow_resistivities: tuple[ShallowResistivity, ...] = ()
+
+
+def interpret(
+    survey: Survey,
+    inverted: Sequence[Inverted],
+    template: Template,
+    options: InterpretationOptions | None = None,
+    *,
+    map: Map = map,  # noqa: A002 - the seam is named for what it replaces
+) -> Interpretation:
+    """Every sounding that was inverted and every well, read through the template, with the picks on top.
+
+    Columns come in the order of `inverted`. Soundings are weighed in blocks through the map-like callable.
+    """
+    options = options or InterpretationOptions()
+    by_name = {sounding.name: sounding for sounding in survey.soundings}
+    pairs = [(by_name[one.sounding], one) for one in inverted]
+    picks = {pick.place: [p for p in survey.picks if p.place == pick.place] for pick in survey.picks}
+    readings: list[PlaceReading] = []
+    if pairs:
+        wavenumber = layered_earth.shared_wavenumbers(
+            (s.curve.half_spacing, s.curve.potential_half_spacing) for s, _ in pairs
+        )
+        work = partial(_interpret_block, picks=picks, template=template, options=options, wavenumber=wavenumber)
+        blocks = [pairs[i : i + options.block] for i in range(0, len(pairs), options.block)]
+        readings += chain.from_iterable(map(work, blocks))
+    readings += [_interpret_well(well, picks.get(well.name, []), template, options) for well in survey.wells]
+    words = tuple(chain.from_iterable(reading.well_readings for reading in readings))
+    return Interpretation(
+        columns=tuple(reading.column for reading in readings if reading.column),
+        well_readings=words,
+        tops=tuple(chain.from_iterable(reading.tops for reading in readings)),
+        thicknesses=tuple(chain.from_iterable(reading.thicknesses for reading in readings)),
+        shallow_resistivities=tuple(chain.from_iterable(r.shallow_resistivities for r in readings)),
+        unmapped_words=tuple(sorted({word.description for word in words if word.unit is None})),
+    )
+
+
+def _interpret_block(
+    pairs: Sequence[tuple[Sounding, Inverted]],
+    *,
+    picks: dict[str, list[Pick]],
+    template: Template,
+    options: InterpretationOptions,
+    wavenumber: FloatArray,
+) -> list[PlaceReading]:
+    curves = damped_steps.stack_curves([Readings(*s.curve.readings(one.noise)) for s, one in pairs], wavenumber)
+    admissible = sequences.admissible_sequences(template, options.presence)
+    fits = sequences.fit_sequences(admissible, template, curves)
+    log_weight = sequences.weigh_sequences(admissible, fits, template)
+    results = []
+    for i, (sounding, inverted) in enumerate(pairs):
+        generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
+        own_fits, own_weight = [fit.take(i) for fit in fits], log_weight[:, i]
+        draws = sequences.draw_columns(admissible, own_fits, own_weight, template, options, generator)
+        half_space, _ = sequences.best_half_space(admissible, own_fits, own_weight)
+        bound = soundings.excluded_depth(half_space, curves.take(np.array([i])), template, options)
+        contact = soundings.find_basal_contact(draws, bound, template, options)
+        contact = soundings.apply_picks(contact, picks.get(sounding.name, []), template, generator)
+        results.append(_read_sounding(sounding, inverted, draws, contact, template, options))
+    return results
+
+
+def _read_sounding(
+    sounding: Sounding,
+    inverted: Inverted,
+    draws: sequences.ColumnDraws,
+    contact: soundings.BasalContact,
+    template: Template,
+    options: InterpretationOptions,
+) -> PlaceReading:
+    decided = contact.picks[-1] if contact.picks else None
+    source = f"pick by {decided.interpreter}: {decided.reason}" if decided else "curve"
+    thicknesses: list[Thickness] = []
+    if contact.status != "deeper_than" and template.with_role(Role.DEEP_AQUIFER):
+        thicknesses += soundings.role_thickness(sounding, contact.gravel, Role.DEEP_AQUIFER, options, source)
+    shallow = soundings.role_mask(template, Role.SHALLOW_AQUIFER)
+    if np.any(shallow):
+        values = draws.thickness[:, shallow].sum(axis=1)
+        thicknesses += soundings.role_thickness(
+            sounding, values[~np.isnan(values)], Role.SHALLOW_AQUIFER, options, "curve"
+        )
+    return PlaceReading(
+        column=soundings.read_column(inverted, draws, contact, template),
+        tops=tuple(soundings.contact_tops(sounding, contact, template, options)),
+        thicknesses=tuple(thicknesses),
+        shallow_resistivities=tuple(soundings.shallow_resistivity(sounding, draws, template)),
+    )
+
+
+def _interpret_well(well: Well, picks: list[Pick], template: Template, options: InterpretationOptions) -> PlaceReading:
+    readings = wells.read_log(well, template, options)
+    tops, thicknesses = wells.well_tops(well, readings, template, options)
+    tops, thicknesses = wells.apply_well_picks(tops, thicknesses, well, picks, template)
+    return PlaceReading(well_readings=tuple(readings), tops=tuple(tops), thicknesses=tuple(thicknesses))

@@ -1,0 +1,46 @@
+"""What an interpretation may be told, and its defaults."""
+
+from collections.abc import Mapping
+from types import MappingProxyType
+
+import attrs
+
+from geoves.domain.units import Role
+
+# Thickness (m) that a unit of a role shows, central 90 %, where it is present: broad, outwash plains (common practice).
+THICKNESS_BY_ROLE: Mapping[str, tuple[float, float]] = MappingProxyType(
+    {
+        Role.COVER: (0.8, 20.0),
+        Role.SHALLOW_AQUIFER: (2.0, 25.0),
+        Role.CONFINING: (3.0, 120.0),
+        Role.DEEP_AQUIFER: (2.0, 30.0),
+    }
+)
+
+
+@attrs.frozen
+class InterpretationOptions:
+    """presence                 prior probability that a unit of the template is present at a place
+    draws                       columns drawn for each sounding from the weighed sequences
+    seen_log_bayes_factor       a basal contact is seen where sequences with it beat those without by this (nats) ...
+    seen_log_depth_deviation    ... and where its log depth is known this well
+    broad_log_depth_deviation   a contact known worse than this is no datum at all
+    notice_chi_square           a bound is set where basal material would change the curve by this much
+    relative_depth_floor        least error of a sounding's depth: ground is never quite layered
+    well_contact_error          least error (m) of a contact in a driller's log
+    well_relative_error         and its growth with depth
+    least_match                 how alike (0 to 100) a driller's word and a term must be
+    """
+
+    presence: float = 0.5
+    draws: int = 400
+    seen_log_bayes_factor: float = 2.3
+    seen_log_depth_deviation: float = 0.2
+    broad_log_depth_deviation: float = 0.6
+    notice_chi_square: float = 16.0
+    relative_depth_floor: float = 0.05
+    well_contact_error: float = 0.3
+    well_relative_error: float = 0.01
+    least_match: float = 84.0
+    block: int = 32
+    random_seed: int = 0

@@ -1,0 +1,263 @@
+"""One sounding's draws as tops, thicknesses and words."""
+
+from collections.abc import Sequence
+
+import attrs
+import numpy as np
+
+from geoves.domain.arrays import BoolArray, FloatArray
+from geoves.domain.earth import Inverted
+from geoves.domain.survey import Pick, Sounding
+from geoves.domain.tops import BedrockStatus, ShallowResistivity, Thickness, Top, UnitColumn
+from geoves.domain.units import Z_95, Role, Template
+from geoves.interpretation.options import THICKNESS_BY_ROLE, InterpretationOptions
+from geoves.interpretation.sequences import ColumnDraws, HalfSpace
+from geoves.kernels import layered_earth, unit_sequence
+from geoves.kernels.damped_steps import Curves
+
+# A thickness datum is kept where the curve adds this much to what the prior already knows (share of its precision).
+LEAST_GAIN = 0.25
+# A bound lies no deeper than this quantile of the contact's depth where at least this share of draws still reach it.
+LOWEST_ALLOWED, LEAST_ALLOWED = 0.05, 0.02
+# Present means at least this thick, m.
+PRESENT = 1.0
+
+
+@attrs.frozen
+class BasalContact:
+    """What the draws say of the basal contact and the rock under it; depths in m.
+
+    depth, gravel : (m,) of the draws that reach it, equally probable    bound : m, 0 where the curve excludes nothing
+    log_deviation : of the contact's depth    pick : the interpreter's decision that was applied
+    """
+
+    depth: FloatArray
+    gravel: FloatArray
+    status: BedrockStatus
+    bound: float
+    log_deviation: float
+    picks: tuple[Pick, ...] = ()
+
+    @property
+    def rock(self) -> FloatArray:
+        return self.depth + self.gravel
+
+
+def role_mask(template: Template, role: Role) -> BoolArray:
+    """Which units (u,) have a role."""
+    return np.array([unit.role is role for unit in template.units])
+
+
+def find_basal_contact(
+    draws: ColumnDraws, bound: float, template: Template, options: InterpretationOptions
+) -> BasalContact:
+    """The contact on which basal gravel or rock begins, and whether this curve sees it."""
+    deep, rock = role_mask(template, Role.DEEP_AQUIFER), role_mask(template, Role.BEDROCK)
+    thickness = draws.thickness[draws.reaches]
+    depth = np.maximum(thickness[:, ~deep & ~rock].sum(axis=1), 0.1)
+    gravel = thickness[:, deep].sum(axis=1)
+    deviation = float(np.std(np.log(depth))) if depth.size > 1 else np.inf
+    hinted = draws.log_bayes_factor > options.seen_log_bayes_factor and deviation < options.broad_log_depth_deviation
+    if draws.log_bayes_factor > options.seen_log_bayes_factor and deviation < options.seen_log_depth_deviation:
+        return BasalContact(depth, gravel, "seen", 0.0, deviation)
+    # What sequences with the contact still allow, the curve has not excluded.
+    allowed = float(np.quantile(depth, LOWEST_ALLOWED)) if depth.size > LEAST_ALLOWED * draws.reaches.size else np.inf
+    bound = 0.0 if hinted else min(bound, allowed)
+    return BasalContact(depth, gravel, "deeper_than" if bound > 0 else "not_distinct", bound, deviation)
+
+
+def excluded_depth(model: HalfSpace, curves: Curves, template: Template, options: InterpretationOptions) -> float:
+    """Depth (m) above which basal material would have been noticed under the model that ends above it; 0 for none.
+
+    At each depth the half-space is replaced by basal gravel or rock of every resistivity that the template allows
+    (5, 50 and 95 % of each); the curve must change by `notice_chi_square` for all of them, here and at lesser depths.
+    """
+    basal = [unit for unit in template.units if unit.role in {Role.DEEP_AQUIFER, Role.BEDROCK}]
+    levels = np.exp(
+        np.concatenate(
+            [unit.log_resistivity_mean + unit.log_resistivity_deviation * Z_95 * np.array([-1, 0, 1]) for unit in basal]
+        )
+    )
+    top = float(model.thickness.sum())
+    depth = np.maximum(top, 1.0) + np.geomspace(1.0, 300.0, 40)
+    pairs = np.array(np.meshgrid(depth, levels, indexing="ij")).reshape(2, -1)
+    thickness = np.column_stack([np.tile(model.thickness, (pairs.shape[1], 1)), pairs[0] - top])
+    resistivity = np.column_stack([np.tile(model.resistivity, (pairs.shape[1], 1)), pairs[1]])
+    plain = layered_earth.response(curves.weights, curves.wavenumber, model.thickness[None], model.resistivity[None])
+    changed = layered_earth.response(curves.weights, curves.wavenumber, thickness, resistivity)
+    chi_square = np.sum((np.log(changed / plain) / curves.deviation) ** 2, axis=1).reshape(depth.size, -1)
+    noticed = np.cumprod(np.all(chi_square >= options.notice_chi_square, axis=1)).astype(bool)
+    return float(depth[np.flatnonzero(noticed)[-1]]) if noticed[0] else 0.0
+
+
+def apply_picks(
+    contact: BasalContact, picks: Sequence[Pick], template: Template, generator: np.random.Generator
+) -> BasalContact:
+    """The contact as the interpreter decided it; what was not decided keeps what was inferred beside it."""
+    roles = {unit.code: unit.role for unit in template.units}
+    for pick in picks:
+        role = roles[pick.unit]
+        if role not in {Role.DEEP_AQUIFER, Role.BEDROCK}:
+            continue
+        if pick.status == "absent":
+            contact = attrs.evolve(contact, gravel=np.zeros_like(contact.gravel))
+        elif pick.status == "below" and pick.depth is not None:
+            contact = attrs.evolve(contact, status="deeper_than", bound=pick.depth)
+        elif pick.depth is not None:
+            error = pick.depth_error or 0.05 * pick.depth
+            depth = np.maximum(pick.depth + error * generator.standard_normal(max(contact.depth.size, 100)), 0.1)
+            gravel = generator.choice(contact.gravel, depth.size) if contact.gravel.size else np.zeros(depth.size)
+            if role is Role.BEDROCK:
+                gravel = np.minimum(gravel, 0.9 * depth)
+                depth = depth - gravel
+            contact = attrs.evolve(
+                contact, depth=depth, gravel=gravel, status="seen", log_deviation=float(np.std(np.log(depth)))
+            )
+        contact = attrs.evolve(contact, picks=(*contact.picks, pick))
+    return contact
+
+
+def contact_tops(
+    sounding: Sounding, contact: BasalContact, template: Template, options: InterpretationOptions
+) -> list[Top]:
+    """Rows of the basal contact and of bedrock at a sounding: data, bounds, or none where nothing is known."""
+    rock = next(unit.code for unit in template.units if unit.role is Role.BEDROCK)
+    deep = [unit.code for unit in template.units if unit.role is Role.DEEP_AQUIFER]
+    decided = contact.picks[-1] if contact.picks else None
+    kind = "pick" if decided else "sounding"
+    source = f"pick by {decided.interpreter}: {decided.reason}" if decided else _SOURCES[contact.status]
+
+    def top(unit: str, name: str, status: str, depth: float, error: float) -> Top:
+        return Top(
+            sounding.name, kind, sounding.easting, sounding.northing, unit, name, status,  # type: ignore[arg-type]
+            depth, sounding.ground_elevation - depth, error, source,
+        )  # fmt: skip
+
+    if contact.status == "deeper_than":
+        return [top(rock, name, "below", contact.bound, np.nan) for name in ("basal", "bedrock")]
+    if not contact.depth.size or contact.log_deviation > options.broad_log_depth_deviation:
+        return []
+    present = float(np.mean(contact.gravel >= PRESENT))
+    upper = deep[0] if deep and present >= 0.5 else rock
+    floor = 0.0 if decided else options.relative_depth_floor
+    rows = []
+    for unit, name, depth in ((upper, "basal", contact.depth), (rock, "bedrock", contact.rock)):
+        middle = float(np.exp(np.mean(np.log(depth)))) if name == "basal" else float(np.mean(depth))
+        rows.append(top(unit, name, "at", middle, float(np.hypot(np.std(depth), floor * middle))))
+    if deep and not present:
+        rows.append(top(deep[0], Role.DEEP_AQUIFER, "absent", np.nan, np.nan))
+    return rows
+
+
+_SOURCES = {
+    "seen": "curve: basal contact seen",
+    "not_distinct": "curve: basal contact not distinct, broad datum",
+    "deeper_than": "curve: basal material above this depth would have been noticed",
+}
+
+
+def role_thickness(
+    sounding: Sounding, values: FloatArray, role: Role, options: InterpretationOptions, source: str
+) -> list[Thickness]:
+    """The thickness of a role as the curve alone adds it to the prior; nothing where it adds little.
+
+    The surfaces bring a prior of their own, so the draws' prior is taken out: precisions subtract.
+    """
+    prior_mean, prior_variance = _prior_thickness(role, options.presence)
+    mean, variance = float(np.mean(values)), float(np.var(values)) + 0.05
+    gain = 1.0 / variance - 1.0 / prior_variance
+    if gain * prior_variance < LEAST_GAIN:
+        return []
+    value = (mean / variance - prior_mean / prior_variance) / gain
+    # Far from the prior's mean the difference overshoots; it stays within what was drawn.
+    value = float(np.clip(value, 0.0, np.quantile(values, 0.95)))
+    error = float(np.sqrt(1.0 / gain))
+    return [
+        Thickness(sounding.name, "sounding", sounding.easting, sounding.northing, role, value, error, False, source)
+    ]
+
+
+def _prior_thickness(role: Role, presence: float) -> tuple[float, float]:
+    """Mean and variance of a thickness that is 0 with probability 1 - presence and else log-normal."""
+    low, high = np.log(THICKNESS_BY_ROLE[role])
+    middle, variance = 0.5 * (low + high), ((high - low) / (2.0 * Z_95)) ** 2
+    first = presence * np.exp(middle + 0.5 * variance)
+    second = presence * np.exp(2.0 * middle + 2.0 * variance)
+    return float(first), float(second - first**2)
+
+
+def shallow_resistivity(sounding: Sounding, draws: ColumnDraws, template: Template) -> list[ShallowResistivity]:
+    """Log resistivity of the shallow aquifer where it is probably present, the template's prior taken out."""
+    shallow = np.flatnonzero(role_mask(template, Role.SHALLOW_AQUIFER))
+    rows = []
+    for unit in shallow:
+        values = draws.log_resistivity[~np.isnan(draws.log_resistivity[:, unit]), unit]
+        if values.size < 0.5 * draws.log_resistivity.shape[0]:
+            continue
+        prior_mean = template.log_resistivity_means[unit]
+        prior_variance = template.log_resistivity_deviations[unit] ** 2
+        variance = float(np.var(values))
+        gain = 1.0 / variance - 1.0 / prior_variance
+        if gain * prior_variance < LEAST_GAIN:
+            continue
+        value = (float(np.mean(values)) / variance - prior_mean / prior_variance) / gain
+        rows.append(
+            ShallowResistivity(
+                sounding.name, sounding.easting, sounding.northing, float(value), float(np.sqrt(1.0 / gain))
+            )
+        )
+    return rows[:1]
+
+
+def read_column(inverted: Inverted, draws: ColumnDraws, contact: BasalContact, template: Template) -> UnitColumn:
+    """The layers of the blocky model, each with the probability of every unit over its stretch of depth."""
+    top = inverted.model.top_depth
+    bottom = np.append(top[1:], max(1.5 * top[-1], inverted.investigated_depth, 1.0))
+    share = np.array([_unit_share(draws.thickness, a, b) for a, b in zip(top, bottom, strict=True)])
+    share = (share + 1e-6) / (share + 1e-6).sum(axis=1, keepdims=True)
+    flat = np.zeros(len(template.units))
+    down = np.where(np.triu(np.ones((flat.size, flat.size))) > 0, 0.0, -np.inf)
+    best = unit_sequence.read_units(np.log(share), flat, down).best
+    rock = contact.rock
+    bounded = contact.status == "deeper_than"
+    depth = contact.bound if bounded else (float(np.mean(rock)) if rock.size else np.nan)
+    error = np.nan if bounded or not rock.size else float(np.std(rock))
+    return UnitColumn(
+        sounding=inverted.sounding,
+        unit=tuple(template.codes[unit] for unit in best),
+        unit_probability=share[np.arange(best.size), best],
+        probability=share,
+        bedrock_status=contact.status,
+        bedrock_depth=depth,
+        bedrock_depth_error=error,
+        sentence=_say(contact, inverted),
+        picks=contact.picks,
+    )
+
+
+def _unit_share(thickness: FloatArray, top: float, bottom: float) -> FloatArray:
+    """Mean share (u,) of each unit in a stretch of depth over columns (m, u); NaN thickness is the half-space."""
+    h = np.where(np.isnan(thickness), 1e5, thickness)
+    base = np.cumsum(h, axis=1)
+    inside = np.clip(np.minimum(base, bottom) - np.maximum(base - h, top), 0.0, None)
+    return np.asarray(np.mean(inside, axis=0) / (bottom - top))
+
+
+def _say(contact: BasalContact, inverted: Inverted) -> str:
+    """One sentence for the report: what is resolved and what is not, in metres."""
+    reach = f"the curve feels the ground to some {inverted.investigated_depth:.0f} m"
+    if contact.picks:
+        pick = contact.picks[-1]
+        at = "" if pick.depth is None else f" {pick.depth:g} m"
+        return f"Decided by {pick.interpreter}: {pick.unit} {pick.status}{at} ({pick.reason})."
+    if contact.status == "deeper_than":
+        return f"No basal contact above {contact.bound:.0f} m, where it would have been noticed; {reach}."
+    if contact.status == "not_distinct":
+        return f"The basal contact does not stand out from what lies above it; {reach}."
+    low, high = np.quantile(contact.depth, [0.05, 0.95])
+    present = float(np.mean(contact.gravel >= PRESENT))
+    gravel = f"; up to {np.quantile(contact.gravel, 0.95):.0f} m of basal gravel may lie on the rock" if present else ""
+    return (
+        f"Top of basal gravel or rock at {np.median(contact.depth):.0f} m, between {low:.0f} and {high:.0f}; "
+        f"basal gravel with probability {present:.2f}{gravel}; {reach}."
+    )

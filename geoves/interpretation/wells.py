@@ -1,0 +1,156 @@
+"""Wells: drillers' words in the order of the column, contacts and bounds from them."""
+
+import numpy as np
+
+from geoves.domain.arrays import FloatArray
+from geoves.domain.survey import Pick, Well
+from geoves.domain.tops import PlaceKind, Thickness, Top, TopStatus, WellReading
+from geoves.domain.units import Role, Template
+from geoves.interpretation.options import InterpretationOptions
+from geoves.interpretation.sequences import log_within
+from geoves.interpretation.words import claim_words
+from geoves.kernels.unit_sequence import ordered_transition, read_units
+
+# What a unit pays (nats) for an interval whose words it does not claim, and for words that nothing claims.
+UNCLAIMED, UNSAID = -6.0, -1.0
+
+
+def read_log(well: Well, template: Template, options: InterpretationOptions) -> list[WellReading]:
+    """Each interval's unit: the best path through the column's order among the units that claim the words.
+
+    "Gravel" alone is claimed by a shallow and a deep gravel alike; the order of the column and the template's limits
+    of depth decide. A typed unit is taken as it is.
+    """
+    if not well.intervals:
+        return []
+    codes = template.codes
+    likelihood = np.empty((len(well.intervals), len(codes)))
+    claimed = []
+    for i, interval in enumerate(well.intervals):
+        likeness = (
+            {interval.unit: 1.0}
+            if interval.unit
+            else claim_words(interval.description, template, options.least_match).likeness
+        )
+        claimed.append(likeness)
+        unsaid = UNCLAIMED if likeness else UNSAID
+        likelihood[i] = [np.log(likeness[code]) if code in likeness else unsaid for code in codes]
+        likelihood[i] += _log_depth(interval.top, template)
+    start = np.zeros(len(codes))
+    path = read_units(likelihood, start, ordered_transition(len(codes), 0.6))
+    return [
+        WellReading(
+            well.name,
+            interval.top,
+            interval.bottom,
+            interval.description,
+            codes[unit] if codes[unit] in likeness else None,
+            float(likeness.get(codes[unit], 0.0) * path.probability[i, unit]),
+        )
+        for i, (interval, likeness, unit) in enumerate(zip(well.intervals, claimed, path.best, strict=True))
+    ]
+
+
+def _log_depth(top: float, template: Template) -> FloatArray:
+    """Soft limits of depth: an interval may lie deeper than its unit's top may, never shallower."""
+    return np.array(
+        [
+            float(log_within(np.array([top]), (unit.depth_to_top[0], np.inf))[0])
+            if unit.depth_to_top and top > 0
+            else 0.0
+            for unit in template.units
+        ]
+    )
+
+
+def well_tops(
+    well: Well, readings: list[WellReading], template: Template, options: InterpretationOptions
+) -> tuple[list[Top], list[Thickness]]:
+    """Contacts that the log shows, bounds where it ends above them, thicknesses of the two aquifers."""
+    role = {unit.code: unit.role for unit in template.units}
+    rock = next(unit.code for unit in template.units if unit.role is Role.BEDROCK)
+    known = [reading for reading in readings if reading.unit]
+    if not known:
+        return [], []
+    end = max(well.total_depth, *(reading.bottom for reading in readings))
+    basal = next((r for r in known if role[r.unit or ""] in {Role.DEEP_AQUIFER, Role.BEDROCK}), None)
+    bedrock = next((r for r in known if role[r.unit or ""] is Role.BEDROCK), None)
+    tops = []
+    for name, unit, found in (("basal", basal.unit if basal else rock, basal), ("bedrock", rock, bedrock)):
+        status: TopStatus = "at" if found else "below"
+        depth = found.top if found else end
+        error = np.hypot(options.well_contact_error, options.well_relative_error * depth) if found else np.nan
+        source = "driller's log" if found else "driller's log ends above it"
+        tops.append(_top(well, unit or rock, name, status, depth, float(error), source))
+    if bedrock and not any(role[r.unit or ""] is Role.DEEP_AQUIFER for r in known):
+        tops += [
+            _top(well, unit.code, unit.role, "absent", np.nan, np.nan, "driller's log")
+            for unit in template.with_role(Role.DEEP_AQUIFER)
+        ]
+    return tops, _thicknesses(well, known, role, end, reached=bedrock is not None)
+
+
+def _top(well: Well, unit: str, contact: str, status: TopStatus, depth: float, error: float, source: str) -> Top:
+    kind: PlaceKind = "well"
+    elevation = well.ground_elevation - depth
+    return Top(well.name, kind, well.easting, well.northing, unit, contact, status, depth, elevation, error, source)
+
+
+def _thicknesses(
+    well: Well, known: list[WellReading], role: dict[str, Role], end: float, *, reached: bool
+) -> list[Thickness]:
+    rows = []
+    for which in (Role.SHALLOW_AQUIFER, Role.DEEP_AQUIFER):
+        if which not in role.values():
+            continue
+        mine = [reading for reading in known if role[reading.unit or ""] is which]
+        ended_inside = bool(mine) and not reached and mine[-1].bottom >= end - 0.1
+        passed = reached or any(list(Role).index(role[r.unit or ""]) > list(Role).index(which) for r in known)
+        # A log that ends above the basal gravel says nothing of its thickness.
+        if not mine and not passed:
+            continue
+        thickness = sum(reading.bottom - reading.top for reading in mine)
+        rows.append(
+            Thickness(
+                well.name, "well", well.easting, well.northing, which, thickness, 0.4, ended_inside, "driller's log"
+            )
+        )
+    return rows
+
+
+def apply_well_picks(
+    tops: list[Top], thicknesses: list[Thickness], well: Well, picks: list[Pick], template: Template
+) -> tuple[list[Top], list[Thickness]]:
+    """The log's contacts with the interpreter's decisions put in their place."""
+    role = {unit.code: unit.role for unit in template.units}
+    for pick in picks:
+        name = "bedrock" if role[pick.unit] is Role.BEDROCK else "basal"
+        if role[pick.unit] not in {Role.BEDROCK, Role.DEEP_AQUIFER}:
+            continue
+        source = f"pick by {pick.interpreter}: {pick.reason}"
+        if pick.status == "absent":
+            thicknesses = [t for t in thicknesses if t.role != role[pick.unit]]
+            thicknesses.append(
+                Thickness(well.name, "pick", well.easting, well.northing, role[pick.unit], 0.0, 0.4, False, source)
+            )
+            continue
+        depth = float(pick.depth or 0.0)
+        error = pick.depth_error or 0.05 * depth
+        tops = [top for top in tops if top.contact != name]
+        elevation = well.ground_elevation - depth
+        tops.append(
+            Top(
+                well.name,
+                "pick",
+                well.easting,
+                well.northing,
+                pick.unit,
+                name,
+                pick.status,
+                depth,
+                elevation,
+                error if pick.status == "at" else np.nan,
+                source,
+            )
+        )
+    return tops, thicknesses
