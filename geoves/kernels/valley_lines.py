@@ -51,8 +51,9 @@ def trace_valleys(
     The tree of each connected valley is grown as TEASAR [1] grows one: the first path joins the two places that lie
     farthest apart inside the valley, each next starts at the place farthest from what is drawn and joins it, and every
     path takes the cheapest way, which here is the deepest. The main line is the way through the tree with the largest
-    long section; what is left are tributaries, which run to their junction. Only the floor may hold an end: cells within
-    a tenth of the deepest within a valley's half width. A line counts from `least_length` cells and from twice that width.
+    long section; what is left are tributaries, which run to their junction. Only the floor may hold an end: cells
+    within a tenth of the deepest within a valley's half width. A line counts from `least_length` cells and from twice
+    that width.
     [1] M. Sato, I. Bitter, M. A. Bender, A. E. Kaufman and M. Nakajima, 2000, TEASAR: tree-structure extraction
         algorithm for accurate and robust skeletons, Proc. Pacific Graphics 2000, 281-289.
     """
