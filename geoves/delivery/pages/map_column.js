@@ -1,0 +1,125 @@
+// The predicted column at a place: from the ground down, to scale, contacts as soft as their 90 % bands are wide.
+
+const Z90 = 1.6449;  // half the 90 % band in standard deviations of a normal
+const colourOf = (role) => described.units.find((unit) => unit.role === role)?.colour || "#888888";
+const nameOf = (role, otherwise) => described.units.find((unit) => unit.role === role)?.name || otherwise;
+
+// Chance that a contact lies above a depth: a normal of either side's width joined at the estimate.
+function chanceAbove(depth, contact) {
+  const side = depth < contact.estimate ? contact.estimate - contact.p05 : contact.p95 - contact.estimate;
+  const z = (depth - contact.estimate) / Math.max(side / Z90, 1e-6);
+  return 1 / (1 + Math.exp(-1.5976 * z - 0.070566 * z ** 3));  // the logistic form of the normal, Page 1977
+}
+
+function columnAt(easting, northing) {
+  const cell = cellAt(easting, northing);
+  const rock = valueAt("bedrock_depth", cell);
+  if (!rock) return null;
+  if (!known(rock.p05)) Object.assign(rock, { p05: rock.estimate, p95: rock.estimate });
+  return {
+    cell, rock,
+    gravel: valueAt("deep_gravel_thickness", cell),
+    gravelChance: valueAt("deep_gravel_probability", cell)?.estimate ?? 0,
+    shallow: valueAt("shallow_aquifer_resistivity", cell),
+    shallowChance: valueAt("shallow_aquifer_probability", cell)?.estimate,
+    ground: described.ground[cell],
+  };
+}
+
+function mixed(colours, shares) {
+  const total = [0, 0, 0];
+  colours.forEach((colour, i) => [1, 3, 5].forEach((at, channel) => {
+    total[channel] += shares[i] * parseInt(colour.slice(at, at + 2), 16);
+  }));
+  return `rgb(${total.map(Math.round)})`;
+}
+
+// Thickness to draw where gravel is present: its mean counts absence as nothing.
+const drawnThickness = (column) => column.gravel && column.gravelChance >= 0.05
+  ? column.gravel.estimate / Math.max(column.gravelChance, 0.3) : 0;
+
+function columnShares(column, depth) {
+  const rock = chanceAbove(depth, column.rock);
+  const thick = drawnThickness(column);
+  const shift = { estimate: column.rock.estimate - thick, p05: column.rock.p05 - thick, p95: column.rock.p95 - thick };
+  const gravel = thick > 0 ? Math.max(0, chanceAbove(depth, shift) - rock) * column.gravelChance : 0;
+  return [Math.max(0, 1 - rock - gravel), gravel, rock];
+}
+
+const ABOVE = "#e9e0bd";
+
+function drawStrip(column) {
+  const deepest = Math.max(column.rock.p95 * 1.12, column.rock.estimate * 1.2, 5);
+  const top = 20, height = 320, x = 62, width = 92;
+  const y = (depth) => top + depth / deepest * height;
+  const figure = draw("svg", { class: "figure strip", viewBox: "0 0 350 366", width: 350, height: 366, role: "img" });
+  figure.append(draw("title", {}, "Predicted column, drawn to scale from the ground down"));
+  const colours = [ABOVE, colourOf("deep_aquifer"), colourOf("bedrock")];
+  const stops = Array.from({ length: 81 }, (_, i) => draw("stop",
+    { offset: i / 80, "stop-color": mixed(colours, columnShares(column, deepest * i / 80)) }));
+  figure.append(draw("defs", {}, draw("linearGradient", { id: "column-fill", x1: 0, y1: 0, x2: 0, y2: 1 }, stops)));
+  figure.append(draw("rect", { x, y: top, width, height, fill: "url(#column-fill)", stroke: "#555" }));
+  figure.append(...stripScale(deepest, y, x, 0.3048, "ft"), ...stripScale(deepest, y, x + width, 1, "m"));
+  figure.append(...stripLabels(column, y, x + width, top + height));
+  return figure;
+}
+
+// Depths beside the strip: feet at its left, metres at its right.
+function stripScale(deepest, y, x, metres, unit) {
+  const left = unit === "ft";
+  const anchor = left ? { "text-anchor": "end" } : {};
+  const marks = evenTicks(0, deepest / metres, 6).flatMap((tick) => [
+    draw("line", { x1: x, x2: x + (left ? -5 : 5), y1: y(tick * metres), y2: y(tick * metres), stroke: "currentColor" }),
+    draw("text", { x: x + (left ? -8 : 8), y: y(tick * metres) + 4, class: "tick", ...anchor }, tickWords(tick)),
+  ]);
+  return [...marks, draw("text", { x: x + (left ? -8 : 8), y: 11, class: "tick", ...anchor }, unit)];
+}
+
+function stripLabels(column, y, x, bottom) {
+  const wanted = [];
+  const thick = drawnThickness(column);
+  const gravelTop = Math.max(column.rock.estimate - thick, 0);
+  const between = described.units.filter((unit) => !["deep_aquifer", "bedrock"].includes(unit.role));
+  const above = between.length ? between.map((unit) => unit.name).join(", ") : "what lies above";
+  wanted.push({ at: y(gravelTop / 2), words: above.length > 30 ? "beds above, not told apart" : `${above}` });
+  if (thick > 0) wanted.push({ at: y(gravelTop + thick / 2), words: `${nameOf("deep_aquifer", "gravel")} (${column.gravelChance.toFixed(2)})` });
+  wanted.push({ at: Math.max(y(column.rock.estimate) + 16, (y(column.rock.estimate) + bottom) / 2), words: nameOf("bedrock", "rock") });
+  for (let i = 1; i < wanted.length; i += 1) wanted[i].at = Math.max(wanted[i].at, wanted[i - 1].at + 15);
+  const bracket = `M${x + 40} ${svgNumber(y(column.rock.p05))}h6V${svgNumber(y(column.rock.p95))}h-6M${x + 40} ${svgNumber(y(column.rock.estimate))}h10`;
+  return [
+    draw("path", { d: bracket, class: "bracket" }),
+    ...wanted.map((label) => draw("text", { x: x + 56, y: svgNumber(label.at + 4), class: "halo" }, label.words)),
+  ];
+}
+
+function columnSentences(column) {
+  const { rock } = column;
+  const said = [];
+  const width = rock.p95 - rock.p05;
+  said.push(width > 0
+    ? `Rock at ${lengthWords(rock.estimate)}, between ${lengthNumber(rock.p05)} and ${lengthWords(rock.p95)}.`
+    : `Rock at ${lengthWords(rock.estimate)}.`);
+  if (column.gravel) {
+    const thick = `${lengthWords(column.gravel.estimate)} on average`;
+    const most = known(column.gravel.p95) ? `, up to ${lengthWords(column.gravel.p95)}` : "";
+    const chance = `${likelihoodWords(column.gravelChance)} (${column.gravelChance.toFixed(2)})`;
+    said.push(column.gravelChance < 0.05 ? `${nameOf("deep_aquifer", "Gravel")} on it: ${chance}.`
+      : `${nameOf("deep_aquifer", "Gravel")} on it: ${chance}, ${thick}${most}.`);
+  }
+  if (known(column.shallowChance)) {
+    const rho = column.shallow ? `, about ${resistivityWords(column.shallow.estimate)}` : "";
+    const present = column.shallowChance >= 0.05;
+    said.push(`${nameOf("shallow_aquifer", "Shallow aquifer")} above: ${likelihoodWords(column.shallowChance)} `
+      + `(${column.shallowChance.toFixed(2)})${present ? rho : ""}.`);
+  }
+  return said;
+}
+
+// The nearest soundings and wells with their distances in m.
+function nearestPlaces(easting, northing, wanted, itself = null) {
+  const places = [...described.soundings.map((place) => ({ kind: "sounding", place })),
+    ...described.wells.map((place) => ({ kind: "well", place }))];
+  return places.filter(({ place }) => place !== itself)
+    .map((one) => ({ ...one, distance: region.crsMetres * Math.hypot(one.place.e - easting, one.place.n - northing) }))
+    .sort((one, other) => one.distance - other.distance).slice(0, wanted);
+}

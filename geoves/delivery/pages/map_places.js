@@ -1,0 +1,169 @@
+// Markers, lines, and what the panel says of a place.
+
+const shapes = {
+  seen: { d: "M2 8a6 6 0 1 0 12 0a6 6 0 1 0 -12 0Z", style: "solid" },
+  not_distinct: { d: "M8 1l7 7l-7 7l-7 -7Z", style: "half" },
+  deeper_than: { d: "M1.5 2.5h13l-6.5 11.5Z", style: "" },
+  none: { d: "M3 3l10 10M13 3l-10 10", style: "" },
+  rock: { d: "M2.5 2.5h11v11h-11Z", style: "solid" },
+  ended: { d: "M2.5 2.5h11v11h-11ZM2.5 8h11", style: "" },
+};
+
+function symbol(shape) {
+  return draw("svg", { width: 16, height: 16, viewBox: "0 0 16 16", "aria-hidden": "true" },
+    draw("path", { d: shapes[shape].d, class: shapes[shape].style, fill: "#fff", stroke: "#111", "stroke-width": 1.5 }));
+}
+
+const wellShape = (well) => known(well.rock) ? "rock" : "ended";
+const soundingSays = (sounding) => sounding.status === null ? "no model"
+  : sounding.status === "deeper_than" ? `bedrock deeper than ${lengthWords(sounding.depth)}`
+    : known(sounding.depth) ? `${statusWords[sounding.status]}, ${lengthWords(sounding.depth)}` : statusWords[sounding.status];
+const wellSays = (well) => known(well.rock) ? `reached rock at ${lengthWords(well.rock)}`
+  : `ended above rock at ${lengthWords(well.total)}`;
+
+function placeMarker(place, shape, words, open) {
+  const icon = L.divIcon({ className: "marker", html: make("div", {}, symbol(shape)), iconSize: [16, 16] });
+  const marker = L.marker(place.at, { icon, keyboard: true, riseOnHover: true });
+  marker.on("click", () => open(place));
+  marker.on("add", () => {
+    const element = marker.getElement();
+    element.setAttribute("aria-label", words);
+    element.title = words;
+    place.element = element;
+    element.addEventListener("keydown", (event) => {
+      if (event.key !== "Enter" && event.key !== " ") return;
+      event.preventDefault();
+      event.stopPropagation();
+      open(place);
+    });
+  });
+  return marker;
+}
+
+function soundingMarkers(open) {
+  return L.layerGroup(described.soundings.map((one) =>
+    placeMarker(one, one.status || "none", `Sounding ${one.name}: ${soundingSays(one)}`, open)));
+}
+
+function wellMarkers(open) {
+  return L.layerGroup(described.wells.map((one) => placeMarker(one, wellShape(one), `Well ${one.name}: ${wellSays(one)}`, open)));
+}
+
+// Small dots that grow with the zoom; near enough, they bear their names.
+function permitMarkers(map, open) {
+  const renderer = L.canvas({ pane: "permits" });
+  const dots = described.permits.map((permit) => {
+    const dot = L.circleMarker(permit.at, { renderer, pane: "permits", radius: 2.5, weight: 1, color: "#111", fillColor: "#fff",
+      fillOpacity: 0.95, bubblingMouseEvents: false });
+    dot.on("click", () => open(permit));
+    return { permit, dot };
+  });
+  const group = L.layerGroup(dots.map(({ dot }) => dot));
+  const grow = () => {
+    const zoom = map.getZoom(), seen = map.getBounds();
+    for (const { permit, dot } of dots) {
+      dot.setRadius(Math.min(7, Math.max(2.2, 2.2 + 0.8 * (zoom - 11))));
+      const wanted = zoom >= 15 && map.hasLayer(group) && seen.contains(permit.at);
+      if (wanted && !dot.getTooltip()) {
+        dot.bindTooltip(named(permit.name), { permanent: true, direction: "right", className: "permit-name" });
+      } else if (!wanted && dot.getTooltip()) dot.unbindTooltip();
+    }
+  };
+  map.on("zoomend moveend", grow);
+  return group;
+}
+
+function lineLayers(map) {
+  const renderer = L.svg({ pane: "lines" });
+  const lines = (paths, style) => L.polyline(paths, { renderer, pane: "lines", interactive: false, ...style });
+  const group = (parts) => L.layerGroup(parts.filter((part) => part.getLatLngs().length));
+  const given = described.lines;
+  return {
+    boundary: group([lines(given.boundary, { color: "#333", weight: 2 }), lines(given.boundary, { color: "#fff", weight: 0.7 })]),
+    contours: group(given.bedrock_contours.map((one) => lines(one.paths, { color: "#222", weight: 0.8, opacity: 0.75 }))),
+    thickness: group(given.thickness_contours.map((one) => lines(one.paths, { color: "#222", weight: 0.8, dashArray: "1 4" }))),
+    axis: group([lines(given.valley_axis, { color: "#fff", weight: 5, opacity: 0.8 }), lines(given.valley_axis, { color: "#111", weight: 1.8 })]),
+    extent: group(given.gravel_extent.flatMap((one) => [
+      lines(one.paths, { color: "#fff", weight: 3.2, opacity: 0.8 }),
+      lines(one.paths, { color: "#7a1fa2", weight: 1.8, dashArray: one.value === "likely" ? null : "5 5" }),
+    ])),
+    labels: L.layerGroup(contourLabels(given.bedrock_contours)),
+  };
+}
+
+// A number at the middle of each contour's longest piece.
+function contourLabels(contours) {
+  return contours.flatMap((one) => {
+    const longest = one.paths.reduce((best, path) => path.length > best.length ? path : best, []);
+    if (longest.length < 4) return [];
+    const words = draw("svg", { width: 50, height: 14, viewBox: "0 0 50 14", "aria-hidden": "true" },
+      draw("text", { x: 25, y: 11, "text-anchor": "middle", class: "halo" }, lengthNumber(one.value)));
+    const icon = L.divIcon({ className: "contour", html: words, iconSize: [50, 14] });
+    return [L.marker(longest[Math.floor(longest.length / 2)], { icon, interactive: false, keyboard: false, pane: "lines" })];
+  });
+}
+
+function restsOn(easting, northing, itself, openers) {
+  const items = nearestPlaces(easting, northing, 3, itself).map(({ kind, place, distance }) => make("li", {},
+    `${distanceWords(distance)}: ${kind} `, make("button", { class: "link", click: () => openers[kind](place) }, place.name),
+    `, ${kind === "well" ? wellSays(place) : soundingSays(place)}`));
+  return [make("h3", {}, "What this rests on"), make("ul", {}, items)];
+}
+
+function columnParts(easting, northing) {
+  const column = columnAt(easting, northing);
+  if (!column) {
+    return [make("p", { class: "says" }, "No prediction here: outside the region, or no data near enough.")];
+  }
+  const ground = known(column.ground) ? `, ground at ${lengthWords(column.ground)}` : "";
+  return [
+    ...columnSentences(column).map((words) => make("p", { class: "says" }, words)),
+    drawStrip(column),
+    make("p", { class: "soft" }, `Depths below the ground${ground}. The bracket is the 90 % band of the depth to rock; `
+      + "colours run into each other as far as a contact may lie. Ranges hold 90 % of the chances."),
+  ];
+}
+
+function permitFacts(permit) {
+  const facts = [permit.use, known(permit.requested) ? `asks for ${lengthWords(permit.requested)}` : "",
+    known(permit.radius) ? `placed to within ${lengthWords(permit.radius)}` : ""].filter(Boolean);
+  const parts = facts.length ? [make("p", { class: "soft" }, facts.join("; "))] : [];
+  if (known(permit.requested) && known(permit.bedrock_depth_p05) && permit.requested > permit.bedrock_depth_p05) {
+    parts.push(make("p", {}, "The depth asked for may reach rock."));
+  }
+  if (known(permit.radius) && permit.covered) {
+    parts.push(make("p", {}, `Over the whole circle of its location: rock between ${lengthNumber(permit.bedrock_depth_p05)} and `
+      + `${lengthWords(permit.bedrock_depth_p95)}, gravel ${likelihoodWords(permit.gravel_probability)} `
+      + `(${permit.gravel_probability.toFixed(2)}).`));
+  }
+  return parts;
+}
+
+function soundingFacts(sounding) {
+  const facts = [make("p", { class: "says" }, sounding.sentence)];
+  if (!sounding.model) return facts;
+  facts.push(make("p", { class: "soft" }, `${statusWords[sounding.status]}; ${sounding.model.rho.length} layers; misfit `
+    + `${sounding.rms.toFixed(1)} %; the curve reaches to about ${lengthWords(sounding.model.reach)}`));
+  for (const pick of sounding.picks) {
+    const depth = known(pick.depth) ? ` ${lengthWords(pick.depth, 1)}` : "";
+    facts.push(make("p", {}, `Pick by ${pick.who}: ${pick.unit} ${pick.status}${depth}; ${pick.why}`));
+  }
+  return facts;
+}
+
+function wellFacts(well) {
+  const facts = [`${wellSays(well)}`, `total depth ${lengthWords(well.total)}`];
+  if (known(well.water)) facts.push(`water at ${lengthWords(well.water, 1)}`);
+  if (known(well.conductance)) facts.push(`${Math.round(well.conductance)} \u00b5S/cm at 25 \u00b0C`);
+  return [make("p", { class: "says" }, `${facts.join("; ")}.`)];
+}
+
+function markKey() {
+  const item = (shape, words) => make("li", {}, symbol(shape), words);
+  return make("div", { class: "key" }, make("h3", {}, "Marks"), make("ul", {},
+    item("seen", "sounding that saw bedrock"), item("not_distinct", "sounding: bedrock not distinct"),
+    item("deeper_than", "sounding: bedrock deeper than it reached"), item("rock", "well that reached rock"),
+    item("ended", "well that ended above rock")),
+  make("p", { class: "soft" }, "Small dots: permits. Bold line: valley axis. Thin lines: bedrock contours. "
+    + "Violet: extent of likely gravel, dashed where only possible."));
+}

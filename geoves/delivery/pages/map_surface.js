@@ -1,0 +1,119 @@
+// One surface at a time as an image in web mercator: colour is the value, its fade towards grey is the doubt.
+
+const GREY = [205, 205, 202];
+const FADE_MOST = 0.92;
+
+function rampColour(name, share) {
+  const at = 6 * Math.min(255, Math.max(0, Math.round(share * 255)));
+  const hex = described.ramps[name];
+  return [0, 2, 4].map((offset) => parseInt(hex.slice(at + offset, at + offset + 2), 16));
+}
+
+const scaled = (surface, value) => surface.quantity === "resistivity" ? Math.log(value) : value;
+const shareOf = (ends, value) => (value - ends[0]) / (ends[1] - ends[0]);
+
+function widthAt(surface, cell) {
+  if (!surface.p05) return null;
+  const low = surface.p05[cell], high = surface.p95[cell];
+  return surface.quantity === "resistivity" ? Math.log(high / low) : high - low;
+}
+
+// Red, green and blue of a cell, null where it is blank.
+function cellColour(surface, mode, cell) {
+  const value = surface.estimate[cell];
+  if (Number.isNaN(value)) return null;
+  const width = widthAt(surface, cell);
+  if (mode === "width" && width !== null) return rampColour("magma_r", 0.06 + 0.8 * shareOf(surface.doubt, width));
+  const colour = rampColour(surface.ramp, shareOf(surface.range, scaled(surface, value)));
+  return mode === "value" || width === null ? colour : faded(colour, shareOf(surface.doubt, width));
+}
+
+function faded(colour, doubt) {
+  const share = Number.isNaN(doubt) ? FADE_MOST : Math.min(FADE_MOST, Math.max(0, doubt));
+  return colour.map((channel, i) => channel * (1 - share) + GREY[i] * share);
+}
+
+// The surface's picture over the grid's bounds in web mercator; blank cells are hatched.
+function surfacePicture(surface, mode) {
+  const [west, south, east, north] = projection.bounds;
+  const fine = Math.min(3, Math.max(1, Math.sqrt(3e6 / (grid.rows * grid.columns))));
+  const canvas = document.createElement("canvas");
+  canvas.width = Math.round(grid.columns * fine);
+  canvas.height = Math.round(canvas.width * (north - south) / (east - west));
+  const context = canvas.getContext("2d");
+  const picture = context.createImageData(canvas.width, canvas.height);
+  const colours = new Map();
+  for (let row = 0; row < canvas.height; row += 1) {
+    const y = north - (row + 0.5) / canvas.height * (north - south);
+    for (let column = 0; column < canvas.width; column += 1) {
+      const x = west + (column + 0.5) / canvas.width * (east - west);
+      const cell = cellAt(...toRegion(x, y, true));
+      if (cell < 0) continue;
+      if (!colours.has(cell)) colours.set(cell, cellColour(surface, mode, cell));
+      const colour = colours.get(cell);
+      const at = 4 * (row * canvas.width + column);
+      if (colour) picture.data.set([colour[0], colour[1], colour[2], 255], at);
+      else if ((row + column) % Math.round(6 * fine) < fine) picture.data.set([128, 128, 128, 150], at);
+    }
+  }
+  context.putImageData(picture, 0, 0);
+  return canvas.toDataURL("image/png");
+}
+
+const quantityUnit = (surface) =>
+  ({ resistivity: "\u03a9 m", probability: "probability" })[surface.quantity] || region.unit.label;
+
+// Value in the region's unit at a share of the ramp.
+function legendNumber(surface, value) {
+  if (surface.quantity === "resistivity") return Math.exp(value);
+  return surface.quantity === "probability" ? value : value / region.unit.metres;
+}
+
+function legendTicks(surface) {
+  const ends = surface.range.map((end) => legendNumber(surface, end));
+  const ticks = surface.quantity === "resistivity" ? logarithmicTicks(...ends) : evenTicks(...ends, 4);
+  return ticks.map((tick) => ({
+    words: tickWords(tick),
+    share: surface.quantity === "resistivity"
+      ? shareOf(surface.range, Math.log(tick)) : (tick - ends[0]) / (ends[1] - ends[0]),
+  }));
+}
+
+// How wide a band is, in words: a length, or for resistivities the factor between its ends.
+function widthWords(surface, width) {
+  return surface.quantity === "resistivity" ? `\u00d7 ${Math.exp(width).toFixed(1)}` : lengthWords(width);
+}
+
+function drawLegend(surface, mode) {
+  const box = document.getElementById("legend");
+  const both = mode === "both" && surface.doubt !== null;
+  const asWidth = mode === "width" && surface.doubt !== null;
+  const rows = both ? 4 : 1, left = 8, width = 196, high = both ? 12 : 16;
+  const figure = draw("svg", { viewBox: `0 0 280 ${rows * high + 22}`, role: "img", "aria-label": "Legend" });
+  for (let row = 0; row < rows; row += 1) {
+    for (let column = 0; column < 49; column += 1) {
+      const share = column / 48;
+      let colour = asWidth ? rampColour("magma_r", 0.06 + 0.8 * share) : rampColour(surface.ramp, share);
+      if (both) colour = faded(colour, row / (rows - 1));
+      const place = { x: left + column * 4, y: row * high, width: 4.4, height: high + 0.4 };
+      figure.append(draw("rect", { ...place, fill: `rgb(${colour.map(Math.round)})` }));
+    }
+  }
+  const tickAt = (share, words) => draw("text",
+    { x: svgNumber(left + share * width), y: rows * high + 13, "text-anchor": "middle", class: "tick" }, words);
+  if (asWidth) {
+    figure.append(tickAt(0.08, widthWords(surface, surface.doubt[0])), tickAt(0.92, widthWords(surface, surface.doubt[1])));
+  } else {
+    figure.append(...legendTicks(surface).filter((t) => t.share > 0.01 && t.share < 0.99).map((t) => tickAt(t.share, t.words)));
+  }
+  if (both) {
+    const beside = (y, words) => draw("text", { x: left + width + 6, y, class: "tick" }, words);
+    figure.append(beside(10, widthWords(surface, surface.doubt[0])), beside(rows * high - 2, widthWords(surface, surface.doubt[1])));
+  }
+  const explained = both ? "Down: wider 90 % band, less sure. "
+    : asWidth ? "Width of the 90 % band. " : surface.doubt === null && mode !== "value" ? "A probability shows its own doubt. " : "";
+  const title = asWidth ? `${surface.title}: width of the band` : `${surface.title} (${quantityUnit(surface)})`;
+  const datum = surface.quantity === "elevation" ? ` Heights: ${region.datum || "datum not declared"}.` : "";
+  box.replaceChildren(make("h2", {}, title), figure,
+    make("p", {}, `${explained}Hatched: no data near, or outside the region.${datum}`));
+}
