@@ -24,6 +24,7 @@ from geoves.kernels.covariances import (
 _SWEEPS = 400
 _DAMPING = 0.6
 _TOLERANCE = 1e-7  # of the posterior means, in deviations
+_SHARPEST = 1e-3  # softness of a sharp bound, in deviations of the field: what keeps contradictory ones finite
 _ROUNDS = 10
 _SETTLED = 0.03  # of the logs of sill and length
 _TELLING = 100.0  # pseudo-variances beyond so many sills tell a fit nothing
@@ -128,12 +129,15 @@ def bounds_as_values(
     points, values, error_variance : (n, 2), (n,), (n,): data proper, n ≥ 1; their unknown mean is the bounds' too
     Pseudo-variances are above 0; a bound that the data make idle gets a very large one. Expectation propagation,
     all sites at once with damping: Minka 2001; Rasmussen and Williams 2006, sect. 3.6 (from memory). The sites are
-    log-concave, so that no variance turns negative but by rounding. Checked in tests/kernels/test_inequality.py
+    log-concave, so that no variance turns negative but by rounding. Sharp bounds that contradict each other at one
+    place may not settle; what is returned then is finite, and between them. Checked in tests/kernels/test_inequality.py
     against a Gibbs sampler.
     """
+    if not len(bounds.bound):
+        return np.empty(0), np.empty(0)
     mean, spread = field_at_places(points, values, error_variance, bounds.points, covariance)
     _, bound, side, softness = bounds
-    softness = np.hypot(softness, np.sqrt(ERROR_FLOOR * covariance.sill))
+    softness = np.hypot(softness, _SHARPEST * np.sqrt(covariance.sill))
     precision, shift = np.zeros_like(mean), np.zeros_like(mean)
     centre, variance = mean, np.diag(spread).copy()
     for _ in range(_SWEEPS):
