@@ -1,0 +1,374 @@
+"""All layers in one GeoPackage, with titles, units and value domains of their columns, read back before it counts."""
+
+import re
+import sqlite3
+from collections.abc import Iterable, Mapping, Sequence
+from contextlib import closing
+from pathlib import Path
+from typing import Any
+
+import geopandas
+import numpy as np
+import pandas as pd
+import pyogrio
+from numpy.typing import NDArray
+from pyogrio.errors import DataLayerError, DataSourceError
+
+from geoves.delivery.dictionary import LAYERS, Column, LayerWords, convert_to_delivery, name_unit
+from geoves.delivery.metadata import render_geopackage_record
+from geoves.domain.earth import Inverted
+from geoves.domain.results import Results
+from geoves.domain.survey import Sounding, Well
+from geoves.domain.tops import UnitColumn
+from geoves.domain.units import Role
+from geoves.errors import DeliveryError
+
+GEOMETRY = "geom"
+DECIMALS = 3  # of the length unit: what is finer is noise, and 20 ft stays 20
+_RESERVED = ("fid", "ogc_fid", "rowid", GEOMETRY, "geometry")
+_EXTENSIONS = (
+    ("gpkg_data_columns", "gpkg_schema", "http://www.geopackage.org/spec121/#extension_schema"),
+    ("gpkg_data_column_constraints", "gpkg_schema", "http://www.geopackage.org/spec121/#extension_schema"),
+    ("gpkg_metadata", "gpkg_metadata", "http://www.geopackage.org/spec121/#extension_metadata"),
+    ("gpkg_metadata_reference", "gpkg_metadata", "http://www.geopackage.org/spec121/#extension_metadata"),
+)
+
+# Tables of the schema and metadata extensions as GeoPackage 1.3 (OGC 12-128r17) writes them.
+_TABLES = """
+CREATE TABLE gpkg_data_columns (table_name TEXT NOT NULL, column_name TEXT NOT NULL, name TEXT,
+  title TEXT, description TEXT, mime_type TEXT, constraint_name TEXT,
+  CONSTRAINT pk_gdc PRIMARY KEY (table_name, column_name), CONSTRAINT gdc_tn UNIQUE (table_name, name));
+CREATE TABLE gpkg_data_column_constraints (constraint_name TEXT NOT NULL, constraint_type TEXT NOT NULL,
+  value TEXT, min NUMERIC, min_is_inclusive BOOLEAN, max NUMERIC, max_is_inclusive BOOLEAN, description TEXT,
+  CONSTRAINT gdcc_ntv UNIQUE (constraint_name, constraint_type, value));
+CREATE TABLE gpkg_metadata (id INTEGER CONSTRAINT m_pk PRIMARY KEY ASC NOT NULL,
+  md_scope TEXT NOT NULL DEFAULT 'dataset', md_standard_uri TEXT NOT NULL, mime_type TEXT NOT NULL DEFAULT 'text/xml',
+  metadata TEXT NOT NULL DEFAULT '');
+CREATE TABLE gpkg_metadata_reference (reference_scope TEXT NOT NULL, table_name TEXT, column_name TEXT,
+  row_id_value INTEGER, timestamp DATETIME NOT NULL DEFAULT (strftime('%Y-%m-%dT%H:%M:%fZ','now')),
+  md_file_id INTEGER NOT NULL, md_parent_id INTEGER,
+  CONSTRAINT crmr_mfi_fk FOREIGN KEY (md_file_id) REFERENCES gpkg_metadata(id),
+  CONSTRAINT crmr_mpi_fk FOREIGN KEY (md_parent_id) REFERENCES gpkg_metadata(id));
+"""
+
+
+def write_geopackage(results: Results, path: Path, tags: Mapping[str, str]) -> Path:
+    """`path`, a GeoPackage 1.3 with every layer of the dictionary, in the region's CRS and length unit.
+
+    Columns are the dictionary's, then the extra columns of the tables less those withheld. `tags["date"]` dates it.
+    The file stands under its name only once every layer was read back. Raises DeliveryError.
+    """
+    unfinished = path.with_name(f".{path.name}.tmp.gpkg")
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        unfinished.unlink(missing_ok=True)
+        written = _write_layers(results, unfinished)
+        with closing(sqlite3.connect(unfinished)) as database, database:
+            database.executescript(_TABLES)
+            database.executemany("INSERT INTO gpkg_extensions VALUES (?, NULL, ?, ?, 'read-write')", _EXTENSIONS)
+            for name, (_, labels) in written.items():
+                _describe_columns(database, LAYERS[name], labels, results)
+            _attach_record(database, render_geopackage_record(results, tags), _timestamp(tags))
+        _verify(unfinished, {name: len(frame) for name, (frame, _) in written.items()})
+        unfinished.replace(path)
+    except (OSError, sqlite3.Error, DataSourceError, DataLayerError) as error:
+        if isinstance(error, DeliveryError):
+            raise
+        raise DeliveryError(f"{path.name} could not be written: {error}") from error
+    finally:
+        unfinished.unlink(missing_ok=True)
+    return path
+
+
+def build_frames(results: Results) -> Mapping[str, tuple[geopandas.GeoDataFrame, Mapping[str, str]]]:
+    """Each layer in the region's length unit with its extra columns, and the names that those had in their tables."""
+    built = {
+        "soundings": _build_soundings(results),
+        "model_layers": _build_model_layers(results),
+        "tops": _build_tops(results),
+        "wells": _build_wells(results),
+        "well_intervals": _build_well_intervals(results),
+    }
+    frames = {}
+    for name, words in LAYERS.items():
+        rows, extras = built[name] if name in built else _take_layer(results, name)
+        frames[name] = _finish_frame(words, rows, extras, results)
+    return frames
+
+
+Rows = tuple[pd.DataFrame, Sequence[Mapping[str, Any]]]
+
+
+def _point_rows(rows: list[dict[str, Any]], extras: Sequence[Mapping[str, Any]] = ()) -> Rows:
+    return pd.DataFrame(rows, dtype=object), extras
+
+
+def _build_soundings(results: Results) -> Rows:
+    inverted = {found.sounding: found for found in results.inverted}
+    columns = {column.sounding: column for column in results.interpretation.columns}
+    rows = [_sounding_row(s, inverted.get(s.name), columns.get(s.name)) for s in results.survey.soundings]
+    return _point_rows(rows, [s.extra for s in results.survey.soundings])
+
+
+def _sounding_row(sounding: Sounding, found: Inverted | None, column: UnitColumn | None) -> dict[str, Any]:
+    curve = sounding.curve
+    row: dict[str, Any] = {
+        "place_at": (sounding.easting, sounding.northing),
+        "sounding": sounding.name,
+        "ground_elevation": sounding.ground_elevation,
+        "largest_ab2": float(curve.half_spacing.max()) if curve.half_spacing.size else np.nan,
+        "n_readings": int(curve.used.sum()),
+        "n_set_aside": int((~curve.used).sum()),
+        "array": sounding.array,
+        "azimuth": sounding.azimuth_deg,
+        "date": sounding.date,
+        "note": sounding.note,
+    }
+    if found is not None:
+        row |= {
+            "rms_percent": found.rms_percent,
+            "n_layers": found.n_layers,
+            "investigated_depth": found.investigated_depth,
+            "segment_factors": "; ".join(f"{factor:.3f}" for factor in found.segment_factor),
+            "remarks": " ".join(found.remarks),
+        }
+    if column is not None:
+        row |= {
+            "bedrock_status": column.bedrock_status,
+            "bedrock_depth": column.bedrock_depth,
+            "bedrock_depth_error": column.bedrock_depth_error,
+            "sentence": column.sentence,
+            "interpreter": "; ".join(dict.fromkeys(pick.interpreter for pick in column.picks)),
+        }
+    return row
+
+
+def _build_model_layers(results: Results) -> Rows:
+    soundings = {sounding.name: sounding for sounding in results.survey.soundings}
+    columns = {column.sounding: column for column in results.interpretation.columns}
+    rows: list[dict[str, Any]] = []
+    for found in results.inverted:
+        sounding, column = soundings[found.sounding], columns.get(found.sounding)
+        top = found.model.top_depth
+        low, high = resistivity_quantiles(found)
+        for index, resistivity in enumerate(found.model.resistivity):
+            row: dict[str, Any] = {
+                "place_at": (sounding.easting, sounding.northing),
+                "sounding": found.sounding,
+                "layer": index + 1,
+                "top_depth": top[index],
+                "bottom_depth": top[index + 1] if index + 1 < top.size else np.nan,
+                "top_elevation": sounding.ground_elevation - top[index],
+                "resistivity": resistivity,
+                "resistivity_p05": low[index],
+                "resistivity_p95": high[index],
+            }
+            if column is not None:
+                row |= {"unit": column.unit[index], "unit_probability": column.unit_probability[index]}
+            rows.append(row)
+    return _point_rows(rows)
+
+
+def resistivity_quantiles(found: Inverted) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    """5 % and 95 % quantiles of each layer's resistivity (ohm m) over the weighted models that fit the curve."""
+    members, weight = found.ensemble.resistivity, found.ensemble.weight
+    quantiles = [np.quantile(members, q, axis=0, method="inverted_cdf", weights=weight) for q in (0.05, 0.95)]
+    return quantiles[0], quantiles[1]
+
+
+def _build_tops(results: Results) -> Rows:
+    names = ("place", "kind", "unit", "contact", "status", "depth", "elevation", "standard_error", "source")
+    rows = [
+        {"place_at": (top.easting, top.northing), **{name: getattr(top, name) for name in names}}
+        for top in results.interpretation.tops
+    ]
+    return _point_rows(rows)
+
+
+def _build_wells(results: Results) -> Rows:
+    rock = {unit.code for unit in results.region.template.with_role(Role.BEDROCK)}
+    reached = {reading.well for reading in results.interpretation.well_readings if reading.unit in rock}
+    rows = [
+        {
+            "place_at": (well.easting, well.northing),
+            "well": well.name,
+            "ground_elevation": well.ground_elevation,
+            "total_depth": well.total_depth,
+            "reached_bedrock": well.name in reached,
+            "water_level": well.water_level,
+            "specific_conductance": well.specific_conductance,
+            "location_accuracy": well.location_accuracy,
+        }
+        for well in results.survey.wells
+    ]
+    return _point_rows(rows, [well.extra for well in results.survey.wells])
+
+
+def _build_well_intervals(results: Results) -> Rows:
+    wells: dict[str, Well] = {well.name: well for well in results.survey.wells}
+    typed = {(w.name, log.top, log.bottom): log.extra for w in wells.values() for log in w.intervals}
+    rows: list[dict[str, Any]] = []
+    extras = []
+    for reading in results.interpretation.well_readings:
+        well = wells[reading.well]
+        rows.append(
+            {
+                "place_at": (well.easting, well.northing),
+                "well": reading.well,
+                "top": reading.top,
+                "bottom": reading.bottom,
+                "description": reading.description,
+                "unit": reading.unit,
+                "confidence": reading.confidence,
+            }
+        )
+        extras.append(typed.get((reading.well, reading.top, reading.bottom), {}))
+    return _point_rows(rows, extras)
+
+
+def _take_layer(results: Results, name: str) -> Rows:
+    layer = results.layers[name]
+    rows = pd.DataFrame(layer.drop(columns=layer.geometry.name))
+    rows["place_at"] = np.asarray(layer.geometry)
+    return rows, [permit.extra for permit in results.survey.permits] if name == "permits" else ()
+
+
+def _finish_frame(
+    words: LayerWords, rows: pd.DataFrame, extras: Sequence[Mapping[str, Any]], results: Results
+) -> tuple[geopandas.GeoDataFrame, Mapping[str, str]]:
+    metres = results.region.metres_per_length_unit
+    columns: dict[str, Any] = {}
+    for column in words.columns:
+        values = rows[column.name] if column.name in rows else pd.Series([None] * len(rows), dtype=object)
+        columns[column.name] = _type_values(values, column, metres)
+    labels = {}
+    for original, values in _gather_extras(extras, results.region.delivery.withhold).items():
+        name = _free_name(original, columns)
+        labels[name] = original
+        columns[name] = values
+    places = list(rows["place_at"]) if "place_at" in rows else []
+    shapes: Any = places
+    if words.geometry == "Point" and places and isinstance(places[0], tuple):
+        shapes = geopandas.points_from_xy(*np.array(places, float).T)
+    frame = geopandas.GeoDataFrame(columns, geometry=shapes, crs=results.region.crs)
+    return frame.rename_geometry(GEOMETRY), labels
+
+
+def _type_values(values: pd.Series, column: Column, metres: float) -> Any:
+    """A column in the delivery's unit and in one type, absent values as the type's null."""
+    if column.kind == "text":
+        return pd.Series([None if _is_absent(value) else str(value) for value in values], dtype=object)
+    if column.kind == "flag":
+        return pd.Series([None if _is_absent(value) else bool(value) for value in values], dtype="boolean")
+    if column.kind == "count":
+        return pd.Series([None if _is_absent(value) else int(value) for value in values], dtype="Int32")
+    numbers = np.array([np.nan if _is_absent(value) else float(value) for value in values], float)
+    converted = convert_to_delivery(numbers, column.kind, metres)
+    return np.round(converted, DECIMALS) if column.kind == "length" else converted
+
+
+def _is_absent(value: Any) -> bool:
+    return value is None or value is pd.NA or (isinstance(value, float) and np.isnan(value))
+
+
+def _gather_extras(extras: Sequence[Mapping[str, Any]], withhold: Iterable[str]) -> dict[str, Any]:
+    """The tables' own further columns by name, less the withheld ones; numbers stay numbers, all else becomes text."""
+    kept_home = {name.strip().casefold() for name in withhold}
+    names = dict.fromkeys(name for extra in extras for name in extra if name.strip().casefold() not in kept_home)
+    gathered: dict[str, Any] = {}
+    for name in names:
+        values = [extra.get(name) for extra in extras]
+        present = [value for value in values if not _is_absent(value)]
+        if present and all(isinstance(value, int | float) and not isinstance(value, bool) for value in present):
+            gathered[name] = np.array([np.nan if value is None else float(value) for value in values], float)
+        else:
+            gathered[name] = pd.Series([None if _is_absent(value) else str(value) for value in values], dtype=object)
+    return gathered
+
+
+def _free_name(original: str, taken: Mapping[str, Any]) -> str:
+    """A column name that no other column has, letter case aside, made of letters, digits and underscores."""
+    base = re.sub(r"\W+", "_", original).strip("_") or "column"
+    used = {name.casefold() for name in (*taken, *_RESERVED)}
+    name, count = base, 1
+    while name.casefold() in used:
+        count += 1
+        name = f"{base}_typed" if count == 2 else f"{base}_typed{count - 1}"
+    return name
+
+
+def _write_layers(results: Results, path: Path) -> Mapping[str, tuple[geopandas.GeoDataFrame, Mapping[str, str]]]:
+    frames = build_frames(results)
+    for name, (frame, _) in frames.items():
+        words = LAYERS[name]
+        pyogrio.write_dataframe(
+            frame,
+            path,
+            layer=name,
+            driver="GPKG",
+            append=path.exists(),
+            geometry_type=words.geometry,
+            dataset_options={} if path.exists() else {"VERSION": "1.3"},
+            layer_options={"IDENTIFIER": words.title, "DESCRIPTION": words.description, "GEOMETRY_NAME": GEOMETRY},
+        )
+    return frames
+
+
+def _describe_columns(
+    database: sqlite3.Connection, words: LayerWords, labels: Mapping[str, str], results: Results
+) -> None:
+    """Rows of the schema extension: a title with its unit, a description and a value domain for each column."""
+    template = {unit.code: unit.name for unit in results.region.template.units}
+    for column in words.columns:
+        unit = name_unit(column.kind, results.region.length_unit)
+        title = f"{column.title} ({unit})" if unit else column.title
+        if column.name.endswith("elevation") and results.region.vertical_datum:
+            title = f"{title}, {results.region.vertical_datum}"
+        codes = template if column.name == "unit" else column.codes
+        constraint = f"{words.name}_{column.name}" if codes or column.span else None
+        database.execute(
+            "INSERT INTO gpkg_data_columns VALUES (?, ?, ?, ?, ?, NULL, ?)",
+            (words.name, column.name, column.name, title, column.description, constraint),
+        )
+        database.executemany(
+            "INSERT INTO gpkg_data_column_constraints VALUES (?, 'enum', ?, NULL, NULL, NULL, NULL, ?)",
+            [(constraint, code, meaning) for code, meaning in codes.items()],
+        )
+        if column.span:
+            database.execute(
+                "INSERT INTO gpkg_data_column_constraints VALUES (?, 'range', NULL, ?, 1, ?, 1, ?)",
+                (constraint, *column.span, column.description),
+            )
+    database.executemany(
+        "INSERT INTO gpkg_data_columns VALUES (?, ?, ?, ?, 'Carried through as typed.', NULL, NULL)",
+        [(words.name, name, name, original) for name, original in labels.items()],
+    )
+
+
+def _attach_record(database: sqlite3.Connection, record: str, timestamp: str) -> None:
+    """The metadata record as a row of the metadata extension, and the same date on everything."""
+    database.execute(
+        "INSERT INTO gpkg_metadata VALUES (1, 'dataset', 'http://www.isotc211.org/2005/gmd', 'text/xml', ?)", (record,)
+    )
+    database.execute(
+        "INSERT INTO gpkg_metadata_reference VALUES ('geopackage', NULL, NULL, NULL, ?, 1, NULL)", (timestamp,)
+    )
+    database.execute("UPDATE gpkg_contents SET last_change = ?", (timestamp,))
+
+
+def _timestamp(tags: Mapping[str, str]) -> str:
+    """The date of the job as a GeoPackage writes it: to the millisecond, in UTC."""
+    moment = pd.Timestamp(tags["date"])
+    moment = moment.tz_localize("UTC") if moment.tzinfo is None else moment.tz_convert("UTC")
+    return moment.strftime("%Y-%m-%dT%H:%M:%S.000Z")
+
+
+def _verify(path: Path, counts: Mapping[str, int]) -> None:
+    with closing(sqlite3.connect(path)) as database:
+        broken = database.execute("PRAGMA integrity_check").fetchone()[0]
+    if broken != "ok":
+        raise DeliveryError(f"{path.name} is not a sound database: {broken}")
+    for name, expected in counts.items():
+        found = pyogrio.read_info(path, layer=name)["features"]
+        if found != expected:
+            raise DeliveryError(f"{path.name}, layer {name}: {found} rows read back, {expected} were written")

@@ -1,0 +1,268 @@
+"""ISO 19139 records for each raster and for the GeoPackage."""
+
+import re
+import uuid
+import xml.etree.ElementTree as ET
+from collections.abc import Iterator, Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+import pyproj
+from pygeometa.schemas.iso19139 import ISO19139OutputSchema
+
+from geoves.delivery.cautions import list_cautions
+from geoves.delivery.dictionary import LAYERS, LENGTH_UNITS, PART_TITLES, RASTERS, Part, name_part, name_unit
+from geoves.delivery.rasters import describe_vertical
+from geoves.domain.region import Region
+from geoves.domain.results import Results
+from geoves.errors import DeliveryError
+
+GEOPACKAGE = "layers.gpkg"
+_KEYWORDS = ("hydrogeology", "buried valley", "vertical electrical sounding", "resistivity", "aquifer", "bedrock")
+_NAMESPACES = {
+    "gmd": "http://www.isotc211.org/2005/gmd",
+    "gco": "http://www.isotc211.org/2005/gco",
+    "gml": "http://www.opengis.net/gml",
+    "gmx": "http://www.isotc211.org/2005/gmx",
+    "xlink": "http://www.w3.org/1999/xlink",
+    "xsi": "http://www.w3.org/2001/XMLSchema-instance",
+}
+_DECLARATION = '<?xml version="1.0" encoding="UTF-8"?>\n'
+# What XML 1.0 cannot hold even as an entity.
+_NOT_XML = re.compile("[^\t\n\r\u0020-\ud7ff\ue000-\ufffd\U00010000-\U0010ffff]")
+
+
+def write_metadata(
+    results: Results, folder: Path, record: Mapping[str, Any], files: Sequence[Path]
+) -> tuple[Path, ...]:
+    """The paths of the records, one in folder/metadata for each raster and GeoPackage among `files`.
+
+    `record["date"]` (ISO 8601) dates them; nothing else is read of the clock, so the same job gives the same bytes.
+    """
+    target = folder / "metadata"
+    target.mkdir(parents=True, exist_ok=True)
+    by_name = {name_part(words.name, part): (words.name, part) for words in RASTERS.values() for part in words.parts}
+    written = []
+    for file in files:
+        if file.suffix == ".gpkg":
+            text = render_geopackage_record(results, record)
+        elif file.stem in by_name:
+            text = render_raster_record(results, record, *by_name[file.stem])
+        else:
+            continue
+        path = target / f"{file.stem}.xml"
+        path.write_text(text, encoding="utf-8")
+        written.append(path)
+    return tuple(written)
+
+
+def render_raster_record(results: Results, record: Mapping[str, Any], name: str, part: Part) -> str:
+    """The XML record of one raster."""
+    words = RASTERS[name]
+    title = ", ".join(filter(None, (words.title, PART_TITLES[part])))
+    unit = name_unit(words.kind, results.region.length_unit) or "0 to 1"
+    abstract = f"{words.description} Values in {unit}, on a grid of {results.region.cell_size:g} units of the CRS."
+    if words.kind == "length":
+        abstract += f" Rounded to 1/64 {results.region.length_unit}."
+    resource = (f"surfaces/{name_part(name, part)}.tif", "GeoTIFF, cloud-optimised", "grid")
+    text = _render(results, record, (title, abstract), resource)
+    return _complete(text, results, name, with_heights=words.elevation)
+
+
+def render_geopackage_record(results: Results, record: Mapping[str, Any]) -> str:
+    """The XML record of the GeoPackage."""
+    listed = "; ".join(f"{words.name}: {words.description}" for words in LAYERS.values())
+    unit = LENGTH_UNITS[results.region.length_unit]
+    abstract = f"Layers of a reconnaissance by vertical electrical soundings, lengths in {unit}. {listed}"
+    text = _render(results, record, ("Layers", abstract), (GEOPACKAGE, "GeoPackage 1.3", "vector"))
+    return _complete(text, results, None, with_heights=True)
+
+
+def _render(results: Results, record: Mapping[str, Any], words: tuple[str, str], resource: tuple[str, str, str]) -> str:
+    """What pygeometa writes of one file: `words` are title and abstract, `resource` its name, format and kind."""
+    title, _ = words
+    file, file_format, representation = resource
+    if "date" not in record:
+        raise DeliveryError("the record of the run names no date, which every metadata record needs")
+    date = str(record["date"])
+    region = results.region
+    contact = _describe_contact(region)
+    mcf = {
+        "metadata": {
+            "identifier": str(uuid.uuid5(uuid.NAMESPACE_URL, f"geoves/{region.name}/{region.crs}/{file}")),
+            "language": "eng",
+            "charset": "utf8",
+            "hierarchylevel": "dataset",
+            "datestamp": date,
+            "dataseturi": file,
+        },
+        "spatial": {"datatype": representation, "geomtype": "complex"},
+        "identification": _identify(results, words, date),
+        "contact": {"pointOfContact": contact, "author": contact},
+        "distribution": {
+            "file": {
+                "url": file,
+                "type": "FILE",
+                "name": file,
+                "description": _clean(f"{title} ({file_format})"),
+                "function": "download",
+            },
+        },
+        "dataquality": {
+            "scope": {"level": "dataset"},
+            "lineage": {"statement": _clean(_tell_lineage(results, record))},
+        },
+    }
+    return str(ISO19139OutputSchema().write(mcf))
+
+
+def _identify(results: Results, words: tuple[str, str], date: str) -> dict[str, Any]:
+    """What the file is, where it lies, and how it may be used."""
+    region = results.region
+    title, abstract = words
+    limits = region.delivery.use_limits
+    return {
+        "language": "eng",
+        "charset": "utf8",
+        "title": _clean(f"{title}, {region.name}"),
+        "abstract": _clean(abstract),
+        "dates": {"creation": date},
+        "keywords": {"default": {"keywords": list(_KEYWORDS), "keywords_type": "theme"}},
+        "topiccategory": ["geoscientificInformation"],
+        "extents": {"spatial": _measure_extent(results), "temporal": []},
+        "rights": _clean(" ".join(filter(None, (limits, *list_cautions())))),
+        "accessconstraints": "otherRestrictions",
+        "license": {"name": _clean(f"Use limits: {limits or 'not stated'}")},
+        "status": "completed",
+        "maintenancefrequency": "asNeeded",
+        "url": _clean(" ".join(_tell_accuracy(results))),
+    }
+
+
+def _measure_extent(results: Results) -> list[dict[str, Any]]:
+    """The grid's bounds in longitude and latitude, as every catalogue wants them."""
+    to_degrees = pyproj.Transformer.from_crs(results.region.crs, "EPSG:4326", always_xy=True)
+    bounds = to_degrees.transform_bounds(*results.stack.grid.bounds)
+    return [{"bbox": [f"{value:.6f}" for value in bounds], "crs": 4326}]
+
+
+def _describe_contact(region: Region) -> dict[str, Any]:
+    contact = region.delivery.contact
+    empty = ("positionname", "address", "city", "administrativearea", "country", "hoursofservice", "phone", "fax")
+    return {
+        **dict.fromkeys((*empty, "contactinstructions")),
+        "organization": _clean(region.delivery.organisation or "not stated"),
+        "individualname": _clean(contact or "not stated"),
+        "email": _clean(contact) if "@" in contact else None,
+        "postalcode": "",
+        "url": "",
+    }
+
+
+def _clean(text: str) -> str:
+    """Text without the characters that XML cannot hold."""
+    return _NOT_XML.sub("\ufffd", text)
+
+
+def _tell_lineage(results: Results, record: Mapping[str, Any]) -> str:
+    """How the values came about, in one paragraph."""
+    survey, region = results.survey, results.region
+    places = (
+        f"{len(survey.soundings)} vertical electrical soundings",
+        f"{len(survey.wells)} control wells",
+        f"{len(survey.picks)} picks by the interpreter",
+    )
+    parts = [
+        f"Made from the region {region.name}: {', '.join(places)}.",
+        "Curves were tied and inverted as horizontal layers, which the resistivity template turned into units.",
+        f"Tops, bounds and thicknesses were kriged (method '{region.method}').",
+        f"Surfaces are blank outside the boundary and beyond {results.stack.reach:g} units of the CRS from data.",
+        f"Random seed {region.random_seed}.",
+    ]
+    versions = record.get("versions")
+    if isinstance(versions, Mapping):
+        parts.append("Software: " + ", ".join(f"{name} {version}" for name, version in versions.items()) + ".")
+    inputs = record.get("inputs")
+    if isinstance(inputs, Mapping):
+        parts.append("Inputs: " + ", ".join(f"{key} ({value})" for key, value in _flatten(inputs)) + ".")
+    parts.extend(results.stack.remarks)
+    return " ".join(parts)
+
+
+def _tell_accuracy(results: Results) -> Iterator[str]:
+    yield "Accuracy as found by the job itself:"
+    merit = [f"{key} {value}" for key, value in _flatten(results.figures_of_merit)]
+    yield "; ".join(merit) + "." if merit else "no figures were computed."
+    yield describe_vertical(results.region)[1] + "."
+
+
+def _flatten(tree: Mapping[str, Any], above: str = "") -> Iterator[tuple[str, str]]:
+    """Leaves of a nested mapping as words: what each is called, and its value to four figures."""
+    for key, value in tree.items():
+        name = f"{above} {key}".strip()
+        if isinstance(value, Mapping):
+            yield from _flatten(value, name)
+        else:
+            yield name, f"{value:.4g}" if isinstance(value, float) else str(value)
+
+
+def _complete(text: str, results: Results, surface: str | None, *, with_heights: bool) -> str:
+    """The record with what pygeometa has no place for: both reference systems, figures of merit as quality reports."""
+    for prefix, address in _NAMESPACES.items():
+        ET.register_namespace(prefix, address)
+    root = ET.fromstring(text)  # noqa: S314 - written by ourselves a moment ago
+    horizontal = root.find("gmd:referenceSystemInfo", _NAMESPACES)
+    if horizontal is None:
+        raise DeliveryError("the metadata record has no reference system")
+    place = list(root).index(horizontal)
+    root.remove(horizontal)
+    root.insert(place, _reference_system(results.region.crs))
+    if with_heights and results.region.vertical_datum:
+        root.insert(place + 1, _reference_system(results.region.vertical_datum))
+    quality = root.find("gmd:dataQualityInfo/gmd:DQ_DataQuality", _NAMESPACES)
+    if quality is None:
+        raise DeliveryError("the metadata record has no statement of quality")
+    merit = results.figures_of_merit
+    own = merit.get(surface) if surface else None
+    chosen = _flatten({surface: own}) if isinstance(own, Mapping) and surface else _flatten(merit)
+    for index, (name, value) in enumerate(chosen):
+        quality.insert(1 + index, _quality_report(name, value))
+    return _DECLARATION + ET.tostring(root, encoding="unicode") + "\n"
+
+
+def _nest(*names: str) -> tuple[ET.Element, ET.Element]:
+    """Elements one inside the other: the outermost and the innermost."""
+    outer = inner = ET.Element(_qualify(names[0]))
+    for name in names[1:]:
+        inner = ET.SubElement(inner, _qualify(name))
+    return outer, inner
+
+
+def _qualify(name: str) -> str:
+    prefix, local = name.split(":")
+    return f"{{{_NAMESPACES[prefix]}}}{local}"
+
+
+def _reference_system(crs: str) -> ET.Element:
+    """A CRS by its registered name, or written out where it has none."""
+    outer, text = _nest(
+        "gmd:referenceSystemInfo", "gmd:MD_ReferenceSystem", "gmd:referenceSystemIdentifier", "gmd:RS_Identifier",
+        "gmd:code", "gco:CharacterString",
+    )  # fmt: skip
+    known = pyproj.CRS.from_user_input(crs)
+    authority = known.to_authority()
+    text.text = f"urn:ogc:def:crs:{authority[0]}::{authority[1]}" if authority else known.to_wkt()
+    return outer
+
+
+def _quality_report(name: str, value: str) -> ET.Element:
+    """A figure of merit as DQ_QuantitativeAttributeAccuracy (ISO 19115:2003, B.2.4)."""
+    outer, report = _nest("gmd:report", "gmd:DQ_QuantitativeAttributeAccuracy")
+    measure = ET.SubElement(report, _qualify("gmd:nameOfMeasure"))
+    ET.SubElement(measure, _qualify("gco:CharacterString")).text = _clean(name)
+    result = ET.SubElement(report, _qualify("gmd:result"))
+    quantitative = ET.SubElement(result, _qualify("gmd:DQ_QuantitativeResult"))
+    ET.SubElement(quantitative, _qualify("gmd:valueUnit")).set(_qualify("gco:nilReason"), "inapplicable")
+    held = ET.SubElement(quantitative, _qualify("gmd:value"))
+    ET.SubElement(held, _qualify("gco:Record")).text = _clean(value)
+    return outer
