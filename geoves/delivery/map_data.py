@@ -45,7 +45,7 @@ def describe_region(results: Results) -> dict[str, Any]:
             "name": region.name,
             "crs": region.crs,
             "crsName": pyproj.CRS(region.crs).name,
-            "datum": region.vertical_datum,
+            "datumName": pyproj.CRS(region.vertical_datum).name if region.vertical_datum else None,
             "unit": {"label": unit_label(region.length_unit), "metres": region.metres_per_length_unit},
             "crsMetres": region.crs_unit_metres,
             "madeBy": [words for words in (region.delivery.organisation, region.delivery.contact) if words],

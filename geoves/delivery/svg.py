@@ -56,7 +56,7 @@ def logarithmic_ticks(low: float, high: float) -> list[float]:
     [10.0, 20.0, 50.0, 100.0, 200.0]
     """
     decades_spanned = np.log10(high / low)
-    steps = (1, 1.5, 2, 3, 5, 7) if decades_spanned < 0.9 else (1, 2, 5) if decades_spanned < 2.5 else (1,)
+    steps = (1, 1.5, 2, 3, 5, 7) if decades_spanned < 0.9 else (1, 2, 5) if decades_spanned < 3.1 else (1,)
     decades = range(int(np.floor(np.log10(low))), int(np.ceil(np.log10(high))) + 1)
     ticks = [float(step * 10.0**decade) for decade in decades for step in steps]
     return [tick for tick in ticks if low * 0.999 <= tick <= high * 1.001]

@@ -50,7 +50,7 @@ const ABOVE = "#e9e0bd";
 
 function drawStrip(column) {
   const deepest = Math.max(column.rock.p95 * 1.12, column.rock.estimate * 1.2, 5);
-  const top = 20, height = 320, x = 62, width = 92;
+  const top = 20, height = 320, x = 44, width = 84;
   const y = (depth) => top + depth / deepest * height;
   const figure = draw("svg", { class: "figure strip", viewBox: "0 0 350 366", width: 350, height: 366, role: "img" });
   figure.append(draw("title", {}, "Predicted column, drawn to scale from the ground down"));
@@ -68,27 +68,34 @@ function drawStrip(column) {
 function stripScale(deepest, y, x, metres, unit) {
   const left = unit === "ft";
   const anchor = left ? { "text-anchor": "end" } : {};
-  const marks = evenTicks(0, deepest / metres, 6).flatMap((tick) => [
-    draw("line", { x1: x, x2: x + (left ? -5 : 5), y1: y(tick * metres), y2: y(tick * metres), stroke: "currentColor" }),
-    draw("text", { x: x + (left ? -8 : 8), y: y(tick * metres) + 4, class: "tick", ...anchor }, tickWords(tick)),
-  ]);
-  return [...marks, draw("text", { x: x + (left ? -8 : 8), y: 11, class: "tick", ...anchor }, unit)];
+  const words = (at, shown) => draw("text", { x: x + (left ? -8 : 8), y: svgNumber(at), class: "tick", ...anchor }, shown);
+  const marks = evenTicks(0, deepest / metres, 6).flatMap((tick) => {
+    const at = y(tick * metres);
+    return [draw("path", { d: `M${x} ${svgNumber(at)}h${left ? -5 : 5}`, class: "bracket" }), words(at + 4, tickWords(tick))];
+  });
+  return [...marks, words(11, unit)];
 }
 
+// What is where, beside the strip; the beds above are named together, for the surfaces do not part them.
 function stripLabels(column, y, x, bottom) {
-  const wanted = [];
-  const thick = drawnThickness(column);
+  const thick = drawnThickness(column), rock = y(column.rock.estimate);
   const gravelTop = Math.max(column.rock.estimate - thick, 0);
-  const between = described.units.filter((unit) => !["deep_aquifer", "bedrock"].includes(unit.role));
-  const above = between.length ? between.map((unit) => unit.name).join(", ") : "what lies above";
-  wanted.push({ at: y(gravelTop / 2), words: above.length > 30 ? "beds above, not told apart" : `${above}` });
-  if (thick > 0) wanted.push({ at: y(gravelTop + thick / 2), words: `${nameOf("deep_aquifer", "gravel")} (${column.gravelChance.toFixed(2)})` });
-  wanted.push({ at: Math.max(y(column.rock.estimate) + 16, (y(column.rock.estimate) + bottom) / 2), words: nameOf("bedrock", "rock") });
-  for (let i = 1; i < wanted.length; i += 1) wanted[i].at = Math.max(wanted[i].at, wanted[i - 1].at + 15);
-  const bracket = `M${x + 40} ${svgNumber(y(column.rock.p05))}h6V${svgNumber(y(column.rock.p95))}h-6M${x + 40} ${svgNumber(y(column.rock.estimate))}h10`;
+  const above = described.units.filter((unit) => !["deep_aquifer", "bedrock"].includes(unit.role));
+  const lines = [...above.map((unit) => unit.name), above.length > 1 ? "(not told apart here)" : ""].filter(Boolean);
+  const first = Math.max(y(gravelTop / 2) - 7 * lines.length, 26);
+  const wanted = lines.map((words, i) => ({ at: first + 14 * i, words }));
+  if (thick > 0) {
+    const words = `${nameOf("deep_aquifer", "gravel")} (${column.gravelChance.toFixed(2)})`;
+    wanted.push({ at: y(gravelTop + thick / 2), words });
+  }
+  wanted.push({ at: Math.max(rock + 16, (rock + bottom) / 2), words: nameOf("bedrock", "rock") });
+  for (let i = 1; i < wanted.length; i += 1) wanted[i].at = Math.max(wanted[i].at, wanted[i - 1].at + 14);
+  const [low, high] = [column.rock.p05, column.rock.p95].map((depth) => svgNumber(y(depth)));
+  const bracket = `M${x + 40} ${low}h6V${high}h-6M${x + 40} ${svgNumber(rock)}h10`;
   return [
     draw("path", { d: bracket, class: "bracket" }),
-    ...wanted.map((label) => draw("text", { x: x + 56, y: svgNumber(label.at + 4), class: "halo" }, label.words)),
+    ...wanted.map(({ at, words }) => draw("text", { x: x + 56, y: svgNumber(at + 4), class: "halo" },
+      words.length > 27 ? `${words.slice(0, 26)}\u2026` : words)),
   ];
 }
 

@@ -11,13 +11,17 @@ const shapes = {
 
 function symbol(shape) {
   return draw("svg", { width: 16, height: 16, viewBox: "0 0 16 16", "aria-hidden": "true" },
-    draw("path", { d: shapes[shape].d, class: shapes[shape].style, fill: "#fff", stroke: "#111", "stroke-width": 1.5 }));
+    draw("path", { d: shapes[shape].d, class: shapes[shape].style }));
 }
 
 const wellShape = (well) => known(well.rock) ? "rock" : "ended";
-const soundingSays = (sounding) => sounding.status === null ? "no model"
-  : sounding.status === "deeper_than" ? `bedrock deeper than ${lengthWords(sounding.depth)}`
-    : known(sounding.depth) ? `${statusWords[sounding.status]}, ${lengthWords(sounding.depth)}` : statusWords[sounding.status];
+
+function soundingSays({ status, depth }) {
+  if (status === null) return "no model";
+  if (status === "deeper_than") return `bedrock deeper than ${lengthWords(depth)}`;
+  return known(depth) ? `${statusWords[status]}, ${lengthWords(depth)}` : statusWords[status];
+}
+
 const wellSays = (well) => known(well.rock) ? `reached rock at ${lengthWords(well.rock)}`
   : `ended above rock at ${lengthWords(well.total)}`;
 
@@ -46,15 +50,16 @@ function soundingMarkers(open) {
 }
 
 function wellMarkers(open) {
-  return L.layerGroup(described.wells.map((one) => placeMarker(one, wellShape(one), `Well ${one.name}: ${wellSays(one)}`, open)));
+  return L.layerGroup(described.wells.map((one) =>
+    placeMarker(one, wellShape(one), `Well ${one.name}: ${wellSays(one)}`, open)));
 }
 
 // Small dots that grow with the zoom; near enough, they bear their names.
 function permitMarkers(map, open) {
   const renderer = L.canvas({ pane: "permits" });
   const dots = described.permits.map((permit) => {
-    const dot = L.circleMarker(permit.at, { renderer, pane: "permits", radius: 2.5, weight: 1, color: "#111", fillColor: "#fff",
-      fillOpacity: 0.95, bubblingMouseEvents: false });
+    const dot = L.circleMarker(permit.at, { renderer, pane: "permits", radius: 2.5, weight: 1, color: "#111",
+      fillColor: "#fff", fillOpacity: 0.95, bubblingMouseEvents: false });
     dot.on("click", () => open(permit));
     return { permit, dot };
   });
@@ -75,18 +80,21 @@ function permitMarkers(map, open) {
 
 function lineLayers(map) {
   const renderer = L.svg({ pane: "lines" });
-  const lines = (paths, style) => L.polyline(paths, { renderer, pane: "lines", interactive: false, ...style });
+  const lines = (paths, color, weight, style = {}) =>
+    L.polyline(paths, { renderer, pane: "lines", interactive: false, color, weight, ...style });
   const group = (parts) => L.layerGroup(parts.filter((part) => part.getLatLngs().length));
   const given = described.lines;
   return {
-    boundary: group([lines(given.boundary, { color: "#333", weight: 2 }), lines(given.boundary, { color: "#fff", weight: 0.7 })]),
-    contours: group(given.bedrock_contours.map((one) => lines(one.paths, { color: "#222", weight: 0.8, opacity: 0.75 }))),
-    thickness: group(given.thickness_contours.map((one) => lines(one.paths, { color: "#222", weight: 0.8, dashArray: "1 4" }))),
-    axis: group([lines(given.valley_axis, { color: "#fff", weight: 5, opacity: 0.8 }), lines(given.valley_axis, { color: "#111", weight: 1.8 })]),
-    extent: group(given.gravel_extent.flatMap((one) => [
-      lines(one.paths, { color: "#fff", weight: 3.2, opacity: 0.8 }),
-      lines(one.paths, { color: "#7a1fa2", weight: 1.8, dashArray: one.value === "likely" ? null : "5 5" }),
-    ])),
+    boundary: group([lines(given.boundary, "#333", 2), lines(given.boundary, "#fff", 0.7)]),
+    contours: group(given.bedrock_contours.map((one) => lines(one.paths, "#222", 0.8, { opacity: 0.75 }))),
+    thickness: group(given.thickness_contours.map((one) => lines(one.paths, "#222", 0.8, { dashArray: "1 4" }))),
+    axis: group([lines(given.valley_axis, "#fff", 5, { opacity: 0.8 }), lines(given.valley_axis, "#111", 1.8)]),
+    // The likely extent comes last, for the possible one shares its edge and would dash it.
+    extent: group([...given.gravel_extent].sort((one, other) => (one.value === "likely") - (other.value === "likely"))
+      .flatMap((one) => [
+        lines(one.paths, "#fff", 3.2, { opacity: 0.8 }),
+        lines(one.paths, "#7a1fa2", 1.8, { dashArray: one.value === "likely" ? null : "5 5" }),
+      ])),
     labels: L.layerGroup(contourLabels(given.bedrock_contours)),
   };
 }
@@ -99,13 +107,15 @@ function contourLabels(contours) {
     const words = draw("svg", { width: 50, height: 14, viewBox: "0 0 50 14", "aria-hidden": "true" },
       draw("text", { x: 25, y: 11, "text-anchor": "middle", class: "halo" }, lengthNumber(one.value)));
     const icon = L.divIcon({ className: "contour", html: words, iconSize: [50, 14] });
-    return [L.marker(longest[Math.floor(longest.length / 2)], { icon, interactive: false, keyboard: false, pane: "lines" })];
+    const middle = longest[Math.floor(longest.length / 2)];
+    return [L.marker(middle, { icon, interactive: false, keyboard: false, pane: "lines" })];
   });
 }
 
 function restsOn(easting, northing, itself, openers) {
   const items = nearestPlaces(easting, northing, 3, itself).map(({ kind, place, distance }) => make("li", {},
-    `${distanceWords(distance)}: ${kind} `, make("button", { class: "link", click: () => openers[kind](place) }, place.name),
+    `${distanceWords(distance)}: ${kind} `,
+    make("button", { class: "link", click: () => openers[kind](place) }, place.name),
     `, ${kind === "well" ? wellSays(place) : soundingSays(place)}`));
   return [make("h3", {}, "What this rests on"), make("ul", {}, items)];
 }
@@ -132,9 +142,9 @@ function permitFacts(permit) {
     parts.push(make("p", {}, "The depth asked for may reach rock."));
   }
   if (known(permit.radius) && permit.covered) {
-    parts.push(make("p", {}, `Over the whole circle of its location: rock between ${lengthNumber(permit.bedrock_depth_p05)} and `
-      + `${lengthWords(permit.bedrock_depth_p95)}, gravel ${likelihoodWords(permit.gravel_probability)} `
-      + `(${permit.gravel_probability.toFixed(2)}).`));
+    parts.push(make("p", {}, "Over the whole circle of its location: rock between "
+      + `${lengthNumber(permit.bedrock_depth_p05)} and ${lengthWords(permit.bedrock_depth_p95)}, gravel `
+      + `${likelihoodWords(permit.gravel_probability)} (${permit.gravel_probability.toFixed(2)}).`));
   }
   return parts;
 }
@@ -142,8 +152,9 @@ function permitFacts(permit) {
 function soundingFacts(sounding) {
   const facts = [make("p", { class: "says" }, sounding.sentence)];
   if (!sounding.model) return facts;
-  facts.push(make("p", { class: "soft" }, `${statusWords[sounding.status]}; ${sounding.model.rho.length} layers; misfit `
-    + `${sounding.rms.toFixed(1)} %; the curve reaches to about ${lengthWords(sounding.model.reach)}`));
+  facts.push(make("p", { class: "soft" }, `${statusWords[sounding.status]}; `
+    + `${sounding.model.rho.length} layers; misfit ${sounding.rms.toFixed(1)} %; `
+    + `the curve reaches to about ${lengthWords(sounding.model.reach)}`));
   for (const pick of sounding.picks) {
     const depth = known(pick.depth) ? ` ${lengthWords(pick.depth, 1)}` : "";
     facts.push(make("p", {}, `Pick by ${pick.who}: ${pick.unit} ${pick.status}${depth}; ${pick.why}`));

@@ -16,7 +16,8 @@ function logarithmicEnds(values, margin) {
 
 // Frame, grid, numbers and labels of a plot: `x` and `y` hold ticks, the scale and the label.
 function axes(box, x, y) {
-  const parts = [draw("rect", { x: box.left, y: box.top, width: box.right - box.left, height: box.bottom - box.top, class: "frame" })];
+  const outline = `M${box.left} ${box.top}H${box.right}V${box.bottom}H${box.left}Z`;
+  const parts = [draw("path", { d: outline, class: "frame" })];
   for (const tick of x.ticks) {
     const at = svgNumber(x.scale(tick));
     parts.push(draw("line", { x1: at, x2: at, y1: box.top, y2: box.bottom, class: "grid" }),
@@ -93,19 +94,23 @@ function drawModel(sounding) {
 function drawLog(well) {
   const deepest = well.total, height = Math.max(160, 15 * well.log.length);
   const y = (depth) => 16 + depth / deepest * height;
-  const figure = draw("svg", { class: "figure", viewBox: `0 0 345 ${height + 30}`, width: 345, height: height + 30, role: "img" });
-  figure.append(draw("title", {}, "Driller's log"), draw("text", { x: 42, y: 10, class: "tick", "text-anchor": "end" }, region.unit.label));
+  const size = { viewBox: `0 0 345 ${height + 30}`, width: 345, height: height + 30 };
+  const figure = draw("svg", { class: "figure", ...size, role: "img" });
+  const atLeft = (at, words) => draw("text", { x: 42, y: svgNumber(at), class: "tick", "text-anchor": "end" }, words);
+  figure.append(draw("title", {}, "Driller's log"), atLeft(10, region.unit.label));
   for (const tick of evenTicks(0, deepest / region.unit.metres, 5)) {
-    figure.append(draw("text", { x: 42, y: svgNumber(y(tick * region.unit.metres) + 4), class: "tick", "text-anchor": "end" }, tickWords(tick)));
+    figure.append(atLeft(y(tick * region.unit.metres) + 4, tickWords(tick)));
   }
   let lastLabel = -20;
   for (const [top, bottom, words, unit] of well.log) {
     const fill = unit === null ? "none" : described.units[unit].colour;
-    figure.append(draw("rect", { x: 48, y: svgNumber(y(top)), width: 60, height: svgNumber(Math.max(0.5, y(bottom) - y(top))), fill, stroke: "#555" }));
+    const high = svgNumber(Math.max(0.5, y(bottom) - y(top)));
+    figure.append(draw("rect", { x: 48, y: svgNumber(y(top)), width: 60, height: high, fill, stroke: "#555" }));
     const meant = unit === null ? "no unit claims these words" : described.units[unit].name;
     lastLabel = Math.max((y(top) + y(bottom)) / 2 + 4, lastLabel + 12);
     const said = `${words} (${meant})`;
-    figure.append(draw("text", { x: 116, y: svgNumber(lastLabel) }, said.length > 40 ? `${said.slice(0, 39)}\u2026` : said));
+    const shown = said.length > 40 ? `${said.slice(0, 39)}\u2026` : said;
+    figure.append(draw("text", { x: 116, y: svgNumber(lastLabel) }, shown));
   }
   return figure;
 }

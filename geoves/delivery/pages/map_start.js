@@ -44,8 +44,9 @@ function startReadout(map, current) {
     const value = valueAt(surface.name, cell);
     const band = value && known(value.p05)
       ? ` (${valueWords(surface.quantity, value.p05)} to ${valueWords(surface.quantity, value.p95)})` : "";
-    box.replaceChildren(make("b", { id: "value" }, value ? valueWords(surface.quantity, value.estimate) : "no value here"), band,
-      make("br"), `x ${grouped(place[0])}, y ${grouped(place[1])}`,
+    const words = value ? valueWords(surface.quantity, value.estimate) : "no value here";
+    box.replaceChildren(make("b", { id: "value" }, words), band, make("br"),
+      `x ${grouped(place[0])}, y ${grouped(place[1])}`,
       make("br"), `${event.latlng.lat.toFixed(5)}, ${event.latlng.lng.toFixed(5)}`);
   });
   map.on("mouseout", () => box.replaceChildren());
@@ -77,7 +78,8 @@ function startPanel(map) {
     answer.replaceChildren(make("button", { class: "close", "aria-label": "Close", click: close }, "Close"),
       make("h2", {}, title), ...parts);
     panel.scrollTop = 0;
-    panel.focus({ preventScroll: window.innerWidth > 800 });
+    panel.focus({ preventScroll: true });
+    if (window.innerWidth <= 800) window.scrollTo(0, panel.offsetTop - 0.45 * window.innerHeight);  // map and answer both
     say(`${title}. ${[...answer.querySelectorAll(".says")].map((part) => part.textContent).join(" ")}`);
   };
   document.addEventListener("keydown", (event) => {
@@ -91,12 +93,15 @@ function startPanel(map) {
 function startPlaces(show) {
   const openers = {};
   const rests = (place, itself) => restsOn(place.e, place.n, itself, openers);
-  openers.sounding = (one) => show(one.at, `Sounding ${one.name}`, [...soundingFacts(one), make("h3", {}, "Curve"), drawCurve(one),
+  openers.sounding = (one) => show(one.at, `Sounding ${one.name}`, [
+    ...soundingFacts(one), make("h3", {}, "Curve"), drawCurve(one),
     ...(one.model ? [make("h3", {}, "Model"), drawModel(one)] : []), make("h3", {}, "Predicted column here"),
     ...columnParts(one.e, one.n), ...rests(one, one)]);
-  openers.well = (one) => show(one.at, `Well ${one.name}`, [...wellFacts(one), ...(one.log.length ? [drawLog(one)] : []),
+  openers.well = (one) => show(one.at, `Well ${one.name}`, [
+    ...wellFacts(one), ...(one.log.length ? [drawLog(one)] : []),
     make("h3", {}, "Predicted column here"), ...columnParts(one.e, one.n), ...rests(one, one)]);
-  openers.permit = (one) => show(one.at, `Permit ${one.name}`, [...permitFacts(one), ...columnParts(one.e, one.n), ...rests(one, null)]);
+  openers.permit = (one) => show(one.at, `Permit ${one.name}`, [
+    ...permitFacts(one), ...columnParts(one.e, one.n), ...rests(one, null)]);
   return openers;
 }
 
@@ -131,6 +136,7 @@ async function start() {
   document.getElementById("caution").textContent = described.caution;
   document.getElementById("title").textContent = region.name;
   await unpackAll();
+  map.options.zoomSnap = 0.25;
   map.attributionControl.setPrefix("Drawn with Leaflet");
   makePanes(map);
   const { current } = startSurface(map);

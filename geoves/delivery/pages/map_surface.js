@@ -36,7 +36,7 @@ function faded(colour, doubt) {
 // The surface's picture over the grid's bounds in web mercator; blank cells are hatched.
 function surfacePicture(surface, mode) {
   const [west, south, east, north] = projection.bounds;
-  const fine = Math.min(3, Math.max(1, Math.sqrt(3e6 / (grid.rows * grid.columns))));
+  const fine = Math.min(8, Math.max(1, Math.sqrt(1.5e6 / (grid.rows * grid.columns))));  // pixels a cell
   const canvas = document.createElement("canvas");
   canvas.width = Math.round(grid.columns * fine);
   canvas.height = Math.round(canvas.width * (north - south) / (east - west));
@@ -53,7 +53,7 @@ function surfacePicture(surface, mode) {
       const colour = colours.get(cell);
       const at = 4 * (row * canvas.width + column);
       if (colour) picture.data.set([colour[0], colour[1], colour[2], 255], at);
-      else if ((row + column) % Math.round(6 * fine) < fine) picture.data.set([128, 128, 128, 150], at);
+      else if ((row + column) % 9 < 1) picture.data.set([128, 128, 128, 150], at);
     }
   }
   context.putImageData(picture, 0, 0);
@@ -101,19 +101,21 @@ function drawLegend(surface, mode) {
   }
   const tickAt = (share, words) => draw("text",
     { x: svgNumber(left + share * width), y: rows * high + 13, "text-anchor": "middle", class: "tick" }, words);
+  const [narrow, broad] = (surface.doubt || [0, 0]).map((width) => widthWords(surface, width));
   if (asWidth) {
-    figure.append(tickAt(0.08, widthWords(surface, surface.doubt[0])), tickAt(0.92, widthWords(surface, surface.doubt[1])));
+    figure.append(tickAt(0.08, narrow), tickAt(0.92, broad));
   } else {
-    figure.append(...legendTicks(surface).filter((t) => t.share > 0.01 && t.share < 0.99).map((t) => tickAt(t.share, t.words)));
+    const inside = legendTicks(surface).filter(({ share }) => share > 0.01 && share < 0.99);
+    figure.append(...inside.map(({ share, words }) => tickAt(share, words)));
   }
   if (both) {
     const beside = (y, words) => draw("text", { x: left + width + 6, y, class: "tick" }, words);
-    figure.append(beside(10, widthWords(surface, surface.doubt[0])), beside(rows * high - 2, widthWords(surface, surface.doubt[1])));
+    figure.append(beside(10, `band ${narrow}`), beside(rows * high - 2, `band ${broad}`));
   }
   const explained = both ? "Down: wider 90 % band, less sure. "
-    : asWidth ? "Width of the 90 % band. " : surface.doubt === null && mode !== "value" ? "A probability shows its own doubt. " : "";
-  const title = asWidth ? `${surface.title}: width of the band` : `${surface.title} (${quantityUnit(surface)})`;
-  const datum = surface.quantity === "elevation" ? ` Heights: ${region.datum || "datum not declared"}.` : "";
+    : surface.doubt === null && mode !== "value" ? "A probability shows its own doubt. " : "";
+  const title = asWidth ? `${surface.title}: width of the 90 % band` : `${surface.title} (${quantityUnit(surface)})`;
+  const datum = surface.quantity === "elevation" ? ` Heights: ${region.datumName || "datum not declared"}.` : "";
   box.replaceChildren(make("h2", {}, title), figure,
     make("p", {}, `${explained}Hatched: no data near, or outside the region.${datum}`));
 }

@@ -40,7 +40,9 @@ const lengthWords = (metres, decimals = 0) =>
   known(metres) ? `${lengthNumber(metres, decimals)} ${region.unit.label}` : "not known";
 
 function distanceWords(metres) {
-  if (region.unit.label === "m") return metres < 950 ? `${Math.round(metres / 10) * 10} m` : `${grouped(metres / 1000, 1)} km`;
+  if (region.unit.label === "m") {
+    return metres < 950 ? `${Math.round(metres / 10) * 10} m` : `${grouped(metres / 1000, 1)} km`;
+  }
   const feet = metres / 0.3048;
   return feet < 1000 ? `${Math.round(feet / 50) * 50} ft` : `${grouped(feet / 5280, 1)} mi`;
 }
@@ -82,7 +84,7 @@ function evenTicks(low, high, wanted) {
 
 function logarithmicTicks(low, high) {
   const spanned = Math.log10(high / low);
-  const steps = spanned < 0.9 ? [1, 1.5, 2, 3, 5, 7] : spanned < 2.5 ? [1, 2, 5] : [1];
+  const steps = spanned < 0.9 ? [1, 1.5, 2, 3, 5, 7] : spanned < 3.1 ? [1, 2, 5] : [1];
   const ticks = [];
   for (let decade = Math.floor(Math.log10(low)); decade <= Math.ceil(Math.log10(high)); decade += 1) {
     for (const step of steps) {
