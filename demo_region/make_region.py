@@ -15,17 +15,16 @@ if str(HERE.parent) not in sys.path:  # run as a script, Python looks beside the
     sys.path.insert(0, str(HERE.parent))
 
 from demo_region.generator import files  # noqa: E402 - the path comes first
-from demo_region.generator.columns import draw_columns  # noqa: E402
-from demo_region.generator.county import draw_county  # noqa: E402
+from demo_region.generator.county import County, draw_county  # noqa: E402
 from demo_region.generator.fieldwork import draw_survey  # noqa: E402
 from demo_region.generator.wells import draw_permits, draw_wells  # noqa: E402
 
 DEFAULT_SEED = 1
-SOUNDINGS, PERMITS = 142, 480
+SOUNDINGS, PERMITS = 154, 480
 READING_COLUMNS = ["sounding", "ab2", "mn2", "apparent_resistivity", "voltage_mv", "current_ma", "error_percent"]
 
 
-def make_region(folder, seed=DEFAULT_SEED):
+def make_region(folder: Path, seed: int = DEFAULT_SEED) -> County:
     """Write region.toml, the tables, the rasters and the truth into `folder`; returns the county."""
     folder = Path(folder)
     truth = folder / "truth"
@@ -36,9 +35,9 @@ def make_region(folder, seed=DEFAULT_SEED):
     boundary = files.draw_boundary(county)
     inside = files.inside_test(boundary)
     rng = np.random.default_rng([seed, 2])
-    soundings, readings, columns = draw_survey(county, inside, SOUNDINGS, rng, draw_columns)
-    wells, logs, well_columns = draw_wells(county, inside, rng, draw_columns)
-    permits = draw_permits(PERMITS, rng)
+    soundings, readings, columns = draw_survey(county, inside, SOUNDINGS, rng)
+    wells, logs, well_columns = draw_wells(county, inside, rng)
+    permits = draw_permits(inside, PERMITS, rng)
 
     true_soundings = files.true_soundings(soundings, readings, columns)
     true_wells = files.true_columns(wells[["well", "x", "y"]].itertuples(index=False), well_columns)
@@ -50,7 +49,7 @@ def make_region(folder, seed=DEFAULT_SEED):
         "wells": wells,
         "well_logs": logs,
         "permits": permits,
-        "picks": files.draw_picks(true_soundings, wells, rng),
+        "picks": files.draw_picks(true_soundings, rng),
         "truth/soundings": true_soundings,
         "truth/wells": true_wells,
         "truth/bad_readings": bad,
@@ -64,7 +63,7 @@ def make_region(folder, seed=DEFAULT_SEED):
     return county
 
 
-def main():
+def main() -> None:
     parser = argparse.ArgumentParser(description="Build the demo region, or another county of its kind.")
     parser.add_argument("--seed", type=int, default=DEFAULT_SEED, help="which county (default: the committed one)")
     parser.add_argument("--out", type=Path, default=HERE, help="folder to write (default: beside this script)")

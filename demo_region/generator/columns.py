@@ -3,7 +3,7 @@
 import attrs
 import numpy as np
 
-from demo_region.generator.county import UNITS
+from demo_region.generator.county import UNITS, County
 
 # Standard deviation of the natural log of resistivity from one place to the next.
 SCATTER = {"cover": 0.18, "shallow_aquifer": 0.10, "confining": 0.05, "deep_gravel": 0.05, "bedrock": 0.06}
@@ -19,24 +19,24 @@ class Column:
     resistivity: np.ndarray
 
     @property
-    def tops(self):
+    def tops(self) -> np.ndarray:
         return np.concatenate([[0.0], np.cumsum(self.thickness)])
 
-    def top(self, unit):
+    def top(self, unit: str) -> float:
         """Depth (m) of a unit's top, NaN where it is absent."""
         return self.tops[self.units.index(unit)] if unit in self.units else np.nan
 
-    def resistivity_of(self, unit):
+    def resistivity_of(self, unit: str) -> float:
         """Resistivity of a unit (of its lowest layer), NaN where it is absent."""
         last = len(self.units) - 1 - self.units[::-1].index(unit) if unit in self.units else None
         return np.nan if last is None else self.resistivity[last]
 
-    def thickness_of(self, unit):
+    def thickness_of(self, unit: str) -> float:
         """Thickness (m) of a unit above the rock, 0 where it is absent."""
         return sum(h for h, name in zip(self.thickness, self.units[:-1], strict=True) if name == unit)
 
 
-def draw_columns(county, x, y, rng):
+def draw_columns(county: County, x: np.ndarray, y: np.ndarray, rng: np.random.Generator) -> list[Column]:
     """A column at each place, x and y (n,) local m."""
     scatter = {unit: np.exp(rng.normal(0.0, SCATTER[unit], len(x))) for unit in UNITS}
     resistivity = {unit: getattr(county, f"{unit}_resistivity")(x, y) * scatter[unit] for unit in UNITS}

@@ -1,11 +1,16 @@
 """What the crews bring home: where they sounded, how far they spread, what they read and what went wrong."""
 
+from collections.abc import Callable
+
 import attrs
 import numpy as np
 import pandas as pd
 
-from demo_region.generator.county import HEIGHT, ORIGIN, WIDTH
+from demo_region.generator.columns import Column, draw_columns
+from demo_region.generator.county import HEIGHT, ORIGIN, WIDTH, County
 from demo_region.generator.forward import apparent_resistivity, geometric_factor, potential
+
+Inside = Callable[[float, float], bool]  # says of local x and y whether a place lies in the county
 
 NOISE = 0.03  # standard deviation of ln(apparent resistivity)
 SHIFT = 0.04  # of the factor that each later MN segment carries, in ln
@@ -19,7 +24,7 @@ class Layout:
     crew: str
     segments: tuple[tuple[float, tuple[float, ...]], ...]
 
-    def spread(self, largest):
+    def spread(self, largest: float) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         """AB/2, MN/2 and segment number (n,) up to the largest AB/2."""
         rows = [(a, b, k) for k, (b, spacings) in enumerate(self.segments) for a in spacings if a <= largest]
         ab2, mn2, segment = np.array(rows).T
@@ -47,7 +52,7 @@ LAYOUTS = (
 )
 
 
-def draw_places(county, inside, number, rng):
+def draw_places(county: County, inside: Inside, number: int, rng: np.random.Generator) -> np.ndarray:
     """Local x and y (number,) of soundings: half on section roads, closer over the valley, some in clusters."""
     placed = []
     centres = [place_once(county, inside, rng) for _ in range(4)]
@@ -64,7 +69,7 @@ def draw_places(county, inside, number, rng):
     return np.array(placed).T
 
 
-def place_once(county, inside, rng):
+def place_once(county: County, inside: Inside, rng: np.random.Generator) -> tuple[float, float]:
     """One place, kept more readily where the valley is thought to be."""
     while True:
         x, y = rng.uniform(0.0, WIDTH), rng.uniform(0.0, HEIGHT)
@@ -74,17 +79,21 @@ def place_once(county, inside, rng):
             x = np.round(x / MILE) * MILE + beside if road else x
             y = y if road else np.round(y / MILE) * MILE + beside
         thought = county.bedrock_relief(np.array([x + rng.normal(0.0, 900.0)]), np.array([y + rng.normal(0.0, 900.0)]))
-        if inside(x, y) and rng.random() < 0.42 + 0.58 * np.clip(thought[0] / 40.0, 0.0, 1.0):
+        if inside(x, y) and rng.random() < 0.38 + 0.62 * np.clip(thought[0] / 40.0, 0.0, 1.0):
             return x, y
 
 
-def draw_largest_spacing(number, rng):
+def draw_largest_spacing(number: int, rng: np.random.Generator) -> np.ndarray:
     """Largest AB/2 (number,) m: a fifth of the spreads stop at 65 to 130 m, for want of room or of cable."""
     short = rng.permutation(number) < round(number / 5.0)
-    return np.where(short, rng.choice([65.0, 90.0, 120.0], number), rng.choice([210.0, 260.0, 320.0, 320.0, 320.0], number))
+    return np.where(
+        short, rng.choice([68.0, 100.0, 120.0], number), rng.choice([220.0, 260.0, 320.0, 320.0, 320.0], number)
+    )
 
 
-def measure(column, spread, rng):
+def measure(
+    column: Column, spread: tuple[np.ndarray, np.ndarray, np.ndarray], rng: np.random.Generator
+) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Apparent resistivities (n,) as read, and what went wrong with each ("" where nothing did).
 
     Noise of 3 %, one factor for each MN segment after the first, and now and then a reading that is plainly wrong.
@@ -109,14 +118,16 @@ def measure(column, spread, rng):
     return read, fault, shift[segment]
 
 
-def misplaced_electrode(planned, actual, mn2, column):
+def misplaced_electrode(planned: float, actual: float, mn2: float, column: Column) -> float:
     """Apparent resistivity reported for the planned AB/2 while one current electrode stands at another distance."""
     distance = np.array([planned - mn2, planned + mn2, actual - mn2, actual + mn2])
     near, far, other_near, other_far = potential(distance, column.thickness, column.resistivity)
     return geometric_factor(planned, mn2) * (near - far + other_near - other_far) / (2.0 * np.pi)
 
 
-def draw_survey(county, inside, number, rng, draw_columns):
+def draw_survey(
+    county: County, inside: Inside, number: int, rng: np.random.Generator
+) -> tuple[pd.DataFrame, pd.DataFrame, list[Column]]:
     """The soundings and readings tables of the contract, and with them the columns and the faults as they were."""
     x, y = draw_places(county, inside, number, rng)
     order = np.argsort(np.round(y / 4_000.0) * WIDTH + x)  # crews work through the county strip by strip
@@ -146,7 +157,9 @@ def draw_survey(county, inside, number, rng, draw_columns):
     return soundings, pd.concat(readings, ignore_index=True), columns
 
 
-def read_sounding(name, column, spread, rng):
+def read_sounding(
+    name: str, column: Column, spread: tuple[np.ndarray, np.ndarray, np.ndarray], rng: np.random.Generator
+) -> pd.DataFrame:
     """One sounding's rows of the readings table, with `fault` and `segment_factor` beside them for the truth."""
     read, fault, factor = measure(column, spread, rng)
     ab2, mn2, _ = spread
@@ -176,22 +189,22 @@ REASONS = {
 }
 
 
-def level(ground, rng):
+def level(ground: np.ndarray, rng: np.random.Generator) -> np.ndarray:
     """Elevations as the crews wrote them: off the map to a metre or so, some not at all, one misread."""
     written = np.round(ground + rng.normal(0.0, 0.8, len(ground)), 1)
-    written[rng.integers(len(ground))] += 11.0
     written[rng.random(len(ground)) < 0.1] = np.nan
+    written[rng.choice(np.flatnonzero(np.isfinite(written)))] += 11.0
     return written
 
 
-def dates(number, rng):
+def dates(number: int, rng: np.random.Generator) -> np.ndarray:
     """Field days of two summers, in the order of the work."""
     days = np.sort(rng.choice(np.arange(150), number))
     start = np.where(days < 75, np.datetime64("2023-06-05"), np.datetime64("2024-03-18"))
     return (start + days.astype("timedelta64[D]")).astype(str)
 
 
-def remarks(number, largest, rng):
+def remarks(number: int, largest: np.ndarray, rng: np.random.Generator) -> np.ndarray:
     """Short notes in a crew's words; the short spreads say why."""
     usual = ["", "", "", "", "along section road", "stubble field", "pasture", "light rain", "culvert near M"]
     stopped = ["stopped at river", "wire used up", "standing maize, no room", "road crossing, stopped", ""]
@@ -199,6 +212,6 @@ def remarks(number, largest, rng):
     return np.where(largest < 200.0, rng.choice(stopped, number), notes)
 
 
-def significant(values, digits):
+def significant(values: np.ndarray, digits: int) -> np.ndarray:
     """Values rounded to so many significant digits."""
     return np.array([float(f"{value:.{digits}g}") for value in values])

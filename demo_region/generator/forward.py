@@ -1,6 +1,7 @@
 """Potentials over horizontal layers by quadrature between Bessel zeros: the demo's own physics, apart from geoves's.
 
-The potential of a point electrode that feeds I into the surface is, at the distance r along it (Stefanesco and others 1930),
+The potential of a point electrode that feeds I into the surface is, at the distance r along it (Stefanesco
+and others 1930),
 
     V(r) = I / (2 pi) * [ rho_1 / r + Int_0^inf (T(l) - rho_1) J0(l r) dl ]
 
@@ -19,7 +20,7 @@ OCTAVES = 26  # halvings of the first half-wave toward x = 0, where deep layers 
 
 
 @cache
-def quadrature():
+def quadrature() -> tuple[np.ndarray, np.ndarray]:
     """Nodes x and weights w, both (n,): Int f(x) J0(x) dx over all x is the sum of w f(x) for a smooth, bounded f."""
     zeros = jn_zeros(0, LOBES)
     first = zeros[0] * 2.0 ** -np.arange(OCTAVES, -1.0, -1.0)
@@ -32,13 +33,13 @@ def quadrature():
     return nodes.ravel(), weights.ravel()
 
 
-def euler_weights():
+def euler_weights() -> np.ndarray:
     """Share of each of the last terms of an alternating sum, (AVERAGED,): the binomial mean of its partial sums."""
     binomial = np.array([comb(AVERAGED, k) for k in range(AVERAGED + 1)]) / 2.0**AVERAGED
     return 1.0 - np.cumsum(binomial)[:-1]
 
 
-def resistivity_transform(wavenumber, thickness, resistivity):
+def resistivity_transform(wavenumber: np.ndarray, thickness: np.ndarray, resistivity: np.ndarray) -> np.ndarray:
     """T (ohm m), of the shape of `wavenumber` (1/m); thickness (k-1,) m and resistivity (k,) ohm m, top first."""
     transform = np.full_like(wavenumber, resistivity[-1])
     for h, rho in zip(thickness[::-1], resistivity[-2::-1], strict=True):
@@ -47,19 +48,21 @@ def resistivity_transform(wavenumber, thickness, resistivity):
     return transform
 
 
-def potential(distance, thickness, resistivity):
+def potential(distance: np.ndarray, thickness: np.ndarray, resistivity: np.ndarray) -> np.ndarray:
     """2 pi V / I (ohm) at each distance (n,) m from one current electrode."""
     nodes, weights = quadrature()
     secondary = resistivity_transform(nodes / distance[:, None], thickness, resistivity) - resistivity[0]
     return (resistivity[0] + secondary @ weights) / distance
 
 
-def geometric_factor(ab2, mn2):
+def geometric_factor(ab2: np.ndarray, mn2: np.ndarray) -> np.ndarray:
     """K (m) of a Schlumberger array, exact for the finite MN: pi (a^2 - b^2) / (2 b)."""
     return np.pi * (ab2**2 - mn2**2) / (2.0 * mn2)
 
 
-def apparent_resistivity(ab2, mn2, thickness, resistivity):
+def apparent_resistivity(
+    ab2: np.ndarray, mn2: np.ndarray, thickness: np.ndarray, resistivity: np.ndarray
+) -> np.ndarray:
     """Apparent resistivity (n,) ohm m from the potentials at both M and N, each of A and of B.
 
     ab2, mn2 : (n,) m      thickness : (k-1,) m      resistivity : (k,) ohm m, top first

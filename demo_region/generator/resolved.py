@@ -2,6 +2,7 @@
 
 import numpy as np
 
+from demo_region.generator.columns import Column
 from demo_region.generator.fieldwork import NOISE
 from demo_region.generator.forward import apparent_resistivity
 
@@ -9,7 +10,7 @@ SEEN = 25.0  # sum of squared differences over the noise, five standard deviatio
 SHARPEST = 0.25  # standard deviation of ln depth above which a contact is not called resolved
 
 
-def contact_signal(column, ab2, mn2, unit):
+def contact_signal(column: Column, ab2: np.ndarray, mn2: np.ndarray, unit: str) -> float:
     """How far the curve would change if the layer above `unit` went on for ever: squares summed over the noise."""
     k = column.units.index(unit)
     whole = apparent_resistivity(ab2, mn2, column.thickness, column.resistivity)
@@ -17,7 +18,7 @@ def contact_signal(column, ab2, mn2, unit):
     return float(np.sum(np.log(whole / without) ** 2) / NOISE**2)
 
 
-def log_depth_deviation(column, ab2, mn2, unit):
+def log_depth_deviation(column: Column, ab2: np.ndarray, mn2: np.ndarray, unit: str) -> float:
     """Standard deviation of ln(depth to `unit`), every layer free.
 
     Linearised at the truth, with a weak prior (0.7 on each log thickness, 0.5 on each log resistivity).
@@ -25,7 +26,7 @@ def log_depth_deviation(column, ab2, mn2, unit):
     layers = len(column.thickness)
     centre = np.log(np.concatenate([column.thickness, column.resistivity]))
 
-    def response(parameters):
+    def response(parameters: np.ndarray) -> np.ndarray:
         return np.log(apparent_resistivity(ab2, mn2, np.exp(parameters[:layers]), np.exp(parameters[layers:])))
 
     steps = 1e-3 * np.eye(len(centre))
@@ -38,7 +39,7 @@ def log_depth_deviation(column, ab2, mn2, unit):
     return float(np.sqrt(gradient @ covariance @ gradient))
 
 
-def is_resolved(column, ab2, mn2, unit):
+def is_resolved(column: Column, ab2: np.ndarray, mn2: np.ndarray, unit: str) -> tuple[bool, float, float]:
     """Both: the contact changes the curve, and its depth follows from the curve."""
     signal, deviation = contact_signal(column, ab2, mn2, unit), log_depth_deviation(column, ab2, mn2, unit)
     return signal > SEEN and deviation < SHARPEST, signal, deviation

@@ -5,7 +5,7 @@ import numpy as np
 from scipy.spatial import cKDTree
 
 
-def ramp(t):
+def ramp(t: np.ndarray) -> np.ndarray:
     """0 below t = 0, 1 above t = 1, smooth between."""
     t = np.clip(t, 0.0, 1.0)
     return t * t * (3.0 - 2.0 * t)
@@ -24,7 +24,7 @@ class Patch:
     edge: float
     height: float
 
-    def __call__(self, x, y):
+    def __call__(self, x: np.ndarray, y: np.ndarray) -> np.ndarray:
         along = (x - self.x) * np.cos(self.angle) + (y - self.y) * np.sin(self.angle)
         across = (y - self.y) * np.cos(self.angle) - (x - self.x) * np.sin(self.angle)
         radius = (np.abs(along / self.half_length) ** self.power + np.abs(across / self.half_width) ** self.power) ** (
@@ -33,7 +33,7 @@ class Patch:
         return np.clip((1.0 - radius) / self.edge, 0.0, 1.0)
 
 
-def highest(patches, x, y):
+def highest(patches: tuple[Patch, ...], x: np.ndarray, y: np.ndarray) -> np.ndarray:
     """The greatest height of the patches at each place; 0 where none lies."""
     heights = [patch.height * patch(x, y) for patch in patches]
     return np.max(heights, axis=0) if heights else np.zeros_like(x)
@@ -42,14 +42,14 @@ def highest(patches, x, y):
 class CentreLine:
     """A line through the county, of points close enough together to be taken for a curve."""
 
-    def __init__(self, x, y):
+    def __init__(self, x: np.ndarray, y: np.ndarray) -> None:
         self.points = np.column_stack([x, y])
         step = np.diff(self.points, axis=0)
         self.length_along = np.concatenate([[0.0], np.cumsum(np.hypot(*step.T))])
         self.direction = np.gradient(self.points, self.length_along, axis=0)
         self.tree = cKDTree(self.points)
 
-    def locate(self, x, y):
+    def locate(self, x: np.ndarray, y: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Distance along the line and signed offset from it (left is positive), m."""
         _, nearest = self.tree.query(np.column_stack([np.ravel(x), np.ravel(y)]))
         dx = np.ravel(x) - self.points[nearest, 0]
@@ -74,7 +74,7 @@ class Valley:
     left_power: float
     right_power: float
 
-    def incision(self, x, y):
+    def incision(self, x: np.ndarray, y: np.ndarray) -> np.ndarray:
         """Depth (m) to which the valley is cut below its surroundings."""
         along, offset = self.line.locate(x, y)
         left = offset >= 0.0

@@ -1,17 +1,27 @@
 """Drillers' wells in feet, their logs in drillers' words, and the permits in the agency's file."""
 
+from itertools import pairwise
+
 import numpy as np
 import pandas as pd
 from pyproj import Transformer
 
-from demo_region.generator.county import HEIGHT, ORIGIN, WIDTH
-from demo_region.generator.fieldwork import place_once
+from demo_region.generator.columns import Column, draw_columns
+from demo_region.generator.county import HEIGHT, ORIGIN, WIDTH, County
+from demo_region.generator.fieldwork import Inside, place_once
 
 FOOT = 0.3048  # m
 WORDS = {
     "cover": ["yellow clay", "hardpan", "brown clay & stones", "sandy loam", "hard pan, dry", "till, brown", "Hardpan"],
     "shallow_aquifer": ["sand & gravel w/ water", "gravel", "coarse gravell, clean", "sand and gravel", "fine sand"],
-    "confining": ["blue clay", "gray clay", "blue clay w/ stones", "grey caly, sticky", "BLUE CLAY", "silty clay, gray"],
+    "confining": [
+        "blue clay",
+        "gray clay",
+        "blue clay w/ stones",
+        "grey caly, sticky",
+        "BLUE CLAY",
+        "silty clay, gray",
+    ],
     "deep_gravel": ["sand & gravel w/ water", "coarse sand and gravel", "gravel & boulders", "sand and gravle, water"],
     "bedrock": ["broken lime", "limestone", "lime rock, hard", "limerock", "lime, broken, water", "limestone, grey"],
 }
@@ -19,7 +29,9 @@ UNCLAIMED = {"cover": "muck", "confining": "gumbo", "deep_gravel": "pea rock", "
 FORMATION_FACTOR = {"shallow_aquifer": 5.0, "deep_gravel": 5.0, "bedrock": 12.0}
 
 
-def draw_well_places(county, inside, in_valley, number, rng):
+def draw_well_places(
+    county: County, inside: Inside, in_valley: int, number: int, rng: np.random.Generator
+) -> np.ndarray:
     """Local x and y (number,): so many over the valley first, the others on the plain, 1.2 km apart at least."""
     placed = []
     while len(placed) < number:
@@ -31,7 +43,9 @@ def draw_well_places(county, inside, in_valley, number, rng):
     return np.array(placed).T
 
 
-def draw_wells(county, inside, rng, draw_columns):
+def draw_wells(
+    county: County, inside: Inside, rng: np.random.Generator
+) -> tuple[pd.DataFrame, pd.DataFrame, list[Column]]:
     """The wells and well_logs tables in feet, and the columns under the wells.
 
     Of 6 valley wells 3 reach rock, of 10 on the plain 7; the others stop in gravel or in clay above it.
@@ -52,7 +66,9 @@ def draw_wells(county, inside, rng, draw_columns):
     return pd.DataFrame(wells), blur_log(logs, rng), drilled
 
 
-def describe_well(name, place, column, log, rng):
+def describe_well(
+    name: str, place: tuple[float, float], column: Column, log: list[dict], rng: np.random.Generator
+) -> dict:
     """One row of the wells table, in feet."""
     deepest = log[-1]["deepest_unit"]
     factor = FORMATION_FACTOR.get(deepest)
@@ -71,7 +87,7 @@ def describe_well(name, place, column, log, rng):
     }
 
 
-def write_log(name, column, reaches_rock, rng):
+def write_log(name: str, column: Column, reaches_rock: bool, rng: np.random.Generator) -> list[dict]:
     """Rows of one driller's log: whole feet, contacts missed by a foot or two, clay told in stretches."""
     contacts = np.append(column.tops / FOOT, column.top("bedrock") / FOOT + rng.uniform(4.0, 45.0))
     units = list(column.units)
@@ -85,13 +101,15 @@ def write_log(name, column, reaches_rock, rng):
     for unit, top, bottom in zip(units, contacts[:-1], contacts[1:], strict=True):
         start = rows[-1]["bottom"] if rows else top
         for upper, lower in told_in_stretches(max(top, start), bottom, unit, rng):
-            rows.append({"well": name, "top": upper, "bottom": lower, "description": rng.choice(WORDS[unit]), "unit": ""})
+            rows.append(
+                {"well": name, "top": upper, "bottom": lower, "description": rng.choice(WORDS[unit]), "unit": ""}
+            )
         if rows:
             rows[-1]["deepest_unit"] = unit
     return rows
 
 
-def stop_above_rock(units, contacts, rng):
+def stop_above_rock(units: list[str], contacts: np.ndarray, rng: np.random.Generator) -> tuple[list[str], np.ndarray]:
     """The log of a well that was finished in the deep gravel, or given up in the clay."""
     last = units.index("deep_gravel") if "deep_gravel" in units else units.index("bedrock") - 1
     share = rng.uniform(0.45, 0.8)
@@ -99,23 +117,23 @@ def stop_above_rock(units, contacts, rng):
     return units[: last + 1], np.append(contacts[: last + 1], finished)
 
 
-def merge_same(units, contacts):
+def merge_same(units: list[str], contacts: np.ndarray) -> tuple[list[str], np.ndarray]:
     """Neighbouring layers of one unit taken together."""
     first = [i for i, unit in enumerate(units) if i == 0 or unit != units[i - 1]]
     return [units[i] for i in first], np.append(contacts[first], contacts[-1])
 
 
-def told_in_stretches(top, bottom, unit, rng):
+def told_in_stretches(top: int, bottom: int, unit: str, rng: np.random.Generator) -> list[tuple[int, int]]:
     """The intervals in which a driller tells one unit; clay over 60 ft comes in two or three."""
     if bottom <= top:
         return []
     count = rng.integers(2, 4) if unit == "confining" and bottom - top > 60 else 1
     cuts = np.sort(rng.choice(np.arange(top + 5, bottom - 5), count - 1, replace=False)) if count > 1 else []
     edges = [int(edge) for edge in (top, *cuts, bottom)]
-    return list(zip(edges[:-1], edges[1:], strict=True))
+    return list(pairwise(edges))
 
 
-def blur_log(logs, rng):
+def blur_log(logs: pd.DataFrame, rng: np.random.Generator) -> pd.DataFrame:
     """A few words that no template claims, one gap, and one log that the agency has coded itself."""
     logs = logs.fillna({"unit": ""})
     names = logs["well"].unique()
@@ -132,17 +150,21 @@ def blur_log(logs, rng):
     return logs
 
 
-def draw_permits(number, rng):
+def draw_permits(inside: Inside, number: int, rng: np.random.Generator) -> pd.DataFrame:
     """The permits table: lon and lat in EPSG:4326, depths and radii in feet; a few lie outside the county."""
-    x = ORIGIN[0] + rng.uniform(600.0, WIDTH - 600.0, number)
-    y = ORIGIN[1] + rng.uniform(600.0, HEIGHT - 600.0, number)
+    x, y = rng.uniform(0.0, WIDTH, 3 * number), rng.uniform(0.0, HEIGHT, 3 * number)
+    within = np.array([inside(*place) for place in zip(x, y, strict=True)])
+    astray = rng.random(3 * number) < 0.05
+    x, y = ORIGIN[0] + x[within | astray][:number], ORIGIN[1] + y[within | astray][:number]
     accuracy = rng.choice([np.nan, 30.0, 100.0, 330.0, 933.0], number, p=[0.4, 0.1, 0.15, 0.15, 0.2])
     centred = accuracy == 933.0  # known to a quarter-quarter section alone, so written at its centre
     quarter = 1_609.344 / 4.0
     x = np.where(centred, (np.floor(x / quarter) + 0.5) * quarter, x)
     y = np.where(centred, (np.floor(y / quarter) + 0.5) * quarter, y)
     lon, lat = Transformer.from_crs("EPSG:26914", "EPSG:4326", always_xy=True).transform(x, y)
-    use = rng.choice(["domestic", "stock", "irrigation", "municipal", "monitoring"], number, p=[0.6, 0.2, 0.1, 0.03, 0.07])
+    use = rng.choice(
+        ["domestic", "stock", "irrigation", "municipal", "monitoring"], number, p=[0.6, 0.2, 0.1, 0.03, 0.07]
+    )
     depth = np.round(rng.gamma(5.0, 24.0, number) / 5.0) * 5.0 + 25.0
     return pd.DataFrame(
         {
