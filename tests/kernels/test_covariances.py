@@ -26,7 +26,7 @@ TRUTH = Covariance("matern32", 20.0, 400.0, 12_000.0, 35.0, 0.4)
 def field(covariance, n, seed, error_deviation=4.0):
     """Points in a county 30 km wide, values with errors drawn from the covariance, and the error variances."""
     generator = np.random.default_rng(seed)
-    points = generator.uniform(0.0, 30_000.0, (n, 2)) + (500_000.0, 5_000_000.0)
+    points = generator.uniform(0.0, 30_000.0, (n, 2)) + np.array((500_000.0, 5_000_000.0))
     own = covariance_matrix(points, points, covariance) + (covariance.nugget + 1e-6) * np.eye(n)
     values = 300.0 + np.linalg.cholesky(own) @ generator.standard_normal(n)
     return points, values + error_deviation * generator.standard_normal(n), np.full(n, error_deviation**2)

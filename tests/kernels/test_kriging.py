@@ -16,9 +16,9 @@ MODELS = ("matern32", "exponential", "spherical", "gaussian")
 def county(n=40, seed=1):
     """Points in projected coordinates, values, error variances, and cells."""
     generator = np.random.default_rng(seed)
-    points = generator.uniform(0.0, 20_000.0, (n, 2)) + (500_000.0, 5_000_000.0)
+    points = generator.uniform(0.0, 20_000.0, (n, 2)) + np.array((500_000.0, 5_000_000.0))
     values = 250.0 + 20.0 * generator.standard_normal(n)
-    cells = generator.uniform(-2000.0, 22_000.0, (60, 2)) + (500_000.0, 5_000_000.0)
+    cells = generator.uniform(-2000.0, 22_000.0, (60, 2)) + np.array((500_000.0, 5_000_000.0))
     return points, values, generator.uniform(0.5, 60.0, n), cells
 
 

@@ -29,7 +29,7 @@ def problems(draw, ratio=None):
     """Data of 3 to 25 places in 10 km, with errors, ten cells, and a covariance."""
     generator = np.random.default_rng(draw(st.integers(0, 2**32 - 1)))
     n = draw(st.integers(3, 25))
-    points, cells = (generator.uniform(0.0, 10_000.0, (k, 2)) + (400_000.0, 5_500_000.0) for k in (n, 10))
+    points, cells = (generator.uniform(0.0, 10_000.0, (k, 2)) + np.array((400_000.0, 5_500_000.0)) for k in (n, 10))
     values = 100.0 + 5.0 * generator.standard_normal(n)
     return points, values, generator.uniform(0.01, 4.0, n), cells, draw(covariances(ratio))
 

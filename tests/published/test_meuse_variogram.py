@@ -1,4 +1,4 @@
-"""Variogram of the logarithm of zinc in the topsoil of the Meuse flood plain, as in the vignette of the R package gstat.
+"""Variogram of the logarithm of zinc in the topsoil of the Meuse flood plain, as the R package gstat has it.
 
 Pebesma, "The meuse data set: a brief tutorial for the gstat R package": variogram(log(zinc) ~ 1) with 15 bins up to a
 third of the diagonal, and the spherical fit with weights N / h². The data are those that scikit-gstat ships.
