@@ -45,7 +45,7 @@ def _explain(error: BaseException) -> Sequence[str]:
     if isinstance(error, MemoryError):
         return ["The machine's memory is not enough; use a larger cell_size."]
     if isinstance(error, BrokenPipeError):
-        sys.stdout = Path(os.devnull).open("w", encoding="utf-8")  # or Python complains once more as it ends
+        sys.stdout = Path(os.devnull).open("w", encoding="utf-8")  # noqa: SIM115 - else Python complains at its end
         return ["Nobody reads the output any more; the job was not done."]
     return [f"An error of geoves's own ({type(error).__name__}); it is kept in {_keep(error)}"]
 

@@ -30,8 +30,13 @@ class TerminalProgress:
     @contextmanager
     def step(self, title: str, total: int) -> Iterator[Step]:
         """A step with a bar."""
-        columns = (TextColumn("{task.description:<34}"), BarColumn(), MofNCompleteColumn(), TimeElapsedColumn())
-        with RichProgress(*columns, console=Console(markup=False)) as bars:
+        columns = (
+            TextColumn("{task.description:<34}", markup=False),
+            BarColumn(),
+            MofNCompleteColumn(),
+            TimeElapsedColumn(),
+        )
+        with RichProgress(*columns, console=Console()) as bars:
             yield _RichStep(bars, title, total)
 
 

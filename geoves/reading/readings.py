@@ -111,26 +111,30 @@ def _read_spacings(row: Row, metres: float, array: Array) -> tuple[float, float]
 
 
 def _read_resistivity(row: Row, half: float, potential: float) -> float:
-    """Apparent resistivity in ohm m, as typed or from what was measured; NaN, with a fault, where neither stands."""
+    """Apparent resistivity in ohm m, as typed or from what was measured; NaN, with a fault, where none of it stands.
+
+    What was typed comes before what the resistance gives, and that before voltage over current; a doubt where they
+    disagree.
+    """
+    factor = geometric_factor(half, potential)
+    found = {}
+    if row.text("apparent_resistivity"):
+        found["apparent_resistivity"] = row.required_number("apparent_resistivity", _RESISTIVITY)
     if row.text("resistance_ohm"):
-        column, measured = "resistance_ohm", row.number_in("resistance_ohm", _RESISTANCE)
-    elif row.text("voltage_mv"):
-        column, voltage = "voltage_mv", row.number_in("voltage_mv", _VOLTAGE)
-        current = row.required_number("current_ma", _CURRENT)
-        measured = None if voltage is None else voltage / current
-    else:
-        column, measured = "apparent_resistivity", None
-    computed = math.nan if measured is None else measured * geometric_factor(half, potential)
-    if row.text("apparent_resistivity") or column == "apparent_resistivity":
-        typed = row.required_number("apparent_resistivity", _RESISTIVITY)
-        if abs(typed - computed) > _DISAGREEMENT * computed:
-            row.doubt(
-                "apparent_resistivity", f"the spacings and {column} give {computed:.4g} ohm m; the typed one is taken"
-            )
-        return typed
-    if computed == 0.0 or math.isinf(computed):
-        row.complain(column, "with these spacings it gives no resistivity; correct it, or set use to 0")
-    return computed
+        found["resistance_ohm"] = row.required_number("resistance_ohm", _RESISTANCE) * factor
+    if row.text("voltage_mv"):
+        voltage = row.required_number("voltage_mv", _VOLTAGE)
+        found["voltage_mv"] = voltage / row.required_number("current_ma", _CURRENT) * factor
+    if not found:
+        column = next((name for name in ("apparent_resistivity", "resistance_ohm") if name in row.cells), "voltage_mv")
+        return row.required_number(column, _RESISTIVITY)
+    column, taken = next(iter(found.items()))
+    for other, value in found.items():
+        if abs(taken - value) > _DISAGREEMENT * value:
+            row.doubt(column, f"the spacings and {other} give {value:.4g} ohm m, not {taken:.4g}, which is taken")
+    if not (math.isnan(taken) or _RESISTIVITY.holds(taken)):
+        row.complain(column, f"with these spacings it gives {taken:.4g} ohm m; expected {_RESISTIVITY.words}")
+    return taken
 
 
 def _build_curve(readings: Sequence[Reading], array: Array) -> Curve:

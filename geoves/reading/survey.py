@@ -32,7 +32,6 @@ _TABLES = {
     "permits": (PERMIT_COLUMNS, "permit"),
     "picks": (PICK_COLUMNS, "place"),
 }
-_CONTRACT_COLUMNS = {name for columns, _ in _TABLES.values() for name in columns.known}
 
 
 @attrs.frozen
@@ -143,17 +142,23 @@ def _rows_of(places: Sequence[Sounding | Well | Permit], tables: dict[str, Table
 
 def _check_withheld(region: Region, tables: dict[str, Table | None], findings: list[Finding]) -> None:
     """A fault for a column to withhold that no table has: a slip there would publish what should stay at home."""
-    read = [table for table in tables.values() if table is not None]
+    read = {name: table for name, table in tables.items() if table is not None}
     if len(read) < len(tables):
         return
-    strangers = {heading for table in read for heading in table.headings} - _CONTRACT_COLUMNS
+    extra = {heading for name, table in read.items() for heading in table.headings if heading not in _known(name)}
     for column in region.delivery.withhold:
-        if column in _CONTRACT_COLUMNS:
-            words = "a column that geoves itself uses; only extra columns can be withheld"
+        if column not in extra:
+            used = any(column in _known(name) for name in _TABLES)
+            words = (
+                "a column that geoves itself uses; only extra columns can be withheld"
+                if used
+                else f"no table has such an extra column{nearest(column, sorted(extra))}"
+            )
             findings.append(Finding("fault", region.path.name, 0, "delivery.withhold", column, words))
-        elif column not in strangers:
-            words = f"no table has such an extra column{nearest(column, sorted(strangers))}"
-            findings.append(Finding("fault", region.path.name, 0, "delivery.withhold", column, words))
+
+
+def _known(name: str) -> tuple[str, ...]:
+    return _TABLES[name][0].known
 
 
 def _doubt_region(region: Region, tables: dict[str, Table | None]) -> list[Finding]:

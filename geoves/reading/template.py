@@ -10,11 +10,11 @@ _KEYS = ("code", "name", "role", "resistivity", "depth_to_top", "log_terms", "co
 
 
 def read_template(tables: Sequence[Keys], metres: float) -> Template:
-    """The template of the tables, lengths in them in units of `metres`; faulty units are left out."""
+    """The template of the tables, lengths in them in units of `metres`; empty where one is faulty."""
     units = [unit for keys in tables if (unit := _read_unit(keys, metres)) is not None]
     _refuse_repeated_codes(tables)
     _refuse_units_below_bedrock(tables)
-    return Template(tuple(units))
+    return Template(tuple(units) if len(units) == len(tables) else ())
 
 
 def _read_unit(keys: Keys, metres: float) -> Unit | None:
