@@ -85,8 +85,12 @@ def test_every_feature_is_drawn_once(styles):
     """Each code, and each value of a class, meets exactly one rule that draws a symbol."""
 
     def meets(rule, row):
-        tests = {"Null": lambda a, _: np.isnan(a), "EqualTo": lambda a, b: str(a) == b, "LessThan": lambda a, b: a < float(b),
-                 "GreaterThanOrEqualTo": lambda a, b: a >= float(b)}  # fmt: skip
+        tests = {
+            "Null": lambda a, _: np.isnan(a),
+            "EqualTo": lambda a, b: str(a) == b,
+            "LessThan": lambda a, b: a < float(b),
+            "GreaterThanOrEqualTo": lambda a, b: a >= float(b),
+        }
         return all(
             tests[etree.QName(c).localname.removeprefix("PropertyIs")](
                 row[c.findtext(f"{OGC}PropertyName")], c.findtext(f"{OGC}Literal")
