@@ -57,7 +57,7 @@ def paler(colour: str, share: float) -> str:
     '#808080'
     """
     channels = (int(colour[i : i + 2], 16) for i in (1, 3, 5))
-    return "#" + "".join(f"{round(c + (255 - c) * min(share, 0.8)):02x}" for c in channels)
+    return "#" + "".join(f"{round(c + (255 - c) * min(share, 0.8)):02X}" for c in channels)
 
 
 def pattern_definitions(template: Template) -> Markup:

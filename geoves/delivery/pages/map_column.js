@@ -68,10 +68,12 @@ function drawStrip(column) {
 function stripScale(deepest, y, x, metres, unit) {
   const left = unit === "ft";
   const anchor = left ? { "text-anchor": "end" } : {};
-  const words = (at, shown) => draw("text", { x: x + (left ? -8 : 8), y: svgNumber(at), class: "tick", ...anchor }, shown);
+  const words = (at, shown) =>
+    draw("text", { x: x + (left ? -8 : 8), y: svgNumber(at), class: "tick", ...anchor }, shown);
   const marks = evenTicks(0, deepest / metres, 6).flatMap((tick) => {
     const at = y(tick * metres);
-    return [draw("path", { d: `M${x} ${svgNumber(at)}h${left ? -5 : 5}`, class: "bracket" }), words(at + 4, tickWords(tick))];
+    const mark = draw("path", { d: `M${x} ${svgNumber(at)}h${left ? -5 : 5}`, class: "bracket" });
+    return [mark, words(at + 4, tickWords(tick))];
   });
   return [...marks, words(11, unit)];
 }

@@ -79,7 +79,8 @@ function startPanel(map) {
       make("h2", {}, title), ...parts);
     panel.scrollTop = 0;
     panel.focus({ preventScroll: true });
-    if (window.innerWidth <= 800) window.scrollTo(0, panel.offsetTop - 0.45 * window.innerHeight);  // map and answer both
+    // On a phone the panel lies under the map: both are brought into sight.
+    if (window.innerWidth <= 800) window.scrollTo(0, panel.offsetTop - 0.45 * window.innerHeight);
     say(`${title}. ${[...answer.querySelectorAll(".says")].map((part) => part.textContent).join(" ")}`);
   };
   document.addEventListener("keydown", (event) => {

@@ -1,0 +1,185 @@
+"""Figures: places of marks, ticks, ramps and what is said of them."""
+
+from xml.etree import ElementTree as ET
+
+import attrs
+import numpy as np
+import pytest
+from scipy.spatial.transform import Rotation
+
+from geoves.delivery.figures import (
+    draw_columns,
+    draw_cross_validation,
+    draw_curve,
+    draw_models,
+    draw_variogram,
+    largest_misfits,
+    modelled_semivariance,
+    readings_aside,
+)
+from geoves.delivery.markup import element, joined, text
+from geoves.delivery.ramps import GREY, faded_colours, ramp_colours, value_range
+from geoves.delivery.sections import draw_overview, draw_section, sample_cells, sample_smoothly, section_lines
+from geoves.delivery.svg import Scale, even_ticks, logarithmic_ticks, staircase
+from geoves.delivery.unit_look import ROLE_COLOURS, unit_colours
+from geoves.domain.units import Role
+
+
+def parsed(svg):
+    """The figure as XML: malformed markup raises."""
+    return ET.fromstring(svg)  # noqa: S314 - our own figure
+
+
+def drawn(results, number=0):
+    sounding, inverted = results.survey.soundings[number], results.inverted[number]
+    return sounding, inverted, results.interpretation.columns[number]
+
+
+def test_text_is_escaped_and_control_characters_go():
+    assert element("p", {"title": '"<'}, "a & b\x00\x1b") == '<p title="&quot;&lt;">a &amp; b</p>'
+    assert joined(["<", text("<")]) == "&lt;&lt;"
+
+
+def test_logarithmic_scale_places_the_geometric_mean_in_the_middle():
+    scale = Scale(1.0, 100.0, 0.0, 200.0, logarithmic=True)
+    np.testing.assert_allclose(scale.pixel([1.0, 10.0, 100.0]), [0.0, 100.0, 200.0])
+
+
+@pytest.mark.parametrize(("low", "high"), [(0, 1), (312.3, 377.9), (-4, 1e4), (0.001, 0.0042)])
+def test_ticks_lie_within_and_are_even(low, high):
+    ticks = even_ticks(low, high, 5)
+    assert 2 <= len(ticks) <= 11
+    assert all(low - 1e-9 <= tick <= high + 1e-9 for tick in ticks)
+    np.testing.assert_allclose(np.diff(ticks), ticks[1] - ticks[0])
+
+
+def test_logarithmic_ticks_never_run_out():
+    for low in (0.3, 1.7, 42.0):
+        for span in (4.0, 30.0, 1e4):
+            assert len(logarithmic_ticks(low, low * span)) >= 2
+
+
+def test_staircase_goes_down_through_each_layer_once():
+    x, depth = staircase([0.0, 3.0, 10.0], [20.0, 80.0, 40.0], 15.0)
+    assert x.tolist() == [20, 20, 80, 80, 40, 40]
+    assert depth.tolist() == [0, 3, 3, 10, 10, 15]
+
+
+def test_place_figures_are_sound_xml_with_titles_and_units(small_results):
+    template = small_results.region.template
+    sounding, inverted, column = drawn(small_results)
+    figures = (
+        draw_curve(sounding, inverted, "ft"),
+        draw_models(sounding, inverted, template, "ft"),
+        draw_columns(column, inverted, template, "ft", None),
+    )
+    for figure in figures:
+        root = parsed(figure)
+        assert root.find("title").text
+    assert "AB/2 (ft)" in figures[0]
+    assert "depth (ft)" in figures[1]
+
+
+def test_curve_marks_stand_where_their_readings_say(small_results):
+    """Equal ratios of spacing are equal steps in pixels: what a log-log plot is."""
+    sounding, inverted, _ = drawn(small_results)
+    root = parsed(draw_curve(sounding, inverted, "m"))
+    marks = [one for one in root.iter("path") if "reading" in one.get("class", "")]
+    assert len(marks) == sounding.curve.half_spacing.size
+    bars = [float(one.get("x1")) for one in root.iter("line") if one.get("class") == "error-bar"]
+    steps = np.diff(bars) / np.maximum(np.diff(np.log(sounding.curve.half_spacing)), 1e-12)
+    known = np.diff(sounding.curve.half_spacing) > 0
+    np.testing.assert_allclose(steps[known], np.median(steps[known]), rtol=0.02)
+
+
+def test_readings_aside_give_their_reasons(small_results):
+    sounding, inverted, _ = drawn(small_results, 3)
+    assert readings_aside(sounding.curve, inverted, "m") == ["AB/2 15 m: stands 90 % above its neighbours"]
+
+
+def test_columns_show_each_layer_filled_to_one(small_results):
+    _, inverted, column = drawn(small_results)
+    root = parsed(draw_columns(column, inverted, small_results.region.template, "m", None))
+    boxes = [one for one in root.iter("rect") if one.get("fill", "").startswith("url(")]
+    widths = {}
+    for box in boxes:
+        widths[box.get("y")] = widths.get(box.get("y"), 0.0) + float(box.get("width"))
+    np.testing.assert_allclose(list(widths.values()), 100.0, atol=0.3)
+
+
+def test_variograms_reach_95_percent_of_the_sill_at_their_practical_length(small_results):
+    """Chilès and Delfiner (2012), section 2.5; the spherical model reaches all of it."""
+    (variogram,) = small_results.stack.variograms
+    for model, share in (("exponential", 0.95), ("gaussian", 0.95), ("spherical", 1.0)):
+        one = attrs.evolve(variogram, model=model)
+        value = modelled_semivariance(one, np.array([1.0]))[0]
+        assert value == pytest.approx(one.nugget + share * one.partial_sill, rel=2e-3)
+    assert parsed(draw_variogram(variogram, "m")).find("title").text == "Variogram of Bedrock elevation"
+
+
+def test_cross_validation_names_the_worst(small_results):
+    (crossed,) = small_results.stack.cross_validations
+    assert [crossed.place[i] for i in largest_misfits(crossed, 2)] == ["Larch 6", "Larch 3"]
+    assert "Larch 6" in "".join(parsed(draw_cross_validation(crossed)).itertext())
+
+
+def test_doubt_fades_the_colour_and_blank_is_clear(small_results):
+    surface = small_results.stack.surfaces["bedrock_elevation"]
+    colours = faded_colours(surface)
+    assert (colours[np.isnan(surface.estimate)][:, 3] == 0).all()
+    width = surface.p95 - surface.p05
+    sure = np.unravel_index(np.nanargmin(width), width.shape)
+    unsure = np.unravel_index(np.nanargmax(width), width.shape)
+    low, high = value_range(surface.estimate)
+    full = ramp_colours("cividis")[int(np.clip((surface.estimate[sure] - low) / (high - low) * 255, 0, 255))]
+    assert np.abs(colours[sure][:3].astype(int) - full).max() <= 1
+    assert np.abs(colours[unsure][:3].astype(int) - GREY).max() < 25
+
+
+def test_sections_sample_a_plane_exactly(small_results):
+    """Bilinear between cells reproduces a plane: checked against the plane itself."""
+    grid = small_results.stack.grid
+    x, y = np.meshgrid(grid.easting, grid.northing)
+    plane = 3.0 + 0.01 * (x - grid.west) - 0.02 * (y - grid.north)
+    points = np.array([[grid.west + 533.0, grid.north - 777.0], [grid.west + 2000.0, grid.north - 60.0]])
+    wanted = 3.0 + 0.01 * (points[:, 0] - grid.west) - 0.02 * (points[:, 1] - grid.north)
+    np.testing.assert_allclose(sample_smoothly(grid, plane, points), wanted, atol=1e-6)
+    assert np.abs(sample_cells(grid, plane, points) - wanted).max() < 0.03 * grid.cell_size
+    outside = np.array([[grid.west - 1.0, grid.north - 5.0]])
+    assert np.isnan(sample_smoothly(grid, plane, outside)).all()
+    assert np.isnan(sample_cells(grid, plane, outside)).all()
+
+
+def test_sections_and_overview_are_sound_xml(small_results, small_results_in_feet):
+    lines = section_lines(small_results)
+    assert lines[0][0] == "Along the valley"
+    assert len(lines) == 4
+    for title, line in lines:
+        words = "".join(parsed(draw_section(small_results, title, line)).itertext())
+        assert "times larger than lengths" in words
+    assert "elevation (US ft)" in draw_section(small_results_in_feet, *lines[0])
+    marks = [one for one in parsed(draw_overview(small_results)).iter("path") if "mark" in one.get("class", "").split()]
+    assert len(marks) == len(small_results.survey.soundings) + len(small_results.survey.wells)
+
+
+def test_sections_cross_the_axis_at_right_angles(small_results):
+    """A quarter turn by scipy's rotations carries the axis's direction onto the section's."""
+    (_, axis), *across = section_lines(small_results)
+    quarter = Rotation.from_euler("z", 90, degrees=True)
+    for share, (_, line) in zip((0.2, 0.5, 0.8), across, strict=True):
+        at, step = share * axis.length, 0.05 * axis.length
+        before, after = axis.interpolate(at - step), axis.interpolate(at + step)
+        turned = quarter.apply([after.x - before.x, after.y - before.y, 0.0])[:2]
+        (x0, y0), (x1, y1) = line.coords
+        cosine = abs(np.dot(turned, [x1 - x0, y1 - y0])) / np.hypot(*turned) / line.length
+        assert cosine == pytest.approx(1.0, abs=1e-9)
+
+
+def test_units_take_the_role_colour_unless_they_have_their_own(small_results):
+    template = small_results.region.template
+    units = [attrs.evolve(template.units[0], colour="#123456"), *template.units[1:], template.units[-1]]
+    doubled = attrs.evolve(template, units=(*units[:-1], attrs.evolve(units[-1], code="other_rock")))
+    colours = unit_colours(doubled)
+    assert colours["till"] == "#123456"
+    assert colours["shale"] == ROLE_COLOURS[Role.BEDROCK]
+    assert colours["other_rock"] != colours["shale"]

@@ -1,0 +1,214 @@
+"""map.html as a reader meets it: in Chromium, from disk, with no network."""
+
+import re
+
+import numpy as np
+import pyproj
+import pytest
+from selenium.webdriver.common.action_chains import ActionChains
+from selenium.webdriver.common.by import By
+from selenium.webdriver.common.keys import Keys
+
+from geoves.delivery.map_data import control_points, encode_grid
+from geoves.delivery.map_page import write_map_page
+from geoves.domain.grids import Grid
+
+READY = "document.body.dataset.ready === 'yes'"
+
+
+@pytest.fixture(scope="module")
+def page(small_results, tmp_path_factory):
+    return write_map_page(small_results, tmp_path_factory.mktemp("map") / "map.html")
+
+
+@pytest.fixture
+def opened(browser, page):
+    browser.open(page)
+    browser.wait_for(READY)
+    return browser
+
+
+def test_two_writes_are_equal(small_results, page, tmp_path):
+    again = write_map_page(small_results, tmp_path / "map.html")
+    assert again.read_bytes() == page.read_bytes()
+
+
+def test_nothing_is_requested_and_nothing_complains(opened, page):
+    assert opened.run("return document.getElementById('title').textContent") == "Larkmoor Mini"
+    assert opened.run("return document.querySelectorAll('.leaflet-image-layer').length") == 1
+    assert opened.requested_addresses() == [page.as_uri()]
+    assert (
+        opened.run("return performance.getEntriesByType('resource').filter(e => !e.name.startsWith('data:')).length")
+        == 0
+    )
+    assert opened.complaints() == []
+
+
+def test_the_page_forbids_what_it_does_not_need(page):
+    policy = re.search(r'Content-Security-Policy" content="([^"]+)"', page.read_text("utf-8"))[1]
+    assert policy.startswith("default-src 'none'; script-src 'sha256-")
+    assert "unsafe-eval" not in policy
+    assert "unsafe-inline" not in policy.split(";")[1]
+
+
+# Beside the margins: cells near the corners, in the valley and on the plain.
+@pytest.mark.parametrize("cell", [(5, 5), (24, 30), (40, 50), (12, 20)])
+def test_readout_is_the_value_of_the_cell(opened, small_results, cell):
+    grid, surface = small_results.stack.grid, small_results.stack.surfaces["bedrock_elevation"]
+    row, column = cell
+    # pyproj is the reference for where the cell's centre lies on the globe.
+    to_degrees = pyproj.Transformer.from_crs(small_results.region.crs, "EPSG:4326", always_xy=True)
+    longitude, latitude = to_degrees.transform(grid.easting[column], grid.northing[row])
+    opened.run("map_geoves.setView([arguments[0], arguments[1]], 16, {animate: false})", latitude, longitude)
+    centre = opened.run("const s = map_geoves.getSize(); return [s.x, s.y]")
+    container = opened.driver.find_element(By.ID, "map_geoves")
+    ActionChains(opened.driver).move_to_element_with_offset(container, 1, 1).move_to_element(container).perform()
+    shown = opened.wait_for("document.getElementById('value')?.textContent")
+    assert centre[0] > 100
+    assert shown == f"{surface.estimate[row, column]:.1f} m"
+
+
+def test_blank_cells_say_so(opened, small_results):
+    grid = small_results.stack.grid
+    to_degrees = pyproj.Transformer.from_crs(small_results.region.crs, "EPSG:4326", always_xy=True)
+    longitude, latitude = to_degrees.transform(grid.easting[-2], grid.northing[1])
+    opened.driver.find_element(By.ID, "wanted").send_keys(f"{latitude:.6f}, {longitude:.6f}", Keys.ENTER)
+    assert "No prediction here" in opened.run("return document.getElementById('answer').textContent")
+
+
+def test_search_finds_a_permit_and_tells_its_column(opened, small_results):
+    opened.driver.find_element(By.ID, "wanted").send_keys("p-104", Keys.ENTER)
+    answer = opened.run("return document.getElementById('answer').textContent")
+    permit = next(one for one in small_results.survey.permits if one.name == "P-104")
+    grid, depth = small_results.stack.grid, small_results.stack.surfaces["bedrock_depth"]
+    row = int((grid.north - permit.northing) // grid.cell_size)
+    column = int((permit.easting - grid.west) // grid.cell_size)
+    low, high = depth.p05[row, column], depth.p95[row, column]
+    assert answer.startswith("ClosePermit P-104")
+    assert f"Rock at {depth.estimate[row, column]:.0f} m, between {low:.0f} and {high:.0f} m." in answer
+    assert opened.run("return document.querySelectorAll('#answer .strip').length") == 1
+
+
+def test_search_takes_coordinates_of_the_region(opened, small_results):
+    grid = small_results.stack.grid
+    opened.driver.find_element(By.ID, "wanted").send_keys(f"{grid.easting[10]} {grid.northing[30]}", Keys.ENTER)
+    title = opened.run("return document.querySelector('#answer h2').textContent")
+    assert title == f"At {grid.easting[10]:,.0f}, {grid.northing[30]:,.0f}"
+
+
+def test_keyboard_opens_a_sounding_and_closes_it(opened):
+    marker = opened.driver.find_element(By.CSS_SELECTOR, ".marker[aria-label^='Sounding Larch 4']")
+    assert marker.get_attribute("tabindex") == "0"
+    opened.run("arguments[0].focus()", marker)
+    marker.send_keys(Keys.ENTER)
+    assert opened.run("return document.querySelector('#answer h2').textContent") == "Sounding Larch 4"
+    words = opened.run("return [...document.querySelectorAll('#answer svg text')].map(t => t.textContent)")
+    assert "AB/2 (m)" in words
+    assert "apparent resistivity (Ω m)" in words
+    # One reading of this sounding was set aside: it is drawn hollow.
+    assert opened.run("return document.querySelectorAll('#answer .reading.aside').length") == 1
+    opened.driver.switch_to.active_element.send_keys(Keys.ESCAPE)
+    assert opened.run("return document.querySelector('#answer h2').textContent") == "What is under a place?"
+    assert opened.run("return document.activeElement.getAttribute('aria-label')").startswith("Sounding Larch 4")
+
+
+def test_enter_on_the_map_asks_at_its_middle(opened):
+    opened.driver.find_element(By.ID, "map_geoves").send_keys(Keys.ENTER)
+    assert opened.run("return document.querySelector('#answer h2').textContent").startswith("At ")
+    assert opened.run("return document.querySelectorAll('#answer li').length") == 3
+
+
+@pytest.mark.parametrize("mode", ["both", "value", "width"])
+def test_every_surface_draws_in_every_mode(opened, mode):
+    names = opened.run("return [...document.getElementById('surface').options].map(o => o.value)")
+    assert set(names) >= {"bedrock_elevation", "deep_gravel_thickness", "shallow_aquifer_resistivity"}
+    seen = set()
+    for name in names:
+        opened.run(
+            "for (const [id, value] of [['surface', arguments[0]], ['mode', arguments[1]]]) {"
+            "const e = document.getElementById(id); e.value = value; e.dispatchEvent(new Event('change')); }",
+            name,
+            mode,
+        )
+        seen.add(opened.run("return document.querySelector('.leaflet-image-layer').src"))
+    assert len(seen) == len(names)
+    assert opened.complaints() == []
+
+
+def test_caution_stays_in_sight_and_the_facts_stand_as_tables(opened, small_results):
+    opened.run("window.scrollTo(0, document.body.scrollHeight)")
+    box = opened.run("const r = document.getElementById('caution').getBoundingClientRect(); return [r.top, r.bottom]")
+    assert box[0] == 0
+    assert box[1] > 20
+    rows = opened.run("return [...document.querySelectorAll('main tbody')].map(t => t.rows.length)")
+    survey = small_results.survey
+    assert rows == [len(survey.soundings), len(survey.wells), len(survey.permits)]
+
+
+def test_phone_scrolls_downwards_only(browser, page):
+    browser.open(page, width=390)
+    browser.wait_for(READY)
+    assert browser.run("return document.documentElement.scrollWidth") <= 390
+    browser.run("document.querySelector('.marker').click()")
+    assert browser.run("return document.documentElement.scrollWidth") <= 390
+
+
+def test_feet_stay_feet(browser, small_results_in_feet, tmp_path):
+    browser.open(write_map_page(small_results_in_feet, tmp_path / "map.html"))
+    browser.wait_for(READY)
+    browser.driver.find_element(By.ID, "wanted").send_keys("Larch 1", Keys.ENTER)
+    words = browser.run("return document.getElementById('answer').textContent")
+    assert "AB/2 (US ft)" in words
+    ground = small_results_in_feet.stack.ground
+    assert np.nanmax(ground) < 500 < np.nanmax(ground) * 3937 / 1200
+
+
+def test_hostile_names_stay_text(browser, hostile_results, tmp_path):
+    browser.open(write_map_page(hostile_results, tmp_path / "map.html"))
+    browser.wait_for(READY)
+    for kind in ("Sounding", "Well"):
+        for marker in browser.driver.find_elements(By.CSS_SELECTOR, f".marker[aria-label^='{kind}']"):
+            browser.run("arguments[0].click()", marker)
+    for index in range(12):
+        browser.run(
+            "document.querySelectorAll('main table')[2].rows[arguments[0]].querySelector('button').click()", index + 1
+        )
+    shown = browser.run("return document.body.textContent")
+    for name in (one.name for one in hostile_results.survey.soundings):
+        assert name in shown
+    assert browser.run("return document.getElementById('title').textContent") == hostile_results.region.name
+    assert browser.run("return document.title") == f"{hostile_results.region.name}: map"
+    assert browser.run("return document.querySelectorAll('main img, aside img, main script, aside script').length") == 0
+    assert browser.complaints() == []
+
+
+def test_packed_grid_unpacks_to_within_half_a_step():
+    values = np.random.default_rng(1).uniform(280.0, 420.0, (7, 9))
+    values[2, 3] = np.nan
+    import base64
+    import zlib
+
+    packed = encode_grid(values)
+    differences = np.frombuffer(zlib.decompress(base64.b64decode(packed["packed"])), "<u2").reshape(7, 9)
+    codes = np.cumsum(differences, axis=1, dtype=np.uint16)
+    found = np.where(codes == 0, np.nan, packed["low"] + (codes.astype(float) - 1) * packed["step"])
+    np.testing.assert_allclose(found, values, atol=packed["step"] / 2 * 1.001)
+    assert packed["step"] < 0.003
+
+
+@pytest.mark.parametrize("crs", ["EPSG:26914", "EPSG:5070"])
+def test_lattice_places_cells_as_pyproj_does(crs):
+    grid = Grid(west=200_000.0, north=2_100_000.0, cell_size=100.0, n_rows=250, n_columns=300)
+    lattice = control_points(grid, crs)
+    count = lattice["count"]
+    x = np.linspace(*lattice["x"], count)
+    y = np.linspace(*lattice["y"], count)
+    to_crs = pyproj.Transformer.from_crs("EPSG:3857", crs, always_xy=True)
+    random = np.random.default_rng(2)
+    i, j = random.integers(0, count - 1, (2, 200))
+    u, v = random.uniform(0, 1, (2, 200))
+    true = np.stack(to_crs.transform(x[i] + u * (x[1] - x[0]), y[j] + v * (y[1] - y[0])))
+    for known, wanted in zip((lattice["easting"], lattice["northing"]), true, strict=True):
+        k = np.reshape(known, (count, count))
+        guessed = (1 - v) * ((1 - u) * k[j, i] + u * k[j, i + 1]) + v * ((1 - u) * k[j + 1, i] + u * k[j + 1, i + 1])
+        assert np.abs(guessed - wanted).max() < 0.06 * grid.cell_size

@@ -1,0 +1,145 @@
+"""report.html as a reader meets it: in Chromium, from disk, with no network and no script."""
+
+import time
+from concurrent.futures import ThreadPoolExecutor
+
+import attrs
+import pytest
+
+from geoves.delivery.cautions import list_cautions
+from geoves.delivery.report_answers import confidence_in_words
+from geoves.delivery.report_page import write_report_page
+
+RECORD = {"versions": {"geoves": "0.1.0"}, "inputs": {"soundings.csv": "0" * 64}, "figures": [{"rmse": 6.123456}, {}]}
+
+
+@pytest.fixture(scope="module")
+def page(small_results, tmp_path_factory):
+    return write_report_page(small_results, tmp_path_factory.mktemp("report") / "report.html", RECORD)
+
+
+def test_two_writes_are_equal_whoever_draws(small_results, page, tmp_path):
+    with ThreadPoolExecutor(2) as pool:
+        again = write_report_page(small_results, tmp_path / "report.html", RECORD, map=pool.map)
+    assert again.read_bytes() == page.read_bytes()
+
+
+def test_nothing_is_requested_and_nothing_complains(browser, page):
+    browser.open(page)
+    assert browser.run("return document.querySelectorAll('section h2').length") == 8
+    assert browser.requested_addresses() == [page.as_uri()]
+    assert browser.complaints() == []
+    assert browser.run("return document.scripts.length") == 0
+
+
+def test_every_sounding_has_its_strip(browser, page, small_results):
+    browser.open(page)
+    strips = browser.run(
+        "return [...document.querySelectorAll('.strip')].map(s => [s.querySelector('h3').textContent,"
+        "s.querySelectorAll('svg').length, s.querySelector('.sentence').textContent])"
+    )
+    columns = {one.sounding: one for one in small_results.interpretation.columns}
+    assert [one[0] for one in strips] == [one.name for one in small_results.survey.soundings]
+    assert all(drawings == 3 and columns[name].sentence == said for name, drawings, said in strips)
+
+
+def test_the_reading_set_aside_is_hollow_and_says_why(browser, page, small_results):
+    browser.open(page)
+    number = next(i for i, one in enumerate(small_results.survey.soundings) if one.name == "Larch 4")
+    strip = browser.run("return document.getElementById(arguments[0]).textContent", f"sounding-{number}")
+    assert "stands 90 % above its neighbours" in strip
+    hollow = browser.run(
+        "return document.getElementById(arguments[0]).querySelectorAll('.reading.aside').length", f"sounding-{number}"
+    )
+    assert hollow == 1
+
+
+def test_cautions_are_all_there_and_one_stays_in_sight(browser, page):
+    browser.open(page)
+    shown = browser.run("return document.body.textContent")
+    assert all(caution in shown for caution in list_cautions())
+    browser.run("window.scrollTo(0, document.body.scrollHeight)")
+    assert browser.run("return document.querySelector('.caution').getBoundingClientRect().top") == 0
+
+
+def test_phone_scrolls_downwards_only(browser, page):
+    browser.open(page, width=390)
+    assert browser.run("return document.documentElement.scrollWidth") <= 390
+
+
+def test_contrast_meets_wcag_aa(browser, page):
+    """Body, soft and caution text against their grounds: 4.5 to 1 (WCAG 2.2, success criterion 1.4.3)."""
+    browser.open(page)
+    pairs = browser.run(
+        "return ['body', '.aside', '.caution', 'a', '.tick'].map(q => {const e = document.querySelector(q);"
+        "let g = e; while (g && getComputedStyle(g).backgroundColor === 'rgba(0, 0, 0, 0)') g = g.parentElement;"
+        "const s = getComputedStyle(e); return [s[q === '.tick' ? 'fill' : 'color'],"
+        "g ? getComputedStyle(g).backgroundColor : getComputedStyle(document.documentElement).backgroundColor]})"
+    )
+    for ink, ground in pairs:
+        assert _contrast(ink, ground) >= 4.5
+
+
+def _contrast(one, other):
+    """Contrast ratio and relative luminance as WCAG 2.2 defines them."""
+
+    def luminance(colour):
+        channels = [float(part) / 255 for part in colour[colour.index("(") + 1 : -1].split(",")[:3]]
+        red, green, blue = (c / 12.92 if c <= 0.04045 else ((c + 0.055) / 1.055) ** 2.4 for c in channels)
+        return 0.2126 * red + 0.7152 * green + 0.0722 * blue
+
+    high, low = sorted((luminance(one), luminance(other)), reverse=True)
+    return (high + 0.05) / (low + 0.05)
+
+
+def test_hostile_names_stay_text(browser, hostile_results, tmp_path):
+    record = {"<b>key</b>": "<script>document.title='broken'</script>", "list": ["{{7*7}}", "<i>"]}
+    browser.open(write_report_page(hostile_results, tmp_path / "report.html", record))
+    shown = browser.run("return document.body.textContent")
+    for sounding in hostile_results.survey.soundings:
+        assert sounding.name in shown
+    assert "<b>key</b>" in shown
+    assert "{{7*7}}, <i>" in shown
+    assert browser.run("return document.title") == f"{hostile_results.region.name}: report"
+    assert browser.run("return document.scripts.length + document.images.length") == 0
+    assert browser.complaints() == []
+
+
+def test_confidence_counts_what_the_bands_held(small_results):
+    """Misfits of 1, 2, 3, 4, 5, 6, 9 and 11 m: by hand the median is 4.5; bands of 1.645 times 6 m hold 7 of 8."""
+    (said,) = confidence_in_words(small_results)
+    assert "Half were met within 4.5 m" in said
+    assert "held 88%" in said
+
+
+def test_no_wells_no_axis_no_gravel_still_reads(small_results, tmp_path):
+    survey = attrs.evolve(small_results.survey, wells=(), permits=(), picks=(), boundary=None)
+    keep = {"bedrock_elevation": small_results.stack.surfaces["bedrock_elevation"]}
+    stack = attrs.evolve(small_results.stack, surfaces=keep, variograms=(), cross_validations=())
+    found = attrs.evolve(small_results.interpretation, well_readings=(), unmapped_words=(), remarks=())
+    layers = {name: frame.iloc[:0] for name, frame in small_results.layers.items()}
+    bare = attrs.evolve(small_results, survey=survey, stack=stack, interpretation=found, layers=layers, doubts=())
+    words = write_report_page(bare, tmp_path / "report.html", {}).read_text("utf-8")
+    assert "No valley axis was found" in words
+    assert "No surface could be tested" in words
+
+
+def test_150_strips_are_quick_and_small(small_results, tmp_path):
+    """A county's worth of soundings: under 20 s and 15 MB."""
+    many, inverted, columns = [], [], []
+    for i in range(150):
+        k = i % len(small_results.survey.soundings)
+        name = f"S{i:03d}"
+        many.append(attrs.evolve(small_results.survey.soundings[k], name=name))
+        inverted.append(attrs.evolve(small_results.inverted[k], sounding=name))
+        columns.append(attrs.evolve(small_results.interpretation.columns[k], sounding=name))
+    results = attrs.evolve(
+        small_results,
+        survey=attrs.evolve(small_results.survey, soundings=tuple(many)),
+        inverted=tuple(inverted),
+        interpretation=attrs.evolve(small_results.interpretation, columns=tuple(columns)),
+    )
+    begun = time.perf_counter()
+    page = write_report_page(results, tmp_path / "report.html", RECORD)
+    assert time.perf_counter() - begun < 20
+    assert page.stat().st_size < 15e6
