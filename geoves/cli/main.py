@@ -6,6 +6,7 @@ import os
 import sys
 import tempfile
 import traceback
+import warnings
 from collections.abc import Sequence
 from importlib import metadata
 from pathlib import Path
@@ -24,6 +25,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     """The exit status: 0 done, 1 the job could not be done, 2 the inputs or the call are wrong."""
     if isinstance(sys.stdout, io.TextIOWrapper):
         sys.stdout.reconfigure(errors="replace")  # a name that the terminal cannot show stops nothing
+    if not sys.warnoptions:
+        warnings.simplefilter("ignore")  # of libraries, to their users; what a person should know is said in words
     parsed = _build_parser().parse_args(arguments)
     try:
         _call(parsed)

@@ -5,7 +5,6 @@ import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 
-from rich.console import Console
 from rich.progress import BarColumn, MofNCompleteColumn, TextColumn, TimeElapsedColumn
 from rich.progress import Progress as RichProgress
 
@@ -30,13 +29,8 @@ class TerminalProgress:
     @contextmanager
     def step(self, title: str, total: int) -> Iterator[Step]:
         """A step with a bar."""
-        columns = (
-            TextColumn("{task.description:<34}", markup=False),
-            BarColumn(),
-            MofNCompleteColumn(),
-            TimeElapsedColumn(),
-        )
-        with RichProgress(*columns, console=Console()) as bars:
+        titles = TextColumn("{task.description:<34}", markup=False)
+        with RichProgress(titles, BarColumn(), MofNCompleteColumn(), TimeElapsedColumn()) as bars:
             yield _RichStep(bars, title, total)
 
 

@@ -11,8 +11,9 @@ from geoves.curves import prepare_curves
 from geoves.domain.findings import Finding
 from geoves.errors import DeliveryError
 from geoves.project.findings import name_inputs
+from geoves.project.inputs import read_inputs
 from geoves.project.progress import Progress, Summary
-from geoves.reading import FaultyInputError, read_region, read_survey
+from geoves.reading import FaultyInputError
 
 _COLUMNS = ("severity", "file", "row", "column", "value", "expected", "place")
 # A spreadsheet takes a cell that begins so for a formula.
@@ -27,11 +28,11 @@ def check(region_path: Path, progress: Progress) -> Summary:
     report = region_path.parent / "check" / "check.csv"
     try:
         with progress.step("Reading the inputs", 1) as step:
-            region = read_region(region_path)
-            survey, grid = read_survey(region)
+            inputs = read_inputs(region_path)
+            region, survey, grid = inputs.region, inputs.survey, inputs.grid
             step.advance()
         with progress.step("Checking the curves", 1) as step:
-            doubts = name_inputs(prepare_curves(survey).doubts, region)
+            doubts = name_inputs(prepare_curves(survey, inputs.settings.curves).doubts, region)
             step.advance()
     except FaultyInputError as error:
         if region_path.is_file():

@@ -53,13 +53,28 @@ def _doubt_far_places(rows: Sequence[Row], places: Sequence[tuple[float, float]]
     easting, northing = _columns(places)
     transformer = pyproj.Transformer.from_crs(crs, LONGITUDE_LATITUDE, always_xy=True)
     longitude, latitude = transformer.transform(easting, northing)
-    east = np.mod(longitude - area.west + _ZONE_OVERLAP, 360.0)
+    with np.errstate(invalid="ignore"):  # of places that no longitude belongs to
+        east = np.mod(longitude - area.west + _ZONE_OVERLAP, 360.0)
     width = (area.east - area.west) % 360.0 or 360.0
     inside = (east <= width + 2.0 * _ZONE_OVERLAP) & (latitude >= area.south - _ZONE_OVERLAP)
     inside &= latitude <= area.north + _ZONE_OVERLAP
     for row, is_inside, known in zip(rows, inside, np.isfinite(easting), strict=True):
         if known and not is_inside:
             row.doubt(column, f"the place lies far outside the area of {crs} ({area.name}); are x and y swapped?")
+
+
+def find_stretch(places: Sequence[tuple[float, float]], crs: str) -> float:
+    """Length on the map over length on the ground in the middle of the places; NaN where there are none."""
+    located = np.array(places, dtype=np.float64).reshape(-1, 2)
+    located = located[np.isfinite(located).all(axis=1)]
+    if not len(located):
+        return np.nan
+    middle = np.median(located, axis=0)
+    longitude, latitude = pyproj.Transformer.from_crs(crs, LONGITUDE_LATITUDE, always_xy=True).transform(*middle)
+    if not np.isfinite([longitude, latitude]).all():
+        return np.nan
+    factors = pyproj.Proj(crs).get_factors(longitude, latitude, errcheck=False)
+    return float(np.sqrt(factors.areal_scale))
 
 
 def _columns(pairs: Sequence[tuple[float, float]]) -> tuple[FloatArray, FloatArray]:

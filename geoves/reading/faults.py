@@ -4,21 +4,26 @@ from collections.abc import Sequence
 from difflib import get_close_matches
 
 from geoves.domain.findings import Finding
+from geoves.domain.region import Region
 from geoves.errors import InputError
 
 
 class FaultyInputError(InputError):
-    """The inputs hold faults. ``findings`` has them all, and the doubts that were met beside them."""
+    """The inputs hold faults. ``findings`` has them all, and the doubts that were met beside them.
 
-    def __init__(self, findings: Sequence[Finding]) -> None:
+    ``region`` is what region.toml gave, so far as it can be used for further checks.
+    """
+
+    def __init__(self, findings: Sequence[Finding], region: Region | None = None) -> None:
         self.findings = tuple(findings)
+        self.region = region
         super().__init__([finding.line() for finding in findings if finding.severity == "fault"])
 
 
-def raise_faults(findings: Sequence[Finding]) -> None:
+def raise_faults(findings: Sequence[Finding], region: Region | None = None) -> None:
     """Raise FaultyInputError where at least one of the findings is a fault."""
     if any(finding.severity == "fault" for finding in findings):
-        raise FaultyInputError(findings)
+        raise FaultyInputError(findings, region)
 
 
 def nearest(word: str, known: Sequence[str]) -> str:

@@ -18,7 +18,7 @@ def read_region(path: Path) -> Region:
     """
     file = parse_region(path)
     if any(finding.severity == "fault" for finding in file.findings) and file.region is not None:
-        raise_faults((*file.findings, *collect_survey(file.region).findings))
+        raise_faults((*file.findings, *collect_survey(file.region).findings), file.region)
     raise_faults(file.findings)
     if file.region is None:
         raise AssertionError("a region without faults was not built")
@@ -31,7 +31,7 @@ def read_survey(region: Region) -> tuple[Survey, Grid]:
     Raises FaultyInputError (an InputError) with all faults of all inputs.
     """
     files = collect_survey(region)
-    raise_faults(files.findings)
+    raise_faults(files.findings, region)
     if files.grid is None:
         raise AssertionError("a survey without faults has no grid")
     return files.survey, files.grid

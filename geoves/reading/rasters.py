@@ -1,6 +1,9 @@
 """The raster of the land surface: on the region's grid, and at single places."""
 
-from collections.abc import Sequence
+import logging
+import warnings
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 
 import attrs
 import numpy as np
@@ -8,7 +11,7 @@ import rasterio
 from affine import Affine
 from pyproj import Transformer
 from rasterio.enums import Resampling
-from rasterio.errors import RasterioError
+from rasterio.errors import NotGeoreferencedWarning, RasterioError
 from rasterio.vrt import WarpedVRT
 from rasterio.windows import Window
 
@@ -17,7 +20,6 @@ from geoves.domain.findings import Finding
 from geoves.domain.grids import Grid
 from geoves.domain.survey import Ground
 from geoves.reading.delimited import refuse_file
-from geoves.reading.faults import printable
 from geoves.reading.soundings import ELEVATION
 from geoves.reading.sources import Source
 
@@ -28,6 +30,9 @@ _METRES_OF_WORDS |= {
     "us-ft": 1200.0 / 3937.0,
     "ftus": 1200.0 / 3937.0,
 }
+
+
+_log = logging.getLogger(__name__)
 
 
 @attrs.frozen
@@ -43,7 +48,7 @@ def read_ground(
 ) -> GroundReading | None:
     """The land surface in m, resampled bilinearly; None with a fault where the file is no raster of elevations."""
     try:
-        with rasterio.open(source.path) as raster:
+        with _unwarned(), rasterio.open(source.path) as raster:
             if expected := _unfit(raster):
                 refuse_file(source, expected, findings)
                 return None
@@ -51,10 +56,19 @@ def read_ground(
             at_places = _sample(raster, crs, places) * source.metres
             on_grid = None if grid is None else _resample(raster, crs, grid) * source.metres
     except (RasterioError, OSError, ValueError) as error:
-        refuse_file(source, f"not a raster that can be read ({printable(str(error))[:80]})", findings)
+        _log.debug("%s: %s", source.typed, error)
+        refuse_file(source, "not a raster that can be read; expected a whole GeoTIFF of elevations", findings)
         return None
     _check_elevations(source, at_places if on_grid is None else on_grid, findings)
     return GroundReading(None if grid is None or on_grid is None else Ground(grid, on_grid), at_places)
+
+
+@contextmanager
+def _unwarned() -> Iterator[None]:
+    """Without the warning that a raster has no place, which is said here in other words."""
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", NotGeoreferencedWarning)
+        yield
 
 
 def _unfit(raster: rasterio.DatasetReader) -> str:

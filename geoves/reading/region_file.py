@@ -18,7 +18,7 @@ from geoves.reading.sources import INPUTS, REQUIRED_INPUTS, WITH_LENGTHS, split_
 from geoves.reading.template import read_template
 
 # Tables whose keys are options of a step: project checks them against the step's own options.
-STEP_TABLES = ("curves", "inversion", "interpretation", "surfaces")
+STEP_TABLES = ("curves", "inversion", "interpretation", "surfaces", "layers")
 _TABLES = ("region", "inputs", "input_length_unit", "unit", "delivery", *STEP_TABLES)
 _REGION_KEYS = ("name", "crs", "vertical_datum", "length_unit", "cell_size", "random_seed")
 _DELIVERY_KEYS = ("organisation", "contact", "use_limits", "withhold")

@@ -9,6 +9,7 @@ from geoves.domain.findings import Finding
 from geoves.domain.grids import Grid
 from geoves.domain.region import Region
 from geoves.domain.survey import Permit, Pick, Sounding, Survey, Well
+from geoves.reading.coordinates import find_stretch
 from geoves.reading.delimited import read_delimited
 from geoves.reading.faults import nearest
 from geoves.reading.grids import Place, lay_grid, locations
@@ -32,6 +33,10 @@ _TABLES = {
     "permits": (PERMIT_COLUMNS, "permit"),
     "picks": (PICK_COLUMNS, "place"),
 }
+
+
+# A CRS that stretches lengths by more than this is doubted: distances, areas and the reach of data are measured in it.
+_STRETCH_TOLERANCE = 0.01
 
 
 @attrs.frozen
@@ -63,7 +68,7 @@ def collect_survey(region: Region) -> SurveyFiles:
         doubt_outside(permits, _rows_of(permits, tables), boundary)
         doubt_bare_cells(region, grid, ground, boundary, findings)
     _check_withheld(region, tables, findings)
-    findings.extend(_doubt_region(region, tables))
+    findings.extend(_doubt_region(region, tables, find_stretch(locations(places), region.crs)))
     ordered = _in_order(findings, region)
     survey = Survey(
         soundings=tuple(place for place in places if isinstance(place, Sounding)),
@@ -161,8 +166,11 @@ def _known(name: str) -> tuple[str, ...]:
     return _TABLES[name][0].known
 
 
-def _doubt_region(region: Region, tables: dict[str, Table | None]) -> list[Finding]:
+def _doubt_region(region: Region, tables: dict[str, Table | None], stretch: float) -> list[Finding]:
     doubts = []
+    if abs(stretch - 1.0) > _STRETCH_TOLERANCE:
+        words = f"map lengths are {stretch:.3f} times those on the ground here; choose a CRS made for the region"
+        doubts.append(Finding("doubt", region.path.name, 0, "region.crs", region.crs, words))
     if region.vertical_datum is None:
         words = "no vertical datum is declared: nobody can say from which zero the elevations count"
         doubts.append(Finding("doubt", region.path.name, 0, "region.vertical_datum", "", words))

@@ -1,5 +1,7 @@
 """Vector files: the boundary, and permits as points. Geometries come back in the region's CRS."""
 
+import logging
+import warnings
 from collections.abc import Sequence
 from typing import Any
 
@@ -16,7 +18,10 @@ from geoves.reading.faults import in_words, printable
 from geoves.reading.sources import Source
 from geoves.reading.tables import Columns, Table, build_table
 
-VECTOR_SUFFIXES = (".gpkg", ".geojson", ".json", ".shp")
+_log = logging.getLogger(__name__)
+
+_KINDS = {".gpkg": "GeoPackage", ".geojson": "GeoJSON file", ".json": "GeoJSON file", ".shp": "shapefile"}
+VECTOR_SUFFIXES = tuple(_KINDS)
 _UNREADABLE = (DataSourceError, DataLayerError, FieldError, GeometryError, ValueError, RuntimeError, OSError)
 
 
@@ -82,14 +87,18 @@ def _read_features(source: Source, crs: str, findings: list[Finding]) -> gpd.Geo
         return None
     try:
         layer = _find_layer(source)
-        features = gpd.read_file(source.path, layer=layer, engine="pyogrio")
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore", RuntimeWarning)  # of field types that geoves does not need
+            features = gpd.read_file(source.path, layer=layer, engine="pyogrio")
         if not (expected := _unfit(features)):
             return features.to_crs(crs)
         refuse_file(source, expected, findings)
     except _LayerError as error:
         refuse_file(source, str(error), findings)
     except _UNREADABLE as error:
-        refuse_file(source, f"not a file of its kind that can be read ({printable(str(error))[:80]})", findings)
+        _log.debug("%s: %s", source.typed, error)
+        kind = _KINDS[source.suffix]
+        refuse_file(source, f"not a {kind} that can be read; expected a whole one, written by a GIS", findings)
     return None
 
 

@@ -176,3 +176,31 @@ def test_progress_on_a_terminal(monkeypatch, capsys):
     assert "Inverting [a]" in shown
     assert "2/2" in shown
     assert isinstance(choose_progress(quiet=True), SilentProgress)
+
+
+def test_faulty_options_of_steps_are_told_with_the_faults_of_tables(county):
+    region = county / "region.toml"
+    region.write_text(region.read_text(encoding="utf-8") + "[curves]\nsteepest = 1\n", encoding="utf-8")
+    readings = county / "readings.csv"
+    readings.write_text(readings.read_text(encoding="utf-8").replace(",3,0.5,", ",3,5,"), encoding="utf-8")
+    done = geoves("check", region)
+    assert done.returncode == 2
+    first, second = done.stderr.splitlines()
+    assert first.startswith("region.toml")
+    assert "steepest" in first
+    assert second.startswith("readings.csv, row 2, mn2")
+
+
+def test_broken_files_leave_one_line_each_and_nothing_of_libraries(county):
+    region = county / "region.toml"
+    text = region.read_text(encoding="utf-8").replace("# ground =", "ground =").replace("# boundary =", "boundary =")
+    region.write_text(text.replace("permits.csv", "permits.geojson"), encoding="utf-8")
+    for name in ("ground.tif", "boundary.gpkg", "permits.geojson"):
+        (county / name).write_bytes(b"\x00\x01" * 50)
+    done = geoves("check", region)
+    assert done.returncode == 2
+    assert [line.split(":")[0] for line in done.stderr.splitlines()] == [
+        "permits.geojson",
+        "ground.tif",
+        "boundary.gpkg",
+    ]

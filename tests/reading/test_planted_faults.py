@@ -284,3 +284,16 @@ def test_a_pick_at_a_name_of_two_places_is_a_fault(folder):
     folder.replace("picks.csv", "W1,deep_gravel", "S2,deep_gravel")
     (fault,) = folder.faults()
     assert (fault.file, fault.row, fault.column, fault.value) == ("picks.csv", 2, "place", "S1")
+
+
+def test_a_crs_that_stretches_lengths_is_doubted(folder):
+    # Spherical Mercator stretches by about 1 / cos(latitude), here 1.394 at 44.25 degrees (its definition).
+    folder.drop_inputs("boundary", "ground")
+    folder.replace("region.toml", "EPSG:26914", "EPSG:3857")
+    for name in ("soundings.csv", "wells.csv", "permits.csv"):
+        text = (folder.path / name).read_text(encoding="utf-8")
+        folder.write(name, text.replace(",60", ",-1088").replace(",490", ",550").replace(",-1088", ",-10880"))
+    folder.replace("soundings.csv", ",,wenner", ",300,wenner")
+    (doubt,) = folder.doubts()
+    assert (doubt.column, doubt.value) == ("region.crs", "EPSG:3857")
+    assert "1.39" in doubt.expected
