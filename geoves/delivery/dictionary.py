@@ -50,7 +50,7 @@ class LayerWords:
 
 @attrs.frozen
 class RasterWords:
-    """One surface as rasters: which of its parts are delivered, and what its values are."""
+    """One surface as rasters: which of its parts are delivered, what its values are, which kriged surface judges it."""
 
     name: str
     title: str
@@ -58,6 +58,7 @@ class RasterWords:
     kind: Literal["length", "resistivity", "fraction"]
     parts: tuple[Part, ...] = ("estimate",)
     elevation: bool = False
+    judged_by: str = ""
 
 
 _ALL_PARTS: tuple[Part, ...] = ("estimate", "standard_error", "p05", "p95")
@@ -79,6 +80,7 @@ RASTERS: Mapping[str, RasterWords] = MappingProxyType(
                 "Depth to bedrock",
                 "Depth from the land surface to the top of bedrock.",
                 "length",
+                judged_by="bedrock_elevation",
             ),
             RasterWords(
                 "deep_gravel_thickness",
@@ -93,12 +95,14 @@ RASTERS: Mapping[str, RasterWords] = MappingProxyType(
                 "Bedrock elevation plus thickness of the deep gravel; blank where its probability is below 0.05.",
                 "length",
                 elevation=True,
+                judged_by="deep_gravel_thickness",
             ),
             RasterWords(
                 "deep_gravel_probability",
                 "Probability of deep gravel",
                 "Probability that at least 1 m of the deep aquifer is there.",
                 "fraction",
+                judged_by="deep_gravel_thickness",
             ),
             RasterWords(
                 "shallow_aquifer_resistivity",
@@ -112,6 +116,7 @@ RASTERS: Mapping[str, RasterWords] = MappingProxyType(
                 "Probability of the shallow aquifer",
                 "Probability that at least 1 m of the shallow aquifer is there.",
                 "fraction",
+                judged_by="shallow_aquifer_thickness",
             ),
         )
     }

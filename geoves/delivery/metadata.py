@@ -7,6 +7,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
+import attrs
 import pyproj
 from pygeometa.schemas.iso19139 import ISO19139OutputSchema
 
@@ -65,8 +66,11 @@ def render_raster_record(results: Results, record: Mapping[str, Any], name: str,
     if words.kind == "length":
         abstract += f" Rounded to 1/64 {results.region.length_unit}."
     resource = (f"surfaces/{name_part(name, part)}.tif", "GeoTIFF, cloud-optimised", "grid")
-    text = _render(results, record, (title, abstract), resource)
-    return _complete(text, results, name, with_heights=words.elevation)
+    merit = results.figures_of_merit
+    judge = words.judged_by or name
+    judged = attrs.evolve(results, figures_of_merit={judge: merit[judge]} if judge in merit else {})
+    text = _render(judged, record, (title, abstract), resource)
+    return _complete(text, judged, with_heights=words.elevation)
 
 
 def render_geopackage_record(results: Results, record: Mapping[str, Any]) -> str:
@@ -75,7 +79,7 @@ def render_geopackage_record(results: Results, record: Mapping[str, Any]) -> str
     unit = LENGTH_UNITS[results.region.length_unit]
     abstract = f"Layers of a reconnaissance by vertical electrical soundings, lengths in {unit}. {listed}"
     text = _render(results, record, ("Layers", abstract), (GEOPACKAGE, "GeoPackage 1.3", "vector"))
-    return _complete(text, results, None, with_heights=True)
+    return _complete(text, results, with_heights=True)
 
 
 def _render(results: Results, record: Mapping[str, Any], words: tuple[str, str], resource: tuple[str, str, str]) -> str:
@@ -184,29 +188,29 @@ def _tell_lineage(results: Results, record: Mapping[str, Any]) -> str:
         parts.append("Software: " + ", ".join(f"{name} {version}" for name, version in versions.items()) + ".")
     inputs = record.get("inputs")
     if isinstance(inputs, Mapping):
-        parts.append("Inputs: " + ", ".join(f"{key} ({value})" for key, value in _flatten(inputs)) + ".")
+        parts.append("Inputs: " + ", ".join(f"{name} (SHA-256 {value})" for name, value in inputs.items()) + ".")
     parts.extend(results.stack.remarks)
     return " ".join(parts)
 
 
 def _tell_accuracy(results: Results) -> Iterator[str]:
     yield "Accuracy as found by the job itself:"
-    merit = [f"{key} {value}" for key, value in _flatten(results.figures_of_merit)]
+    merit = [f"{key}: {value}" for key, value in _flatten(results.figures_of_merit)]
     yield "; ".join(merit) + "." if merit else "no figures were computed."
     yield describe_vertical(results.region)[1] + "."
 
 
 def _flatten(tree: Mapping[str, Any], above: str = "") -> Iterator[tuple[str, str]]:
-    """Leaves of a nested mapping as words: what each is called, and its value to four figures."""
+    """Leaves of a nested mapping: what each is called in words, and its value, numbers to four figures."""
     for key, value in tree.items():
-        name = f"{above} {key}".strip()
+        name = f"{above}, {key}" if above else str(key)
         if isinstance(value, Mapping):
             yield from _flatten(value, name)
         else:
-            yield name, f"{value:.4g}" if isinstance(value, float) else str(value)
+            yield name.replace("_", " "), f"{value:.4g}" if isinstance(value, float) else str(value)
 
 
-def _complete(text: str, results: Results, surface: str | None, *, with_heights: bool) -> str:
+def _complete(text: str, results: Results, *, with_heights: bool) -> str:
     """The record with what pygeometa has no place for: both reference systems, figures of merit as quality reports."""
     for prefix, address in _NAMESPACES.items():
         ET.register_namespace(prefix, address)
@@ -222,10 +226,7 @@ def _complete(text: str, results: Results, surface: str | None, *, with_heights:
     quality = root.find("gmd:dataQualityInfo/gmd:DQ_DataQuality", _NAMESPACES)
     if quality is None:
         raise DeliveryError("the metadata record has no statement of quality")
-    merit = results.figures_of_merit
-    own = merit.get(surface) if surface else None
-    chosen = _flatten({surface: own}) if isinstance(own, Mapping) and surface else _flatten(merit)
-    for index, (name, value) in enumerate(chosen):
+    for index, (name, value) in enumerate(_flatten(results.figures_of_merit)):
         quality.insert(1 + index, _quality_report(name, value))
     return _DECLARATION + ET.tostring(root, encoding="unicode") + "\n"
 

@@ -93,7 +93,7 @@ def write_styles(results: Results, folder: Path) -> tuple[Path, ...]:
     return tuple(written)
 
 
-def choose_breaks(least: float, most: float, *, count: int = 6) -> FloatArray:
+def choose_breaks(least: float, most: float, *, count: int = 8) -> FloatArray:
     """Round numbers, multiples of 1, 2 or 5 times a power of ten, that span from `least` to `most`.
 
     >>> choose_breaks(312.4, 371.0).tolist()
@@ -142,12 +142,13 @@ def _style_raster(words: RasterWords, part: Part, surface: Surface, results: Res
 
 
 def _span(parts: Sequence[FloatArray | None], words: RasterWords, results: Results) -> FloatArray:
-    """Breaks over the central 98 % of the finite cells; 0 to 1 where there are none."""
-    cells = np.concatenate([part[np.isfinite(part)] for part in parts if part is not None])
-    cells = convert_to_delivery(cells, words.kind, results.region.metres_per_length_unit)
-    if cells.size == 0:
+    """Breaks over the central 96 % of the finite cells of every part; 0 to 1 where there are none."""
+    metres = results.region.metres_per_length_unit
+    cells = [convert_to_delivery(part[np.isfinite(part)], words.kind, metres) for part in parts if part is not None]
+    ends = np.array([np.quantile(part, [0.02, 0.98]) for part in cells if part.size])
+    if ends.size == 0:
         return np.array([0.0, 1.0])
-    least, most = np.quantile(cells, [0.01, 0.99])
+    least, most = ends[:, 0].min(), ends[:, 1].max()
     if words.kind == "resistivity" and most > 1.5 * least > 0.0:
         return choose_log_breaks(float(least), float(most))
     least, most = min(least, most - 0.01), max(most, least + 0.01)

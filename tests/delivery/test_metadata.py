@@ -49,9 +49,17 @@ def test_record_says_who_where_what_and_how_far_to_trust_it(small_results):
 def test_record_holds_the_height_datum_and_the_figures_of_merit(small_results):
     text = render_raster_record(small_results, RECORD, "bedrock_elevation", "estimate")
     assert "urn:ogc:def:crs:EPSG::5703" in text
-    assert "leave_one_out_rmse_m" in text
+    assert "leave one out rmse m: 6.1" in text
     assert etree.fromstring(text.encode()).findtext(".//{*}DQ_QuantitativeResult//{*}Record") == "6.1"
     assert "EPSG::5703</" not in render_raster_record(small_results, RECORD, "deep_gravel_thickness", "estimate")
+
+
+def test_each_raster_is_judged_by_the_surface_it_comes_of(small_results):
+    depth = render_raster_record(small_results, RECORD, "bedrock_depth", "estimate")
+    assert "bedrock elevation, leave one out rmse m: 6.1" in depth
+    resistivity = render_raster_record(small_results, RECORD, "shallow_aquifer_resistivity", "estimate")
+    assert "no figures were computed" in resistivity
+    assert "DQ_QuantitativeResult" not in resistivity
 
 
 def test_equal_jobs_give_equal_bytes_and_other_names_other_identifiers(small_results):
