@@ -10,7 +10,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import cholesky, solve_triangular
-from scipy.optimize import brentq, minimize, minimize_scalar, nnls
+from scipy.optimize import OptimizeResult, brentq, minimize, minimize_scalar, nnls
 from scipy.spatial.distance import cdist
 from threadpoolctl import threadpool_limits
 
@@ -213,6 +213,8 @@ _RATIO_WIDTH = 0.8
 _RATIO_LIMIT = 1.6
 # Restricted likelihood costs n³ a step: beyond so many data, an arbitrary but fixed choice of them speaks for all.
 _LARGEST_FIT = 600
+# So many of them tell the starts apart; the best start alone is then followed on all.
+_SCOUTS = 150
 # Fewer data than this cannot tell a direction.
 _FEWEST_FOR_DIRECTION = 20
 
@@ -287,9 +289,20 @@ def _penalised(parameters: FloatArray, problem: _Restricted) -> tuple[float, Flo
 def _chosen_rows(points: FloatArray, values: FloatArray) -> IntArray:
     """Rows that take part in a fit: all, or a fixed choice among many that does not hang on their order."""
     in_order = np.lexsort((values, points[:, 1], points[:, 0]))
-    if len(values) <= _LARGEST_FIT:
-        return in_order
     return in_order[np.random.default_rng(0).permutation(len(values))[:_LARGEST_FIT]]
+
+
+def _first(problem: _Restricted, count: int) -> _Restricted:
+    """The same problem for its first `count` data alone."""
+    square, row = (slice(count), slice(count)), slice(count)
+    return _Restricted(
+        problem.model,
+        problem.north2_plus[square],
+        problem.north2_minus[square],
+        problem.cross[square],
+        problem.values[row],
+        problem.error_variance[row],
+    )
 
 
 def _search(problem: _Restricted, *, anisotropic: bool) -> FloatArray:
@@ -301,11 +314,14 @@ def _search(problem: _Restricted, *, anisotropic: bool) -> FloatArray:
     turns = [(0.7, 0.0), (0.0, 0.7), (-0.7, 0.0), (0.0, -0.7)] if anisotropic else [(0.0, 0.0)]
     lengths = [-1.0] if anisotropic else [-2.0, -1.0, 0.0]
     starts = [np.array([-0.2, -2.5, length, *turn]) for length in lengths for turn in turns]
-    fits = [
-        minimize(_penalised, start, (problem,), jac=True, method="L-BFGS-B", bounds=bounds, options={"maxiter": 80})
-        for start in starts
-    ]
-    return np.asarray(min(fits, key=lambda fit: fit.fun).x)
+
+    def descend(part: _Restricted, start: FloatArray) -> OptimizeResult:
+        options = {"maxiter": 80}
+        return minimize(_penalised, start, (part,), jac=True, method="L-BFGS-B", bounds=bounds, options=options)
+
+    scouts = _first(problem, _SCOUTS)
+    best = min((descend(scouts, start) for start in starts), key=lambda fit: float(fit.fun))
+    return np.asarray(best.x if len(problem.values) <= _SCOUTS else descend(problem, best.x).x)
 
 
 @threadpool_limits.wrap(limits=1)  # many small factors: threads cost more than they bring
