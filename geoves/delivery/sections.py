@@ -167,7 +167,7 @@ def draw_section(results: Results, title: str, section: Any) -> Markup:
     margin = 0.06 * (highest - lowest)
     far, far_unit = (1609.344, "mi") if region.length_unit != "m" else (1000.0, "km")
     x = distance * crs_metres / far
-    frame = Frame(Scale(0.0, float(x[-1]), 66, WIDTH - 46), Scale(lowest - margin, highest + 2.5 * margin, 262, 30))
+    frame = Frame(Scale(0.0, float(x[-1]), 66, WIDTH - 46), Scale(lowest - margin, highest + 2.5 * margin, 282, 50))
     bedrock_index = len(region.template.units) - 1
     parts = [
         frame.band(x, np.full_like(x, lowest - margin), estimate, "section-rock"),
@@ -182,8 +182,8 @@ def draw_section(results: Results, title: str, section: Any) -> Markup:
     parts[0] = element("g", {"fill": f"url(#unit-{shown[region.template.units[bedrock_index].code]})"}, parts[0])
     vertical = abs(frame.y.end - frame.y.start) / ((frame.y.high - frame.y.low) * metres)
     horizontal = (frame.x.end - frame.x.start) / (section.length * crs_metres)
-    parts.append(label(66, 18, f"{title}; heights drawn {vertical / horizontal:.0f} times larger than lengths", "axis"))
-    return drawing(WIDTH, 300, title, *parts)
+    parts.append(label(66, 14, f"{title}; heights drawn {vertical / horizontal:.0f} times larger than lengths", "axis"))
+    return drawing(WIDTH, 320, title, *parts)
 
 
 def _foot(place: Place) -> float:

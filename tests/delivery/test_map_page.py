@@ -212,3 +212,22 @@ def test_lattice_places_cells_as_pyproj_does(crs):
         k = np.reshape(known, (count, count))
         guessed = (1 - v) * ((1 - u) * k[j, i] + u * k[j, i + 1]) + v * ((1 - u) * k[j + 1, i] + u * k[j + 1, i + 1])
         assert np.abs(guessed - wanted).max() < 0.06 * grid.cell_size
+
+
+def test_clicking_a_permit_opens_it_and_not_the_ground_beside(opened):
+    opened.run("map_geoves.setZoom(15, {animate: false})")
+    dot = opened.run("return [...document.querySelectorAll('.leaflet-permits-pane path')].find(p => {"
+                     "const b = p.getBoundingClientRect(); return b.width && document.elementFromPoint("
+                     "b.x + b.width / 2, b.y + b.height / 2) === p})")  # fmt: skip
+    ActionChains(opened.driver).move_to_element(dot).click().perform()
+    assert opened.run("return document.querySelector('#answer h2').textContent").startswith("Permit P-1")
+
+
+def test_paper_shows_what_the_screen_showed(opened):
+    before = opened.run("return map_geoves.getBounds().toBBoxString()").split(",")
+    opened.run("window.dispatchEvent(new Event('beforeprint'))")
+    assert opened.run("const s = map_geoves.getSize(); return [s.x, s.y]") == [640, 480]
+    seen = opened.run("return map_geoves.getBounds().toBBoxString()").split(",")
+    assert float(seen[0]) <= float(before[0]) < float(before[2]) <= float(seen[2])
+    opened.run("window.dispatchEvent(new Event('afterprint'))")
+    assert opened.run("return map_geoves.getSize().x") > 640

@@ -56,7 +56,8 @@ function wellMarkers(open) {
 
 // Small dots that grow with the zoom; near enough, they bear their names.
 function permitMarkers(map, open) {
-  const renderer = L.canvas({ pane: "permits" });
+  // SVG prints well, where a canvas that is drawn anew for paper covers what lies under it; a canvas bears more dots.
+  const renderer = described.permits.length > 4000 ? L.canvas({ pane: "permits" }) : L.svg({ pane: "permits" });
   const dots = described.permits.map((permit) => {
     const dot = L.circleMarker(permit.at, { renderer, pane: "permits", radius: 2.5, weight: 1, color: "#111",
       fillColor: "#fff", fillOpacity: 0.95, bubblingMouseEvents: false });
@@ -67,7 +68,7 @@ function permitMarkers(map, open) {
   const grow = () => {
     const zoom = map.getZoom(), seen = map.getBounds();
     for (const { permit, dot } of dots) {
-      dot.setRadius(Math.min(7, Math.max(2.2, 2.2 + 0.8 * (zoom - 11))));
+      dot.setRadius(Math.min(7, Math.max(1.6, 1.6 + 0.9 * (zoom - 11))));
       const wanted = zoom >= 15 && map.hasLayer(group) && seen.contains(permit.at);
       if (wanted && !dot.getTooltip()) {
         dot.bindTooltip(named(permit.name), { permanent: true, direction: "right", className: "permit-name" });

@@ -126,6 +126,22 @@ function startLayers(map, openers) {
   for (const [, layer, on] of layers.reverse()) if (on) layer.addTo(map);
 }
 
+// Paper has its own width: the view is fitted into it, and the screen's comes back after.
+function startPrinting(map) {
+  const container = map.getContainer();
+  const resize = (width, height, view) => {
+    Object.assign(container.style, { width, height });
+    map.invalidateSize({ animate: false });
+    map.fitBounds(view, { animate: false });
+  };
+  let view = null;
+  window.addEventListener("beforeprint", () => {
+    view = map.getBounds();
+    resize("640px", "480px", view);
+  });
+  window.addEventListener("afterprint", () => resize("", "", view));
+}
+
 function askAt(openers, show, latlng) {
   const place = toRegion(...toMercator(latlng.lat, latlng.lng), true);
   const title = `At ${grouped(place[0])}, ${grouped(place[1])}`;
@@ -145,6 +161,7 @@ async function start() {
   const openers = startPlaces(show);
   startLayers(map, openers);
   startReadout(map, current);
+  startPrinting(map);
   map.on("click", (event) => askAt(openers, show, event.latlng));
   const container = map.getContainer();
   container.setAttribute("aria-label", "Map. Arrows move it, Enter asks at its middle.");

@@ -3,11 +3,10 @@
 const GREY = [205, 205, 202];
 const FADE_MOST = 0.92;
 
-function rampColour(name, share) {
-  const at = 6 * Math.min(255, Math.max(0, Math.round(share * 255)));
-  const hex = described.ramps[name];
-  return [0, 2, 4].map((offset) => parseInt(hex.slice(at + offset, at + offset + 2), 16));
-}
+const ramps = Object.fromEntries(Object.entries(described.ramps).map(([name, hex]) =>
+  [name, hex.match(/.{6}/g).map((colour) => [0, 2, 4].map((at) => parseInt(colour.slice(at, at + 2), 16)))]));
+
+const rampColour = (name, share) => ramps[name][Math.min(255, Math.max(0, Math.round(share * 255)))];
 
 const scaled = (surface, value) => surface.quantity === "resistivity" ? Math.log(value) : value;
 const shareOf = (ends, value) => (value - ends[0]) / (ends[1] - ends[0]);
@@ -33,31 +32,62 @@ function faded(colour, doubt) {
   return colour.map((channel, i) => channel * (1 - share) + GREY[i] * share);
 }
 
+// For each pixel of a picture over the grid's bounds in web mercator, the cell that it shows; -1 outside the grid.
+function findPixelCells() {
+  const [west, south, east, north] = projection.bounds;
+  const fine = Math.min(8, Math.max(1, Math.sqrt(1e6 / (grid.rows * grid.columns))));  // pixels a cell
+  const width = Math.round(grid.columns * fine);
+  const height = Math.round(width * (north - south) / (east - west));
+  const cells = new Int32Array(width * height);
+  const step = 8;  // places between are taken from a straight line: bent by less than a thousandth of a cell
+  for (let row = 0; row < height; row += 1) {
+    const y = north - (row + 0.5) / height * (north - south);
+    const across = (column) => toRegion(west + (column + 0.5) / width * (east - west), y, true);
+    let from = across(0);
+    for (let start = 0; start < width; start += step) {
+      const to = across(start + step);
+      for (let k = 0; k < step && start + k < width; k += 1) {
+        const share = k / step;
+        cells[row * width + start + k] =
+          cellAt(from[0] + share * (to[0] - from[0]), from[1] + share * (to[1] - from[1]));
+      }
+      from = to;
+    }
+  }
+  return { width, height, cells };
+}
+
+let pixelCells = null;
+
 // The surface's picture over the grid's bounds in web mercator; blank cells are hatched.
 function surfacePicture(surface, mode) {
-  const [west, south, east, north] = projection.bounds;
-  const fine = Math.min(8, Math.max(1, Math.sqrt(1.5e6 / (grid.rows * grid.columns))));  // pixels a cell
+  pixelCells ??= findPixelCells();
+  const { width, height, cells } = pixelCells;
   const canvas = document.createElement("canvas");
-  canvas.width = Math.round(grid.columns * fine);
-  canvas.height = Math.round(canvas.width * (north - south) / (east - west));
+  Object.assign(canvas, { width, height });
   const context = canvas.getContext("2d");
-  const picture = context.createImageData(canvas.width, canvas.height);
-  const colours = new Map();
-  for (let row = 0; row < canvas.height; row += 1) {
-    const y = north - (row + 0.5) / canvas.height * (north - south);
-    for (let column = 0; column < canvas.width; column += 1) {
-      const x = west + (column + 0.5) / canvas.width * (east - west);
-      const cell = cellAt(...toRegion(x, y, true));
-      if (cell < 0) continue;
-      if (!colours.has(cell)) colours.set(cell, cellColour(surface, mode, cell));
-      const colour = colours.get(cell);
-      const at = 4 * (row * canvas.width + column);
-      if (colour) picture.data.set([colour[0], colour[1], colour[2], 255], at);
-      else if ((row + column) % 9 < 1) picture.data.set([128, 128, 128, 150], at);
-    }
+  const picture = context.createImageData(width, height);
+  const pixels = new Uint32Array(picture.data.buffer);
+  const colours = cellPaint(surface, mode);
+  const hatch = 0x96808080;
+  for (let pixel = 0; pixel < cells.length; pixel += 1) {
+    if (cells[pixel] < 0) continue;
+    const colour = colours[cells[pixel]];
+    if (colour !== 0) pixels[pixel] = colour;
+    else if ((pixel % width + Math.floor(pixel / width)) % 9 === 0) pixels[pixel] = hatch;
   }
   context.putImageData(picture, 0, 0);
   return canvas.toDataURL("image/png");
+}
+
+// Each cell's colour as a canvas stores it (alpha, blue, green, red); 0 where blank.
+function cellPaint(surface, mode) {
+  return Uint32Array.from(surface.estimate, (_, cell) => {
+    const colour = cellColour(surface, mode, cell);
+    if (colour === null) return 0;
+    const [red, green, blue] = colour.map(Math.round);
+    return 0xff000000 + blue * 65536 + green * 256 + red;
+  });
 }
 
 const quantityUnit = (surface) =>
