@@ -52,8 +52,8 @@ def trace_valleys(
     farthest apart inside the valley, each next starts at the place farthest from what is drawn and joins it, and every
     path takes the cheapest way, which here is the deepest. The main line is the way through the tree with the largest
     long section; what is left are tributaries, which run to their junction. Only the floor may hold an end: cells
-    within a tenth of the deepest within a valley's half width. A line counts from `least_length` cells and from twice
-    that width.
+    within a tenth of the deepest within half of the valley's half width. A line counts from `least_length` cells and
+    from twice that width.
     [1] M. Sato, I. Bitter, M. A. Bender, A. E. Kaufman and M. Nakajima, 2000, TEASAR: tree-structure extraction
         algorithm for accurate and robust skeletons, Proc. Pacific Graphics 2000, 281-289.
     """
@@ -69,7 +69,7 @@ def trace_valleys(
         if np.hypot(np.ptp(rows[nodes]), np.ptp(columns[nodes])) < least_length:
             continue
         half_width = max(1.0, float(np.quantile(inner[rows[nodes], columns[nodes]], 0.9)))
-        size = 2 * int(np.ceil(half_width)) + 1
+        size = 2 * int(np.ceil(0.5 * half_width)) + 1
         deepest = ndimage.maximum_filter(np.where(valley, depth, -np.inf), size=size)
         floor = depth[rows[nodes], columns[nodes]] >= 0.9 * deepest[rows[nodes], columns[nodes]]
         start = int(np.argmax(depth[rows[nodes], columns[nodes]]))
