@@ -1,7 +1,6 @@
 """What came home from the field: soundings with their curves, wells with their logs, permits, picks."""
 
 from collections.abc import Mapping
-from types import MappingProxyType
 from typing import Any, Literal
 
 import attrs
@@ -16,8 +15,8 @@ PickStatus = Literal["at", "below", "absent"]
 
 
 def _extra() -> Any:
-    """Columns beyond the contract's, carried through as they were typed."""
-    return attrs.field(factory=dict, converter=lambda columns: MappingProxyType(dict(columns)), eq=dict)
+    """Columns beyond the contract's, carried through as they were typed: a copy, read-only by its type."""
+    return attrs.field(factory=dict, converter=dict)
 
 
 @attrs.frozen
@@ -28,7 +27,7 @@ class Curve:
     relative_error one standard deviation as a fraction (n,), NaN until one is assigned,
     segment int (n,): 0 for the first MN, 1 after its first change, and so on; used bool (n,): False where the
     reading is kept and drawn but not fitted; reason str (n,): why it is not used, empty where it is;
-    row int (n,): its row in the table of readings.
+    row int (n,): its row in the table of readings; extra (n,): its note and its columns beyond the contract's.
     """
 
     half_spacing: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
@@ -39,6 +38,7 @@ class Curve:
     used: BoolArray = attrs.field(converter=booleans, eq=by_value, repr=shape)
     reason: tuple[str, ...] = ()
     row: IntArray = attrs.field(default=(), converter=integers, eq=by_value, repr=shape)
+    extra: tuple[Mapping[str, Any], ...] = ()
 
     def readings(self, noise: float) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, IntArray]:
         """The used readings as arrays: spacings, apparent resistivity, error (`noise` where none is typed), segment.
@@ -124,6 +124,7 @@ class Pick:
     depth_error: float | None
     interpreter: str
     reason: str
+    extra: Mapping[str, Any] = _extra()
 
 
 @attrs.frozen

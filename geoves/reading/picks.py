@@ -6,7 +6,7 @@ from typing import cast, get_args
 from geoves.domain.survey import Pick, PickStatus
 from geoves.domain.units import Template
 from geoves.reading.faults import in_words, nearest
-from geoves.reading.tables import Columns, Range, Row, Table, refuse_repeated
+from geoves.reading.tables import Columns, Range, Row, Table, extras, refuse_repeated
 from geoves.reading.wells import scaled
 
 PICK_COLUMNS = Columns(required=("place", "unit", "status"), optional=("depth", "depth_error", "interpreter", "reason"))
@@ -56,4 +56,5 @@ def _read_pick(row: Row, metres: float, template: Template) -> Pick:
         depth_error=scaled(row.number_in("depth_error", _ERROR), metres),
         interpreter=row.text("interpreter"),
         reason=row.text("reason"),
+        extra=extras(row, PICK_COLUMNS),
     )

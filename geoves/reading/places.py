@@ -10,7 +10,7 @@ import shapely
 
 from geoves.domain.findings import Finding
 from geoves.domain.grids import Grid
-from geoves.domain.region import METRES, Region
+from geoves.domain.region import METRES
 from geoves.domain.survey import Permit
 from geoves.reading.grids import Place
 from geoves.reading.rasters import GroundReading
@@ -56,15 +56,13 @@ def doubt_outside(places: Sequence[Place | Permit], rows: Sequence[Row], boundar
             row.doubt("x" if "x" in row.cells else "lon", "the place lies outside the boundary")
 
 
-def doubt_bare_cells(
-    region: Region, grid: Grid | None, ground: GroundReading | None, boundary: Any, findings: list[Finding]
-) -> None:
+def doubt_bare_cells(grid: Grid | None, ground: GroundReading | None, boundary: Any) -> list[Finding]:
     """A doubt where the ground raster leaves a part of the region without elevations."""
     if grid is None or ground is None or ground.ground is None:
-        return
-    easting, northing = np.meshgrid(grid.easting, grid.northing)
-    inside = shapely.contains_xy(boundary, easting, northing)
+        return []
+    inside = shapely.contains_xy(boundary, *np.meshgrid(grid.easting, grid.northing))
     bare = inside & np.isnan(ground.ground.elevation)
-    if bare.any():
-        words = f"the ground raster has no elevation in {bare.sum()} of the region's {inside.sum()} cells"
-        findings.append(Finding("doubt", region.typed_inputs["ground"], 0, "", "", words))
+    if not bare.any():
+        return []
+    words = f"the ground raster has no elevation in {bare.sum()} of the region's {inside.sum()} cells"
+    return [Finding("doubt", ground.file, 0, "", "", words)]

@@ -37,8 +37,11 @@ _log = logging.getLogger(__name__)
 
 @attrs.frozen
 class GroundReading:
-    """The ground raster: on the grid, None where there is no grid, and at the places asked for (n,) m, NaN off it."""
+    """The ground raster, `file` as region.toml names it: on the grid, None where there is no grid, and at the places
+    asked for (n,) m, NaN off it.
+    """
 
+    file: str
     ground: Ground | None
     at_places: FloatArray
 
@@ -60,7 +63,7 @@ def read_ground(
         refuse_file(source, "not a raster that can be read; expected a whole GeoTIFF of elevations", findings)
         return None
     _check_elevations(source, at_places if on_grid is None else on_grid, findings)
-    return GroundReading(None if grid is None or on_grid is None else Ground(grid, on_grid), at_places)
+    return GroundReading(source.typed, None if grid is None or on_grid is None else Ground(grid, on_grid), at_places)
 
 
 @contextmanager

@@ -8,7 +8,7 @@ import attrs
 import numpy as np
 
 from geoves.domain.survey import Array, Curve
-from geoves.reading.tables import Columns, Range, Row, Table
+from geoves.reading.tables import Columns, Range, Row, Table, extras
 
 READING_COLUMNS = Columns(
     required=("sounding",),
@@ -33,7 +33,10 @@ _WENNER_ROUNDING = 0.02
 
 @attrs.frozen
 class Reading:
-    """One reading in SI: AB/2, MN/2, apparent resistivity (NaN where an unused one has none), error as a fraction."""
+    """One reading in SI: AB/2, MN/2, apparent resistivity (NaN where an unused one has none), error as a fraction.
+
+    `reason` says why it is not used, None where it is; `extra` has its note and the columns beyond the contract's.
+    """
 
     row: int
     half_spacing: float
@@ -41,6 +44,7 @@ class Reading:
     apparent_resistivity: float
     relative_error: float
     reason: str | None
+    extra: Mapping[str, str]
 
 
 def geometric_factor(half_spacing: float, potential_half_spacing: float) -> float:
@@ -88,7 +92,8 @@ def _read_row(row: Row, metres: float, array: Array) -> Reading | None:
     if error == 0.0:
         heard.doubt("error_percent", "a reading without any error cannot be; taken as not stated")
     reason = None if used else row.text("note") or "use is 0"
-    return Reading(row.number, half, potential, resistivity, error / 100.0 if error else math.nan, reason)
+    extra = extras(row, READING_COLUMNS) | ({"note": row.text("note")} if row.text("note") else {})
+    return Reading(row.number, half, potential, resistivity, error / 100.0 if error else math.nan, reason, extra)
 
 
 def _read_spacings(row: Row, metres: float, array: Array) -> tuple[float, float]:
@@ -154,4 +159,5 @@ def _build_curve(readings: Sequence[Reading], array: Array) -> Curve:
         used=np.array([reading.reason is None for _, reading in ordered], dtype=bool),
         reason=tuple(reading.reason or "" for _, reading in ordered),
         row=np.array([reading.row for _, reading in ordered], dtype=int),
+        extra=tuple(reading.extra for _, reading in ordered),
     )

@@ -19,7 +19,7 @@ from geoves.reading.places import check_elevations, doubt_bare_cells, doubt_outs
 from geoves.reading.rasters import read_ground
 from geoves.reading.readings import READING_COLUMNS
 from geoves.reading.soundings import SOUNDING_COLUMNS, read_soundings
-from geoves.reading.sources import Source, find_source
+from geoves.reading.sources import INPUTS, REQUIRED_INPUTS, Source, find_source
 from geoves.reading.tables import Row, Table, with_places
 from geoves.reading.vectors import VECTOR_SUFFIXES, read_boundary, read_point_table
 from geoves.reading.wells import LOG_COLUMNS, WELL_COLUMNS, read_wells
@@ -66,7 +66,7 @@ def collect_survey(region: Region) -> SurveyFiles:
     if boundary is not None:
         doubt_outside(places, rows, boundary)
         doubt_outside(permits, _rows_of(permits, tables), boundary)
-        doubt_bare_cells(region, grid, ground, boundary, findings)
+        findings.extend(doubt_bare_cells(grid, ground, boundary))
     _check_withheld(region, tables, findings)
     findings.extend(_doubt_region(region, tables, find_stretch(locations(places), region.crs)))
     ordered = _in_order(findings, region)
@@ -97,6 +97,10 @@ def _read_table(region: Region, name: str, findings: list[Finding]) -> Table | N
         return read_delimited(source, columns, findings)
 
     table = _read_with(region, name, read)
+    if table is not None and not table.rows and name in REQUIRED_INPUTS:
+        words = "headings without rows; expected at least one"
+        findings.append(Finding("fault", table.file, table.header_row, "", "", words))
+        return None
     return None if table is None else with_places(table, place_column)
 
 
@@ -184,5 +188,6 @@ def _doubt_region(region: Region, tables: dict[str, Table | None], stretch: floa
 
 def _in_order(findings: Sequence[Finding], region: Region) -> tuple[Finding, ...]:
     """By file in the order of region.toml, then by row."""
-    files = [region.path.name, *dict.fromkeys(region.typed_inputs.values())]
+    sources = [source for name in INPUTS if (source := find_source(region, name)) is not None]
+    files = [region.path.name, *(source.typed for source in sources)]
     return tuple(sorted(findings, key=lambda finding: (files.index(finding.file), finding.row)))

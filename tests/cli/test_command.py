@@ -11,6 +11,7 @@ from geoves.cli import main as command
 from geoves.cli.progress import LineProgress, choose_progress
 from geoves.errors import DeliveryError, EngineError, FormatError, InputError
 from geoves.project.progress import SilentProgress, Summary
+from geoves.reading.starter_folder import write_starter
 
 
 def geoves(*arguments, cwd=None):
@@ -27,7 +28,7 @@ def findings_in(folder):
 
 @pytest.fixture
 def county(tmp_path):
-    assert geoves("new", tmp_path / "county").returncode == 0
+    write_starter(tmp_path / "county")
     return tmp_path / "county"
 
 
@@ -93,7 +94,11 @@ def test_a_call_that_is_wrong_exits_2(arguments):
     assert done.stderr.startswith("usage: geoves")
 
 
-def test_new_refuses_a_folder_in_use(county):
+def test_new_writes_a_folder_and_refuses_one_in_use(tmp_path):
+    county = tmp_path / "county"
+    done = geoves("new", county)
+    assert (done.returncode, done.stderr) == (0, "")
+    assert "region.toml" in done.stdout
     done = geoves("new", county)
     assert done.returncode == 2
     assert f"{county / 'region.toml'}: stands there already; give another folder" in done.stderr.splitlines()

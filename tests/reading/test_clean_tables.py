@@ -247,3 +247,20 @@ def test_step_options_are_kept_as_typed(folder):
     folder.add_table('[interpretation]\nmethod = "each"\nlimit = 2\n[curves]')
     region, _, _ = folder.read()
     assert (region.settings, region.method) == ({"interpretation": {"limit": 2}}, "each")
+
+
+def test_extra_columns_are_carried_through(folder):
+    for name, heading, cell in (
+        ("readings.csv", "crew", "east"),
+        ("picks.csv", "sheet", "7"),
+        ("well_logs.csv", "rig", "9"),
+    ):
+        lines = (folder.path / name).read_text(encoding="utf-8").splitlines()
+        folder.write(name, "\n".join([f"{lines[0]},{heading}", *(f"{line},{cell}" for line in lines[1:])]))
+    survey = folder.survey()
+    assert [dict(extra) for extra in survey.soundings[0].curve.extra] == [
+        *({"crew": "east"},) * 3,
+        {"crew": "east", "note": "fence"},
+    ]
+    assert dict(survey.picks[0].extra) == {"sheet": "7"}
+    assert dict(survey.wells[0].intervals[1].extra) == {"rig": "9"}

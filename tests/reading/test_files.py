@@ -62,6 +62,18 @@ def test_a_workbook_that_is_none(folder, raw):
     assert "not a workbook" in fault.expected
 
 
+@pytest.mark.parametrize("name", ["soundings.csv", "readings.csv"])
+def test_required_tables_need_rows(folder, name):
+    folder.write(name, (folder.path / name).read_text(encoding="utf-8").splitlines()[0])
+    told = [(fault.file, fault.row) for fault in folder.faults() if "without rows" in fault.expected]
+    assert told == [(name, 1)]
+
+
+def test_other_tables_may_be_headings_alone(folder):
+    folder.write("permits.csv", "permit,x,y\n")
+    assert folder.survey().permits == ()
+
+
 def test_sheets_have_to_be_named(folder):
     workbook = openpyxl.Workbook()
     workbook.active.title = "north"
