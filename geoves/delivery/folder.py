@@ -3,12 +3,15 @@
 import contextlib
 import hashlib
 import json
+import math
 import os
 import shutil
 import sys
 from collections.abc import Iterator, Mapping
 from pathlib import Path, PurePosixPath
 from typing import IO, Any
+
+import numpy as np
 
 from geoves.errors import DeliveryError
 
@@ -68,7 +71,7 @@ def publish(staging: Path, folder: Path, record: Mapping[str, Any]) -> None:
     hashes = _hash_files(staging)
     ours = _list_own_files(folder)
     _refuse_collisions(folder, hashes, ours)
-    text = json.dumps({**record, "files": hashes}, indent=2, ensure_ascii=False, allow_nan=False, default=str) + "\n"
+    text = json.dumps({**_plain(record), "files": hashes}, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
     workplace = name_workplace(folder)
     journal = workplace / _JOURNAL
     try:
@@ -82,6 +85,23 @@ def publish(staging: Path, folder: Path, record: Mapping[str, Any]) -> None:
         _remove_empty_folders(folder, ours - set(hashes))
     except OSError as error:
         raise DeliveryError(f"the delivery could not be put into {folder}: {_say(error)}") from error
+
+
+def _plain(value: Any) -> Any:
+    """A value as JSON can hold it: arrays as lists, what is not finite as null, what is neither as words.
+
+    >>> _plain({"noise": np.float32(0.5), "reach": float("nan"), "path": PurePosixPath("a/b"), 3: (1, np.int64(2))})
+    {'noise': 0.5, 'reach': None, 'path': 'a/b', '3': [1, 2]}
+    """
+    if isinstance(value, np.ndarray | np.generic):
+        value = value.tolist()
+    if isinstance(value, Mapping):
+        return {str(key): _plain(held) for key, held in value.items()}
+    if isinstance(value, list | tuple):
+        return [_plain(held) for held in value]
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value if value is None or isinstance(value, bool | int | float | str) else str(value)
 
 
 def hash_file(path: Path) -> str:

@@ -39,9 +39,9 @@ def write_metadata(
     """The paths of the records, one in folder/metadata for each raster and GeoPackage among `files`.
 
     `record["date"]` (ISO 8601) dates them; nothing else is read of the clock, so the same job gives the same bytes.
+    Raises DeliveryError.
     """
     target = folder / "metadata"
-    target.mkdir(parents=True, exist_ok=True)
     by_name = {name_part(words.name, part): (words.name, part) for words in RASTERS.values() for part in words.parts}
     written = []
     for file in files:
@@ -52,7 +52,11 @@ def write_metadata(
         else:
             continue
         path = target / f"{file.stem}.xml"
-        path.write_text(text, encoding="utf-8")
+        try:
+            target.mkdir(parents=True, exist_ok=True)
+            path.write_text(text, encoding="utf-8")
+        except OSError as error:
+            raise DeliveryError(f"metadata/{path.name} could not be written: {error.strerror}") from error
         written.append(path)
     return tuple(written)
 
@@ -183,6 +187,8 @@ def _tell_lineage(results: Results, record: Mapping[str, Any]) -> str:
         f"Surfaces are blank outside the boundary and beyond {results.stack.reach:g} units of the CRS from data.",
         f"Random seed {region.random_seed}.",
     ]
+    if "software" in record:
+        parts.append(f"Software: {record['software']}.")
     versions = record.get("versions")
     if isinstance(versions, Mapping):
         parts.append("Software: " + ", ".join(f"{name} {version}" for name, version in versions.items()) + ".")

@@ -25,6 +25,7 @@ from geoves.delivery.dictionary import (
 from geoves.domain.arrays import FloatArray
 from geoves.domain.grids import Surface
 from geoves.domain.results import Results
+from geoves.errors import DeliveryError
 
 _SLD = "http://www.opengis.net/sld"
 _OGC = "http://www.opengis.net/ogc"
@@ -78,9 +79,11 @@ class Rule:
 
 
 def write_styles(results: Results, folder: Path) -> tuple[Path, ...]:
-    """The paths written: folder/styles/NAME.sld for each raster that the stack holds and each layer."""
+    """The paths written: folder/styles/NAME.sld for each raster that the stack holds and each layer.
+
+    Raises DeliveryError.
+    """
     target = folder / "styles"
-    target.mkdir(parents=True, exist_ok=True)
     written = []
     for words in RASTERS.values():
         surface = results.stack.surfaces.get(words.name)
@@ -372,5 +375,9 @@ def _write(path: Path, root: ET.Element) -> Path:
     ET.register_namespace("", _SLD)
     ET.register_namespace("ogc", _OGC)
     ET.indent(root)
-    ET.ElementTree(root).write(path, encoding="utf-8", xml_declaration=True)
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        ET.ElementTree(root).write(path, encoding="utf-8", xml_declaration=True)
+    except OSError as error:
+        raise DeliveryError(f"styles/{path.name} could not be written: {error.strerror}") from error
     return path

@@ -7,6 +7,7 @@ import subprocess
 import sys
 from pathlib import Path
 
+import numpy as np
 import pytest
 
 from geoves.delivery.folder import name_workplace, publish, stage
@@ -41,6 +42,12 @@ def test_files_arrive_with_their_hashes_and_no_litter(folder):
         "surfaces/a.tif": hashlib.new("sha256", b"raster").hexdigest(),
     }
     assert [p.name for p in folder.parent.iterdir()] == ["delivery"]
+
+
+def test_the_record_may_hold_what_json_cannot(folder):
+    deliver(folder, {"map.html": "map"}, {"reach": np.float64("nan"), "counts": np.array([1, 2]), "at": Path("a")})
+    record = json.loads((folder / "run.json").read_text(encoding="utf-8"))
+    assert (record["reach"], record["counts"], record["at"]) == (None, [1, 2], "a")
 
 
 def test_second_run_replaces_removes_its_own_and_keeps_the_users(folder):

@@ -1,5 +1,7 @@
 """The records, read back by OWSLib."""
 
+from pathlib import Path
+
 import attrs
 import pytest
 from lxml import etree
@@ -91,3 +93,9 @@ def test_a_crs_without_a_registered_code_is_written_out(small_results):
 def test_a_record_without_a_date_is_refused(small_results):
     with pytest.raises(DeliveryError, match="date"):
         render_geopackage_record(small_results, {})
+
+
+def test_a_folder_that_cannot_be_written_is_said_in_words(small_results, tmp_path):
+    (tmp_path / "metadata").write_text("a file stands where the folder should be", encoding="utf-8")
+    with pytest.raises(DeliveryError, match="metadata"):
+        write_metadata(small_results, tmp_path, RECORD, [Path("layers.gpkg")])

@@ -7,6 +7,7 @@ from lxml import etree
 
 from geoves.delivery.dictionary import LAYERS, RASTERS, name_part
 from geoves.delivery.styles import choose_breaks, write_styles
+from geoves.errors import DeliveryError
 
 SLD = "{http://www.opengis.net/sld}"
 OGC = "{http://www.opengis.net/ogc}"
@@ -153,3 +154,9 @@ def test_breaks_are_few_and_cover():
 def test_two_runs_are_equal_to_the_byte(small_results, tmp_path):
     first, second = (write_styles(small_results, tmp_path / name) for name in "ab")
     assert [p.read_bytes() for p in first] == [p.read_bytes() for p in second]
+
+
+def test_a_folder_that_cannot_be_written_is_said_in_words(small_results, tmp_path):
+    (tmp_path / "styles").write_text("a file stands where the folder should be", encoding="utf-8")
+    with pytest.raises(DeliveryError, match="styles"):
+        write_styles(small_results, tmp_path)
