@@ -51,21 +51,23 @@ def test_the_page_forbids_what_it_does_not_need(page):
     assert "unsafe-inline" not in policy.split(";")[1]
 
 
-# Beside the margins: cells near the corners, in the valley and on the plain.
-@pytest.mark.parametrize("cell", [(5, 5), (24, 30), (40, 50), (12, 20)])
-def test_readout_is_the_value_of_the_cell(opened, small_results, cell):
-    grid, surface = small_results.stack.grid, small_results.stack.surfaces["bedrock_elevation"]
+# Cells whose four neighbours differ from them, and places in them away from the middle: a cell's slip would show.
+@pytest.mark.parametrize("cell", [(10, 20), (18, 41), (25, 5), (31, 47)])
+@pytest.mark.parametrize("within", [(0.2, 0.8), (0.8, 0.2)])
+def test_readout_is_the_value_of_the_cell(opened, small_results, cell, within):
+    grid, values = small_results.stack.grid, small_results.stack.surfaces["bedrock_elevation"].estimate
     row, column = cell
-    # pyproj is the reference for where the cell's centre lies on the globe.
+    neighbours = values[[row - 1, row + 1, row, row], [column, column, column - 1, column + 1]]
+    assert np.abs(neighbours - values[cell]).min() > 0.2
+    easting = grid.west + (column + within[0]) * grid.cell_size
+    northing = grid.north - (row + within[1]) * grid.cell_size
+    # pyproj is the reference for where the place lies on the globe.
     to_degrees = pyproj.Transformer.from_crs(small_results.region.crs, "EPSG:4326", always_xy=True)
-    longitude, latitude = to_degrees.transform(grid.easting[column], grid.northing[row])
-    opened.run("map_geoves.setView([arguments[0], arguments[1]], 16, {animate: false})", latitude, longitude)
-    centre = opened.run("const s = map_geoves.getSize(); return [s.x, s.y]")
+    longitude, latitude = to_degrees.transform(easting, northing)
+    opened.run("map_geoves.setView([arguments[0], arguments[1]], 17, {animate: false})", latitude, longitude)
     container = opened.driver.find_element(By.ID, "map_geoves")
     ActionChains(opened.driver).move_to_element_with_offset(container, 1, 1).move_to_element(container).perform()
-    shown = opened.wait_for("document.getElementById('value')?.textContent")
-    assert centre[0] > 100
-    assert shown == f"{surface.estimate[row, column]:.1f} m"
+    assert opened.wait_for("document.getElementById('value')?.textContent") == f"{values[cell]:.1f} m"
 
 
 def test_blank_cells_say_so(opened, small_results):
