@@ -9,7 +9,6 @@ import pyogrio
 import rasterio
 from affine import Affine
 from geopandas import GeoDataFrame
-from rasterio.transform import from_origin
 from shapely.geometry import Point, Polygon
 from shapely.prepared import prep
 
@@ -60,7 +59,7 @@ def cell_centres(cell: float, margin: float = 0.0) -> tuple[np.ndarray, np.ndarr
     x = -margin + cell * (np.arange(columns) + 0.5)
     y = -margin + cell * (rows - np.arange(rows) - 0.5)
     grid = np.meshgrid(x, y)
-    return *grid, from_origin(ORIGIN[0] - margin, ORIGIN[1] - margin + rows * cell, cell, cell)
+    return *grid, Affine(cell, 0.0, ORIGIN[0] - margin, 0.0, -cell, ORIGIN[1] - margin + rows * cell)
 
 
 def write_raster(values: np.ndarray, transform: Affine, path: Path) -> None:
