@@ -10,7 +10,6 @@ import geopandas as gpd
 import numpy as np
 import pyogrio
 import shapely
-from pyogrio.errors import DataLayerError, DataSourceError, FieldError, GeometryError
 
 from geoves.domain.findings import Finding
 from geoves.reading.delimited import cell_text, refuse_file
@@ -22,7 +21,6 @@ _log = logging.getLogger(__name__)
 
 _KINDS = {".gpkg": "GeoPackage", ".geojson": "GeoJSON file", ".json": "GeoJSON file", ".shp": "shapefile"}
 VECTOR_SUFFIXES = tuple(_KINDS)
-_UNREADABLE = (DataSourceError, DataLayerError, FieldError, GeometryError, ValueError, RuntimeError, OSError)
 
 
 def read_boundary(source: Source, crs: str, findings: list[Finding]) -> Any:
@@ -86,19 +84,17 @@ def _read_features(source: Source, crs: str, findings: list[Finding]) -> gpd.Geo
         refuse_file(source, f"expected a file that ends in {in_words(VECTOR_SUFFIXES)}", findings)
         return None
     try:
-        layer = _find_layer(source)
         with warnings.catch_warnings():
-            warnings.simplefilter("ignore", RuntimeWarning)  # of field types that geoves does not need
-            features = gpd.read_file(source.path, layer=layer, engine="pyogrio")
-        if not (expected := _unfit(features)):
-            return features.to_crs(crs)
-        refuse_file(source, expected, findings)
+            warnings.simplefilter("ignore")  # of a file's flaws and field types that matter not here
+            features = gpd.read_file(source.path, layer=_find_layer(source), engine="pyogrio")
+            if not (expected := _unfit(features)):
+                return features.to_crs(crs)
     except _LayerError as error:
-        refuse_file(source, str(error), findings)
-    except _UNREADABLE as error:
+        expected = str(error)
+    except Exception as error:  # noqa: BLE001 - a broken file makes GDAL and what lies on it raise what they will
         _log.debug("%s: %s", source.typed, error)
-        kind = _KINDS[source.suffix]
-        refuse_file(source, f"not a {kind} that can be read; expected a whole one, written by a GIS", findings)
+        expected = f"not a {_KINDS[source.suffix]} that can be read; expected a whole one, written by a GIS"
+    refuse_file(source, expected, findings)
     return None
 
 

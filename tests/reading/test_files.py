@@ -328,3 +328,20 @@ def test_garbage_in_region_file_raises_nothing_but_input_errors(folder, line, te
     lines = _lines_of_faults(folder)
     folder.write("region.toml", clean)
     assert all(line.isprintable() for line in lines)
+
+
+@settings(max_examples=40, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@given(changes=st.lists(st.tuples(st.floats(0, 1, exclude_max=True), st.integers(0, 255)), min_size=1, max_size=8))
+def test_a_damaged_workbook_raises_nothing_but_input_errors(folder, changes):
+    workbook = openpyxl.Workbook()
+    workbook.active.append(["permit", "x", "y"])
+    workbook.active.append(["P1", 602500, 4901200])
+    stream = io.BytesIO()
+    workbook.save(stream)
+    raw = bytearray(stream.getvalue())
+    for place, byte in changes:
+        raw[int(place * len(raw))] = byte
+    (folder.path / "permits.xlsx").write_bytes(raw)
+    text = folder.region_file.read_text(encoding="utf-8")
+    folder.write("region.toml", text.replace("permits.csv", "permits.xlsx"))
+    assert all(line.startswith("permits.xlsx") for line in _lines_of_faults(folder))
