@@ -27,7 +27,7 @@ Map = Callable[[Callable[[Any], Any], Blocks], Iterable[Any]]
 class InversionOptions:
     """least_layers, most_layers   the layer counts tried
     default_error           relative error of a reading that has none typed, before the survey's own is known
-    segment_deviation       prior standard deviation of the log factor of a segment
+    segment_deviation       prior standard deviation of the log factor that a change of MN brings
     draws                   models drawn from the linearised uncertainty of each sounding
     fewest_readings         used readings that a sounding needs
     block                   soundings inverted at a time: bounds the memory
@@ -201,14 +201,14 @@ def _describe(
     trusted = fit.robust_weight[0, :n_used]
     rms = float(np.sqrt(np.sum(trusted * residual**2) / np.sum(trusted)))
     generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
-    draws = damped_steps.laplace_draws(fit, generator.standard_normal((options.draws, 1, unknowns.size)))[:, 0]
+    draws = damped_steps.laplace_draws(fit, generator.standard_normal((options.draws, unknowns.size)))
     draws = np.exp(np.clip(draws[:, :n_model], np.log(0.05), np.log(1e5)))
     return Inverted(
         sounding=sounding.name,
         model=model,
         ensemble=ModelEnsemble(draws[:, : k - 1], draws[:, k - 1 :], np.full(options.draws, 1.0 / options.draws)),
         log_covariance=np.linalg.inv(fit.hessian[0])[:n_model, :n_model],
-        segment_factor=np.concatenate([[1.0], np.exp(unknowns[n_model : n_model + n_segments - 1])]),
+        segment_factor=np.concatenate([[1.0], np.exp(np.cumsum(unknowns[n_model : n_model + n_segments - 1]))]),
         predicted=layered_earth.response(
             layered_earth.response_weights(curve.half_spacing, curve.potential_half_spacing, curves.wavenumber),
             curves.wavenumber,

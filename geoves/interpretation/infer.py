@@ -48,15 +48,19 @@ def interpret(
     by_name = {sounding.name: sounding for sounding in survey.soundings}
     pairs = [(by_name[one.sounding], one) for one in inverted]
     picks = {pick.place: [p for p in survey.picks if p.place == pick.place] for pick in survey.picks}
+    logged = [_interpret_well(well, picks.get(well.name, []), template, options) for well in survey.wells]
+    presence = _presence_at_wells(logged, template, options)
     readings: list[PlaceReading] = []
     if pairs:
         wavenumber = layered_earth.shared_wavenumbers(
             (s.curve.half_spacing, s.curve.potential_half_spacing) for s, _ in pairs
         )
-        work = partial(_interpret_block, picks=picks, template=template, options=options, wavenumber=wavenumber)
+        work = partial(
+            _interpret_block, picks=picks, template=template, presence=presence, options=options, wavenumber=wavenumber
+        )
         blocks = [pairs[i : i + options.block] for i in range(0, len(pairs), options.block)]
         readings += chain.from_iterable(map(work, blocks))
-    readings += [_interpret_well(well, picks.get(well.name, []), template, options) for well in survey.wells]
+    readings += logged
     words = tuple(chain.from_iterable(reading.well_readings for reading in readings))
     return Interpretation(
         columns=tuple(reading.column for reading in readings if reading.column),
@@ -68,25 +72,41 @@ def interpret(
     )
 
 
+def _presence_at_wells(
+    logged: Sequence[PlaceReading], template: Template, options: InterpretationOptions
+) -> FloatArray:
+    """Prior probability (u,) of each unit: for the aquifers, what the wells that passed or met them say.
+
+    The option stands for two wells more, so that no few wells make a unit certain or impossible.
+    """
+    presence = np.full(len(template.units), options.presence)
+    for i, unit in enumerate(template.units):
+        told = [row.thickness > 0 for reading in logged for row in reading.thicknesses if row.role == unit.role]
+        presence[i] = (sum(told) + 2.0 * options.presence) / (len(told) + 2.0)
+    return presence
+
+
 def _interpret_block(
     pairs: Sequence[tuple[Sounding, Inverted]],
     *,
     picks: dict[str, list[Pick]],
     template: Template,
+    presence: FloatArray,
     options: InterpretationOptions,
     wavenumber: FloatArray,
 ) -> list[PlaceReading]:
     curves = damped_steps.stack_curves([Readings(*s.curve.readings(one.noise)) for s, one in pairs], wavenumber)
-    admissible = sequences.admissible_sequences(template, options.presence)
+    admissible = sequences.admissible_sequences(template, presence)
     fits = sequences.fit_sequences(admissible, template, curves)
     log_weight = sequences.weigh_sequences(admissible, fits, template)
     results = []
     for i, (sounding, inverted) in enumerate(pairs):
         generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
         own_fits, own_weight = [fit.take(i) for fit in fits], log_weight[:, i]
-        draws = sequences.draw_columns(admissible, own_fits, own_weight, template, options, generator)
-        half_space, _ = sequences.best_half_space(admissible, own_fits, own_weight)
-        bound = soundings.excluded_depth(half_space, curves.take(np.array([i])), template, options)
+        own_curve = curves.take(np.array([i]))
+        draws = sequences.draw_columns(admissible, own_fits, own_weight, own_curve, template, options, generator)
+        half_space = sequences.best_half_space(admissible, own_fits, own_weight)
+        bound = soundings.excluded_depth(half_space, own_curve, template, options)
         contact = soundings.find_basal_contact(draws, bound, template, options)
         contact = soundings.apply_picks(contact, picks.get(sounding.name, []), template, generator)
         results.append(_read_sounding(sounding, inverted, draws, contact, template, options))
@@ -104,14 +124,13 @@ def _read_sounding(
     decided = contact.picks[-1] if contact.picks else None
     source = f"pick by {decided.interpreter}: {decided.reason}" if decided else "curve"
     thicknesses: list[Thickness] = []
-    if contact.status != "deeper_than" and template.with_role(Role.DEEP_AQUIFER):
-        thicknesses += soundings.role_thickness(sounding, contact.gravel, Role.DEEP_AQUIFER, options, source)
-    shallow = soundings.role_mask(template, Role.SHALLOW_AQUIFER)
-    if np.any(shallow):
-        values = draws.thickness[:, shallow].sum(axis=1)
-        thicknesses += soundings.role_thickness(
-            sounding, values[~np.isnan(values)], Role.SHALLOW_AQUIFER, options, "curve"
-        )
+    for role, values in (
+        (Role.DEEP_AQUIFER, contact.gravel if contact.status != "deeper_than" else np.empty(0)),
+        (Role.SHALLOW_AQUIFER, draws.thickness[:, soundings.role_mask(template, Role.SHALLOW_AQUIFER)].sum(axis=1)),
+    ):
+        known = values[~np.isnan(values)]
+        if template.with_role(role) and known.size:
+            thicknesses += soundings.role_thickness(sounding, known, role, source)
     return PlaceReading(
         column=soundings.read_column(inverted, draws, contact, template),
         tops=tuple(soundings.contact_tops(sounding, contact, template, options)),

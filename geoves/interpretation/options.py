@@ -41,6 +41,6 @@ class InterpretationOptions:
     relative_depth_floor: float = 0.05
     well_contact_error: float = 0.3
     well_relative_error: float = 0.01
-    least_match: float = 84.0
+    least_match: float = 80.0
     block: int = 32
     random_seed: int = 0

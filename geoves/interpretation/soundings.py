@@ -10,13 +10,15 @@ from geoves.domain.earth import Inverted
 from geoves.domain.survey import Pick, Sounding
 from geoves.domain.tops import BedrockStatus, ShallowResistivity, Thickness, Top, UnitColumn
 from geoves.domain.units import Z_95, Role, Template
-from geoves.interpretation.options import THICKNESS_BY_ROLE, InterpretationOptions
+from geoves.interpretation.options import InterpretationOptions
 from geoves.interpretation.sequences import ColumnDraws, HalfSpace
 from geoves.kernels import layered_earth, unit_sequence
 from geoves.kernels.damped_steps import Curves
 
-# A thickness datum is kept where the curve adds this much to what the prior already knows (share of its precision).
+# A resistivity is a datum where the curve adds this much to what the template already knows (share of its precision).
 LEAST_GAIN = 0.25
+# A unit's presence is decided beyond this probability, and its thickness is then known no better than this (m).
+DECIDED, LEAST_THICKNESS_ERROR = 0.9, 0.5
 # A bound lies no deeper than this quantile of the contact's depth where at least this share of draws still reach it.
 LOWEST_ALLOWED, LEAST_ALLOWED = 0.05, 0.02
 # Present means at least this thick, m.
@@ -156,34 +158,21 @@ _SOURCES = {
 }
 
 
-def role_thickness(
-    sounding: Sounding, values: FloatArray, role: Role, options: InterpretationOptions, source: str
-) -> list[Thickness]:
-    """The thickness of a role as the curve alone adds it to the prior; nothing where it adds little.
+def role_thickness(sounding: Sounding, values: FloatArray, role: Role, source: str) -> list[Thickness]:
+    """The thickness of a role where the draws (m,) decide whether it is there at all; nothing where they do not.
 
-    The surfaces bring a prior of their own, so the draws' prior is taken out: precisions subtract.
+    A curve that only forbids a thick layer says nothing for or against a thin one: taken as a datum it would bring
+    the prior's own mean into every surface, once for each sounding.
     """
-    prior_mean, prior_variance = _prior_thickness(role, options.presence)
-    mean, variance = float(np.mean(values)), float(np.var(values)) + 0.05
-    gain = 1.0 / variance - 1.0 / prior_variance
-    if gain * prior_variance < LEAST_GAIN:
+    present = float(np.mean(values >= PRESENT))
+    if 1.0 - DECIDED < present < DECIDED:
         return []
-    value = (mean / variance - prior_mean / prior_variance) / gain
-    # Far from the prior's mean the difference overshoots; it stays within what was drawn.
-    value = float(np.clip(value, 0.0, np.quantile(values, 0.95)))
-    error = float(np.sqrt(1.0 / gain))
+    there = values[values >= PRESENT] if present >= DECIDED else np.zeros(1)
+    error = float(np.hypot(np.std(there), LEAST_THICKNESS_ERROR))
+    middle = float(np.mean(there))
     return [
-        Thickness(sounding.name, "sounding", sounding.easting, sounding.northing, role, value, error, False, source)
+        Thickness(sounding.name, "sounding", sounding.easting, sounding.northing, role, middle, error, False, source)
     ]
-
-
-def _prior_thickness(role: Role, presence: float) -> tuple[float, float]:
-    """Mean and variance of a thickness that is 0 with probability 1 - presence and else log-normal."""
-    low, high = np.log(THICKNESS_BY_ROLE[role])
-    middle, variance = 0.5 * (low + high), ((high - low) / (2.0 * Z_95)) ** 2
-    first = presence * np.exp(middle + 0.5 * variance)
-    second = presence * np.exp(2.0 * middle + 2.0 * variance)
-    return float(first), float(second - first**2)
 
 
 def shallow_resistivity(sounding: Sounding, draws: ColumnDraws, template: Template) -> list[ShallowResistivity]:

@@ -1,9 +1,10 @@
 """Drillers' words to units: exact terms first, then alike ones; what nothing claims stays unmapped and is listed."""
 
 import re
+from itertools import pairwise
 
 import attrs
-from rapidfuzz import fuzz, process
+from rapidfuzz.distance import OSA
 
 from geoves.domain.units import Template
 
@@ -14,6 +15,9 @@ ABBREVIATIONS = {
     "brn": "brown", "blu": "blue", "gry": "gray", "grey": "gray", "fn": "fine", "crs": "coarse", "med": "medium",
     "frac": "fractured", "wtr": "water", "tp": "top",
 }  # fmt: skip
+
+# Two words are never the same below this share of like letters: one slip in four letters, as in "caly" for "clay".
+LEAST_ALIKE_WORD = 0.74
 
 
 @attrs.frozen
@@ -39,23 +43,29 @@ def claim_words(description: str, template: Template, least_match: float) -> Cla
 
     An exact term beats all that are only alike; of those, only terms within five points of the best count.
     """
-    words = normal_words(description)
-    scores: dict[str, float] = {}
-    for unit in template.units:
-        terms = [normal_words(term) for term in unit.log_terms]
-        if words in terms:
-            scores[unit.code] = 101.0
-        elif terms and words:
-            # The share of letters alike; longer descriptions that hold a whole term count a little less.
-            whole = process.extractOne(words, terms, scorer=fuzz.token_sort_ratio)[1]
-            held = 0.95 * max(fuzz.token_set_ratio(words, term) * _specific(term, words) for term in terms)
-            scores[unit.code] = max(whole, held)
+    words = normal_words(description).split()
+    scores = {
+        unit.code: max((_likeness(words, term) for term in unit.log_terms), default=0.0) for unit in template.units
+    }
     best = max(scores.values(), default=0.0)
     kept = {code: score for code, score in scores.items() if score >= max(least_match, best - 5.0)}
-    return Claim({code: min(score, 100.0) / 100.0 for code, score in kept.items()})
+    return Claim({code: score / 100.0 for code, score in kept.items()})
 
 
-def _specific(term: str, words: str) -> float:
-    """1 for a term of several of the words, a little less for one that leaves most of them unsaid."""
-    said = len(set(term.split()) & set(words.split()))
-    return 0.9 + 0.1 * said / max(len(set(words.split())), 1)
+def _likeness(words: list[str], term: str) -> float:
+    """How alike (0 to 100) a description and a term are: 100 where they are the same.
+
+    Each word of the term looks for its like among the words, two neighbours written as one included; a term that
+    leaves words unsaid counts a little less, so that "coarse sand and gravel" beats "gravel" where both are terms.
+    """
+    wanted = normal_words(term).split()
+    if not words or not wanted:
+        return 0.0
+    if words == wanted:
+        return 100.0
+    candidates = words + [first + second for first, second in pairwise(words)]
+    found = [max(OSA.normalized_similarity(word, one) for one in candidates) for word in wanted]
+    if min(found) < LEAST_ALIKE_WORD:
+        return 0.0
+    unsaid = 1.0 - min(len(wanted) / len(words), 1.0)
+    return 96.0 * sum(found) / len(found) - 6.0 * unsaid

@@ -8,7 +8,7 @@ from typing import NamedTuple
 
 import numpy as np
 from scipy.linalg import cho_factor, cho_solve, cholesky, solve_triangular
-from scipy.special import erfcx, log_ndtr, ndtr
+from scipy.special import erfcx, log_ndtr, ndtr, ndtri
 from threadpoolctl import threadpool_limits
 
 from geoves.kernels.covariances import (
@@ -79,6 +79,29 @@ def rectified_normal_moments(mean: FloatArray, deviation: FloatArray) -> tuple[F
     # E[max(0, X)²] - E² written by parts, which loses less where a is large.
     spread = ndtr(a) + first * (a - first)
     return deviation * first, deviation * np.sqrt(np.maximum(spread, 0.0))
+
+
+def latent_moments(share: float, mean_present: float) -> tuple[float, float]:
+    """Mean and deviation of a normal variable that is above 0 with probability `share`, and `mean_present` then.
+
+    E[X | X > 0] = μ + σ φ(μ/σ) / Φ(μ/σ) (from memory; checked by quadrature).
+    """
+    z = float(ndtri(share))
+    deviation = mean_present / (z + float(np.exp(-0.5 * z * z)) / (np.sqrt(2.0 * np.pi) * share))
+    return z * deviation, deviation
+
+
+def bounds_alone_as_values(bounds: Bounds, mean: float, deviation: float) -> tuple[FloatArray, FloatArray]:
+    """Pseudo-values and pseudo-variances (m,) of bounds on a field of known mean and deviation, each by itself.
+
+    The mean and variance that the bound leaves, the field's own taken out again: what one site of expectation
+    propagation says before it hears of its neighbours.
+    """
+    centre, variance = np.full(len(bounds.bound), mean), np.full(len(bounds.bound), deviation**2)
+    softness = np.maximum(bounds.softness, _SHARPEST * deviation)
+    _, new_mean, new_variance = truncated_normal_moments(centre, variance, bounds.bound, bounds.side, softness)
+    precision = np.maximum(1.0 / new_variance - 1.0 / variance, 1.0 / (ERROR_CEILING * variance))
+    return (new_mean / new_variance - centre / variance) / precision, 1.0 / precision
 
 
 def field_at_places(

@@ -1,0 +1,154 @@
+"""The whole job, in the order in which data flow."""
+
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
+from math import ceil
+from pathlib import Path
+from typing import Any
+
+import attrs
+import numpy as np
+
+from geoves.curves import prepare_curves
+from geoves.delivery.folder import publish, stage
+from geoves.delivery.geopackage import write_geopackage
+from geoves.delivery.map_page import write_map_page
+from geoves.delivery.metadata import write_metadata
+from geoves.delivery.rasters import write_rasters
+from geoves.delivery.report_page import write_report_page
+from geoves.delivery.styles import write_styles
+from geoves.domain.findings import Finding
+from geoves.domain.results import Results
+from geoves.domain.tops import Interpretation
+from geoves.interpretation import interpret
+from geoves.inversion import invert
+from geoves.layers import derive_layers
+from geoves.project import provenance
+from geoves.project.engines import Map, open_engine, watched
+from geoves.project.findings import name_inputs
+from geoves.project.progress import Progress, SilentProgress, Summary
+from geoves.project.settings import Settings, read_settings
+from geoves.reading import fingerprint_files, read_region, read_survey
+from geoves.surfaces import build_surfaces
+
+
+def run(region_path: Path, out: Path | None = None, progress: Progress | None = None) -> Summary:
+    """Do the whole job and say in a few lines what was found, what was not, and where the files are.
+
+    Raises InputError where the inputs are wrong, EngineError where a step cannot be computed, DeliveryError where the
+    delivery cannot be written; what stood in the folder before stands then still.
+    """
+    progress = progress or SilentProgress()
+    folder = out or region_path.parent / "delivery"
+    results, record = compute(region_path, progress)
+    with open_engine() as engine:
+        deliver(results, record, folder, progress, engine)
+    return Summary(tuple(_tell(results, folder)))
+
+
+def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, Any]]:
+    """Everything that the delivery is written from, and the record of how it came about."""
+    with _step(progress, "Reading the tables"):
+        region = read_region(region_path)
+        settings = read_settings(region)
+        survey, grid = read_survey(region)
+        survey = prepare_curves(survey, settings.curves)
+        record = provenance.make_record(region, settings, fingerprint_files(region))
+    template = region.template
+    n_blocks = ceil(len(survey.soundings) / settings.inversion.block)
+    with open_engine() as engine:
+        with progress.step("Inverting the curves", 2 * n_blocks) as step:
+            inverted = invert(survey, settings.inversion, map=watched(engine, step))
+        with progress.step("Reading columns from them", n_blocks) as step:
+            interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(engine, step))
+        with progress.step("Kriging the surfaces", _count_blocks(grid.shape, settings)) as step:
+            stack = build_surfaces(interpretation, survey, template, grid, settings.surfaces, map=watched(engine, step))
+    with _step(progress, "Drawing contours, valley and permits"):
+        layers = derive_layers(stack, survey, region, settings.layers)
+    doubts = name_inputs([*survey.doubts, *_doubt_words(interpretation)], region)
+    merit = provenance.judge_surfaces(stack)
+    results = Results(region, survey, inverted, interpretation, stack, layers, doubts, merit)
+    statuses = [column.bedrock_status for column in interpretation.columns]
+    record |= {
+        "reach": stack.reach,
+        "remarks": list(stack.remarks),
+        "bedrock_status": provenance.summarise(statuses),
+        "noise": inverted[0].noise if inverted else None,
+        "covariances": [attrs.asdict(one, filter=_scalars) for one in stack.variograms],
+        "figures_of_merit": merit,
+        "doubts": len(doubts),
+    }
+    return results, record
+
+
+def deliver(results: Results, record: Mapping[str, Any], folder: Path, progress: Progress, engine: Map) -> None:
+    """Write everything beside the delivery folder, verify it, and move it in; run.json last."""
+    tags = provenance.make_tags(record)
+    with stage(folder) as staging:
+        with _step(progress, "Writing rasters"):
+            files = [*write_rasters(results.stack, results.region, staging, tags)]
+        with _step(progress, "Writing layers.gpkg"):
+            files.append(write_geopackage(results, staging / "layers.gpkg", tags))
+        with _step(progress, "Writing metadata and styles"):
+            write_metadata(results, staging, record, files)
+            write_styles(results, staging)
+        with _step(progress, "Writing map.html"):
+            write_map_page(results, staging / "map.html")
+        with progress.step("Writing report.html", len(results.inverted)) as step:
+            write_report_page(results, staging / "report.html", record, map=watched(engine, step))
+        with _step(progress, "Moving the delivery into place"):
+            publish(staging, folder, dict(record))
+
+
+@contextmanager
+def _step(progress: Progress, title: str) -> Iterator[None]:
+    """A step of one part."""
+    with progress.step(title, 1) as step:
+        yield
+        step.advance()
+
+
+def _count_blocks(shape: tuple[int, int], settings: Settings) -> int:
+    """Blocks of cells at most, four quantities kriged on each."""
+    return 4 * ceil(shape[0] * shape[1] / settings.surfaces.block)
+
+
+def _scalars(_: Any, value: Any) -> bool:
+    """Whether a value belongs into the record: arrays stay in the report."""
+    return not isinstance(value, np.ndarray)
+
+
+def _doubt_words(interpretation: Interpretation) -> Sequence[Finding]:
+    """Drillers' words that no unit of the template claims."""
+    expected = "no unit claims these words; add them to a unit's log_terms, or type the unit in the log"
+    return [Finding("doubt", "well_logs", 0, "description", words, expected) for words in interpretation.unmapped_words]
+
+
+def _tell(results: Results, folder: Path) -> Iterator[str]:
+    """The job in a few lines."""
+    survey, stack = results.survey, results.stack
+    status = provenance.summarise([column.bedrock_status for column in results.interpretation.columns])
+    silent = len(survey.soundings) - len(results.inverted)
+    yield (
+        f"{results.region.name}: {len(survey.soundings)} soundings, {len(survey.wells)} wells, "
+        f"{len(survey.permits)} permits."
+    )
+    yield (
+        f"Basal contact seen at {status['seen']} soundings; not distinct at {status['not_distinct']}; "
+        f"deeper than the curve reaches at {status['deeper_than']}"
+        + (f"; {silent} soundings had too few readings." if silent else ".")
+    )
+    depth = stack.surfaces["bedrock_depth"].estimate
+    unit = results.region.metres_per_length_unit
+    name = {"m": "m", "ft": "ft", "us-ft": "ft (US survey)"}[results.region.length_unit]
+    yield (
+        f"Bedrock lies {np.nanmin(depth) / unit:.0f} to {np.nanmax(depth) / unit:.0f} {name} deep where it is mapped "
+        f"({np.mean(stack.covered):.0%} of the grid)."
+    )
+    crossed = results.figures_of_merit["bedrock_elevation"]["leave_one_out_rmse_m"]
+    yield f"Left out one at a time, the basal contact is predicted within {crossed / unit:.1f} {name} (root mean square)."
+    yield from stack.remarks
+    if results.doubts:
+        yield f"{len(results.doubts)} doubts about the inputs are listed in report.html; the first: {results.doubts[0].line()}"
+    yield f"Everything is in {folder}: open map.html and report.html in a browser, the rest in any GIS."
+    yield "Reconnaissance only: no well is sited, and no water judged, without test drilling and licensed practice."

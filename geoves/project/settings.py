@@ -1,0 +1,62 @@
+"""Tables of region.toml for the steps, read into the option classes that own their keys."""
+
+from typing import Any, get_type_hints
+
+import attrs
+
+from geoves.curves import CurveOptions
+from geoves.domain.region import Region
+from geoves.errors import InputError
+from geoves.interpretation import InterpretationOptions
+from geoves.inversion import InversionOptions
+from geoves.layers import LayerOptions
+from geoves.surfaces import SurfaceOptions
+
+
+@attrs.frozen
+class Settings:
+    """The options of every step."""
+
+    curves: CurveOptions
+    inversion: InversionOptions
+    interpretation: InterpretationOptions
+    surfaces: SurfaceOptions
+    layers: LayerOptions
+
+
+def read_settings(region: Region) -> Settings:
+    """Options from the tables [curves], [inversion], [interpretation], [surfaces] and [layers].
+
+    Raises InputError with every unknown key and every value of the wrong kind.
+    """
+    faults: list[str] = []
+    seed = {"random_seed": region.random_seed}
+    values = {
+        field.name: _read_options(region, field.name, get_type_hints(Settings)[field.name], seed, faults)
+        for field in attrs.fields(Settings)
+    }
+    if faults:
+        raise InputError(faults)
+    return Settings(**values)
+
+
+def _read_options(region: Region, table: str, kind: type, seed: dict[str, int], faults: list[str]) -> Any:
+    fields = {field.name: field for field in attrs.fields(kind)}
+    given = dict(region.settings.get(table, {}))
+    options = {key: value for key, value in seed.items() if key in fields}
+    for key, value in given.items():
+        where = f"{region.path.name}, [{table}], {key}: {value!r}"
+        if key not in fields or key in seed:
+            known = ", ".join(sorted(set(fields) - set(seed)))
+            faults.append(f"{where} is not a setting of this table; expected one of {known}")
+            continue
+        wanted = type(fields[key].default)
+        fits = isinstance(value, wanted) or (wanted is float and isinstance(value, int))
+        if not fits or isinstance(value, bool) is not (wanted is bool):
+            faults.append(f"{where}; expected {_KINDS[wanted]}, such as {fields[key].default!r}")
+            continue
+        options[key] = wanted(value)
+    return kind(**options)
+
+
+_KINDS = {int: "a whole number", float: "a number", str: "a word in quotes", bool: "true or false"}
