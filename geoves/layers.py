@@ -78,7 +78,7 @@ def choose_interval(least: float, most: float, length_unit: LengthUnit, contours
     metres = METRES[length_unit]
     wanted = max((most - least) / metres / contours, 1e-3)
     power = 10.0 ** np.floor(np.log10(wanted))
-    step = next(step for step in (1.0, 2.0, 5.0, 10.0) if step * power >= wanted * (1.0 - 1e-9))
+    step = min((1.0, 2.0, 5.0, 10.0), key=lambda step: abs(np.log(step * power / wanted)))
     return float(step * power * metres)
 
 

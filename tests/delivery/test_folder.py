@@ -10,7 +10,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from geoves.delivery.folder import name_workplace, publish, stage
+from geoves.delivery.folder import _list_own_files, name_workplace, publish, stage
 from geoves.errors import DeliveryError
 
 
@@ -123,11 +123,12 @@ def test_what_is_unfinished_is_not_delivered(folder, files, says):
 
 def test_a_record_edited_by_hand_reaches_no_file_outside(folder):
     deliver(folder, {"map.html": "old"})
-    outside = folder.parent / "precious.txt"
+    outside = folder.parent.parent / "precious.txt"
     outside.write_text("keep", encoding="utf-8")
     record = json.loads((folder / "run.json").read_text(encoding="utf-8"))
-    record["files"] |= {"../precious.txt": "", str(outside): "", "": "", ".": ""}
+    record["files"] |= {"../../precious.txt": "", str(outside): "", "": "", ".": ""}
     (folder / "run.json").write_text(json.dumps(record), encoding="utf-8")
+    assert _list_own_files(folder) == {"map.html"}
     deliver(folder, {"map.html": "new"})
     assert outside.read_text(encoding="utf-8") == "keep"
 

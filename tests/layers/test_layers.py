@@ -44,6 +44,14 @@ def test_contours_lie_where_the_surface_has_their_value(layers, small_results):
             assert np.allclose(found, level, atol=1e-6)
 
 
+def test_every_fifth_contour_is_an_index_contour(layers):
+    """60 m of relief in some 12 contours: every 5 m, an index contour every 25 m."""
+    contours = layers["bedrock_contours"]
+    levels = np.unique(contours.elevation)
+    assert np.allclose(np.diff(levels), 5.0)
+    assert np.array_equal(contours.major, contours.elevation % 25.0 == 0.0)
+
+
 def test_contour_of_a_cone_is_a_circle(small_results):
     """Closed form: z = 400 - r/10 has the value 340 on a circle of 600 m."""
     grid = small_results.stack.grid
@@ -61,7 +69,7 @@ def test_contour_intervals_are_round_in_the_length_unit(unit, metres):
         step = choose_interval(0.0, span, unit, 12) / metres
         mantissa = step / 10.0 ** np.floor(np.log10(step) + 1e-9)
         assert np.isclose(mantissa, [1.0, 2.0, 5.0, 10.0], rtol=1e-9).any()
-        assert 4 <= span / metres / step <= 13
+        assert 7 <= span / metres / step <= 20
 
 
 def test_bilinear_is_exact_on_a_plane_and_agrees_with_scipy():
@@ -104,6 +112,14 @@ def test_valley_axis_follows_the_floor_and_its_tributary(layers, small_results):
     assert main.distance(shapely.Point(branch.coords[-1])) < 50.0
     floor = small_results.stack.surfaces["bedrock_elevation"].estimate
     assert axis.lowest_elevation[0] == pytest.approx(np.nanmin(floor), abs=1.0)
+
+
+def test_a_valley_that_falls_west_is_drawn_westward(small_results):
+    surface = small_results.stack.surfaces["bedrock_elevation"]
+    stack = with_surface(small_results.stack, "bedrock_elevation", np.fliplr(surface.estimate))
+    main = derive_layers(stack, small_results.survey, small_results.region)["valley_axis"].iloc[0]
+    assert main.geometry.coords[0][0] > main.geometry.coords[-1][0]
+    assert main.mean_slope > 0.0
 
 
 def test_length_counts_in_metres_where_the_crs_counts_in_feet(layers, small_results):
