@@ -233,7 +233,11 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     Column("place", "Place", "Name of the sounding or the well."),
                     Column("kind", "Kind", "Which kind of evidence.", codes=_PLACE_KIND),
                     _UNIT,
-                    Column("contact", "Contact", "Which contact of the surfaces it speaks of."),
+                    Column(
+                        "contact",
+                        "Contact",
+                        "Basal: the top of gravel or rock, which a curve can see; bedrock; or a unit's role.",
+                    ),
                     Column("status", "Status", "How the depth is meant.", codes=_TOP_STATUS),
                     Column("depth", "Depth", "Depth of the top, or the bound.", "length"),
                     Column("elevation", "Elevation", "Elevation of the top, or the bound.", "length"),

@@ -205,6 +205,7 @@ _RULES: dict[str, tuple[Rule, ...]] = {
     "soundings": (
         Rule("Bedrock seen", Mark("circle", SURE), (("bedrock_status", "=", "seen"),), "sounding"),
         Rule("Bedrock not distinct", Mark("circle", GREY), (("bedrock_status", "=", "not_distinct"),), "sounding"),
+        Rule("Too few readings", Mark("cross", GREY, GREY), (("bedrock_status", "null", ""),), "sounding"),
         Rule("Bedrock deeper than", Mark("triangle", GREY), (("bedrock_status", "=", "deeper_than"),), "sounding"),
     ),
     "tops": (

@@ -230,6 +230,16 @@ def test_a_job_with_next_to_nothing_still_has_every_layer(small_results, tmp_pat
     assert result.returncode == 0, result.stdout + result.stderr
 
 
+def test_a_sounding_that_could_not_be_inverted_is_still_there(small_results, tmp_path):
+    kept = small_results.inverted[1:]
+    columns = attrs.evolve(small_results.interpretation, columns=small_results.interpretation.columns[1:])
+    results = attrs.evolve(small_results, inverted=kept, interpretation=columns)
+    path = write_geopackage(results, tmp_path / "layers.gpkg", TAGS)
+    row = geopandas.read_file(path, layer="soundings").set_index("sounding").loc["Larch 1"]
+    assert row[["rms_percent", "n_layers", "bedrock_status", "sentence"]].isna().all()
+    assert row.largest_ab2 == 320.0
+
+
 def test_failure_leaves_the_old_file_and_no_litter(small_results, tmp_path):
     path = tmp_path / "layers.gpkg"
     path.write_text("old", encoding="utf-8")

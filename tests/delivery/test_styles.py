@@ -87,7 +87,7 @@ def test_every_feature_is_drawn_once(styles):
 
     def meets(rule, row):
         tests = {
-            "Null": lambda a, _: np.isnan(a),
+            "Null": lambda a, _: a is None or (isinstance(a, float) and np.isnan(a)),
             "EqualTo": lambda a, b: str(a) == b,
             "LessThan": lambda a, b: a < float(b),
             "GreaterThanOrEqualTo": lambda a, b: a >= float(b),
@@ -100,7 +100,7 @@ def test_every_feature_is_drawn_once(styles):
         )
 
     rows = {
-        "soundings": [{"bedrock_status": code} for code in ("seen", "not_distinct", "deeper_than")],
+        "soundings": [{"bedrock_status": code} for code in ("seen", "not_distinct", "deeper_than", None)],
         "tops": [{"status": code} for code in ("at", "below", "absent")],
         "gravel_extent": [{"likelihood": code} for code in ("likely", "possible")],
         "permits": [{"covered": 1, "gravel_probability": p} for p in (0.0, 0.33, 0.5, 0.66, 1.0, np.nan)],
