@@ -1,5 +1,7 @@
 """Plain analytic shapes that the county is put together from. Coordinates in m; none is a random field."""
 
+from collections.abc import Callable
+
 import attrs
 import numpy as np
 from scipy.spatial import cKDTree
@@ -68,9 +70,9 @@ class Valley:
     """
 
     line: CentreLine
-    depth: object
-    left_width: object
-    right_width: object
+    depth: Callable[[np.ndarray], np.ndarray]
+    left_width: Callable[[np.ndarray], np.ndarray]
+    right_width: Callable[[np.ndarray], np.ndarray]
     left_power: float
     right_power: float
 

@@ -1,5 +1,7 @@
 """The demo's generator: its physics against published values, its tables against the contract, its county as told."""
 
+import ast
+import importlib
 import importlib.util
 import sys
 from pathlib import Path
@@ -219,6 +221,14 @@ def test_picks_agree_with_the_truth():
     assert abs(at["depth"] - truth.loc[at["place"], "bedrock_top_depth"]) < 2.0 * at["depth_error"]
     assert below["depth"] < truth.loc[below["place"], "bedrock_top_depth"]
     assert truth.loc[absent["place"], "deep_gravel_thickness"] == 0.0
+
+
+def test_generator_stands_apart_from_the_package():
+    for path in (DEMO / "make_region.py", *(DEMO / "generator").glob("*.py")):
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            if isinstance(node, ast.Import | ast.ImportFrom):
+                names = [alias.name for alias in node.names] + [getattr(node, "module", None) or ""]
+                assert not any(name.split(".")[0] == "geoves" for name in names), path
 
 
 def test_demo_is_small():
