@@ -38,7 +38,10 @@ def mean(values):
 
 
 def score_surfaces(estimate: Estimate, county: County, expected_cells: int):
-    """Figures by name, lengths in m. Cells left blank, or never written, count in `blank` and in no other figure."""
+    """Figures by name, lengths in m; a bias is the estimate less the truth.
+
+    Cells left blank, or never written, count in `blank` and in no other figure.
+    """
     x, y = estimate.easting - ORIGIN[0], estimate.northing - ORIGIN[1]
     valley = county.bedrock_relief(x, y) > INCISED
     error = estimate.bedrock - county.bedrock_elevation(x, y)
