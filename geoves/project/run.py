@@ -146,9 +146,9 @@ def _tell(results: Results, folder: Path) -> Iterator[str]:
         f"({np.mean(stack.covered):.0%} of the grid)."
     )
     crossed = results.figures_of_merit["bedrock_elevation"]["leave_one_out_rmse_m"]
-    yield f"Left out one at a time, the basal contact is predicted within {crossed / unit:.1f} {name} (root mean square)."
+    yield f"Left out one at a time, the basal contact is met within {crossed / unit:.1f} {name} (root mean square)."
     yield from stack.remarks
     if results.doubts:
-        yield f"{len(results.doubts)} doubts about the inputs are listed in report.html; the first: {results.doubts[0].line()}"
+        yield f"{len(results.doubts)} doubts about the inputs are in report.html, the first: {results.doubts[0].line()}"
     yield f"Everything is in {folder}: open map.html and report.html in a browser, the rest in any GIS."
     yield "Reconnaissance only: no well is sited, and no water judged, without test drilling and licensed practice."
