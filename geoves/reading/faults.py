@@ -26,14 +26,14 @@ def raise_faults(findings: Sequence[Finding], region: Region | None = None) -> N
         raise FaultyInputError(findings, region)
 
 
-def nearest(word: str, known: Sequence[str]) -> str:
+def nearest(word: str, known: Sequence[str], cutoff: float = 0.6) -> str:
     """A hint at the known name that `word` may have been meant for, empty where none is near.
 
     >>> nearest("cellsize", ["crs", "cell_size"])
     "; did you mean 'cell_size'?"
     """
     folded = {name.casefold(): name for name in known}
-    close = get_close_matches(word.casefold(), list(folded), n=1, cutoff=0.6)
+    close = get_close_matches(word.casefold(), list(folded), n=1, cutoff=cutoff)
     return f"; did you mean {folded[close[0]]!r}?" if close else ""
 
 

@@ -15,12 +15,13 @@ _ERROR = Range("one standard deviation of the depth, above 0", 0.0, above=True)
 
 
 def read_picks(
-    table: Table, metres: float, template: Template, soundings: Collection[str], wells: Collection[str]
+    table: Table, metres: float, template: Template, names: tuple[Collection[str], Collection[str]] | None
 ) -> list[Pick]:
-    """The picks at the named soundings and wells, in the order of the table."""
+    """The picks, in the order of the table, at places of the names of soundings and of wells; None where not known."""
     refuse_repeated(table.rows, "unit", key=lambda row: (row.text("place"), row.text("unit")))
-    for row in table.rows:
-        _check_place(row, soundings, wells)
+    if names is not None:
+        for row in table.rows:
+            _check_place(row, *names)
     return [_read_pick(row, metres, template) for row in table.rows]
 
 

@@ -31,7 +31,8 @@ def check_elevations(places: Sequence[Place], rows: Sequence[Row], ground: Groun
     checked = []
     for place, row, elevation in zip(places, rows, at_places, strict=True):
         typed = place.ground_elevation
-        if math.isnan(typed) and not row.text("ground_elevation") and math.isnan(elevation):
+        located = math.isfinite(place.easting) and math.isfinite(place.northing)
+        if located and math.isnan(elevation) and not row.text("ground_elevation"):
             where = "no ground raster is given" if ground is None else "the ground raster has none here"
             row.complain("ground_elevation", f"empty; expected the elevation of the ground, as {where}")
         elif abs(typed - elevation) > ELEVATION_TOLERANCE:

@@ -57,7 +57,7 @@ def geometric_factor(half_spacing: float, potential_half_spacing: float) -> floa
 
 
 def read_curves(table: Table, metres: float, arrays: Mapping[str, Array]) -> dict[str, Curve]:
-    """The curve of each sounding that `arrays` names; readings of others are faults, and soundings without one."""
+    """The curve of each sounding that `arrays` names; readings of others are faults."""
     rows: dict[str, list[Row]] = {}
     for row in table.rows:
         name = row.required_text("sounding", "the name of a sounding")
@@ -66,6 +66,14 @@ def read_curves(table: Table, metres: float, arrays: Mapping[str, Array]) -> dic
         elif name:
             rows.setdefault(name, []).append(row)
     return {name: _build_curve(_read_rows(found, metres, arrays[name]), arrays[name]) for name, found in rows.items()}
+
+
+def check_readings(table: Table, metres: float) -> None:
+    """Note the faults of the readings by themselves, where the table of their soundings could not be read."""
+    arrays: dict[str, Array] = {
+        row.text("sounding"): "wenner" if row.text("a") else "schlumberger" for row in table.rows
+    }
+    read_curves(table, metres, arrays)
 
 
 def _read_rows(rows: Sequence[Row], metres: float, array: Array) -> list[Reading]:
@@ -79,18 +87,18 @@ def _read_row(row: Row, metres: float, array: Array) -> Reading | None:
         row.complain("use", "expected 1 for a reading that counts or 0 for one that does not")
         return None
     heard = row if used else row.without_complaints()
-    before = len(heard.findings)
     half, potential = _read_spacings(heard, metres, array)
-    if not 0.0 < potential < half < math.inf:
-        if used and len(heard.findings) == before:
-            row.complain("mn2", f"expected MN/2 below AB/2 ({row.text('ab2')}); correct it, or set use to 0")
-        elif not used:
-            row.doubt("ab2", "the unused reading has no usable spacing and is left out of the curve altogether")
-        return None
-    resistivity = _read_resistivity(heard, half, potential)
+    placed = 0.0 < potential < half
+    resistivity = _read_resistivity(heard, geometric_factor(half, potential) if placed else math.nan)
     error = heard.number_in("error_percent", _ERROR)
     if error == 0.0:
         heard.doubt("error_percent", "a reading without any error cannot be; taken as not stated")
+    if not placed:
+        if used and half <= potential:
+            row.complain("mn2", f"expected MN/2 below AB/2 ({row.text('ab2')}); correct it, or set use to 0")
+        elif not used and "ab2" not in row.missing:
+            row.doubt("ab2", "the unused reading has no usable spacing and is left out of the curve altogether")
+        return None
     reason = None if used else row.text("note") or "use is 0"
     extra = extras(row, READING_COLUMNS) | ({"note": row.text("note")} if row.text("note") else {})
     return Reading(row.number, half, potential, resistivity, error / 100.0 if error else math.nan, reason, extra)
@@ -115,13 +123,13 @@ def _read_spacings(row: Row, metres: float, array: Array) -> tuple[float, float]
     return half, potential
 
 
-def _read_resistivity(row: Row, half: float, potential: float) -> float:
+def _read_resistivity(row: Row, factor: float) -> float:
     """Apparent resistivity in ohm m, as typed or from what was measured; NaN, with a fault, where none of it stands.
 
+    `factor` is the geometric factor in m, NaN where the spacings are faulty.
     What was typed comes before what the resistance gives, and that before voltage over current; a doubt where they
     disagree.
     """
-    factor = geometric_factor(half, potential)
     found = {}
     if row.text("apparent_resistivity"):
         found["apparent_resistivity"] = row.required_number("apparent_resistivity", _RESISTIVITY)

@@ -2,7 +2,7 @@
 
 import math
 
-from geoves.domain.survey import Array, Sounding
+from geoves.domain.survey import Array, Curve, Sounding
 from geoves.reading.coordinates import locate_rows
 from geoves.reading.faults import in_words
 from geoves.reading.readings import read_curves
@@ -15,14 +15,14 @@ SOUNDING_COLUMNS = Columns(
 )
 ELEVATION = Range("an elevation between -500 m and 9000 m", -500.0, 9000.0)
 _AZIMUTH = Range("the direction of the spread, 0 to 360 degrees clockwise from north", 0.0, 360.0)
+_NO_CURVE = Curve((), (), (), (), (), ())
 _ARRAYS: dict[str, Array] = {"": "schlumberger", "schlumberger": "schlumberger", "wenner": "wenner"}
 
 
 def read_soundings(table: Table, readings: Table | None, crs: str, metres: tuple[float, float]) -> list[Sounding]:
-    """The soundings with their curves; ground elevation NaN where none is typed.
+    """The soundings with their curves, empty without a table of readings; ground elevation NaN where none is typed.
 
-    `metres` in the length unit of the soundings and of the readings. Without a table of readings only the soundings
-    themselves are checked and none is returned.
+    `metres` in the length unit of the soundings and of the readings.
     """
     refuse_repeated(table.rows, "sounding")
     places = locate_rows(table, crs)
@@ -32,29 +32,25 @@ def read_soundings(table: Table, readings: Table | None, crs: str, metres: tuple
     soundings = []
     for row, place in named:
         name = row.text("sounding")
-        elevation = read_elevation(row, metres[0])
-        azimuth = row.number_in("azimuth", _AZIMUTH)
-        if readings is None:
-            continue
-        if name not in curves:
+        if readings is not None and name not in curves and "sounding" not in readings.missing:
             row.complain("sounding", "the table of readings has none of this sounding; add them, or delete the row")
-            continue
+        curve = curves.get(name, _NO_CURVE)
+        if curve.used.size and not curve.used.any():
+            row.doubt("sounding", "none of its readings is used; the sounding says nothing")
         soundings.append(
             Sounding(
                 name=name,
                 easting=place[0],
                 northing=place[1],
-                ground_elevation=elevation,
-                curve=curves[name],
+                ground_elevation=read_elevation(row, metres[0]),
+                curve=curve,
                 array=arrays[name],
-                azimuth_deg=azimuth,
+                azimuth_deg=row.number_in("azimuth", _AZIMUTH),
                 date=row.text("date"),
                 note=row.text("note"),
                 extra=extras(row, SOUNDING_COLUMNS),
             )
         )
-        if not curves[name].used.any():
-            row.doubt("sounding", "none of its readings is used; the sounding says nothing")
     return soundings
 
 

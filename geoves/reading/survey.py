@@ -17,12 +17,12 @@ from geoves.reading.permits import PERMIT_COLUMNS, read_permits
 from geoves.reading.picks import PICK_COLUMNS, read_picks
 from geoves.reading.places import check_elevations, doubt_bare_cells, doubt_outside
 from geoves.reading.rasters import read_ground
-from geoves.reading.readings import READING_COLUMNS
+from geoves.reading.readings import READING_COLUMNS, check_readings
 from geoves.reading.soundings import SOUNDING_COLUMNS, read_soundings
 from geoves.reading.sources import INPUTS, REQUIRED_INPUTS, Source, find_source
 from geoves.reading.tables import Row, Table, with_places
 from geoves.reading.vectors import VECTOR_SUFFIXES, read_boundary, read_point_table
-from geoves.reading.wells import LOG_COLUMNS, WELL_COLUMNS, read_wells
+from geoves.reading.wells import LOG_COLUMNS, WELL_COLUMNS, check_logs, read_wells
 
 # The tables: their columns, and the one that names a row's place.
 _TABLES = {
@@ -62,7 +62,8 @@ def collect_survey(region: Region) -> SurveyFiles:
         region, "ground", lambda source: read_ground(source, region.crs, grid, locations(places), findings)
     )
     rows = _rows_of(places, tables)
-    places = check_elevations(places, rows, ground)
+    if ground is not None or "ground" not in region.files:
+        places = check_elevations(places, rows, ground)
     if boundary is not None:
         doubt_outside(places, rows, boundary)
         doubt_outside(permits, _rows_of(permits, tables), boundary)
@@ -119,19 +120,29 @@ def _read_places(
     wells: list[Well] = []
     permits: list[Permit] = []
     picks: list[Pick] = []
+    readings, logs = found["readings"], found["well_logs"]
+    soundings_named, wells_named = _has_names(found["soundings"], "sounding"), _has_names(found["wells"], "well")
+    if readings is not None and not soundings_named:
+        check_readings(readings, metres["readings"])
+    if logs is not None and not wells_named:
+        check_logs(logs, metres["well_logs"], region.template)
     if (table := found["soundings"]) is not None:
         both = metres["soundings"], metres["readings"]
-        soundings = read_soundings(table, found["readings"], region.crs, both)
+        soundings = read_soundings(table, readings if soundings_named else None, region.crs, both)
     if (table := found["wells"]) is not None:
         both = metres["wells"], metres["well_logs"]
-        wells = read_wells(table, found["well_logs"], region.crs, both, region.template)
+        wells = read_wells(table, logs if wells_named else None, region.crs, both, region.template)
     if (table := found["permits"]) is not None:
         permits = read_permits(table, region.crs, metres["permits"])
-    places_known = found["soundings"] is not None and (found["wells"] is not None or "wells" not in region.files)
-    if (table := found["picks"]) is not None and places_known:
-        names = (_names(found[name], column) for name, column in (("soundings", "sounding"), ("wells", "well")))
-        picks = read_picks(table, metres["picks"], region.template, *names)
+    if (table := found["picks"]) is not None:
+        known = soundings_named and (wells_named or "wells" not in region.files)
+        names = (_names(found["soundings"], "sounding"), _names(found["wells"], "well")) if known else None
+        picks = read_picks(table, metres["picks"], region.template, names)
     return soundings, wells, permits, picks
+
+
+def _has_names(table: Table | None, column: str) -> bool:
+    return table is not None and column not in table.missing
 
 
 def _names(table: Table | None, column: str) -> set[str]:

@@ -36,6 +36,7 @@ class Row:
     findings: list[Finding]
     decimal_comma: bool = False
     place: str = ""
+    missing: frozenset[str] = frozenset()  # needed columns that the table lacks, of which its header was told
 
     def complain(self, column: str, expected: str, *, severity: Severity = "fault", value: str | None = None) -> None:
         """Note a fault, or a doubt, at the column's cell."""
@@ -52,7 +53,7 @@ class Row:
 
     def required_text(self, column: str, words: str) -> str:
         """The cell's text; a fault where it is empty."""
-        if not self.text(column):
+        if not self.text(column) and column not in self.missing:
             self.complain(column, f"empty; expected {words}")
         return self.text(column)
 
@@ -71,7 +72,7 @@ class Row:
 
     def required_number(self, column: str, allowed: Range) -> float:
         """The cell's number; NaN, with a fault, where it is empty, no number or out of the range."""
-        if not self.text(column):
+        if not self.text(column) and column not in self.missing:
             self.complain(column, f"empty; expected {allowed.words}")
         value = self.number_in(column, allowed)
         return math.nan if value is None else value
@@ -89,6 +90,7 @@ class Table:
     headings: tuple[str, ...]
     header_row: int
     rows: tuple[Row, ...]
+    missing: frozenset[str] = frozenset()
 
     def has(self, *columns: str) -> bool:
         """Whether all these columns are there."""
@@ -137,13 +139,15 @@ def build_table(file: str, records: Iterable[Sequence[str]], columns: Columns, f
         return None
     headings = [_canonical(heading, columns.known) for heading in typed]
     _refuse_repeated_headings(file, header_row, headings, findings)
+    table = Table(file, tuple(heading for heading in headings if heading), header_row, ())
+    missing = check_columns(table, columns, findings)
     rows = []
     for number, cells in numbered:
-        row = Row(file, number, dict(zip(headings, (*cells, *[""] * len(headings)), strict=False)), findings)
+        typed_cells = dict(zip(headings, (*cells, *[""] * len(headings)), strict=False))
+        row = Row(file, number, typed_cells, findings, missing=missing)
         _refuse_cells_without_heading(row, headings, cells)
         rows.append(row)
-    table = Table(file, tuple(heading for heading in headings if heading), header_row, tuple(rows))
-    return table if check_columns(table, columns, findings) else None
+    return attrs.evolve(table, rows=tuple(rows), missing=missing)
 
 
 def _canonical(heading: str, known: Sequence[str]) -> str:
@@ -170,9 +174,8 @@ def _refuse_cells_without_heading(row: Row, headings: Sequence[str], cells: Sequ
         )
 
 
-def check_columns(table: Table, columns: Columns, findings: list[Finding]) -> bool:
-    """Whether all needed columns are there; a fault for each that is not, with the heading that may be meant."""
-    before = len(findings)
+def check_columns(table: Table, columns: Columns, findings: list[Finding]) -> frozenset[str]:
+    """The needed columns that are not there, each a fault with the heading that may be meant."""
     absent = [name for name in columns.required if name not in table.headings]
     findings.extend(_missing(table, name, f"expected a column {name!r}", columns.known) for name in absent)
     for choice in columns.alternatives:
@@ -181,7 +184,18 @@ def check_columns(table: Table, columns: Columns, findings: list[Finding]) -> bo
             begun = next((names for names in choice if any(table.has(name) for name in names)), choice[0])
             name = next(name for name in begun if not table.has(name))
             findings.append(_missing(table, name, f"expected the columns {words}", columns.known))
-    return len(findings) == before
+            absent += [name for names in choice for name in names]
+    _doubt_near_headings(table, columns, findings)
+    return frozenset(absent)
+
+
+def _doubt_near_headings(table: Table, columns: Columns, findings: list[Finding]) -> None:
+    """A doubt for an extra column whose heading is nearly that of an optional one that is not there."""
+    absent = [name for name in columns.optional if name not in table.headings]
+    for heading in table.headings:
+        if heading not in columns.known and (hint := nearest(heading, absent, cutoff=0.75)):
+            words = f"an extra column, which is carried through and not used{hint}"
+            findings.append(Finding("doubt", table.file, table.header_row, heading, heading, words))
 
 
 def _missing(table: Table, name: str, expected: str, known: Sequence[str]) -> Finding:

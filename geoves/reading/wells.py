@@ -44,7 +44,7 @@ def read_wells(
         water = scaled(row.number_in("water_level", _WATER), metres[0])
         if water is not None and water > depths[name]:
             row.doubt("water_level", f"deeper than the well's total depth of {row.text('total_depth')}")
-        if logs is not None and name not in intervals:
+        if logs is not None and name not in intervals and "well" not in logs.missing:
             row.doubt("well", "the table of well logs has none of this well")
         wells.append(
             Well(
@@ -61,6 +61,11 @@ def read_wells(
             )
         )
     return wells
+
+
+def check_logs(table: Table, metres: float, template: Template) -> None:
+    """Note the faults of the logs by themselves, where the table of their wells could not be read."""
+    _read_logs(table, metres, template, {row.text("well"): math.inf for row in table.rows})
 
 
 def _read_logs(

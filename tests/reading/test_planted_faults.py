@@ -211,11 +211,10 @@ def test_all_faults_come_at_once_region_file_first(folder):
         ("permits.csv", 2, "requested_depth"),
         ("picks.csv", 2, "depth"),
         ("ground.tif", 0, ""),
-        ("soundings.csv", 3, "ground_elevation"),
     }
     with pytest.raises(FaultyInputError) as raised:
         read_region(folder.region_file)
-    assert [line.startswith("region.toml") for line in raised.value.lines] == [True] * 3 + [False] * 8
+    assert [line.startswith("region.toml") for line in raised.value.lines] == [True] * 3 + [False] * 7
     assert all("\n" not in line for line in raised.value.lines)
 
 
@@ -297,3 +296,36 @@ def test_a_crs_that_stretches_lengths_is_doubted(folder):
     (doubt,) = folder.doubts()
     assert (doubt.column, doubt.value) == ("region.crs", "EPSG:3857")
     assert "1.39" in doubt.expected
+
+
+def test_faults_beside_a_missing_column_are_told_too(folder):
+    folder.replace("soundings.csv", "sounding,x,", "sounding,east,")
+    folder.replace("soundings.csv", ",45,", ",451,")
+    folder.replace("readings.csv", ",apparent_resistivity,", ",rho,")
+    folder.replace("readings.csv", "S1,10,1,", "S1,10,11,")
+    folder.replace("wells.csv", "well,x", "name,x")
+    folder.replace("wells.csv", ",50,6,", ",50,six,")
+    folder.replace("well_logs.csv", "W1,20,", "W1,12,")
+    folder.replace("picks.csv", ",at,42,", ",at,deep,")
+    assert [(fault.file, fault.row, fault.column) for fault in folder.faults()] == [
+        ("soundings.csv", 1, "x"),
+        ("soundings.csv", 2, "azimuth"),
+        ("readings.csv", 1, "apparent_resistivity"),
+        ("readings.csv", 3, "mn2"),
+        ("wells.csv", 1, "well"),
+        ("wells.csv", 2, "water_level"),
+        ("well_logs.csv", 2, "top"),
+        ("picks.csv", 2, "depth"),
+    ]
+
+
+def test_two_faults_of_one_reading_are_both_told(folder):
+    folder.replace("readings.csv", "S1,10,1,,100,,1,", "S1,-10,1,,0,-1,1,")
+    assert [fault.column for fault in folder.faults()] == ["ab2", "apparent_resistivity", "error_percent"]
+
+
+def test_an_extra_column_nearly_named_as_an_optional_one_is_doubted(folder):
+    folder.replace("readings.csv", "error_percent", "error_per_cent")
+    (doubt,) = folder.doubts()
+    assert (doubt.file, doubt.row, doubt.column) == ("readings.csv", 1, "error_per_cent")
+    assert "did you mean 'error_percent'?" in doubt.expected
