@@ -24,6 +24,7 @@ from geoves.domain.region import METRES, LengthUnit
 from geoves.domain.survey import Curve, Sounding
 from geoves.domain.tops import UnitColumn, WellReading
 from geoves.domain.units import Template
+from geoves.kernels.covariances import correlation
 
 
 @attrs.frozen
@@ -178,11 +179,9 @@ def _stacked_layer(frame: Frame, shares: np.ndarray, depths: np.ndarray, templat
     ]
     best = int(np.argmax(shares))
     if bottom - top > 13:
-        middle = float(edges[best] + edges[best + 1]) / 2
         name = template.units[best].name
-        boxes.append(
-            label(middle, (top + bottom) / 2 + 4, name if len(name) < 18 else name[:16] + "…", "halo", "middle")
-        )
+        # In the middle of the whole layer: that of a narrow share would push the name out of the drawing.
+        boxes.append(label(90, (top + bottom) / 2 + 4, name if len(name) < 18 else name[:16] + "…", "halo", "middle"))
     return joined([*boxes, line(40, top, 140, top, "contact")])
 
 
@@ -232,7 +231,7 @@ def draw_variogram(variogram: Variogram, crs_unit: str) -> Markup:
     highest = 1.15 * max([sill, *semivariance[known]], default=1.0) or 1.0
     furthest = 1.05 * max([*lag[known], 0.5 * variogram.length], default=1.0) or 1.0
     frame = Frame(Scale(0.0, furthest, 66, 400), Scale(0.0, highest, BOTTOM, TOP))
-    power = f"{variogram.unit}²" if variogram.unit else "squared"
+    power = f"({variogram.unit})²" if " " in variogram.unit else f"{variogram.unit}²"
     parts = [frame.axes(f"distance ({crs_unit})", f"semivariance ({power})")]
     distances = np.linspace(0.0, furthest, 80)
     for ratio, style in ((1.0, "fit"), (variogram.ratio, "fit across")):
@@ -248,17 +247,9 @@ def draw_variogram(variogram: Variogram, crs_unit: str) -> Markup:
 
 
 def modelled_semivariance(variogram: Variogram, share: np.ndarray) -> np.ndarray:
-    """The fitted model at distances given as shares of its practical length; unknown models are drawn as a blank."""
-    # Chilès and Delfiner (2012), Geostatistics, section 2.5: the practical length is where 95 % of the sill is reached.
-    grown = {
-        "exponential": lambda h: 1.0 - np.exp(-3.0 * h),
-        "gaussian": lambda h: 1.0 - np.exp(-3.0 * h**2),
-        "spherical": lambda h: np.where(h < 1.0, 1.5 * h - 0.5 * h**3, 1.0),
-        "linear": lambda h: np.minimum(h, 1.0),
-    }.get(variogram.model)
-    if grown is None:
-        return np.full_like(share, np.nan)
-    return np.where(share > 0, variogram.nugget, 0.0) + variogram.partial_sill * grown(share)
+    """The fitted model at distances given as shares of its practical length; 0 at no distance."""
+    grown = variogram.partial_sill * (1.0 - correlation(share, variogram.model))
+    return np.where(share > 0, variogram.nugget, 0.0) + grown
 
 
 def draw_cross_validation(crossed: CrossValidation) -> Markup:

@@ -5,6 +5,7 @@ import zlib
 from collections.abc import Iterable
 from typing import Any
 
+import attrs
 import numpy as np
 import pyproj
 
@@ -15,7 +16,7 @@ from geoves.delivery.sections import lines_of
 from geoves.delivery.unit_look import ROLE_WORDS, unit_colours
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
-from geoves.domain.grids import Grid, Surface
+from geoves.domain.grids import Grid, Surface, SurfaceStack
 from geoves.domain.results import Results
 from geoves.domain.survey import Permit, Sounding, Well
 from geoves.domain.tops import UnitColumn
@@ -32,13 +33,15 @@ SHOWN_SURFACES = (
 # Read under the cursor or in a column, though not drawn as a surface of their own.
 READ_SURFACES = ("shallow_aquifer_probability",)
 WEB_MERCATOR = "EPSG:3857"
+MOST_CELLS = 1_500_000  # beyond it the page would be heavy: every third, fifth, ... cell is shown, and it says so
 
 
 def describe_region(results: Results) -> dict[str, Any]:
     """Everything the page's script draws from; only values that JSON can hold."""
     region = results.region
     colours = unit_colours(region.template)
-    shown = [name for name in (*SHOWN_SURFACES, *READ_SURFACES) if name in results.stack.surfaces]
+    stack = thin_stack(results.stack)
+    shown = [name for name in (*SHOWN_SURFACES, *READ_SURFACES) if name in stack.surfaces]
     to_degrees = pyproj.Transformer.from_crs(region.crs, "EPSG:4326", always_xy=True)
     return {
         "region": {
@@ -53,13 +56,12 @@ def describe_region(results: Results) -> dict[str, Any]:
         },
         "caution": SHORT_CAUTION,
         "cautions": list(list_cautions()),
-        "grid": _describe_grid(results.stack.grid),
-        "projection": control_points(results.stack.grid, region.crs),
+        "grid": _describe_grid(stack.grid),
+        "everyCell": round(stack.grid.cell_size / results.stack.grid.cell_size),
+        "projection": control_points(stack.grid, region.crs),
         "ramps": {name: _hexadecimal(name) for name in ("cividis", "viridis", "magma_r")},
-        "surfaces": [
-            {**_describe_surface(results.stack.surfaces[name]), "drawn": name in SHOWN_SURFACES} for name in shown
-        ],
-        "ground": encode_grid(results.stack.ground),
+        "surfaces": [{**_describe_surface(stack.surfaces[name]), "drawn": name in SHOWN_SURFACES} for name in shown],
+        "ground": encode_grid(stack.ground),
         "units": [
             {
                 "code": u.code,
@@ -75,6 +77,36 @@ def describe_region(results: Results) -> dict[str, Any]:
         "permits": _describe_permits(results, to_degrees),
         "lines": _describe_lines(results, to_degrees),
     }
+
+
+def thin_stack(stack: SurfaceStack, most: int = MOST_CELLS) -> SurfaceStack:
+    """The stack on a coarser grid of at most `most` cells: each takes the value of the cell in its middle."""
+    every = 1
+    while np.prod([-(-count // every) for count in stack.grid.shape]) > most:
+        every += 2
+    if every == 1:
+        return stack
+
+    def thin(values: FloatArray) -> FloatArray:
+        padding = [(0, -count % every) for count in values.shape]
+        return np.pad(values, padding, constant_values=np.nan)[every // 2 :: every, every // 2 :: every]
+
+    old = stack.grid
+    rows, columns = (-(-count // every) for count in old.shape)
+    grid = Grid(old.west, old.north, old.cell_size * every, rows, columns)
+    surfaces = {
+        name: attrs.evolve(
+            one,
+            grid=grid,
+            estimate=thin(one.estimate),
+            standard_error=None,
+            p05=None if one.p05 is None else thin(one.p05),
+            p95=None if one.p95 is None else thin(one.p95),
+        )
+        for name, one in stack.surfaces.items()
+    }
+    covered = thin(stack.covered.astype(float)) == 1.0
+    return attrs.evolve(stack, grid=grid, ground=thin(stack.ground), covered=covered, surfaces=surfaces)
 
 
 def _describe_grid(grid: Grid) -> dict[str, Any]:

@@ -5,7 +5,7 @@ import shapely
 
 from geoves.delivery.cautions import list_cautions
 from geoves.delivery.markup import Markup, element, format_length, joined
-from geoves.delivery.sections import describe_depth, draw_overview, main_axis
+from geoves.delivery.sections import LIKELY, describe_depth, draw_overview, main_axis
 from geoves.domain.grids import CrossValidation
 from geoves.domain.results import Results
 
@@ -79,10 +79,10 @@ def _gravel_area(results: Results) -> tuple[str, str, str]:
     if surface is None or not np.isfinite(surface.estimate).any():
         return asked, "not mapped", "the template names no deep aquifer"
     cell = (results.stack.grid.cell_size * results.region.crs_unit_metres) ** 2
-    likely, nearly_sure, possible = (float((surface.estimate >= p).sum()) * cell for p in (0.5, 0.8, 0.2))
+    likely, nearly_sure, possible = (float((surface.estimate >= p).sum()) * cell for p in (LIKELY, 0.9, 0.33))
     words = (
-        f"where the probability is 0.5 or more; {_wide(results, nearly_sure)} at 0.8 or more, "
-        f"{_wide(results, possible)} at 0.2 or more"
+        f"where the probability is {LIKELY} or more; {_wide(results, nearly_sure)} at 0.9 or more, "
+        f"{_wide(results, possible)} at 0.33 or more"
     )
     return asked, _wide(results, likely), words
 
@@ -112,21 +112,28 @@ def _confidence(results: Results, crossed: CrossValidation) -> str:
     if known.sum() < 3:
         return ""
     inside = misfit[known] <= 1.645 * crossed.standard_error[known]
-    half, most = (float(value) for value in np.quantile(misfit[known], [0.5, 0.9]))
-    if crossed.unit == "m":
-        unit = results.region.length_unit
-        half_said, most_said = format_length(half, unit, 1), format_length(most, unit, 1)
-    else:
-        half_said, most_said = f"{half:.2g} {crossed.unit}", f"{most:.2g} {crossed.unit}"
+    half_said, most_said = (
+        _misfit_words(results, crossed.unit, float(value)) for value in np.quantile(misfit[known], [0.5, 0.9])
+    )
     share = float(inside.mean())
-    if share >= 0.85:
+    if share > 0.96:
+        verdict = "The bands are wider than they need be: treat them as cautious."
+    elif share >= 0.85:
         verdict = "The bands are about as wide as they should be."
     elif share >= 0.75:
         verdict = "The bands are somewhat too narrow: treat them as optimistic."
     else:
         verdict = "The bands are too narrow: treat every range on this page as too hopeful."
+    title = crossed.title.removeprefix("Log ").capitalize()
     return (
-        f"{crossed.title}: each of {int(known.sum())} places was left out in turn and predicted from the others. "
-        f"Half were met within {half_said}, nine in ten within {most_said}. The 90 % bands held {share:.0%} of them. "
-        f"{verdict}"
+        f"{title}: each of {int(known.sum())} places was left out in turn and predicted from the others. "
+        f"Half were met within {half_said}, nine in ten within {most_said}. "
+        f"The 90 % bands held {100 * share:.0f} % of them. {verdict}"
     )
+
+
+def _misfit_words(results: Results, unit: str, misfit: float) -> str:
+    """A misfit in the region's unit; that of a logarithm as the percentage it stands for."""
+    if unit == "m":
+        return format_length(misfit, results.region.length_unit, 1)
+    return f"{100 * np.expm1(misfit):.0f} %" if unit.startswith("ln ") else f"{misfit:.2g} {unit}"

@@ -106,7 +106,7 @@ def _write_sections(results: Results) -> Markup:
     if not figures:
         return element("p", {}, "No valley axis was found, so that no section could be laid along it.")
     words = (
-        "Ground in green, bedrock as a bold line within its 90 % band, gravel where it is more likely than not. "
+        "Ground in green, bedrock as a bold line within its 90 % band, gravel where it is likely (0.66 or more). "
         "Soundings near the section stand as broad columns of their most probable units, wells as narrow ones; "
         "an orange bar is an interpreter’s pick. A, B and C are dashed on the map above, read from west to east."
     )

@@ -26,7 +26,7 @@ def write_trust(results: Results) -> Markup:
         if not np.isfinite(crossed.measured - crossed.predicted).any():
             continue
         shown_crossed = _cross_validation_in_unit(results, crossed)
-        parts.append(element("h3", {}, f"Left out in turn: {crossed.title}"))
+        parts.append(element("h3", {}, f"Left out in turn: {shown_crossed.title}"))
         misfits = _misfit_table(shown_crossed)
         parts.append(element("div", {"class": "pair"}, draw_cross_validation(shown_crossed), misfits))
     return joined([*parts, _evidence_table(results)])
@@ -47,6 +47,7 @@ def _variogram_in_unit(results: Results, variogram: Variogram) -> Variogram:
 
 
 def _cross_validation_in_unit(results: Results, crossed: CrossValidation) -> CrossValidation:
+    crossed = without_logarithm(crossed)
     if crossed.unit != "m":
         return crossed
     metres = results.region.metres_per_length_unit
@@ -59,6 +60,21 @@ def _cross_validation_in_unit(results: Results, crossed: CrossValidation) -> Cro
     )
 
 
+def without_logarithm(crossed: CrossValidation) -> CrossValidation:
+    """What was kriged as a logarithm, as the quantity itself; its standard error to first order."""
+    if not crossed.unit.startswith("ln "):
+        return crossed
+    predicted = np.exp(crossed.predicted)
+    return attrs.evolve(
+        crossed,
+        title=crossed.title.removeprefix("Log ").capitalize(),
+        unit=crossed.unit.removeprefix("ln ").replace("ohm m", "Ω m"),
+        measured=np.exp(crossed.measured),
+        predicted=predicted,
+        standard_error=predicted * crossed.standard_error,
+    )
+
+
 def _variogram_words(variogram: Variogram, crs_unit: str) -> str:
     said = (
         f"{variogram.model}, nugget {variogram.nugget:.4g}, partial sill {variogram.partial_sill:.4g}, "
@@ -66,8 +82,8 @@ def _variogram_words(variogram: Variogram, crs_unit: str) -> str:
     )
     if variogram.ratio != 1.0:
         said += f" (line) and {variogram.ratio:.2f} times that across (dashed)"
-    said += f"; {variogram.n_data} data. Over each mark stands its number of pairs."
-    return f"{said} {variogram.remark}".strip()
+    remark = f"; {variogram.remark}" if variogram.remark else ""
+    return f"{said}; {variogram.n_data} data{remark}. Over each mark stands its number of pairs."
 
 
 def _misfit_table(crossed: CrossValidation) -> Markup:

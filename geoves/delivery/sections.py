@@ -30,6 +30,7 @@ from geoves.domain.tops import UnitColumn
 from geoves.domain.units import Role
 
 SAMPLES = 500
+LIKELY = 0.66  # a probability that is called likely on the pages and in the layer of the gravel's extent
 WIDTH = 900
 
 
@@ -191,13 +192,13 @@ def _foot(place: Place) -> float:
 
 
 def _gravel(results: Results, frame: Frame, x: FloatArray, rock: FloatArray, points: FloatArray) -> Markup:
-    """Gravel on bedrock where it is more likely than not."""
+    """Gravel on bedrock where it is likely."""
     thickness = results.stack.surfaces.get("deep_gravel_thickness")
     present = results.stack.surfaces.get("deep_gravel_probability")
     units = results.region.template.with_role(Role.DEEP_AQUIFER)
     if thickness is None or present is None or not units:
         return Markup("")
-    likely = sample_smoothly(results.stack.grid, present.estimate, points) >= 0.5
+    likely = sample_smoothly(results.stack.grid, present.estimate, points) >= LIKELY
     top = rock + sample_smoothly(results.stack.grid, thickness.estimate, points) / results.region.metres_per_length_unit
     fill = f"url(#unit-{results.region.template.codes.index(units[0].code)})"
     return element("g", {"fill": fill}, frame.band(x, rock, np.where(likely, top, np.nan), "section-gravel"))

@@ -9,7 +9,7 @@ from selenium.webdriver.common.action_chains import ActionChains
 from selenium.webdriver.common.by import By
 from selenium.webdriver.common.keys import Keys
 
-from geoves.delivery.map_data import control_points, encode_grid
+from geoves.delivery.map_data import control_points, encode_grid, thin_stack
 from geoves.delivery.map_page import write_map_page
 from geoves.domain.grids import Grid
 
@@ -120,6 +120,16 @@ def test_enter_on_the_map_asks_at_its_middle(opened):
     assert opened.run("return document.querySelectorAll('#answer li').length") == 3
 
 
+def test_support_is_said_before_the_numbers(opened):
+    """Larch 8 saw bedrock; beside it, 300 m away, the page says so, and farther off that nothing was measured."""
+    opened.driver.find_element(By.ID, "wanted").send_keys("502700 4600200", Keys.ENTER)
+    words = "return document.getElementById('answer').textContent"
+    assert "Measured nearby: rock was seen 300 m away." in opened.run(words)
+    opened.run("document.getElementById('wanted').value = ''")
+    opened.driver.find_element(By.ID, "wanted").send_keys("501800 4600200", Keys.ENTER)
+    assert "Estimated, not measured here: the nearest place that saw rock is 950 m away." in opened.run(words)
+
+
 @pytest.mark.parametrize("mode", ["both", "value", "width"])
 def test_every_surface_draws_in_every_mode(opened, mode):
     names = opened.run("return [...document.getElementById('surface').options].map(o => o.value)")
@@ -182,6 +192,21 @@ def test_hostile_names_stay_text(browser, hostile_results, tmp_path):
     assert browser.run("return document.title") == f"{hostile_results.region.name}: map"
     assert browser.run("return document.querySelectorAll('main img, aside img, main script, aside script').length") == 0
     assert browser.complaints() == []
+
+
+def test_a_heavy_grid_is_thinned_to_middles_of_cells(small_results):
+    stack = small_results.stack
+    coarse = thin_stack(stack, most=400)
+    grid, old = coarse.grid, stack.grid
+    every = round(grid.cell_size / old.cell_size)
+    assert every == 3
+    assert grid.n_rows * grid.n_columns <= 400
+    for row, column in ((0, 0), (5, 11), (15, 19)):
+        fine_row = int((old.north - grid.northing[row]) // old.cell_size)
+        fine_column = int((grid.easting[column] - old.west) // old.cell_size)
+        for name, surface in coarse.surfaces.items():
+            np.testing.assert_equal(surface.estimate[row, column], stack.surfaces[name].estimate[fine_row, fine_column])
+    assert thin_stack(stack) is stack
 
 
 def test_packed_grid_unpacks_to_within_half_a_step():

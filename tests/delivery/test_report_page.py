@@ -4,11 +4,14 @@ import time
 from concurrent.futures import ThreadPoolExecutor
 
 import attrs
+import numpy as np
 import pytest
 
 from geoves.delivery.cautions import list_cautions
 from geoves.delivery.report_answers import confidence_in_words
 from geoves.delivery.report_page import write_report_page
+from geoves.delivery.report_trust import without_logarithm
+from geoves.domain.grids import CrossValidation
 
 RECORD = {"versions": {"geoves": "0.1.0"}, "inputs": {"soundings.csv": "0" * 64}, "figures": [{"rmse": 6.123456}, {}]}
 
@@ -109,7 +112,24 @@ def test_confidence_counts_what_the_bands_held(small_results):
     """Misfits of 1, 2, 3, 4, 5, 6, 9 and 11 m: by hand the median is 4.5; bands of 1.645 times 6 m hold 7 of 8."""
     (said,) = confidence_in_words(small_results)
     assert "Half were met within 4.5 m" in said
-    assert "held 88%" in said
+    assert "held 88 %" in said
+
+
+def test_logarithms_are_told_as_percentages_and_drawn_as_lengths(small_results):
+    """The ln of 1.10 is a misfit of 10 %; the depth itself is its exponential."""
+    depth = np.array([40.0, 60.0, 80.0])
+    crossed = CrossValidation(
+        "Log depth of the basal contact", "ln m", ("a", "b", "c"), ("sounding",) * 3,
+        np.log(depth), np.log(1.10 * depth), np.full(3, 0.1),
+    )  # fmt: skip
+    stack = attrs.evolve(small_results.stack, cross_validations=(crossed,))
+    (said,) = confidence_in_words(attrs.evolve(small_results, stack=stack))
+    assert said.startswith("Depth of the basal contact: each of 3 places")
+    assert "Half were met within 10 %" in said
+    plain = without_logarithm(crossed)
+    assert (plain.title, plain.unit) == ("Depth of the basal contact", "m")
+    np.testing.assert_allclose(plain.measured, depth)
+    np.testing.assert_allclose(plain.standard_error, 0.11 * depth)
 
 
 def test_no_wells_no_axis_no_gravel_still_reads(small_results, tmp_path):

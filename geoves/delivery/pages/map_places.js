@@ -14,6 +14,9 @@ function symbol(shape) {
     draw("path", { d: shapes[shape].d, class: shapes[shape].style }));
 }
 
+const NEARBY = 500;     // m: within the width of a sounding's own spread
+const WELL_FAR = 5000;  // m: beyond it a well says little of this place
+
 const wellShape = (well) => known(well.rock) ? "rock" : "ended";
 
 function soundingSays({ status, depth }) {
@@ -68,7 +71,7 @@ function permitMarkers(map, open) {
   const grow = () => {
     const zoom = map.getZoom(), seen = map.getBounds();
     for (const { permit, dot } of dots) {
-      dot.setRadius(Math.min(7, Math.max(1.6, 1.6 + 0.9 * (zoom - 11))));
+      dot.setRadius(Math.min(7, Math.max(1.5, 1.5 + 0.9 * (zoom - 12))));
       const wanted = zoom >= 15 && map.hasLayer(group) && seen.contains(permit.at);
       if (wanted && !dot.getTooltip()) {
         dot.bindTooltip(named(permit.name), { permanent: true, direction: "right", className: "permit-name" });
@@ -113,12 +116,24 @@ function contourLabels(contours) {
   });
 }
 
+// How near the depth of rock is truly known: in words before the numbers.
+function supportWords(easting, northing) {
+  const near = nearestPlaces(easting, northing, Infinity);
+  const knows = near.find(({ kind, place }) => kind === "well" ? known(place.rock) : place.status === "seen");
+  const well = near.find(({ kind, place }) => kind === "well" && known(place.rock));
+  const first = !knows ? "Not known: no place here saw rock."
+    : knows.distance <= NEARBY ? `Measured nearby: rock was seen ${distanceWords(knows.distance)} away.`
+      : `Estimated, not measured here: the nearest place that saw rock is ${distanceWords(knows.distance)} away.`;
+  const far = !well || well.distance > WELL_FAR;
+  return far ? `${first} It rests on soundings alone: no well within ${distanceWords(WELL_FAR)} reached rock.` : first;
+}
+
 function restsOn(easting, northing, itself, openers) {
   const items = nearestPlaces(easting, northing, 3, itself).map(({ kind, place, distance }) => make("li", {},
     `${distanceWords(distance)}: ${kind} `,
     make("button", { class: "link", click: () => openers[kind](place) }, place.name),
     `, ${kind === "well" ? wellSays(place) : soundingSays(place)}`));
-  return [make("h3", {}, "What this rests on"), make("ul", {}, items)];
+  return [make("h3", {}, "What this rests on"), make("p", {}, supportWords(easting, northing)), make("ul", {}, items)];
 }
 
 function columnParts(easting, northing) {

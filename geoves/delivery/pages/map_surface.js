@@ -90,8 +90,7 @@ function cellPaint(surface, mode) {
   });
 }
 
-const quantityUnit = (surface) =>
-  ({ resistivity: "\u03a9 m", probability: "probability" })[surface.quantity] || region.unit.label;
+const quantityUnit = (surface) => surface.quantity === "resistivity" ? "\u03a9 m" : region.unit.label;
 
 // Value in the region's unit at a share of the ramp.
 function legendNumber(surface, value) {
@@ -101,7 +100,8 @@ function legendNumber(surface, value) {
 
 function legendTicks(surface) {
   const ends = surface.range.map((end) => legendNumber(surface, end));
-  const ticks = surface.quantity === "resistivity" ? logarithmicTicks(...ends) : evenTicks(...ends, 4);
+  const wanted = surface.quantity === "probability" ? 5 : 4;
+  const ticks = surface.quantity === "resistivity" ? logarithmicTicks(...ends) : evenTicks(...ends, wanted);
   return ticks.map((tick) => ({
     words: tickWords(tick),
     share: surface.quantity === "resistivity"
@@ -144,7 +144,8 @@ function drawLegend(surface, mode) {
   }
   const explained = both ? "Down: wider 90 % band, less sure. "
     : surface.doubt === null && mode !== "value" ? "A probability shows its own doubt. " : "";
-  const title = asWidth ? `${surface.title}: width of the 90 % band` : `${surface.title} (${quantityUnit(surface)})`;
+  const unit = surface.quantity === "probability" ? "" : ` (${quantityUnit(surface)})`;
+  const title = asWidth ? `${surface.title}: width of the 90 % band` : `${surface.title}${unit}`;
   const datum = surface.quantity === "elevation" ? ` Heights: ${region.datumName || "datum not declared"}.` : "";
   box.replaceChildren(make("h2", {}, title), figure,
     make("p", {}, `${explained}Hatched: no data near, or outside the region.${datum}`));

@@ -33,6 +33,7 @@ function writeTables(openers) {
       "90 % band", "gravel probability", `asked for (${unit})`], permits),
     make("h2", {}, "How heights and places are given"),
     make("p", {}, `Coordinates in ${region.crsName} (${region.crs}). `
+      + (described.everyCell > 1 ? `The rasters are finer: shown is one cell of ${described.everyCell} each way. ` : "")
       + `Heights: ${region.datumName || "datum not declared"}, in ${unit}. `
       + [...region.madeBy, region.useLimits].filter(Boolean).join(". ")),
   );
