@@ -39,7 +39,7 @@ class InversionOptions:
     segment_deviation: float = 0.05
     draws: int = 60
     fewest_readings: int = 5
-    block: int = 32
+    block: int = 16
     random_seed: int = 0
 
 

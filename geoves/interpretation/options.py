@@ -42,5 +42,5 @@ class InterpretationOptions:
     well_contact_error: float = 0.3
     well_relative_error: float = 0.01
     least_match: float = 80.0
-    block: int = 32
+    block: int = 16
     random_seed: int = 0

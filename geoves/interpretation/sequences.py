@@ -19,7 +19,7 @@ PART_THICKNESS = (2.0, 80.0)
 # The template's limits of a unit's depth are soft: one standard deviation beyond them, in natural logs.
 DEPTH_LIMIT_DEVIATION = 0.15
 # Factors on the prior's thicknesses that the search starts from.
-START_FACTORS = (0.4, 1.0, 2.5)
+START_FACTORS = (0.5, 1.8)
 SEGMENT_DEVIATION = 0.05
 # Sequences this much (nats) behind the best are not drawn from, and no Bayes factor is stated beyond it.
 LEAST_LOG_WEIGHT = 7.0
