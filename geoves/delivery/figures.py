@@ -166,7 +166,7 @@ def draw_columns(
             parts += [line(34, at, 146, at, "pick"), label(90, at - 4, f"pick: {pick.unit}", "halo", "middle")]
     if log is not None:
         parts.append(_well_log(down, log, template, unit, deepest))
-    width = 150 if log is None else 262
+    width = 156 if log is None else 262
     return drawing(width, HEIGHT, f"Units under {column.sounding} by probability", *parts)
 
 
@@ -186,16 +186,16 @@ def _stacked_layer(frame: Frame, shares: np.ndarray, depths: np.ndarray, templat
 
 
 def _bedrock_mark(frame: Frame, column: UnitColumn, metres: float) -> Markup:
-    """A bracket at the left as long as the 90 % band of the depth to bedrock; an arrow down where it is a bound."""
+    """A bracket at the right as long as the 90 % band of the depth to bedrock; an arrow down where it is a bound."""
     if not np.isfinite(column.bedrock_depth):
         return Markup("")
     if column.bedrock_status == "deeper_than":
         at = float(frame.y.pixel(column.bedrock_depth / metres))
-        arrow = f"M34 {at:.1f}v14m-4 -5l4 5l4 -5"
+        arrow = f"M148 {at:.1f}v14m-4 -5l4 5l4 -5"
         return element("path", {"d": arrow, "class": "bound"}, element("title", {}, "bedrock is deeper than this"))
     band = 1.645 * np.nan_to_num(column.bedrock_depth_error)
     top, at, bottom = frame.y.pixel((column.bedrock_depth + np.array([-band, 0.0, band])) / metres)
-    bracket = f"M37 {top:.1f}h-5V{bottom:.1f}h5M28 {at:.1f}h9"
+    bracket = f"M143 {top:.1f}h5V{bottom:.1f}h-5M143 {at:.1f}h9"
     return element("path", {"d": bracket, "class": "bound"}, element("title", {}, "bedrock, with its 90 % band"))
 
 

@@ -54,7 +54,7 @@ def _valley_length(results: Results) -> tuple[str, str, str]:
     supported = _supported_length(results)
     words = (
         f"of it {_far(results, main.length * metres)} in the main valley; {_far(results, supported)} of the whole lies "
-        f"within {_far(results, 1000.0)} of a sounding that saw bedrock or a well that reached it"
+        f"within 1 km of a sounding that saw bedrock or a well that reached it"
     )
     return asked, _far(results, float(axis.length.sum()) * metres), words
 

@@ -11,6 +11,8 @@ from geoves.delivery.markup import Markup, element, format_length, joined, place
 from geoves.domain.grids import CrossValidation, Variogram
 from geoves.domain.results import Results
 
+MODEL_WORDS = {"matern32": "Matérn 3/2"}
+
 
 def write_trust(results: Results) -> Markup:
     """Chapter 5: variograms with their pairs, left-out places, the largest misfits by name, what fed the surfaces."""
@@ -77,7 +79,8 @@ def without_logarithm(crossed: CrossValidation) -> CrossValidation:
 
 def _variogram_words(variogram: Variogram, crs_unit: str) -> str:
     said = (
-        f"{variogram.model}, nugget {variogram.nugget:.4g}, partial sill {variogram.partial_sill:.4g}, "
+        f"{MODEL_WORDS.get(variogram.model, variogram.model)}, nugget {variogram.nugget:.4g}, "
+        f"partial sill {variogram.partial_sill:.4g}, "
         f"practical length {variogram.length:,.0f} {crs_unit} towards {variogram.azimuth_deg:.0f}°"
     )
     if variogram.ratio != 1.0:

@@ -237,7 +237,8 @@ def draw_overview(results: Results) -> Markup:
     if results.survey.boundary is not None:
         parts += [_line(frame, one, "boundary") for one in lines_of([results.survey.boundary])]
     axis = results.layers.get("valley_axis")
-    parts += [_line(frame, one, "valley") for one in (() if axis is None else lines_of(axis.geometry))]
+    for one in () if axis is None else lines_of(axis.geometry):
+        parts += [_line(frame, one, "valley casing"), _line(frame, one, "valley")]
     for title, section in section_lines(results)[1:]:
         end = section.coords[0]
         at = float(frame.x.pixel(end[0])), float(frame.y.pixel(end[1]))
