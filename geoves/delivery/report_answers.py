@@ -52,9 +52,10 @@ def _valley_length(results: Results) -> tuple[str, str, str]:
     metres = results.region.crs_unit_metres
     main = main_axis(results)
     supported = _supported_length(results)
+    near = "1 km" if results.region.length_unit == "m" else "0.6 mi"
     words = (
         f"of it {_far(results, main.length * metres)} in the main valley; {_far(results, supported)} of the whole lies "
-        f"within 1 km of a sounding that saw bedrock or a well that reached it"
+        f"within {near} of a sounding that saw bedrock or a well that reached it"
     )
     return asked, _far(results, float(axis.length.sum()) * metres), words
 
