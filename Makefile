@@ -1,5 +1,5 @@
 # `make demo` and `make test` are all that a newcomer needs; each builds .venv where it is missing or stale.
-PYTHON ?= python3
+PYTHON ?= $(shell command -v python3.11 || echo python3)
 BIN := .venv/bin
 PIP := $(BIN)/python -m pip --quiet --disable-pip-version-check
 

@@ -30,8 +30,8 @@ class Region:
     """A region's settings. `crs` as typed; `crs_unit_metres` the length of its unit in m; cell_size in that unit.
 
     `settings` holds the tables for the steps ("inversion", "interpretation", "surfaces", ...) as typed.
-    `files` has the path of each input by its name ("soundings", "readings", ...); `typed_inputs` the same as typed, with
-    the sheet or layer after `#`; `input_length_units` those whose lengths are in another unit than length_unit.
+    `files` has the path of each input by its name ("soundings", "readings", ...); `typed_inputs` the same as typed,
+    with the sheet or layer after `#`; `input_length_units` those whose lengths are in another unit than length_unit.
     """
 
     name: str
