@@ -39,16 +39,20 @@ def check(region_path: Path, progress: Progress) -> Summary:
             _write_findings(report, error.findings)
         raise
     _write_findings(report, doubts)
-    counts = f"{len(survey.soundings)} soundings, {len(survey.wells)} wells, {len(survey.permits)} permits"
-    picks = f"{len(survey.picks)} picks; a grid of {grid.n_rows} rows and {grid.n_columns} columns"
+    counted = {"sounding": survey.soundings, "well": survey.wells, "permit": survey.permits, "pick": survey.picks}
+    counts = ", ".join(_count(len(things), word) for word, things in counted.items())
     return Summary(
         (
-            f"{region.name}: {counts}, {picks}.",
-            f"No faults, {len(doubts)} doubts{':' if doubts else '.'}",
+            f"{region.name}: {counts}; a grid of {grid.n_rows} rows and {grid.n_columns} columns.",
+            f"No faults, {_count(len(doubts), 'doubt')}{':' if doubts else '.'}",
             *_count_kinds(doubts),
             f"All of them: {report}",
         )
     )
+
+
+def _count(number: int, word: str) -> str:
+    return f"{number} {word}" if number == 1 else f"{number} {word}s"
 
 
 def _count_kinds(doubts: Sequence[Finding]) -> list[str]:
