@@ -16,8 +16,9 @@ import numpy as np
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted, LayeredModel, ModelEnsemble
 from geoves.domain.survey import Curve, Sounding, Survey
-from geoves.kernels import damped_steps, layered_earth
+from geoves.kernels import damped_steps, ensembles, layered_earth
 from geoves.kernels.damped_steps import Curves, Fit, Prior, Readings
+from geoves.kernels.smooth_model import fit_smooth, smooth_thickness
 
 Blocks = Iterable[Any]
 Map = Callable[[Callable[[Any], Any], Blocks], Iterable[Any]]
@@ -28,7 +29,8 @@ class InversionOptions:
     """least_layers, most_layers   the layer counts tried
     default_error           relative error of a reading that has none typed, before the survey's own is known
     segment_deviation       prior standard deviation of the log factor that a change of MN brings
-    draws                   models drawn from the linearised uncertainty of each sounding
+    draws                   models of each sounding's ensemble
+    smooth_layers           layers of the smooth model
     fewest_readings         used readings that a sounding needs
     block                   soundings inverted at a time: bounds the memory
     """
@@ -37,7 +39,8 @@ class InversionOptions:
     most_layers: int = 6
     default_error: float = 0.03
     segment_deviation: float = 0.05
-    draws: int = 60
+    draws: int = 200
+    smooth_layers: int = 30
     fewest_readings: int = 5
     block: int = 16
     random_seed: int = 0
@@ -47,6 +50,10 @@ class InversionOptions:
 RESISTIVITY_DEVIATION, THICKNESS_DEVIATION = 1.2, 1.0
 LEAST_RESISTIVITY, MOST_RESISTIVITY = 0.5, 50_000.0
 LEAST_THICKNESS, MOST_THICKNESS = 0.2, 500.0
+# Members weighed for each that is kept.
+SAMPLES_PER_DRAW = 5
+# A layer trades off where neither part is known within this (natural logs) and a combination twice as well.
+UNKNOWN, TWICE = 0.25, 2.0
 # Depth of the first and the last interface that the prior expects, in shortest and longest AB/2.
 FIRST_INTERFACE, LAST_INTERFACE = 0.8, 0.35
 # A change is felt where halving or doubling all below alters the curve by this chi-square.
@@ -81,13 +88,32 @@ def invert_block(
     """The blocky models of some soundings with a known noise."""
     curves = damped_steps.stack_curves([Readings(*s.curve.readings(noise)) for s in soundings], wavenumber)
     fits = _fit_all_counts(curves, soundings, options)
-    evidence = np.array([fit.log_evidence for fit in fits.values()])
+    evidence = np.array([fit.log_evidence for fit, _ in fits.values()])
     counts = list(fits)
     chosen = [counts[i] for i in np.argmax(evidence, axis=0)]
-    return [
-        _describe(sounding, curves.take(np.array([i])), fits[k].take(i), noise, options, -evidence[:, i])
-        for i, (sounding, k) in enumerate(zip(soundings, chosen, strict=True))
-    ]
+    results = []
+    for i, (sounding, k) in enumerate(zip(soundings, chosen, strict=True)):
+        row = np.array([i])
+        fit, prior = fits[k]
+        described = _describe(sounding, curves.take(row), (fit.take(i), prior.take(row)), noise, options)
+        criterion = dict(zip(counts, (-evidence[:, i]).tolist(), strict=True))
+        results.append(attrs.evolve(described, criterion=criterion))
+    smooth = _fit_smooth(curves, soundings, results, options)
+    return [attrs.evolve(one, smooth=model) for one, model in zip(results, smooth, strict=True)]
+
+
+def _fit_smooth(
+    curves: Curves, soundings: Sequence[Sounding], inverted: Sequence[Inverted], options: InversionOptions
+) -> list[LayeredModel]:
+    """The smoothest models of a block, the segments' factors taken out as the blocky models have them."""
+    observed = curves.log_apparent_resistivity.copy()
+    for i, (sounding, one) in enumerate(zip(soundings, inverted, strict=True)):
+        segment = sounding.curve.readings(one.noise)[4]
+        observed[i, : segment.size] -= np.log(one.segment_factor[segment])
+    spacing = np.concatenate([sounding.curve.half_spacing for sounding in soundings])
+    thickness = smooth_thickness(0.3 * float(spacing.min()), 0.7 * float(spacing.max()), options.smooth_layers)
+    resistivity, _ = fit_smooth(curves._replace(log_apparent_resistivity=observed), thickness)
+    return [LayeredModel(thickness, row) for row in resistivity]
 
 
 def _pooled_residuals(
@@ -119,19 +145,21 @@ def _survey_noise(residual: FloatArray, options: InversionOptions) -> float:
     return float(np.clip(spread, LEAST_NOISE_FACTOR * options.default_error, MOST_NOISE_FACTOR * options.default_error))
 
 
-def _fit_all_counts(curves: Curves, soundings: Sequence[Sounding], options: InversionOptions) -> dict[int, Fit]:
-    """The best fit of each layer count: from two schedules of interface depths, and from one layer fewer, split."""
-    fits: dict[int, Fit] = {}
+def _fit_all_counts(
+    curves: Curves, soundings: Sequence[Sounding], options: InversionOptions
+) -> dict[int, tuple[Fit, Prior]]:
+    """The best fit of each layer count with its prior: from two schedules of interface depths, and from one layer fewer, split."""
+    fits: dict[int, tuple[Fit, Prior]] = {}
     for k in range(options.least_layers, options.most_layers + 1):
         prior, starts = _prior_and_starts(curves, soundings, k, options)
         if k - 1 in fits:
-            starts.append(_split_thickest(fits[k - 1].unknowns, k - 1))
+            starts.append(_split_thickest(fits[k - 1][0].unknowns, k - 1))
         best: Fit | None = None
         for start in starts:
             fit = damped_steps.fit_layers(start, k, curves, prior)
             best = fit if best is None else damped_steps.keep_better(best, fit)
         if best is not None:
-            fits[k] = best
+            fits[k] = best, prior
     return fits
 
 
@@ -183,31 +211,29 @@ def _split_thickest(unknowns: FloatArray, k: int) -> FloatArray:
 
 
 def _describe(
-    sounding: Sounding, curves: Curves, fit: Fit, noise: float, options: InversionOptions, criterion: FloatArray
+    sounding: Sounding, curves: Curves, fitted: tuple[Fit, Prior], noise: float, options: InversionOptions
 ) -> Inverted:
-    """What one sounding says, from its curve (a batch of one) and its chosen fit (likewise)."""
-    curve = sounding.curve
+    """What one sounding says, from its curve, its chosen fit and that fit's prior, each a batch of one."""
+    curve, fit = sounding.curve, fitted[0]
     unknowns = fit.unknowns[0]
     k = (unknowns.size - curves.segments.shape[2] + 1) // 2
     n_model = 2 * k - 1
     model = LayeredModel(np.exp(unknowns[: k - 1]), np.exp(unknowns[k - 1 : n_model]))
     n_segments = np.unique(curve.segment[curve.used]).size
     n_used = int(np.sum(curve.used))
+    trusted = fit.robust_weight[0, :n_used]
     robust = np.zeros(curve.half_spacing.size)
-    robust[curve.used] = fit.robust_weight[0, :n_used]
+    robust[curve.used] = trusted
     residual = (curves.log_apparent_resistivity[0] - fit.log_response[0] - curves.segments[0] @ unknowns[n_model:])[
         :n_used
     ]
-    trusted = fit.robust_weight[0, :n_used]
     rms = float(np.sqrt(np.sum(trusted * residual**2) / np.sum(trusted)))
-    generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
-    draws = damped_steps.laplace_draws(fit, generator.standard_normal((options.draws, unknowns.size)))
-    draws = np.exp(np.clip(draws[:, :n_model], np.log(0.05), np.log(1e5)))
+    ensemble, log_covariance = _sample_models(sounding, curves, fitted, k, options)
     return Inverted(
         sounding=sounding.name,
         model=model,
-        ensemble=ModelEnsemble(draws[:, : k - 1], draws[:, k - 1 :], np.full(options.draws, 1.0 / options.draws)),
-        log_covariance=np.linalg.inv(fit.hessian[0])[:n_model, :n_model],
+        ensemble=ensemble,
+        log_covariance=log_covariance,
         segment_factor=np.concatenate([[1.0], np.exp(np.cumsum(unknowns[n_model : n_model + n_segments - 1]))]),
         predicted=layered_earth.response(
             layered_earth.response_weights(curve.half_spacing, curve.potential_half_spacing, curves.wavenumber),
@@ -218,10 +244,47 @@ def _describe(
         robust_weight=robust,
         rms_percent=100.0 * rms,
         noise=noise,
-        criterion=dict(enumerate(criterion.tolist(), options.least_layers)),
+        criterion={},
         investigated_depth=_investigated_depth(model, curves),
         remarks=_remarks(curve, trusted, rms, noise),
+        trade_offs=name_trade_offs(ensemble),
     )
+
+
+def _sample_models(
+    sounding: Sounding, curves: Curves, fitted: tuple[Fit, Prior], k: int, options: InversionOptions
+) -> tuple[ModelEnsemble, FloatArray]:
+    """Equally probable models about the fit, and the covariance of their logs."""
+    fit, prior = fitted
+    generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
+    members = ensembles.sample_importance(fit, k, curves, prior, SAMPLES_PER_DRAW * options.draws, generator)
+    rows = ensembles.resample(members.log_weight, options.draws, generator)
+    logs = members.unknowns[rows, : 2 * k - 1]
+    models = np.exp(logs)
+    even = np.full(options.draws, 1.0 / options.draws)
+    return ModelEnsemble(models[:, : k - 1], models[:, k - 1 :], even), np.atleast_2d(np.cov(logs, rowvar=False))
+
+
+def name_trade_offs(ensemble: ModelEnsemble) -> tuple[str, ...]:
+    """Which layers trade thickness for resistivity: S-equivalence where h/ρ is known, T-equivalence where h ρ is.
+
+    A layer trades off where neither its thickness nor its resistivity is known within UNKNOWN (standard deviation in
+    natural logs) and one of the two combinations is known at least TWICE as well as either.
+    """
+    said = []
+    for layer in range(ensemble.thickness.shape[1]):
+        thickness, resistivity = np.log(ensemble.thickness[:, layer]), np.log(ensemble.resistivity[:, layer])
+        apart = min(float(np.std(thickness)), float(np.std(resistivity)))
+        if apart < UNKNOWN:
+            continue
+        for sign, name, words in ((-1.0, "S", "conductance h/ρ"), (1.0, "T", "transverse resistance hρ")):
+            together = float(np.std(thickness + sign * resistivity))
+            if TWICE * together < apart:
+                said.append(
+                    f"layer {layer + 1}: {name}-equivalence, its {words} is known within {np.expm1(together):.0%}, "
+                    f"its thickness within {np.expm1(np.std(thickness)):.0%} only"
+                )
+    return tuple(said)
 
 
 def _remarks(curve: Curve, trusted: FloatArray, rms: float, noise: float) -> tuple[str, ...]:

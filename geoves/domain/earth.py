@@ -29,14 +29,31 @@ class ModelEnsemble:
     resistivity: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
     weight: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
 
+    @property
+    def top_depth(self) -> FloatArray:
+        """Depth of each layer's top, m (m, k)."""
+        return np.concatenate([np.zeros((len(self.thickness), 1)), np.cumsum(self.thickness, axis=1)], axis=1)
+
+    @property
+    def conductance(self) -> FloatArray:
+        """Longitudinal conductance S of each layer above the half-space, siemens (m, k-1)."""
+        return np.asarray(self.thickness / self.resistivity[:, :-1])
+
+    @property
+    def transverse_resistance(self) -> FloatArray:
+        """Transverse resistance T of each layer above the half-space, ohm m² (m, k-1)."""
+        return np.asarray(self.thickness * self.resistivity[:, :-1])
+
 
 @attrs.frozen
 class Inverted:
     """What one curve says by itself.
 
     model            the blocky model that the criterion chose
-    ensemble         models drawn from its linearised uncertainty
-    log_covariance   of (ln thickness, ln resistivity), (2k-1, 2k-1)
+    ensemble         models of its layer count that fit within the errors, equally probable
+    smooth           the smoothest model that fits: many thin layers, as alike as the readings allow
+    log_covariance   of (ln thickness, ln resistivity) over the ensemble, (2k-1, 2k-1)
+    trade_offs       in words: which combinations the curve knows although it does not know their parts
     segment_factor   factor on each segment's apparent resistivity, 1 for the first, (segments,)
     predicted        apparent resistivity of the model at each reading, without factors, ohm m (n,)
     robust_weight    0 to 1 for each reading: near 0 for what the robust misfit set aside (n,)
@@ -59,6 +76,8 @@ class Inverted:
     criterion: Mapping[int, float]
     investigated_depth: float
     remarks: tuple[str, ...] = ()
+    smooth: LayeredModel | None = None
+    trade_offs: tuple[str, ...] = ()
 
     @property
     def n_layers(self) -> int:

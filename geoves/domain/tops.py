@@ -3,6 +3,7 @@
 from typing import Literal
 
 import attrs
+import numpy as np
 
 from geoves.domain.arrays import FloatArray, by_value, floats, shape
 from geoves.domain.survey import Pick
@@ -71,6 +72,11 @@ class UnitColumn:
     bedrock_status    what the curve says of bedrock; `bedrock_depth` m with `bedrock_depth_error` m for "seen" and
                       "not_distinct" (NaN where it says nothing), the bound for "deeper_than"
     sentence          in words: what is resolved and what is not
+    profile_depth     edges of slices of depth, m (d+1,), and in `profile` (d, units) each unit's probability there
+    basal_depth       5, 50 and 95 % quantiles of the depth of the basal contact, m (3,), NaN where nothing is known
+    gravel_probability  of at least 1 m of basal gravel; gravel_limit m: as much of it could hide unseen on this rock
+    base_contrast     natural log of rock's resistivity over that of what lies on it, from the draws that reach it
+    picks             the interpreter's decisions here; `pick_opinions` what the curve says of each, in words
     """
 
     sounding: str
@@ -82,6 +88,13 @@ class UnitColumn:
     bedrock_depth_error: float
     sentence: str
     picks: tuple[Pick, ...] = ()
+    pick_opinions: tuple[str, ...] = ()
+    profile_depth: FloatArray = attrs.field(factory=lambda: np.empty(0), converter=floats, eq=by_value, repr=shape)
+    profile: FloatArray = attrs.field(factory=lambda: np.empty((0, 0)), converter=floats, eq=by_value, repr=shape)
+    basal_depth: FloatArray = attrs.field(factory=lambda: np.full(3, np.nan), converter=floats, eq=by_value, repr=shape)
+    gravel_probability: float = float("nan")
+    gravel_limit: float = float("nan")
+    base_contrast: float = float("nan")
 
 
 @attrs.frozen

@@ -123,7 +123,7 @@ class _State(NamedTuple):
     robust_weight: Floats
 
 
-def _robust_misfit(residual: Floats, deviation: Floats) -> tuple[Floats, Floats, Floats]:
+def robust_misfit(residual: Floats, deviation: Floats) -> tuple[Floats, Floats, Floats]:
     """Minus log density (b,) of the log residuals (b, n), the probability that each is no outlier, and its weight."""
     known = np.isfinite(deviation)
     narrow = np.where(known, deviation, 1.0)
@@ -149,7 +149,7 @@ def objective(unknowns: Floats, n_layers: int, curves: Curves, prior: Prior) -> 
     apparent = response(curves.weights, curves.wavenumber, model[:, : k - 1], model[:, k - 1 :])
     factors = np.matmul(curves.segments, unknowns[:, 2 * k - 1 :, None])[..., 0]
     residual = curves.log_apparent_resistivity - np.log(apparent) - factors
-    misfit, _, _ = _robust_misfit(residual, np.broadcast_to(curves.deviation, residual.shape))
+    misfit, _, _ = robust_misfit(residual, np.broadcast_to(curves.deviation, residual.shape))
     return np.asarray(misfit + _prior_misfit(unknowns, prior))
 
 
@@ -162,7 +162,7 @@ def _evaluate(unknowns: Floats, n_layers: int, curves: Curves, prior: Prior) -> 
     log_response = np.log(apparent)
     factors = np.matmul(curves.segments, unknowns[:, 2 * k - 1 :, None])[..., 0]
     residual = curves.log_apparent_resistivity - log_response - factors
-    misfit, robust_weight, weight = _robust_misfit(residual, curves.deviation)
+    misfit, robust_weight, weight = robust_misfit(residual, curves.deviation)
 
     jacobian = np.concatenate([sensitivity, curves.segments], axis=2)
     weighted = jacobian * weight[..., None]

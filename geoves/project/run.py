@@ -26,9 +26,10 @@ from geoves.layers import derive_layers
 from geoves.project import provenance
 from geoves.project.engines import Map, open_engine, watched
 from geoves.project.findings import name_inputs
+from geoves.project.inputs import read_inputs
 from geoves.project.progress import Progress, SilentProgress, Summary
-from geoves.project.settings import Settings, read_settings
-from geoves.reading import fingerprint_files, read_region, read_survey
+from geoves.project.settings import Settings
+from geoves.reading import fingerprint_files
 from geoves.surfaces import build_surfaces
 
 
@@ -49,9 +50,7 @@ def run(region_path: Path, out: Path | None = None, progress: Progress | None = 
 def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, Any]]:
     """Everything that the delivery is written from, and the record of how it came about."""
     with _step(progress, "Reading the tables"):
-        region = read_region(region_path)
-        settings = read_settings(region)
-        survey, grid = read_survey(region)
+        region, settings, survey, grid = read_inputs(region_path)
         survey = prepare_curves(survey, settings.curves)
         record = provenance.make_record(region, settings, fingerprint_files(region))
     template = region.template
