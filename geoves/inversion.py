@@ -126,14 +126,12 @@ def _pooled_residuals(
         invert_block(soundings, options=options, wavenumber=wavenumber, noise=options.default_error),
         strict=True,
     ):
-        curve = sounding.curve
-        factor = inverted.segment_factor[np.unique(curve.segment, return_inverse=True)[1]]
-        with np.errstate(invalid="ignore", divide="ignore"):
-            residual = np.log(curve.apparent_resistivity / (inverted.predicted * factor))
-        untyped = curve.used & np.isnan(curve.relative_error)
-        n_used = int(np.sum(curve.used))
+        used = sounding.curve.used
+        _, _, apparent, _, segment = sounding.curve.readings(inverted.noise)
+        residual = np.log(apparent / (inverted.predicted[used] * inverted.segment_factor[segment]))
+        untyped = np.isnan(sounding.curve.relative_error[used])
         taken = 2 * inverted.n_layers - 1 + inverted.segment_factor.size - 1
-        pooled.append(residual[untyped] * np.sqrt(n_used / max(n_used - taken, 1)))
+        pooled.append(residual[untyped] * np.sqrt(apparent.size / max(apparent.size - taken, 1)))
     return np.concatenate(pooled)
 
 
@@ -148,7 +146,7 @@ def _survey_noise(residual: FloatArray, options: InversionOptions) -> float:
 def _fit_all_counts(
     curves: Curves, soundings: Sequence[Sounding], options: InversionOptions
 ) -> dict[int, tuple[Fit, Prior]]:
-    """The best fit of each layer count with its prior: from two schedules of interface depths, and from one layer fewer, split."""
+    """The best fit of each layer count, with its prior: from two schedules of depths and from one layer less, split."""
     fits: dict[int, tuple[Fit, Prior]] = {}
     for k in range(options.least_layers, options.most_layers + 1):
         prior, starts = _prior_and_starts(curves, soundings, k, options)

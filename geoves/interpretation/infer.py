@@ -108,8 +108,9 @@ def _interpret_block(
         half_space = sequences.best_half_space(admissible, own_fits, own_weight)
         bound = soundings.excluded_depth(half_space, own_curve, template, options)
         contact = soundings.find_basal_contact(draws, bound, template, options)
-        contact = soundings.apply_picks(contact, picks.get(sounding.name, []), template, generator)
-        results.append(_read_sounding(sounding, inverted, draws, contact, template, options))
+        results.append(
+            _read_sounding(sounding, inverted, draws, contact, picks.get(sounding.name, []), template, options)
+        )
     return results
 
 
@@ -117,10 +118,15 @@ def _read_sounding(
     sounding: Sounding,
     inverted: Inverted,
     draws: sequences.ColumnDraws,
-    contact: soundings.BasalContact,
+    inferred: soundings.BasalContact,
+    picks: Sequence[Pick],
     template: Template,
     options: InterpretationOptions,
 ) -> PlaceReading:
+    """What a sounding adds, its inferred contact overruled by the interpreter's picks."""
+    generator = np.random.default_rng([options.random_seed, *sounding.name.encode(), len(picks)])
+    contact = soundings.apply_picks(inferred, picks, template, generator)
+    opinions = soundings.weigh_picks(inferred, picks, template)
     decided = contact.picks[-1] if contact.picks else None
     source = f"pick by {decided.interpreter}: {decided.reason}" if decided else "curve"
     thicknesses: list[Thickness] = []
@@ -132,7 +138,7 @@ def _read_sounding(
         if template.with_role(role) and known.size:
             thicknesses += soundings.role_thickness(sounding, known, role, source)
     return PlaceReading(
-        column=soundings.read_column(inverted, draws, contact, template),
+        column=soundings.read_column(inverted, draws, contact, template, opinions),
         tops=tuple(soundings.contact_tops(sounding, contact, template, options)),
         thicknesses=tuple(thicknesses),
         shallow_resistivities=tuple(soundings.shallow_resistivity(sounding, draws, template)),

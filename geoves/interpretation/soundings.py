@@ -1,9 +1,11 @@
 """One sounding's draws as tops, thicknesses and words."""
 
 from collections.abc import Sequence
+from itertools import pairwise
 
 import attrs
 import numpy as np
+from scipy.special import ndtr
 
 from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.earth import Inverted
@@ -198,8 +200,10 @@ def shallow_resistivity(sounding: Sounding, draws: ColumnDraws, template: Templa
     return rows[:1]
 
 
-def read_column(inverted: Inverted, draws: ColumnDraws, contact: BasalContact, template: Template) -> UnitColumn:
-    """The layers of the blocky model, each with the probability of every unit over its stretch of depth."""
+def read_column(
+    inverted: Inverted, draws: ColumnDraws, contact: BasalContact, template: Template, opinions: tuple[str, ...]
+) -> UnitColumn:
+    """The layers of the blocky model, and the ground slice by slice, each with the probability of every unit."""
     top = inverted.model.top_depth
     bottom = np.append(top[1:], max(1.5 * top[-1], inverted.investigated_depth, 1.0))
     share = np.array([_unit_share(draws.thickness, a, b) for a, b in zip(top, bottom, strict=True)])
@@ -211,6 +215,9 @@ def read_column(inverted: Inverted, draws: ColumnDraws, contact: BasalContact, t
     bounded = contact.status == "deeper_than"
     depth = contact.bound if bounded else (float(np.mean(rock)) if rock.size else np.nan)
     error = np.nan if bounded or not rock.size else float(np.std(rock))
+    deepest = max(10.0, contact.bound, *(np.quantile(rock, [0.95]) if rock.size and not bounded else [0.0]))
+    edges = np.linspace(0.0, PROFILE_MARGIN * deepest, PROFILE_SLICES + 1)
+    known = rock.size > 0 and not bounded
     return UnitColumn(
         sounding=inverted.sounding,
         unit=tuple(template.codes[unit] for unit in best),
@@ -221,7 +228,45 @@ def read_column(inverted: Inverted, draws: ColumnDraws, contact: BasalContact, t
         bedrock_depth_error=error,
         sentence=_say(contact, inverted),
         picks=contact.picks,
+        pick_opinions=opinions,
+        profile_depth=edges,
+        profile=_profile(draws, contact, template, edges),
+        basal_depth=np.quantile(contact.depth, [0.05, 0.5, 0.95]) if known else np.full(3, np.nan),
+        gravel_probability=float(np.mean(contact.gravel >= PRESENT)) if known else np.nan,
+        gravel_limit=float(np.quantile(contact.gravel, 0.95)) if known else np.nan,
+        base_contrast=_base_contrast(draws, template),
     )
+
+
+def _profile(draws: ColumnDraws, contact: BasalContact, template: Template, edges: FloatArray) -> FloatArray:
+    """Probability (d, u) of each unit in slices of depth; where the interpreter decided, by the decided contact."""
+    thickness = draws.thickness
+    if any(pick.status != "below" for pick in contact.picks) and contact.depth.size:
+        thickness = _decided_columns(draws, contact, template)
+    return np.array([_unit_share(thickness, a, b) for a, b in pairwise(edges)])
+
+
+def _decided_columns(draws: ColumnDraws, contact: BasalContact, template: Template) -> FloatArray:
+    """Columns (m, u) whose upper units are stretched to end at the decided contact, the decided gravel under them."""
+    deep, rock = role_mask(template, Role.DEEP_AQUIFER), role_mask(template, Role.BEDROCK)
+    rows = np.arange(contact.depth.size) % len(draws.thickness)
+    upper = np.where(deep | rock, 0.0, np.nan_to_num(draws.thickness[rows]))
+    total = upper.sum(axis=1)
+    columns = upper * (contact.depth / np.where(total > 0, total, 1.0))[:, None]
+    columns[:, np.flatnonzero(deep)[:1]] = contact.gravel[:, None]
+    columns[:, rock] = np.nan
+    return np.asarray(columns)
+
+
+def _base_contrast(draws: ColumnDraws, template: Template) -> float:
+    """Mean log ratio of rock's resistivity to that of the unit on it, over the draws that reach it."""
+    rock = int(np.flatnonzero(role_mask(template, Role.BEDROCK))[0])
+    reached = draws.log_resistivity[draws.reaches]
+    if not len(reached):
+        return np.nan
+    above = ~np.isnan(reached[:, :rock])
+    last = rock - 1 - np.argmax(above[:, ::-1], axis=1)
+    return float(np.mean(reached[:, rock] - reached[np.arange(len(reached)), last]))
 
 
 def _unit_share(thickness: FloatArray, top: float, bottom: float) -> FloatArray:
@@ -230,6 +275,50 @@ def _unit_share(thickness: FloatArray, top: float, bottom: float) -> FloatArray:
     base = np.cumsum(h, axis=1)
     inside = np.clip(np.minimum(base, bottom) - np.maximum(base - h, top), 0.0, None)
     return np.asarray(np.mean(inside, axis=0) / (bottom - top))
+
+
+def weigh_picks(contact: BasalContact, picks: Sequence[Pick], template: Template) -> tuple[str, ...]:
+    """What the curve, before the picks were applied, says of each pick that speaks of the basal contact or the rock."""
+    roles = {unit.code: unit.role for unit in template.units}
+    return tuple(_weigh_pick(contact, pick, roles[pick.unit]) for pick in picks if roles[pick.unit] in _BASAL)
+
+
+_BASAL = (Role.DEEP_AQUIFER, Role.BEDROCK)
+
+
+def _weigh_pick(contact: BasalContact, pick: Pick, role: Role) -> str:
+    said = f"{pick.unit} {pick.status}" + ("" if pick.depth is None else f" {pick.depth:g} m")
+    if contact.status == "deeper_than":
+        against = pick.status == "at" and pick.depth is not None and pick.depth < contact.bound
+        return f"{said}: the curve " + (
+            f"speaks against it, it would have noticed the contact above {contact.bound:.0f} m"
+            if against
+            else "does not reach it and has no say"
+        )
+    depth = contact.rock if role is Role.BEDROCK else contact.depth
+    if not depth.size:
+        return f"{said}: the curve has no say"
+    if pick.status == "absent":
+        chance = float(np.mean(contact.gravel < PRESENT))
+        return f"{said}: the curve gives it probability {chance:.2f}"
+    if pick.depth is None:
+        return f"{said}: the curve has no say"
+    if pick.status == "below":
+        chance = float(np.mean(depth > pick.depth))
+        return f"{said}: the curve gives it probability {chance:.2f}" + (AGAINST if chance < CONTRADICTED else "")
+    spread = float(np.hypot(np.std(np.log(depth)), (pick.depth_error or 0.05 * pick.depth) / pick.depth))
+    away = (np.log(pick.depth) - float(np.mean(np.log(depth)))) / spread
+    chance = float(2.0 * ndtr(-abs(away)))
+    return (
+        f"{said}: the curve alone would say {np.median(depth):.0f} m; "
+        f"the difference is {abs(away):.1f} of its standard deviations" + (AGAINST if chance < CONTRADICTED else "")
+    )
+
+
+# A pick that the curve holds to be less probable than this is flagged; it is never overruled.
+CONTRADICTED, AGAINST = 0.01, " and speaks against the pick"
+# Slices of depth of a column's profile, and how far below the contact it goes.
+PROFILE_SLICES, PROFILE_MARGIN = 60, 1.3
 
 
 def _say(contact: BasalContact, inverted: Inverted) -> str:

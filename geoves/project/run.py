@@ -50,8 +50,9 @@ def run(region_path: Path, out: Path | None = None, progress: Progress | None = 
 def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, Any]]:
     """Everything that the delivery is written from, and the record of how it came about."""
     with _step(progress, "Reading the tables"):
-        region, settings, survey, grid = read_inputs(region_path)
-        survey = prepare_curves(survey, settings.curves)
+        inputs = read_inputs(region_path)
+        region, settings, grid = inputs.region, inputs.settings, inputs.grid
+        survey = prepare_curves(inputs.survey, settings.curves)
         record = provenance.make_record(region, settings, fingerprint_files(region))
     template = region.template
     n_blocks = ceil(len(survey.soundings) / settings.inversion.block)
