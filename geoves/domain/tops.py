@@ -63,6 +63,23 @@ class ShallowResistivity:
 
 
 @attrs.frozen
+class PickOpinion:
+    """What a curve, before it was overruled, says of an interpreter's pick.
+
+    probability  that the pick gives it: of "absent" and "below" as such, of "at" that a depth as far off or farther
+                 from `inferred_depth` (m, median) would be decided by chance; NaN where the curve has no say
+    bound        m: the curve excludes a contact above it; 0 where it excludes nothing
+    against      whether the curve speaks against the pick; it is never overruled
+    """
+
+    pick: Pick
+    probability: float
+    inferred_depth: float
+    bound: float
+    against: bool
+
+
+@attrs.frozen
 class UnitColumn:
     """One sounding read through the template.
 
@@ -76,7 +93,7 @@ class UnitColumn:
     basal_depth       5, 50 and 95 % quantiles of the depth of the basal contact, m (3,), NaN where nothing is known
     gravel_probability  of at least 1 m of basal gravel; gravel_limit m: as much of it could hide unseen on this rock
     base_contrast     natural log of rock's resistivity over that of what lies on it, from the draws that reach it
-    picks             the interpreter's decisions here; `pick_opinions` what the curve says of each, in words
+    picks             the interpreter's decisions here; `pick_opinions` what the curve says of each
     """
 
     sounding: str
@@ -88,7 +105,7 @@ class UnitColumn:
     bedrock_depth_error: float
     sentence: str
     picks: tuple[Pick, ...] = ()
-    pick_opinions: tuple[str, ...] = ()
+    pick_opinions: tuple[PickOpinion, ...] = ()
     profile_depth: FloatArray = attrs.field(factory=lambda: np.empty(0), converter=floats, eq=by_value, repr=shape)
     profile: FloatArray = attrs.field(factory=lambda: np.empty((0, 0)), converter=floats, eq=by_value, repr=shape)
     basal_depth: FloatArray = attrs.field(factory=lambda: np.full(3, np.nan), converter=floats, eq=by_value, repr=shape)

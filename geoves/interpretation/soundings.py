@@ -10,7 +10,7 @@ from scipy.special import ndtr
 from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.earth import Inverted
 from geoves.domain.survey import Pick, Sounding
-from geoves.domain.tops import BedrockStatus, ShallowResistivity, Thickness, Top, UnitColumn
+from geoves.domain.tops import BedrockStatus, PickOpinion, ShallowResistivity, Thickness, Top, UnitColumn
 from geoves.domain.units import Z_95, Role, Template
 from geoves.interpretation.options import InterpretationOptions
 from geoves.interpretation.sequences import ColumnDraws, HalfSpace
@@ -201,7 +201,7 @@ def shallow_resistivity(sounding: Sounding, draws: ColumnDraws, template: Templa
 
 
 def read_column(
-    inverted: Inverted, draws: ColumnDraws, contact: BasalContact, template: Template, opinions: tuple[str, ...]
+    inverted: Inverted, draws: ColumnDraws, contact: BasalContact, template: Template, opinions: tuple[PickOpinion, ...]
 ) -> UnitColumn:
     """The layers of the blocky model, and the ground slice by slice, each with the probability of every unit."""
     top = inverted.model.top_depth
@@ -277,46 +277,32 @@ def _unit_share(thickness: FloatArray, top: float, bottom: float) -> FloatArray:
     return np.asarray(np.mean(inside, axis=0) / (bottom - top))
 
 
-def weigh_picks(contact: BasalContact, picks: Sequence[Pick], template: Template) -> tuple[str, ...]:
+def weigh_picks(contact: BasalContact, picks: Sequence[Pick], template: Template) -> tuple[PickOpinion, ...]:
     """What the curve, before the picks were applied, says of each pick that speaks of the basal contact or the rock."""
     roles = {unit.code: unit.role for unit in template.units}
-    return tuple(_weigh_pick(contact, pick, roles[pick.unit]) for pick in picks if roles[pick.unit] in _BASAL)
+    basal = (Role.DEEP_AQUIFER, Role.BEDROCK)
+    return tuple(_weigh_pick(contact, pick, roles[pick.unit]) for pick in picks if roles[pick.unit] in basal)
 
 
-_BASAL = (Role.DEEP_AQUIFER, Role.BEDROCK)
-
-
-def _weigh_pick(contact: BasalContact, pick: Pick, role: Role) -> str:
-    said = f"{pick.unit} {pick.status}" + ("" if pick.depth is None else f" {pick.depth:g} m")
-    if contact.status == "deeper_than":
-        against = pick.status == "at" and pick.depth is not None and pick.depth < contact.bound
-        return f"{said}: the curve " + (
-            f"speaks against it, it would have noticed the contact above {contact.bound:.0f} m"
-            if against
-            else "does not reach it and has no say"
-        )
+def _weigh_pick(contact: BasalContact, pick: Pick, role: Role) -> PickOpinion:
     depth = contact.rock if role is Role.BEDROCK else contact.depth
-    if not depth.size:
-        return f"{said}: the curve has no say"
+    if contact.status == "deeper_than" or not depth.size:
+        excluded = pick.status == "at" and pick.depth is not None and pick.depth < contact.bound
+        return PickOpinion(pick, np.nan, np.nan, contact.bound, excluded)
+    probability = np.nan
     if pick.status == "absent":
-        chance = float(np.mean(contact.gravel < PRESENT))
-        return f"{said}: the curve gives it probability {chance:.2f}"
-    if pick.depth is None:
-        return f"{said}: the curve has no say"
-    if pick.status == "below":
-        chance = float(np.mean(depth > pick.depth))
-        return f"{said}: the curve gives it probability {chance:.2f}" + (AGAINST if chance < CONTRADICTED else "")
-    spread = float(np.hypot(np.std(np.log(depth)), (pick.depth_error or 0.05 * pick.depth) / pick.depth))
-    away = (np.log(pick.depth) - float(np.mean(np.log(depth)))) / spread
-    chance = float(2.0 * ndtr(-abs(away)))
-    return (
-        f"{said}: the curve alone would say {np.median(depth):.0f} m; "
-        f"the difference is {abs(away):.1f} of its standard deviations" + (AGAINST if chance < CONTRADICTED else "")
-    )
+        probability = float(np.mean(contact.gravel < PRESENT))
+    elif pick.status == "below" and pick.depth is not None:
+        probability = float(np.mean(depth > pick.depth))
+    elif pick.depth is not None:
+        spread = np.hypot(np.std(np.log(depth)), (pick.depth_error or 0.05 * pick.depth) / pick.depth)
+        away = abs(np.log(pick.depth) - np.mean(np.log(depth))) / spread
+        probability = float(2.0 * ndtr(-away))
+    return PickOpinion(pick, probability, float(np.median(depth)), contact.bound, probability < CONTRADICTED)
 
 
 # A pick that the curve holds to be less probable than this is flagged; it is never overruled.
-CONTRADICTED, AGAINST = 0.01, " and speaks against the pick"
+CONTRADICTED = 0.01
 # Slices of depth of a column's profile, and how far below the contact it goes.
 PROFILE_SLICES, PROFILE_MARGIN = 60, 1.3
 
