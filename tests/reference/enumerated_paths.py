@@ -1,6 +1,6 @@
 """A hidden Markov chain by brute force: every path written out, its probability multiplied up link by link."""
 
-from itertools import product
+from itertools import pairwise, product
 from math import prod
 
 import numpy as np
@@ -12,12 +12,12 @@ LIKELIHOOD = np.array([[0.5, 0.1], [0.4, 0.3], [0.1, 0.6]])
 
 
 def enumerate_paths(likelihood, start, transition):
-    """All paths as a mapping of unit tuples to joint probabilities; likelihood (k, u), start (u,), transition (u, u)."""
+    """Joint probability by path (a tuple of units); likelihood (k, u), start (u,), transition (u, u)."""
     k, n_units = likelihood.shape
     return {
         path: start[path[0]]
         * prod(likelihood[i, unit] for i, unit in enumerate(path))
-        * prod(transition[a, b] for a, b in zip(path, path[1:], strict=False))
+        * prod(transition[a, b] for a, b in pairwise(path))
         for path in product(range(n_units), repeat=k)
     }
 
