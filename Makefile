@@ -31,5 +31,8 @@ benchmark: .venv/installed-test
 	$(PIP) install --constraint constraints.txt --editable '.[test]'
 	touch .venv/installed $@
 
+docs-figures: .venv/installed-test
+	$(BIN)/python docs/figures/draw_figures.py
+
 clean:
 	rm -rf .venv demo_region/delivery build *.egg-info
