@@ -127,6 +127,20 @@ class WellReading:
 
 
 @attrs.frozen
+class UnitCalibration:
+    """What the survey's curves made of a unit's range in the template: ohm m, central 90 %, before and after.
+
+    soundings  how many soundings' worth of the unit's presence spoke; `used` whether they were enough
+    """
+
+    unit: str
+    before: tuple[float, float]
+    after: tuple[float, float]
+    soundings: float
+    used: bool
+
+
+@attrs.frozen
 class Interpretation:
     """Every place read through the template: what is handed to the surfaces."""
 
@@ -136,4 +150,5 @@ class Interpretation:
     thicknesses: tuple[Thickness, ...]
     shallow_resistivities: tuple[ShallowResistivity, ...]
     unmapped_words: tuple[str, ...] = ()
+    calibration: tuple[UnitCalibration, ...] = ()
     remarks: tuple[str, ...] = ()

@@ -1,6 +1,6 @@
 """The step itself: all places of a survey, block by block."""
 
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from functools import partial
 from itertools import chain
 from typing import Any
@@ -11,9 +11,18 @@ import numpy as np
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
 from geoves.domain.survey import Pick, Sounding, Survey, Well
-from geoves.domain.tops import Interpretation, ShallowResistivity, Thickness, Top, UnitColumn, WellReading
+from geoves.domain.tops import (
+    Interpretation,
+    ShallowResistivity,
+    Thickness,
+    Top,
+    UnitCalibration,
+    UnitColumn,
+    WellReading,
+)
 from geoves.domain.units import Role, Template
 from geoves.interpretation import sequences, soundings, wells
+from geoves.interpretation.calibration import calibrate_template
 from geoves.interpretation.options import InterpretationOptions
 from geoves.kernels import damped_steps, layered_earth
 from geoves.kernels.damped_steps import Readings
@@ -51,14 +60,21 @@ def interpret(
     logged = [_interpret_well(well, picks.get(well.name, []), template, options) for well in survey.wells]
     presence = _presence_at_wells(logged, template, options)
     readings: list[PlaceReading] = []
+    calibration: tuple[UnitCalibration, ...] = ()
     if pairs:
         wavenumber = layered_earth.shared_wavenumbers(
             (s.curve.half_spacing, s.curve.potential_half_spacing) for s, _ in pairs
         )
+        blocks = [pairs[i : i + options.block] for i in range(0, len(pairs), options.block)]
+        if options.calibrate:
+            sample = partial(
+                _sample_block, template=template, presence=presence, options=options, wavenumber=wavenumber
+            )
+            drawn = list(chain.from_iterable(map(sample, blocks)))
+            template, calibration = calibrate_template(template, drawn, options.fewest_to_calibrate)
         work = partial(
             _interpret_block, picks=picks, template=template, presence=presence, options=options, wavenumber=wavenumber
         )
-        blocks = [pairs[i : i + options.block] for i in range(0, len(pairs), options.block)]
         readings += chain.from_iterable(map(work, blocks))
     readings += logged
     words = tuple(chain.from_iterable(reading.well_readings for reading in readings))
@@ -68,6 +84,7 @@ def interpret(
         tops=tuple(chain.from_iterable(reading.tops for reading in readings)),
         thicknesses=tuple(chain.from_iterable(reading.thicknesses for reading in readings)),
         shallow_resistivities=tuple(chain.from_iterable(r.shallow_resistivities for r in readings)),
+        calibration=calibration,
         unmapped_words=tuple(sorted({word.description for word in words if word.unit is None})),
     )
 
@@ -86,6 +103,39 @@ def _presence_at_wells(
     return presence
 
 
+def _sample_block(
+    pairs: Sequence[tuple[Sounding, Inverted]],
+    *,
+    template: Template,
+    presence: FloatArray,
+    options: InterpretationOptions,
+    wavenumber: FloatArray,
+) -> list[FloatArray]:
+    """Log resistivities (m, u) of the columns drawn for each sounding, for the calibration."""
+    weighed = _weigh_block(pairs, template, presence, options, wavenumber)
+    return [draws.log_resistivity for draws, _ in weighed]
+
+
+def _weigh_block(
+    pairs: Sequence[tuple[Sounding, Inverted]],
+    template: Template,
+    presence: FloatArray,
+    options: InterpretationOptions,
+    wavenumber: FloatArray,
+) -> Iterator[tuple[sequences.ColumnDraws, float]]:
+    """Columns drawn for each sounding of a block, and the depth above which basal material is excluded."""
+    curves = damped_steps.stack_curves([Readings(*s.curve.readings(one.noise)) for s, one in pairs], wavenumber)
+    admissible = sequences.admissible_sequences(template, presence)
+    fits = sequences.fit_sequences(admissible, template, curves)
+    log_weight = sequences.weigh_sequences(admissible, fits, template)
+    for i, (sounding, _) in enumerate(pairs):
+        generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
+        own_fits, own_weight, own_curve = [fit.take(i) for fit in fits], log_weight[:, i], curves.take(np.array([i]))
+        draws = sequences.draw_columns(admissible, own_fits, own_weight, own_curve, template, options, generator)
+        half_space = sequences.best_half_space(admissible, own_fits, own_weight)
+        yield draws, soundings.excluded_depth(half_space, own_curve, template, options)
+
+
 def _interpret_block(
     pairs: Sequence[tuple[Sounding, Inverted]],
     *,
@@ -95,22 +145,12 @@ def _interpret_block(
     options: InterpretationOptions,
     wavenumber: FloatArray,
 ) -> list[PlaceReading]:
-    curves = damped_steps.stack_curves([Readings(*s.curve.readings(one.noise)) for s, one in pairs], wavenumber)
-    admissible = sequences.admissible_sequences(template, presence)
-    fits = sequences.fit_sequences(admissible, template, curves)
-    log_weight = sequences.weigh_sequences(admissible, fits, template)
+    weighed = _weigh_block(pairs, template, presence, options, wavenumber)
     results = []
-    for i, (sounding, inverted) in enumerate(pairs):
-        generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
-        own_fits, own_weight = [fit.take(i) for fit in fits], log_weight[:, i]
-        own_curve = curves.take(np.array([i]))
-        draws = sequences.draw_columns(admissible, own_fits, own_weight, own_curve, template, options, generator)
-        half_space = sequences.best_half_space(admissible, own_fits, own_weight)
-        bound = soundings.excluded_depth(half_space, own_curve, template, options)
+    for (sounding, inverted), (draws, bound) in zip(pairs, weighed, strict=True):
         contact = soundings.find_basal_contact(draws, bound, template, options)
-        results.append(
-            _read_sounding(sounding, inverted, draws, contact, picks.get(sounding.name, []), template, options)
-        )
+        decided = picks.get(sounding.name, [])
+        results.append(_read_sounding(sounding, inverted, draws, contact, decided, template, options))
     return results
 
 

@@ -21,6 +21,8 @@ THICKNESS_BY_ROLE: Mapping[str, tuple[float, float]] = MappingProxyType(
 @attrs.frozen
 class InterpretationOptions:
     """presence                 prior probability that a unit of the template is present at a place
+    calibrate                   whether the survey's curves may move the template's ranges before they are used
+    fewest_to_calibrate         soundings' worth of a unit's presence that this needs
     draws                       columns drawn for each sounding from the weighed sequences
     seen_log_bayes_factor       a basal contact is seen where sequences with it beat those without by this (nats) ...
     seen_log_depth_deviation    ... and where its log depth is known this well
@@ -33,6 +35,8 @@ class InterpretationOptions:
     """
 
     presence: float = 0.5
+    calibrate: bool = True
+    fewest_to_calibrate: int = 10
     draws: int = 400
     seen_log_bayes_factor: float = 2.3
     seen_log_depth_deviation: float = 0.2

@@ -59,7 +59,7 @@ def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, A
     with open_engine() as engine:
         with progress.step("Inverting the curves", 2 * n_blocks) as step:
             inverted = invert(survey, settings.inversion, map=watched(engine, step))
-        with progress.step("Reading columns from them", n_blocks) as step:
+        with progress.step("Reading columns from them", (1 + settings.interpretation.calibrate) * n_blocks) as step:
             interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(engine, step))
         with progress.step("Kriging the surfaces", _count_blocks(grid.shape, settings)) as step:
             stack = build_surfaces(interpretation, survey, template, grid, settings.surfaces, map=watched(engine, step))
