@@ -1,0 +1,63 @@
+# ruff: noqa: INP001 - a script beside the page that it writes, not a package
+"""Writes the tables of delivery.md anew from the dictionary that the files themselves are written from."""
+
+from collections.abc import Iterator
+from pathlib import Path
+
+from geoves.delivery.dictionary import LAYERS, RASTERS, Column, LayerWords, RasterWords, name_part
+
+PAGE = Path(__file__).with_name("delivery.md")
+UNITS = {
+    "length": "length", "area": "km² or mi²", "resistivity": "ohm m", "percent": "%", "fraction": "0 to 1",
+    "slope": "length/length", "angle": "degrees", "conductance": "µS/cm", "flag": "yes or no", "count": "number",
+}  # fmt: skip
+RASTER_UNITS = {"length": "length", "resistivity": "ohm m", "fraction": "0 to 1"}
+
+
+def write_rasters() -> Iterator[str]:
+    """The table of rasters, line by line."""
+    yield "| files in `surfaces/` | unit | what it holds |"
+    yield "|---|---|---|"
+    yield from (_raster_row(words) for words in RASTERS.values())
+
+
+def _raster_row(words: RasterWords) -> str:
+    names = ", ".join(f"`{name_part(words.name, part)}.tif`" for part in words.parts)
+    return f"| {names} | {RASTER_UNITS[words.kind]} | {words.description} |"
+
+
+def write_layers() -> Iterator[str]:
+    """A section for each layer of layers.gpkg, line by line."""
+    for words in LAYERS.values():
+        yield from _layer_section(words)
+
+
+def _layer_section(words: LayerWords) -> Iterator[str]:
+    yield f"### {words.name}"
+    yield ""
+    yield f"{words.description} Geometry: {words.geometry}."
+    yield ""
+    yield "| column | unit | meaning |"
+    yield "|---|---|---|"
+    yield from (_column_row(column) for column in words.columns)
+    yield ""
+
+
+def _column_row(column: Column) -> str:
+    codes = "; ".join(f"`{code}`: {meaning}" for code, meaning in column.codes.items())
+    meaning = column.description + (f" {codes}." if codes else "")
+    return f"| `{column.name}` | {UNITS.get(column.kind, '')} | {meaning} |"
+
+
+def fill_page(text: str) -> str:
+    """The page with the tables of the dictionary between its marks."""
+    for name, lines in (("rasters", write_rasters()), ("layers", write_layers())):
+        opening, closing = f"<!-- {name} -->\n", f"<!-- end of {name} -->"
+        before, rest = text.split(opening)
+        _, after = rest.split(closing)
+        text = before + opening + "\n".join(lines).rstrip() + "\n" + closing + after
+    return text
+
+
+if __name__ == "__main__":
+    PAGE.write_text(fill_page(PAGE.read_text(encoding="utf-8")), encoding="utf-8")
