@@ -15,7 +15,7 @@ import numpy as np
 
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted, LayeredModel, ModelEnsemble
-from geoves.domain.survey import Curve, Sounding, Survey
+from geoves.domain.survey import Sounding, Survey
 from geoves.kernels import damped_steps, ensembles, layered_earth
 from geoves.kernels.damped_steps import Curves, Fit, Prior, Readings
 from geoves.kernels.smooth_model import fit_smooth, smooth_thickness
@@ -244,7 +244,7 @@ def _describe(
         noise=noise,
         criterion={},
         investigated_depth=_investigated_depth(model, curves),
-        remarks=_remarks(curve, trusted, rms, noise),
+        remarks=_remarks(rms, noise),
         trade_offs=name_trade_offs(ensemble),
     )
 
@@ -285,15 +285,8 @@ def name_trade_offs(ensemble: ModelEnsemble) -> tuple[str, ...]:
     return tuple(said)
 
 
-def _remarks(curve: Curve, trusted: FloatArray, rms: float, noise: float) -> tuple[str, ...]:
-    remarks = []
-    set_aside = curve.half_spacing[curve.used][trusted < 0.5]
-    if set_aside.size:
-        spacings = ", ".join(f"{spacing:g}" for spacing in set_aside)
-        remarks.append(f"readings at AB/2 {spacings} m fit no layered ground here and were set aside")
-    if rms > 2.5 * noise:
-        remarks.append("no layered model fits within the errors")
-    return tuple(remarks)
+def _remarks(rms: float, noise: float) -> tuple[str, ...]:
+    return ("no layered model fits within the errors",) if rms > 2.5 * noise else ()
 
 
 def _investigated_depth(model: LayeredModel, curves: Curves) -> float:

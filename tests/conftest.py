@@ -16,7 +16,7 @@ from geoves.domain.grids import CrossValidation, Grid, Surface, SurfaceStack, Va
 from geoves.domain.region import Delivery, Region
 from geoves.domain.results import Results
 from geoves.domain.survey import Curve, Ground, LogInterval, Permit, Pick, Sounding, Survey, Well
-from geoves.domain.tops import Interpretation, ShallowResistivity, Thickness, Top, UnitColumn, WellReading
+from geoves.domain.tops import Interpretation, PickOpinion, ShallowResistivity, Thickness, Top, UnitColumn, WellReading
 from geoves.domain.units import Z_95, Role, Template, Unit
 
 CRS = "EPSG:26914"
@@ -207,14 +207,28 @@ def _column(index, picks):
     depth = float(ground(x, y) - bedrock(x, y))
     codes = small_template().codes
     probability = np.full((5, 5), 0.05) + np.eye(5) * 0.75
-    sentence = {
-        "seen": f"Bedrock is seen at {depth:.0f} m.",
-        "not_distinct": f"Rock and gravel are not told apart; gravel or rock begins near {depth:.0f} m.",
-        "deeper_than": f"The spread ends above rock: deeper than {0.7 * depth:.0f} m.",
-    }[status]
     bound = 0.7 * depth if status == "deeper_than" else depth
     error = {"seen": 3.0, "not_distinct": 9.0, "deeper_than": np.nan}[status]
-    return UnitColumn(name, codes, np.full(5, 0.8), probability, status, bound, error, sentence, picks)
+    edges = np.linspace(0.0, 1.3 * bound, 31)
+    known = status != "deeper_than"
+    basal = depth - max(float(gravel(x, y)), 1.5)
+    return UnitColumn(
+        name, codes, np.full(5, 0.8), probability, status, bound, error, picks,
+        tuple(PickOpinion(pick, 0.4, depth, 0.0, against=False) for pick in picks),
+        profile_depth=edges,
+        profile=_profile(x, y, 0.5 * (edges[1:] + edges[:-1])),
+        basal_depth=basal + np.array([-5.0, 0.0, 5.0]) if known else np.full(3, np.nan),
+        gravel_probability=0.62 if known else np.nan,
+        gravel_limit=9.0 if known else np.nan,
+        base_contrast=0.7,
+    )  # fmt: skip
+
+
+def _profile(x, y, depth):
+    """Shares of the units (d, 5) at depths: each begins where it does, softened over 2 m."""
+    tops = np.concatenate([[-1e3], np.cumsum(_sounding_models(x, y)[0])])
+    begun = 1.0 / (1.0 + np.exp(-(depth[:, None] - tops) / 2.0))
+    return np.hstack([begun[:, :-1] - begun[:, 1:], begun[:, -1:]])
 
 
 def small_interpretation():

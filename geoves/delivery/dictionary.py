@@ -9,7 +9,20 @@ import attrs
 from geoves.domain.region import LengthUnit
 
 Kind = Literal[
-    "text", "count", "flag", "length", "area", "resistivity", "percent", "fraction", "slope", "angle", "conductance"
+    "text",
+    "count",
+    "flag",
+    "length",
+    "area",
+    "resistivity",
+    "percent",
+    "fraction",
+    "ratio",
+    "slope",
+    "angle",
+    "conductance",
+    "layer_conductance",
+    "layer_resistance",
 ]
 Part = Literal["estimate", "standard_error", "p05", "p95"]
 Geometry = Literal["Point", "LineString", "Polygon"]
@@ -160,6 +173,14 @@ def _banded(name: str, title: str, description: str) -> tuple[Column, ...]:
     )
 
 
+def _quantiles(name: str, title: str, kind: Kind) -> tuple[Column, ...]:
+    """The 5 % and 95 % quantiles of a property of a layer."""
+    ends = (("p05", "5 %"), ("p95", "95 %"))
+    return tuple(
+        Column(f"{name}_{end}", f"{title}, {share} quantile", "Over models that fit.", kind) for end, share in ends
+    )
+
+
 _SOUNDING = Column("sounding", "Sounding", "Name of the sounding.")
 _WELL = Column("well", "Well", "Name of the well.")
 _UNIT = Column("unit", "Unit", "Code of the unit in the resistivity template.")
@@ -180,10 +201,31 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                 (
                     _SOUNDING,
                     Column("rms_percent", "Misfit", "Root mean square misfit of the used readings.", "percent"),
+                    Column("noise_percent", "Noise", "Relative error of a reading, by the residuals.", "percent"),
                     Column("n_layers", "Layers", "Number of layers that the criterion chose.", "count"),
                     Column("bedrock_status", "Bedrock", "What the curve says of bedrock.", codes=_BEDROCK_STATUS),
                     Column("bedrock_depth", "Bedrock depth", "Depth to bedrock, or its lower bound.", "length"),
                     Column("bedrock_depth_error", "Bedrock depth error", "Standard error of that depth.", "length"),
+                    *_banded("basal_depth", "Basal contact depth", "Depth at which basal gravel or rock begins."),
+                    Column(
+                        "gravel_probability",
+                        "Probability of basal gravel",
+                        "Probability that at least 1 m of the deep aquifer lies on the rock, by this curve alone.",
+                        "fraction",
+                        span=(0.0, 1.0),
+                    ),
+                    Column(
+                        "gravel_limit",
+                        "Gravel that could hide",
+                        "As much of the deep aquifer could lie on the rock without this curve showing it.",
+                        "length",
+                    ),
+                    Column(
+                        "base_contrast",
+                        "Contrast at the base",
+                        "Resistivity of rock over that of what lies on it; near 1 a curve tells them not apart.",
+                        "ratio",
+                    ),
                     _GROUND,
                     Column(
                         "investigated_depth",
@@ -193,13 +235,19 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     ),
                     Column("largest_ab2", "Largest AB/2", "Largest half spacing of the current electrodes.", "length"),
                     Column("n_readings", "Readings", "Number of readings that were used.", "count"),
-                    Column("n_set_aside", "Readings set aside", "Number of readings that were not used.", "count"),
+                    Column(
+                        "n_set_aside",
+                        "Readings set aside",
+                        "Number of readings not used, or set aside by the fit.",
+                        "count",
+                    ),
                     Column("array", "Array", "Electrode array.", codes=_ARRAY),
                     Column("azimuth", "Azimuth", "Direction of the spread, clockwise from north.", "angle"),
                     Column("date", "Date", "Date as typed."),
                     Column("note", "Note", "Note as typed."),
                     Column("segment_factors", "Segment factors", "Factor on each MN segment, the first being 1."),
-                    Column("sentence", "In words", "What is resolved and what is not."),
+                    Column("sentence", "In words", "What is resolved, what could hide, how rock stands out."),
+                    Column("trade_offs", "What trades off", "Combinations that are known better than their parts."),
                     Column("remarks", "Remarks", "What a person should know of this curve."),
                     Column("interpreter", "Interpreter", "Who decided, where a pick outranks the curve."),
                 ),
@@ -216,8 +264,24 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     Column("bottom_depth", "Depth of bottom", "Depth to its bottom; empty for the last.", "length"),
                     Column("top_elevation", "Elevation of top", "Elevation of the layer's top.", "length"),
                     Column("resistivity", "Resistivity", "Resistivity of the layer.", "resistivity"),
-                    Column("resistivity_p05", "Resistivity, 5 % quantile", "Over models that fit.", "resistivity"),
-                    Column("resistivity_p95", "Resistivity, 95 % quantile", "Over models that fit.", "resistivity"),
+                    *_quantiles("resistivity", "Resistivity", "resistivity"),
+                    Column("thickness", "Thickness", "Thickness of the layer; empty for the last.", "length"),
+                    *_quantiles("thickness", "Thickness", "length"),
+                    *_quantiles("top_depth", "Depth of top", "length"),
+                    Column(
+                        "conductance",
+                        "Longitudinal conductance S",
+                        "Thickness over resistivity, lengths in metres; empty for the last.",
+                        "layer_conductance",
+                    ),
+                    *_quantiles("conductance", "Longitudinal conductance S", "layer_conductance"),
+                    Column(
+                        "transverse_resistance",
+                        "Transverse resistance T",
+                        "Thickness times resistivity, lengths in metres; empty for the last.",
+                        "layer_resistance",
+                    ),
+                    *_quantiles("transverse_resistance", "Transverse resistance T", "layer_resistance"),
                     _UNIT,
                     Column(
                         "unit_probability", "Probability of unit", "Of that code here.", "fraction", span=(0.0, 1.0)
@@ -363,6 +427,8 @@ def name_unit(kind: Kind, length_unit: LengthUnit) -> str:
         "percent": "%",
         "angle": "degrees",
         "conductance": "µS/cm",
+        "layer_conductance": "S",
+        "layer_resistance": "ohm m²",
     }
     return units.get(kind, "")
 

@@ -92,18 +92,6 @@ def _segment_mark(segment: int, x: float, y: float) -> str:
     )[segment % 4]
 
 
-def readings_aside(curve: Curve, inverted: Inverted, unit: LengthUnit) -> list[str]:
-    """In words, each reading that is drawn hollow and why."""
-    shown = []
-    for i in range(curve.half_spacing.size):
-        spacing = f"AB/2 {short(curve.half_spacing[i] / METRES[unit])} {unit_label(unit)}"
-        if not curve.used[i]:
-            shown.append(f"{spacing}: {(curve.reason[i] if i < len(curve.reason) else '') or 'not used'}")
-        elif inverted.robust_weight[i] < 0.5:
-            shown.append(f"{spacing}: far from the curve of every model; set aside by the fit")
-    return shown
-
-
 def depth_shown(inverted: Inverted) -> float:
     """How deep the drawings of a place reach (m): past its lowest interface, and no deeper than makes sense."""
     lowest = float(inverted.model.top_depth[-1])

@@ -7,16 +7,19 @@ from contextlib import closing
 from pathlib import Path
 from typing import Any
 
+import attrs
 import geopandas
 import numpy as np
 import pandas as pd
 import pyogrio
-from numpy.typing import NDArray
 from pyogrio.errors import DataLayerError, DataSourceError
 
 from geoves.delivery.dictionary import LAYERS, Column, LayerWords, convert_to_delivery, name_unit
+from geoves.delivery.layer_ranges import LayerRanges, find_layer_ranges
 from geoves.delivery.metadata import render_geopackage_record
+from geoves.delivery.sentences import readings_aside, tell_all, tell_readings_aside, tell_trade_offs
 from geoves.domain.earth import Inverted
+from geoves.domain.region import LengthUnit
 from geoves.domain.results import Results
 from geoves.domain.survey import Sounding, Well
 from geoves.domain.tops import UnitColumn
@@ -106,11 +109,13 @@ def _point_rows(rows: list[dict[str, Any]], extras: Sequence[Mapping[str, Any]] 
 def _build_soundings(results: Results) -> Rows:
     inverted = {found.sounding: found for found in results.inverted}
     columns = {column.sounding: column for column in results.interpretation.columns}
-    rows = [_sounding_row(s, inverted.get(s.name), columns.get(s.name)) for s in results.survey.soundings]
+    rows = [_sounding_row(s, inverted.get(s.name), columns.get(s.name), results) for s in results.survey.soundings]
     return _point_rows(rows, [s.extra for s in results.survey.soundings])
 
 
-def _sounding_row(sounding: Sounding, found: Inverted | None, column: UnitColumn | None) -> dict[str, Any]:
+def _sounding_row(
+    sounding: Sounding, found: Inverted | None, column: UnitColumn | None, results: Results
+) -> dict[str, Any]:
     curve = sounding.curve
     row: dict[str, Any] = {
         "place_at": (sounding.easting, sounding.northing),
@@ -118,7 +123,7 @@ def _sounding_row(sounding: Sounding, found: Inverted | None, column: UnitColumn
         "ground_elevation": sounding.ground_elevation,
         "largest_ab2": float(curve.half_spacing.max()) if curve.half_spacing.size else np.nan,
         "n_readings": int(curve.used.sum()),
-        "n_set_aside": int((~curve.used).sum()),
+        "n_set_aside": int(np.sum(~curve.used if found is None else readings_aside(curve, found))),
         "array": sounding.array,
         "azimuth": sounding.azimuth_deg,
         "date": sounding.date,
@@ -130,17 +135,31 @@ def _sounding_row(sounding: Sounding, found: Inverted | None, column: UnitColumn
             "n_layers": found.n_layers,
             "investigated_depth": found.investigated_depth,
             "segment_factors": "; ".join(f"{factor:.3f}" for factor in found.segment_factor),
-            "remarks": " ".join(found.remarks),
+            "noise_percent": 100.0 * found.noise,
+            "trade_offs": tell_trade_offs(found),
+            "remarks": _remarks(sounding, found, results.region.length_unit),
         }
     if column is not None:
         row |= {
             "bedrock_status": column.bedrock_status,
             "bedrock_depth": column.bedrock_depth,
             "bedrock_depth_error": column.bedrock_depth_error,
-            "sentence": column.sentence,
+            "basal_depth": column.basal_depth[1],
+            "basal_depth_p05": column.basal_depth[0],
+            "basal_depth_p95": column.basal_depth[2],
+            "gravel_probability": column.gravel_probability,
+            "gravel_limit": column.gravel_limit,
+            "base_contrast": float(np.exp(column.base_contrast)),
+            "sentence": tell_all(column, results.region.template, results.region.length_unit),
             "interpreter": "; ".join(dict.fromkeys(pick.interpreter for pick in column.picks)),
         }
     return row
+
+
+def _remarks(sounding: Sounding, found: Inverted, unit: LengthUnit) -> str:
+    """What a person should know of a curve: what the inversion remarks, and the readings that it did without."""
+    said = [*found.remarks, *(f"Set aside: {words}" for words in tell_readings_aside(sounding.curve, found, unit))]
+    return " ".join(f"{words[:1].upper()}{words[1:].rstrip('.')}." for words in said)
 
 
 def _build_model_layers(results: Results) -> Rows:
@@ -150,30 +169,27 @@ def _build_model_layers(results: Results) -> Rows:
     for found in results.inverted:
         sounding, column = soundings[found.sounding], columns.get(found.sounding)
         top = found.model.top_depth
-        low, high = resistivity_quantiles(found)
+        ranges = find_layer_ranges(found)
         for index, resistivity in enumerate(found.model.resistivity):
+            thick = found.model.thickness[index] if index < top.size - 1 else np.nan
             row: dict[str, Any] = {
                 "place_at": (sounding.easting, sounding.northing),
                 "sounding": found.sounding,
                 "layer": index + 1,
                 "top_depth": top[index],
-                "bottom_depth": top[index + 1] if index + 1 < top.size else np.nan,
+                "bottom_depth": top[index] + thick,
                 "top_elevation": sounding.ground_elevation - top[index],
                 "resistivity": resistivity,
-                "resistivity_p05": low[index],
-                "resistivity_p95": high[index],
+                "thickness": thick,
+                "conductance": thick / resistivity,
+                "transverse_resistance": thick * resistivity,
             }
+            for name in attrs.fields_dict(LayerRanges):
+                row[f"{name}_p05"], row[f"{name}_p95"] = getattr(ranges, name)[:, index]
             if column is not None:
                 row |= {"unit": column.unit[index], "unit_probability": column.unit_probability[index]}
             rows.append(row)
     return _point_rows(rows)
-
-
-def resistivity_quantiles(found: Inverted) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    """5 % and 95 % quantiles of each layer's resistivity (ohm m) over the weighted models that fit the curve."""
-    members, weight = found.ensemble.resistivity, found.ensemble.weight
-    quantiles = [np.quantile(members, q, axis=0, method="inverted_cdf", weights=weight) for q in (0.05, 0.95)]
-    return quantiles[0], quantiles[1]
 
 
 def _build_tops(results: Results) -> Rows:

@@ -10,9 +10,11 @@ import numpy as np
 import pyproj
 
 from geoves.delivery.cautions import SHORT_CAUTION, list_cautions
+from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_colours, value_range
 from geoves.delivery.sections import lines_of
+from geoves.delivery.sentences import readings_aside, tell_doubt, tell_sounding, tell_trade_offs
 from geoves.delivery.unit_look import ROLE_WORDS, unit_colours
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
@@ -211,10 +213,9 @@ def _describe_soundings(results: Results, to_degrees: pyproj.Transformer) -> lis
 
 def _describe_curve(sounding: Sounding, inverted: Inverted | None) -> dict[str, Any]:
     curve = sounding.curve
-    aside = ~curve.used
+    aside = ~curve.used if inverted is None else readings_aside(curve, inverted)
     fit: list[float | None] = []
     if inverted is not None:
-        aside = aside | (inverted.robust_weight < 0.5)
         known = np.minimum(curve.segment, inverted.segment_factor.size - 1)
         fit = _figures(inverted.predicted * inverted.segment_factor[known])
     return {
@@ -232,11 +233,19 @@ def _describe_curve(sounding: Sounding, inverted: Inverted | None) -> dict[str, 
 def _describe_model(inverted: Inverted | None, column: UnitColumn | None, results: Results) -> dict[str, Any]:
     if inverted is None or column is None:
         return {"status": None, "sentence": "No model was made of this sounding.", "model": None, "depth": None}
-    low, high = np.quantile(inverted.ensemble.resistivity, [0.05, 0.95], axis=0)
+    low, high = find_layer_ranges(inverted).resistivity
     codes = results.region.template.codes
     return {
         "status": column.bedrock_status,
-        "sentence": column.sentence,
+        "sentence": tell_sounding(column, results.region.template, results.region.length_unit),
+        "doubts": [
+            words
+            for words in (
+                *tell_doubt(column, results.region.template, results.region.length_unit),
+                tell_trade_offs(inverted),
+            )
+            if words
+        ],
         "rms": _rounded(inverted.rms_percent),
         "depth": _rounded(column.bedrock_depth),
         "error": _rounded(column.bedrock_depth_error),

@@ -6,8 +6,9 @@ from collections.abc import Iterator
 import attrs
 import numpy as np
 
-from geoves.delivery.figures import NearWell, draw_columns, draw_curve, draw_models, readings_aside
+from geoves.delivery.figures import NearWell, draw_columns, draw_curve, draw_models
 from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table
+from geoves.delivery.sentences import tell_doubt, tell_opinion, tell_readings_aside, tell_sounding, tell_trade_offs
 from geoves.domain.earth import Inverted
 from geoves.domain.region import LengthUnit
 from geoves.domain.results import Results
@@ -72,10 +73,12 @@ def draw_strip(job: StripJob, *, template: Template) -> str:
         draw_columns(job.column, job.inverted, template, unit, job.near_well),
     )
     notes = _strip_notes(job, job.inverted, job.column)
-    sentence = element("p", {"class": "sentence"}, job.column.sentence)
+    sentence = element("p", {"class": "sentence"}, tell_sounding(job.column, template, unit))
+    doubts = [tell_trade_offs(job.inverted), *tell_doubt(job.column, template, unit)]
+    doubt = element("p", {}, " ".join(words for words in doubts if words))
     facts = element("p", {"class": "under"}, _strip_facts(job, job.inverted, job.column))
     return element(
-        "article", {"class": "strip", "id": f"sounding-{job.number}"}, heading, facts, drawings, sentence, notes
+        "article", {"class": "strip", "id": f"sounding-{job.number}"}, heading, facts, sentence, doubt, drawings, notes
     )
 
 
@@ -98,11 +101,9 @@ def _strip_notes(job: StripJob, inverted: Inverted, column: UnitColumn) -> Marku
     factors = [f"{factor:.2f}" for factor in inverted.segment_factor[1:] if abs(factor - 1.0) > 0.005]
     if factors:
         notes.append(f"Later potential spacings were found shifted by a factor of {', '.join(factors)}.")
-    notes += [f"Hollow: {words}." for words in readings_aside(job.sounding.curve, inverted, job.unit)]
-    notes += inverted.remarks
-    for pick in column.picks:
-        depth = "" if pick.depth is None else f" {format_length(pick.depth, job.unit, 1)}"
-        notes.append(f"Pick by {pick.interpreter}: {pick.unit} {pick.status}{depth}; {pick.reason}")
+    notes += [f"Hollow: {words}." for words in tell_readings_aside(job.sounding.curve, inverted, job.unit)]
+    notes += [f"{words[:1].upper()}{words[1:].rstrip('.')}." for words in inverted.remarks]
+    notes += [tell_opinion(opinion, job.unit) for opinion in column.pick_opinions]
     if job.sounding.note:
         notes.append(f"Field note: {job.sounding.note}")
     if not notes:

@@ -88,7 +88,6 @@ class UnitColumn:
     probability       probability of each unit for each layer (k, units)
     bedrock_status    what the curve says of bedrock; `bedrock_depth` m with `bedrock_depth_error` m for "seen" and
                       "not_distinct" (NaN where it says nothing), the bound for "deeper_than"
-    sentence          in words: what is resolved and what is not
     profile_depth     edges of slices of depth, m (d+1,), and in `profile` (d, units) each unit's probability there
     basal_depth       5, 50 and 95 % quantiles of the depth of the basal contact, m (3,), NaN where nothing is known
     gravel_probability  of at least 1 m of basal gravel; gravel_limit m: as much of it could hide unseen on this rock
@@ -103,7 +102,6 @@ class UnitColumn:
     bedrock_status: BedrockStatus
     bedrock_depth: float
     bedrock_depth_error: float
-    sentence: str
     picks: tuple[Pick, ...] = ()
     pick_opinions: tuple[PickOpinion, ...] = ()
     profile_depth: FloatArray = attrs.field(factory=lambda: np.empty(0), converter=floats, eq=by_value, repr=shape)

@@ -226,7 +226,6 @@ def read_column(
         bedrock_status=contact.status,
         bedrock_depth=depth,
         bedrock_depth_error=error,
-        sentence=_say(contact, inverted),
         picks=contact.picks,
         pick_opinions=opinions,
         profile_depth=edges,
@@ -305,23 +304,3 @@ def _weigh_pick(contact: BasalContact, pick: Pick, role: Role) -> PickOpinion:
 CONTRADICTED = 0.01
 # Slices of depth of a column's profile, and how far below the contact it goes.
 PROFILE_SLICES, PROFILE_MARGIN = 60, 1.3
-
-
-def _say(contact: BasalContact, inverted: Inverted) -> str:
-    """One sentence for the report: what is resolved and what is not, in metres."""
-    reach = f"the curve feels the ground to some {inverted.investigated_depth:.0f} m"
-    if contact.picks:
-        pick = contact.picks[-1]
-        at = "" if pick.depth is None else f" {pick.depth:g} m"
-        return f"Decided by {pick.interpreter}: {pick.unit} {pick.status}{at} ({pick.reason})."
-    if contact.status == "deeper_than":
-        return f"No basal contact above {contact.bound:.0f} m, where it would have been noticed; {reach}."
-    if contact.status == "not_distinct":
-        return f"The basal contact does not stand out from what lies above it; {reach}."
-    low, high = np.quantile(contact.depth, [0.05, 0.95])
-    present = float(np.mean(contact.gravel >= PRESENT))
-    gravel = f"; up to {np.quantile(contact.gravel, 0.95):.0f} m of basal gravel may lie on the rock" if present else ""
-    return (
-        f"Top of basal gravel or rock at {np.median(contact.depth):.0f} m, between {low:.0f} and {high:.0f}; "
-        f"basal gravel with probability {present:.2f}{gravel}; {reach}."
-    )

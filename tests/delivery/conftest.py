@@ -115,7 +115,12 @@ def hostile_results(small_results):
     )
     picks = tuple(attrs.evolve(one, place=new[one.place], reason=HOSTILE[4]) for one in survey.picks)
     columns = tuple(
-        attrs.evolve(one, sounding=new[one.sounding], sentence=HOSTILE[1], picks=picks if one.picks else ())
+        attrs.evolve(
+            one,
+            sounding=new[one.sounding],
+            picks=picks if one.picks else (),
+            pick_opinions=tuple(attrs.evolve(said, pick=picks[0]) for said in one.pick_opinions),
+        )
         for one in found.columns
     )
     units = tuple(attrs.evolve(one, name=HOSTILE[i]) for i, one in enumerate(small_results.region.template.units))

@@ -15,11 +15,11 @@ from geoves.delivery.figures import (
     draw_variogram,
     largest_misfits,
     modelled_semivariance,
-    readings_aside,
 )
 from geoves.delivery.markup import element, joined, text
 from geoves.delivery.ramps import GREY, faded_colours, ramp_colours, value_range
 from geoves.delivery.sections import draw_overview, draw_section, sample_cells, sample_smoothly, section_lines
+from geoves.delivery.sentences import tell_readings_aside
 from geoves.delivery.svg import Scale, even_ticks, logarithmic_ticks, staircase
 from geoves.delivery.unit_look import ROLE_COLOURS, unit_colours
 from geoves.domain.units import Role
@@ -94,7 +94,7 @@ def test_curve_marks_stand_where_their_readings_say(small_results):
 
 def test_readings_aside_give_their_reasons(small_results):
     sounding, inverted, _ = drawn(small_results, 3)
-    assert readings_aside(sounding.curve, inverted, "m") == ["AB/2 15 m: stands 90 % above its neighbours"]
+    assert tell_readings_aside(sounding.curve, inverted, "m") == ["AB/2 15 m: stands 90 % above its neighbours"]
 
 
 def test_columns_show_each_layer_filled_to_one(small_results):

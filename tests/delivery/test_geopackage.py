@@ -14,7 +14,8 @@ import pytest
 from lxml import etree
 from owslib.iso import MD_Metadata
 
-from geoves.delivery.geopackage import resistivity_quantiles, write_geopackage
+from geoves.delivery.geopackage import write_geopackage
+from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.errors import DeliveryError
 
 TAGS = {"software": "geoves", "date": "2026-06-01T09:30:00Z"}
@@ -152,6 +153,11 @@ def test_values_are_the_results_own(package, small_results):
     soundings = geopandas.read_file(package, layer="soundings").set_index("sounding")
     assert soundings.bedrock_status["Larch 5"] == "deeper_than"
     assert soundings.n_set_aside["Larch 4"] == 1
+    assert soundings.n_set_aside["Larch 6"] == 1
+    assert soundings.remarks["Larch 6"].startswith("Set aside: AB/2 4 m: far from the curve")
+    assert soundings.base_contrast["Larch 1"] == pytest.approx(np.exp(0.7))
+    assert np.isnan(soundings.gravel_limit["Larch 5"])
+    assert soundings.basal_depth_p95["Larch 2"] - soundings.basal_depth["Larch 2"] == pytest.approx(5.0, abs=2e-3)
     assert soundings.segment_factors["Larch 1"] == "1.000; 1.060"
     wells = geopandas.read_file(package, layer="wells").set_index("well")
     assert wells.reached_bedrock.astype(bool).to_dict() == {"W-1": True, "W-2": False, "W-3": True}
@@ -162,9 +168,14 @@ def test_quantiles_weigh_the_models(small_results):
     found = small_results.inverted[0]
     weight = np.full(60, 1e-6)
     weight[17] = 1.0
-    low, high = resistivity_quantiles(attrs.evolve(found, ensemble=attrs.evolve(found.ensemble, weight=weight)))
-    assert np.array_equal(low, found.ensemble.resistivity[17])
-    assert np.array_equal(high, found.ensemble.resistivity[17])
+    ranges = find_layer_ranges(attrs.evolve(found, ensemble=attrs.evolve(found.ensemble, weight=weight)))
+    for quantile in (0, 1):
+        assert np.array_equal(ranges.resistivity[quantile], found.ensemble.resistivity[17])
+        assert np.array_equal(ranges.thickness[quantile, :-1], found.ensemble.thickness[17])
+        assert np.isclose(ranges.top_depth[quantile, -1], found.ensemble.thickness[17].sum())
+        product = found.ensemble.thickness[17] * found.ensemble.resistivity[17, :-1]
+        assert np.allclose(ranges.transverse_resistance[quantile, :-1], product)
+    assert np.isnan(ranges.conductance[:, -1]).all()
 
 
 def test_feet_come_out_round(small_results_in_feet, tmp_path):

@@ -11,6 +11,7 @@ from geoves.delivery.cautions import list_cautions
 from geoves.delivery.report_answers import confidence_in_words
 from geoves.delivery.report_page import write_report_page
 from geoves.delivery.report_trust import without_logarithm
+from geoves.delivery.sentences import tell_sounding
 from geoves.domain.grids import CrossValidation
 
 RECORD = {"versions": {"geoves": "0.1.0"}, "inputs": {"soundings.csv": "0" * 64}, "figures": [{"rmse": 6.123456}, {}]}
@@ -41,9 +42,10 @@ def test_every_sounding_has_its_strip(browser, page, small_results):
         "return [...document.querySelectorAll('.strip')].map(s => [s.querySelector('h3').textContent,"
         "s.querySelectorAll('svg').length, s.querySelector('.sentence').textContent])"
     )
+    template = small_results.region.template
     columns = {one.sounding: one for one in small_results.interpretation.columns}
     assert [one[0] for one in strips] == [one.name for one in small_results.survey.soundings]
-    assert all(drawings == 3 and columns[name].sentence == said for name, drawings, said in strips)
+    assert all(drawings == 3 and tell_sounding(columns[name], template, "m") == said for name, drawings, said in strips)
 
 
 def test_the_reading_set_aside_is_hollow_and_says_why(browser, page, small_results):

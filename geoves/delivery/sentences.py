@@ -1,0 +1,166 @@
+"""What a curve says of its place, in sentences and in the region's unit: one wording for the pages and the layers."""
+
+import numpy as np
+
+from geoves.delivery.markup import format_length, unit_label
+from geoves.domain.arrays import FloatArray
+from geoves.domain.earth import Inverted
+from geoves.domain.region import METRES, LengthUnit
+from geoves.domain.survey import Curve, Pick
+from geoves.domain.tops import PickOpinion, UnitColumn
+from geoves.domain.units import Role, Template
+
+# From this probability on, a thing is called by its word. The map's script calls it the same.
+LIKELIHOODS = ((0.9, "very likely"), (0.66, "likely"), (0.33, "about as likely as not"), (0.1, "unlikely"))
+# A ratio of resistivities from this on is called by its word; common practice with noise of a few percent.
+CONTRASTS = ((4.0, "a strong contrast"), (2.0, "a clear contrast"), (1.3, "a weak contrast"))
+SET_ASIDE = 0.5  # a reading with less robust weight than this counts as set aside by the fit
+
+
+def name_likelihood(probability: float) -> str:
+    """Plain words for a probability; the number always stands beside them.
+
+    >>> name_likelihood(0.7), name_likelihood(0.05)
+    ('likely', 'very unlikely')
+    """
+    return next((words for least, words in LIKELIHOODS if probability >= least), "very unlikely")
+
+
+def tell_sounding(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
+    """What is resolved under a sounding: the interpreter's decision where there is one, else what the curve knows."""
+    if column.picks:
+        return " ".join(tell_pick(pick, template, unit) for pick in column.picks)
+    contact = _name_contact(template)
+    if column.bedrock_status == "deeper_than":
+        bound = format_length(column.bedrock_depth, unit)
+        return f"No {contact} above {bound}, where the curve would have shown it; what lies deeper is not known."
+    known = bool(np.isfinite(column.basal_depth).all())
+    if column.bedrock_status == "not_distinct":
+        guess = f"; if anything it lies {_range(column.basal_depth, unit)}" if known else ""
+        return f"The curve does not show where {contact} begins{guess}."
+    if not known:
+        return f"Bedrock begins at about {format_length(column.bedrock_depth, unit)}."
+    begins = f"{_capital(contact)} begins at {format_length(column.basal_depth[1], unit)}"
+    return f"{begins}, {_range(column.basal_depth, unit)} with 90 % probability{_gravel_on_rock(column, template)}."
+
+
+def _gravel_on_rock(column: UnitColumn, template: Template) -> str:
+    deep = _deep_aquifer(template)
+    if not deep or not np.isfinite(column.gravel_probability):
+        return ""
+    chance = column.gravel_probability
+    return f"; {deep} on the rock is {name_likelihood(chance)} ({chance:.2f})"
+
+
+def tell_hidden(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
+    """How much of the deep aquifer could lie on this rock and not show; empty where that is not known."""
+    deep, limit = _deep_aquifer(template), column.gravel_limit
+    if not deep or not np.isfinite(limit):
+        return ""
+    if limit < 1.0:
+        return f"Hardly any {deep} could hide on the rock: less than {format_length(1.0, unit)}."
+    return f"Up to {format_length(limit, unit)} of {deep} could lie on the rock without this curve showing it."
+
+
+def tell_contrast(column: UnitColumn) -> str:
+    """How well rock stands out from what lies on it, in plain words; empty where the curve never reaches it."""
+    if not np.isfinite(column.base_contrast):
+        return ""
+    ratio = float(np.exp(abs(column.base_contrast)))
+    strength = next((words for least, words in CONTRASTS if ratio >= least), "")
+    if not strength:
+        return "Rock and what lies on it have much the same resistivity: no curve tells them apart."
+    way = "resistive" if column.base_contrast > 0 else "conductive"
+    return f"Rock is {ratio:.1f} times as {way} as what lies on it: {strength}."
+
+
+def tell_all(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
+    """What is resolved, what could hide and how rock stands out, as one text."""
+    return " ".join(filter(None, (tell_sounding(column, template, unit), *tell_doubt(column, template, unit))))
+
+
+def tell_doubt(column: UnitColumn, template: Template, unit: LengthUnit) -> list[str]:
+    """What could hide and how rock stands out, each where it is known."""
+    return [words for words in (tell_hidden(column, template, unit), tell_contrast(column)) if words]
+
+
+def tell_trade_offs(inverted: Inverted) -> str:
+    """Which combinations the curve knows although it does not know their parts; empty where there are none."""
+    return " ".join(f"{_capital(words).rstrip('.')}." for words in inverted.trade_offs)
+
+
+def tell_pick(pick: Pick, template: Template, unit: LengthUnit) -> str:
+    """The interpreter's decision with its error and its reason."""
+    reason = f" ({pick.reason.rstrip('.')})" if pick.reason else ""
+    return f"Decided by {pick.interpreter}: {_name_decision(pick, template, unit)}{reason}."
+
+
+def _name_decision(pick: Pick, template: Template, unit: LengthUnit) -> str:
+    name = next((one.name for one in template.units if one.code == pick.unit), pick.unit)
+    if pick.status == "absent" or pick.depth is None:
+        return f"{name} is absent"
+    depth = format_length(pick.depth, unit)
+    if pick.status == "below":
+        return f"{name} lies deeper than {depth}"
+    return f"{name} at {depth}" + (f" ± {pick.depth_error / METRES[unit]:.0f}" if pick.depth_error else "")
+
+
+def tell_opinion(opinion: PickOpinion, unit: LengthUnit) -> str:
+    """What the curve by itself says of a pick, which stands whatever the curve says."""
+    bound = f"; it excludes any above {_depth(opinion.bound, unit)}" if opinion.bound > 0 else ""
+    if opinion.against:
+        own = "" if np.isnan(opinion.inferred_depth) else f": by itself it says {_depth(opinion.inferred_depth, unit)}"
+        return f"The curve speaks against this pick{own}{bound}. The pick stands."
+    if np.isnan(opinion.probability):
+        return f"The curve neither confirms nor contradicts this pick{bound}."
+    if opinion.pick.status == "at":
+        own, cases = _depth(opinion.inferred_depth, unit), f"{100 * opinion.probability:.0f} of 100 cases"
+        return f"The curve by itself says {own}; a difference like this or larger would be chance in {cases}."
+    return f"The curve does not contradict this pick: it gives it a probability of {opinion.probability:.2f}."
+
+
+def tell_readings_aside(curve: Curve, inverted: Inverted, unit: LengthUnit) -> list[str]:
+    """Each reading that is drawn hollow, and why."""
+    shown = []
+    for i in np.flatnonzero(readings_aside(curve, inverted)):
+        spacing = f"AB/2 {curve.half_spacing[i] / METRES[unit]:.4g} {unit_label(unit)}"
+        if not curve.used[i]:
+            shown.append(f"{spacing}: {(curve.reason[i] if i < len(curve.reason) else '') or 'not used'}")
+        else:
+            shown.append(f"{spacing}: far from the curve of every layered model; set aside by the fit")
+    return shown
+
+
+def readings_aside(curve: Curve, inverted: Inverted) -> np.ndarray:
+    """Which readings (n,) were not used or were set aside by the fit."""
+    return np.asarray(~curve.used | (inverted.robust_weight < SET_ASIDE))
+
+
+def _name_contact(template: Template) -> str:
+    """The contact that a curve can see, by the names of what may begin there."""
+    deep = _deep_aquifer(template)
+    return f"{deep} or rock" if deep else "rock"
+
+
+def _deep_aquifer(template: Template) -> str:
+    """The deep aquifer's name within a sentence; empty where the template has none."""
+    units = template.with_role(Role.DEEP_AQUIFER)
+    return _small(units[0].name) if units else ""
+
+
+def _range(quantiles: FloatArray, unit: LengthUnit) -> str:
+    low, high = (quantiles[i] / METRES[unit] for i in (0, 2))
+    return f"between {low:,.0f} and {high:,.0f} {unit_label(unit)}"
+
+
+def _depth(metres: float, unit: LengthUnit) -> str:
+    return format_length(metres, unit)
+
+
+def _capital(words: str) -> str:
+    return words[:1].upper() + words[1:]
+
+
+def _small(name: str) -> str:
+    """A name within a sentence: its capital goes unless more of the word is in capitals."""
+    return name[:1].lower() + name[1:] if name[1:2].islower() else name
