@@ -3,13 +3,16 @@
 
 from collections.abc import Iterator
 from pathlib import Path
+from textwrap import wrap
 
-from geoves.delivery.dictionary import LAYERS, RASTERS, Column, LayerWords, RasterWords, name_part
+from geoves.delivery.dictionary import LAYERS, RASTERS, Column, LayerWords, RasterWords, name_part, name_unit
 
+WIDTH = 118
 PAGE = Path(__file__).with_name("delivery.md")
+# Kinds whose unit depends on the region, or that have none to name.
 UNITS = {
-    "length": "length", "area": "km² or mi²", "resistivity": "ohm m", "percent": "%", "fraction": "0 to 1",
-    "slope": "length/length", "angle": "degrees", "conductance": "µS/cm", "flag": "yes or no", "count": "number",
+    "length": "length", "area": "km² or mi²", "fraction": "0 to 1", "ratio": "ratio", "slope": "length/length",
+    "flag": "yes or no", "count": "number",
 }  # fmt: skip
 RASTER_UNITS = {"length": "length", "resistivity": "ohm m", "fraction": "0 to 1"}
 
@@ -35,10 +38,10 @@ def write_layers() -> Iterator[str]:
 def _layer_section(words: LayerWords) -> Iterator[str]:
     yield f"### {words.name}"
     yield ""
-    yield f"{words.description} Geometry: {words.geometry}."
+    yield from wrap(f"{words.description} Geometry: {words.geometry}.", WIDTH)
     yield ""
-    yield "| column | unit | meaning |"
-    yield "|---|---|---|"
+    yield "| column | title | unit | meaning |"
+    yield "|---|---|---|---|"
     yield from (_column_row(column) for column in words.columns)
     yield ""
 
@@ -46,7 +49,8 @@ def _layer_section(words: LayerWords) -> Iterator[str]:
 def _column_row(column: Column) -> str:
     codes = "; ".join(f"`{code}`: {meaning}" for code, meaning in column.codes.items())
     meaning = column.description + (f" {codes}." if codes else "")
-    return f"| `{column.name}` | {UNITS.get(column.kind, '')} | {meaning} |"
+    unit = UNITS.get(column.kind) or name_unit(column.kind, "m")
+    return f"| `{column.name}` | {column.title} | {unit} | {meaning} |"
 
 
 def fill_page(text: str) -> str:
