@@ -218,6 +218,7 @@ def read_column(
     deepest = max(10.0, contact.bound, *(np.quantile(rock, [0.95]) if rock.size and not bounded else [0.0]))
     edges = np.linspace(0.0, PROFILE_MARGIN * deepest, PROFILE_SLICES + 1)
     known = rock.size > 0 and not bounded
+    shallow_probability, shallow = _shallow_quantiles(draws, template)
     return UnitColumn(
         sounding=inverted.sounding,
         unit=tuple(template.codes[unit] for unit in best),
@@ -233,6 +234,8 @@ def read_column(
         basal_depth=np.quantile(contact.depth, [0.05, 0.5, 0.95]) if known else np.full(3, np.nan),
         gravel_probability=float(np.mean(contact.gravel >= PRESENT)) if known else np.nan,
         gravel_limit=float(np.quantile(contact.gravel, 0.95)) if known else np.nan,
+        shallow_probability=shallow_probability,
+        shallow_resistivity=shallow,
         base_contrast=_base_contrast(draws, template),
     )
 
@@ -255,6 +258,18 @@ def _decided_columns(draws: ColumnDraws, contact: BasalContact, template: Templa
     columns[:, np.flatnonzero(deep)[:1]] = contact.gravel[:, None]
     columns[:, rock] = np.nan
     return np.asarray(columns)
+
+
+def _shallow_quantiles(draws: ColumnDraws, template: Template) -> tuple[float, FloatArray]:
+    """Probability of the shallow aquifer, and quantiles (3,) of its resistivity where the draws have it, ohm m."""
+    shallow = role_mask(template, Role.SHALLOW_AQUIFER)
+    if not np.any(shallow):
+        return np.nan, np.full(3, np.nan)
+    thickness = np.nan_to_num(draws.thickness[:, shallow], nan=np.inf).sum(axis=1)
+    values = draws.log_resistivity[:, shallow]
+    values = values[~np.isnan(values)]
+    quantiles = np.exp(np.quantile(values, [0.05, 0.5, 0.95])) if values.size else np.full(3, np.nan)
+    return float(np.mean(thickness >= PRESENT)), np.asarray(quantiles)
 
 
 def _base_contrast(draws: ColumnDraws, template: Template) -> float:

@@ -52,7 +52,6 @@ def read_truth(folder):
 def compare(interpretation, truth):
     """A row a sounding: what was said of the basal contact, and what is true."""
     basal = {top.place: top for top in interpretation.tops if top.contact == "basal"}
-    shallow = {one.place: one.log_resistivity for one in interpretation.shallow_resistivities}
     rows = []
     for column in interpretation.columns:
         true = truth.loc[column.sounding]
@@ -68,10 +67,17 @@ def compare(interpretation, truth):
                 "bound": top.depth if top is not None and not at else np.nan,
                 "gravel": column.gravel_probability,
                 "true_gravel": true.gravel >= 1.0,
-                "shallow": shallow.get(column.sounding, np.nan) - np.log(true.shallow_aquifer_resistivity),
+                "shallow": shallow_error(column, true),
             }
         )
     return pd.DataFrame(rows)
+
+
+def shallow_error(column, true):
+    """Log error of the shallow aquifer's resistivity where it is called more probable than not, and is there."""
+    if not column.shallow_probability > 0.5:
+        return np.nan
+    return np.log(column.shallow_resistivity[1] / true.shallow_aquifer_resistivity)
 
 
 def summarise(table):
