@@ -1,6 +1,77 @@
-"""geoves: from vertical electrical soundings, wells and a resistivity template to GIS layers of a buried valley."""
+"""geoves: from electrical soundings, wells and a resistivity template to GIS layers of a buried valley.
 
-from importlib.metadata import version
+The steps are functions: `prepare_curves`, `invert`, `interpret`, `build_surfaces`, `derive_layers`. `run` does them all
+for a region folder; `make_sounding` and `draw_sounding` serve a single sounding in a notebook.
+"""
 
-__version__ = version("geoves")
-__all__ = ["__version__"]
+from importlib import import_module, metadata
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from geoves.curves import CurveOptions, make_sounding, prepare_curves
+    from geoves.delivery.notebook import draw_sounding
+    from geoves.domain.survey import Curve, Sounding, Survey
+    from geoves.domain.units import Role, Template, Unit
+    from geoves.errors import EngineError, FormatError, GeovesError, InputError
+    from geoves.interpretation import InterpretationOptions, interpret
+    from geoves.inversion import InversionOptions, invert
+    from geoves.layers import LayerOptions, derive_layers
+    from geoves.project.run import run
+    from geoves.reading import read_region, read_survey
+    from geoves.surfaces import SurfaceOptions, build_surfaces
+
+__version__ = metadata.version("geoves")
+__all__ = [
+    "Curve",
+    "CurveOptions",
+    "EngineError",
+    "FormatError",
+    "GeovesError",
+    "InputError",
+    "InterpretationOptions",
+    "InversionOptions",
+    "LayerOptions",
+    "Role",
+    "Sounding",
+    "SurfaceOptions",
+    "Survey",
+    "Template",
+    "Unit",
+    "__version__",
+    "build_surfaces",
+    "derive_layers",
+    "draw_sounding",
+    "interpret",
+    "invert",
+    "make_sounding",
+    "prepare_curves",
+    "read_region",
+    "read_survey",
+    "run",
+]
+
+# Where each name lives. A name is fetched when it is first asked for, so that the command's help comes at once.
+_HOMES = {
+    "geoves.curves": ("CurveOptions", "make_sounding", "prepare_curves"),
+    "geoves.delivery.notebook": ("draw_sounding",),
+    "geoves.domain.survey": ("Curve", "Sounding", "Survey"),
+    "geoves.domain.units": ("Role", "Template", "Unit"),
+    "geoves.errors": ("EngineError", "FormatError", "GeovesError", "InputError"),
+    "geoves.interpretation": ("InterpretationOptions", "interpret"),
+    "geoves.inversion": ("InversionOptions", "invert"),
+    "geoves.layers": ("LayerOptions", "derive_layers"),
+    "geoves.project.run": ("run",),
+    "geoves.reading": ("read_region", "read_survey"),
+    "geoves.surfaces": ("SurfaceOptions", "build_surfaces"),
+}
+
+
+def __getattr__(name: str) -> Any:
+    for home, names in _HOMES.items():
+        if name in names:
+            return getattr(import_module(home), name)
+    raise AttributeError(f"module 'geoves' has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    return __all__
