@@ -15,6 +15,7 @@ from geoves.delivery.markup import unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_colours, value_range
 from geoves.delivery.sections import lines_of
 from geoves.delivery.sentences import readings_aside, tell_doubt, tell_sounding, tell_trade_offs
+from geoves.delivery.sounding_figures import segment_factors
 from geoves.delivery.unit_look import ROLE_WORDS, unit_colours
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
@@ -216,8 +217,7 @@ def _describe_curve(sounding: Sounding, inverted: Inverted | None) -> dict[str, 
     aside = ~curve.used if inverted is None else readings_aside(curve, inverted)
     fit: list[float | None] = []
     if inverted is not None:
-        known = np.minimum(curve.segment, inverted.segment_factor.size - 1)
-        fit = _figures(inverted.predicted * inverted.segment_factor[known])
+        fit = _figures(inverted.predicted * segment_factors(curve, inverted))
     return {
         "curve": {
             "spacing": _figures(curve.half_spacing),

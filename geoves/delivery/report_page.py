@@ -12,6 +12,7 @@ from geoves.delivery.report_answers import write_answers
 from geoves.delivery.report_places import StripJob, draw_strip, gather_strips, write_wells_and_template
 from geoves.delivery.report_trust import write_decisions, write_doubts, write_making, write_trust
 from geoves.delivery.sections import draw_section, section_lines
+from geoves.delivery.svg import line, mark_path
 from geoves.delivery.unit_look import pattern_definitions, unit_key
 from geoves.domain.results import Results
 
@@ -107,23 +108,42 @@ def _write_sections(results: Results) -> Markup:
         return element("p", {}, "No valley axis was found, so that no section could be laid along it.")
     words = (
         "Ground in green, bedrock as a bold line within its 90 % band, gravel where it is likely (0.66 or more). "
-        "Soundings near the section stand as broad columns of their most probable units, wells as narrow ones; "
-        "an orange bar is an interpreter’s pick. A, B and C are dashed on the map above, read from west to east."
+        "Soundings near the section stand as broad columns of the unit that is most probable at each depth, paler the "
+        "less probable it is. A column with an arrow at its foot ends at the depth that bedrock must exceed; a dashed "
+        "one on a diamond does not show bedrock by itself. Wells stand as narrow columns; an orange bar is an "
+        "interpreter’s pick. A, B and C are dashed on the map above, read from west to east."
     )
     return joined([element("p", {}, words), unit_key(results.region.template), *figures])
 
 
 def _write_soundings(results: Results, strips: list[Markup]) -> Markup:
     words = (
-        "Left, the curve: readings with one standard deviation, a mark of its own for each potential spacing, readings "
-        "set aside hollow and orange, the model’s response in orange. Middle, the models: the chosen one bold, in grey "
-        "some that fit as well, and above them the template’s ranges. Right, what the layers may be: each unit’s "
-        "probability, stacked; the bracket is the 90 % band of the depth to bedrock, an arrow a depth that it must "
-        "exceed. Beside it the nearest well’s log on the same depths, where one is within 3 km."
+        "Left, the curve: readings with one standard deviation, a mark of its own for each potential spacing, and the "
+        "curve of the chosen model; the grey ones behind it belong to models that fit as well. Middle, those models "
+        "against depth, and above them the template’s ranges. Right, what the ground may be: each unit’s "
+        "probability at each depth, stacked to one; the bracket is the 90 % band of the depth to bedrock, an arrow a "
+        "depth that it must exceed. Beside it the nearest well’s log on the same depths, where one is within 3 km. "
+        "In the table S is a layer’s thickness over its resistivity, T their product, lengths in metres: a curve often "
+        "knows one of them better than it knows either part."
     )
     names = [
         element("a", {"href": f"#sounding-{number}"}, place_name(sounding.name))
         for number, sounding in enumerate(results.survey.soundings)
     ]
-    parts = [element("p", {}, words), unit_key(results.region.template), element("p", {}, joined(names, ", "))]
-    return joined([*parts, *strips])
+    keys = [_line_key(), unit_key(results.region.template)]
+    return joined([element("p", {}, words), *keys, element("p", {}, joined(names, ", ")), *strips])
+
+
+def _line_key() -> Markup:
+    """The key of the strips' lines and marks."""
+    shown = (
+        (line(0, 8, 30, 8, "model"), "chosen model, as few layers as the curve needs"),
+        (line(0, 8, 30, 8, "smooth"), "smoothest model that fits"),
+        (joined(line(0, y, 30, y, "fan") for y in (4, 8, 12)), "some of the models that fit as well"),
+        (line(0, 8, 30, 8, "fit"), "curve of the chosen model"),
+        (element("path", {"d": mark_path(0, 15, 8), "class": "reading aside"}), "reading set aside"),
+        (line(0, 8, 30, 8, "pick"), "interpreter’s pick"),
+    )
+    size = {"width": 30, "height": 16, "viewBox": "0 0 30 16", "aria-hidden": "true"}
+    items = [element("li", {}, element("svg", size, mark), " ", words) for mark, words in shown]
+    return element("ul", {"class": "key"}, *items)

@@ -6,11 +6,13 @@ from collections.abc import Iterator
 import attrs
 import numpy as np
 
-from geoves.delivery.figures import NearWell, draw_columns, draw_curve, draw_models
-from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table
+from geoves.delivery.layer_ranges import find_layer_ranges
+from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table, unit_label
 from geoves.delivery.sentences import tell_doubt, tell_opinion, tell_readings_aside, tell_sounding, tell_trade_offs
+from geoves.delivery.sounding_figures import NearWell, depth_shown, draw_columns, draw_curve, draw_models
+from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
-from geoves.domain.region import LengthUnit
+from geoves.domain.region import METRES, LengthUnit
 from geoves.domain.results import Results
 from geoves.domain.survey import Sounding
 from geoves.domain.tops import UnitColumn
@@ -21,7 +23,7 @@ NEAR_WELL = 3000.0  # m: a log farther away would suggest a likeness that nothin
 STATUS_WORDS = {
     "seen": "bedrock seen",
     "not_distinct": "bedrock not distinct",
-    "deeper_than": "bedrock deeper than",
+    "deeper_than": "bedrock deeper than the curve shows",
 }
 
 
@@ -65,21 +67,63 @@ def draw_strip(job: StripJob, *, template: Template) -> str:
     if job.inverted is None or job.column is None:
         body = element("p", {"class": "sentence"}, "No model was made of this sounding.")
         return element("article", {"class": "strip", "id": f"sounding-{job.number}"}, heading, body)
+    deepest = depth_shown(job.inverted, job.column)
     drawings = element(
         "div",
         {"class": "drawings"},
         draw_curve(sounding, job.inverted, unit),
-        draw_models(sounding, job.inverted, template, unit),
-        draw_columns(job.column, job.inverted, template, unit, job.near_well),
+        draw_models(sounding, job.inverted, template, unit, deepest),
+        draw_columns(job.column, job.inverted, template, unit, job.near_well, deepest),
     )
     notes = _strip_notes(job, job.inverted, job.column)
     sentence = element("p", {"class": "sentence"}, tell_sounding(job.column, template, unit))
     doubts = [tell_trade_offs(job.inverted), *tell_doubt(job.column, template, unit)]
     doubt = element("p", {}, " ".join(words for words in doubts if words))
     facts = element("p", {"class": "under"}, _strip_facts(job, job.inverted, job.column))
-    return element(
-        "article", {"class": "strip", "id": f"sounding-{job.number}"}, heading, facts, sentence, doubt, drawings, notes
-    )
+    layers = _layer_table(job.inverted, job.column, template, unit)
+    parts = (heading, facts, sentence, doubt, drawings, layers, notes)
+    return element("article", {"class": "strip", "id": f"sounding-{job.number}"}, *parts)
+
+
+def _layer_table(inverted: Inverted, column: UnitColumn, template: Template, unit: LengthUnit) -> Markup:
+    """Each layer of the chosen model: its most probable unit, and what the models that fit allow, 5 to 95 %."""
+    ranges, metres = find_layer_ranges(inverted), METRES[unit]
+    names = {one.code: one.name for one in template.units}
+    rows = [
+        (
+            str(layer + 1),
+            f"{names[column.unit[layer]]} ({column.unit_probability[layer]:.2f})",
+            _span(ranges.top_depth[:, layer] / metres) if layer else "0",
+            _span(ranges.thickness[:, layer] / metres),
+            _span(ranges.resistivity[:, layer]),
+            _span(ranges.conductance[:, layer]),
+            _span(ranges.transverse_resistance[:, layer]),
+        )
+        for layer in range(inverted.n_layers)
+    ]
+    length = unit_label(unit)
+    top, thick = f"top ({length})", f"thickness ({length})"
+    headings = ("layer", "most like", top, thick, "resistivity (Ω m)", "S (siemens)", "T (Ω m²)")
+    return table(headings, rows, "Layers: what the models that fit allow, 5 to 95 %")
+
+
+def _span(ends: FloatArray) -> str:
+    """A range to three figures, or its one number where both ends read the same; an en dash where there is none."""
+    if not np.isfinite(ends).all():
+        return "–"
+    low, high = (_three_figures(float(end)) for end in ends)
+    return low if low == high else f"{low} to {high}"
+
+
+def _three_figures(value: float) -> str:
+    """A number as it is read aloud.
+
+    >>> _three_figures(0.01234), _three_figures(31.44), _three_figures(4321.0)
+    ('0.0123', '31.4', '4,320')
+    """
+    if value >= 100.0:
+        return f"{float(f'{value:.3g}'):,.0f}"
+    return f"{value:.3g}"
 
 
 def _strip_facts(job: StripJob, inverted: Inverted, column: UnitColumn) -> str:
@@ -101,7 +145,7 @@ def _strip_notes(job: StripJob, inverted: Inverted, column: UnitColumn) -> Marku
     factors = [f"{factor:.2f}" for factor in inverted.segment_factor[1:] if abs(factor - 1.0) > 0.005]
     if factors:
         notes.append(f"Later potential spacings were found shifted by a factor of {', '.join(factors)}.")
-    notes += [f"Hollow: {words}." for words in tell_readings_aside(job.sounding.curve, inverted, job.unit)]
+    notes += [f"Set aside: {words}." for words in tell_readings_aside(job.sounding.curve, inverted, job.unit)]
     notes += [f"{words[:1].upper()}{words[1:].rstrip('.')}." for words in inverted.remarks]
     notes += [tell_opinion(opinion, job.unit) for opinion in column.pick_opinions]
     if job.sounding.note:

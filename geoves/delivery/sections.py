@@ -1,6 +1,6 @@
 """Figures of the region: the overview map and the sections along and across the valley, as SVG."""
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from typing import Any
 
 import attrs
@@ -26,7 +26,7 @@ from geoves.domain.arrays import FloatArray
 from geoves.domain.grids import Grid
 from geoves.domain.results import Results
 from geoves.domain.survey import Sounding, Well
-from geoves.domain.tops import UnitColumn
+from geoves.domain.tops import BedrockStatus, UnitColumn
 from geoves.domain.units import Role
 
 SAMPLES = 500
@@ -101,6 +101,16 @@ def section_lines(results: Results) -> list[tuple[str, Any]]:
 
 
 @attrs.frozen
+class Stretch:
+    """A piece of a column: depths of its top and bottom (m), the code of its unit, and how probable that is."""
+
+    top: float
+    bottom: float
+    unit: str | None
+    probability: float = 1.0
+
+
+@attrs.frozen
 class Place:
     """A sounding or a well near a section: how far along it (CRS units), its ground (m), and its stretches."""
 
@@ -108,8 +118,9 @@ class Place:
     kind: str
     along: float
     ground: float
-    stretches: tuple[tuple[float, float, str | None], ...]  # depth of top and bottom (m), code of the unit
+    stretches: tuple[Stretch, ...]
     picks: tuple[float, ...]
+    status: BedrockStatus | None = None  # of a sounding
 
 
 def places_near(results: Results, section: Any, within: float) -> list[Place]:
@@ -122,19 +133,48 @@ def places_near(results: Results, section: Any, within: float) -> list[Place]:
         if sounding.name not in columns or section.distance(point) > within:
             continue
         column = columns[sounding.name]
-        tops = models[sounding.name].model.top_depth
-        bottoms = np.append(tops[1:], tops[-1] * 1.2 + 2.0)
-        parts = tuple(zip(tops.tolist(), bottoms.tolist(), column.unit, strict=True))
+        parts = column_stretches(column, models[sounding.name].model.top_depth, results.region.template.codes)
         level, picks = _ground_level(results, sounding), _pick_depths(column)
-        found.append(Place(sounding.name, "sounding", section.project(point), level, parts, picks))
+        along, status = section.project(point), column.bedrock_status
+        found.append(Place(sounding.name, "sounding", along, level, parts, picks, status))
     for well in results.survey.wells:
         point = shapely.Point(well.easting, well.northing)
         if section.distance(point) <= within:
             readings = [one for one in results.interpretation.well_readings if one.well == well.name]
-            logged = tuple((one.top, one.bottom, one.unit) for one in readings)
+            logged = tuple(Stretch(one.top, one.bottom, one.unit) for one in readings)
             level = _ground_level(results, well)
             found.append(Place(well.name, "well", section.project(point), level, logged, ()))
     return sorted(found, key=lambda place: place.along)
+
+
+def column_stretches(column: UnitColumn, top_depth: FloatArray, codes: Sequence[str]) -> tuple[Stretch, ...]:
+    """A sounding's column by its most probable unit at each depth, down to its bound or the 90 % band of bedrock.
+
+    Slices that agree, and in probability to a tenth, are one stretch. A column without a profile goes by its layers.
+    """
+    edges, shares = column.profile_depth, column.profile
+    if edges.size:
+        best, chance = np.argmax(shares, axis=1), np.max(shares, axis=1)
+    else:
+        edges = np.append(top_depth, 1.2 * top_depth[-1] + 2.0)
+        best, chance = np.array([codes.index(code) for code in column.unit]), column.unit_probability
+    bottom = _column_end(column, float(edges[-1]))
+    alike = np.stack([best, np.round(10.0 * chance)])
+    first = np.flatnonzero(np.any(np.diff(alike, axis=1, prepend=-1.0) != 0, axis=0))
+    last = np.append(first[1:], best.size)
+    pieces = zip(edges[first], np.minimum(edges[last], bottom), best[first], chance[first], strict=True)
+    return tuple(
+        Stretch(float(top), float(end), codes[unit], float(share)) for top, end, unit, share in pieces if end > top
+    )
+
+
+def _column_end(column: UnitColumn, deepest: float) -> float:
+    """How deep a sounding's column is drawn (m): no deeper than it knows anything of."""
+    if not np.isfinite(column.bedrock_depth):
+        return deepest
+    if column.bedrock_status == "deeper_than":
+        return column.bedrock_depth
+    return min(deepest, 1.05 * column.bedrock_depth + 1.645 * float(np.nan_to_num(column.bedrock_depth_error)))
 
 
 def _pick_depths(column: UnitColumn) -> tuple[float, ...]:
@@ -188,7 +228,7 @@ def draw_section(results: Results, title: str, section: Any) -> Markup:
 
 
 def _foot(place: Place) -> float:
-    return place.ground - max((bottom for _, bottom, _ in place.stretches), default=0.0)
+    return place.ground - max((stretch.bottom for stretch in place.stretches), default=0.0)
 
 
 def _gravel(results: Results, frame: Frame, x: FloatArray, rock: FloatArray, points: FloatArray) -> Markup:
@@ -208,11 +248,13 @@ def _section_place(results: Results, frame: Frame, place: Place, at: float) -> M
     metres, codes = results.region.metres_per_length_unit, results.region.template.codes
     x, half = float(frame.x.pixel(at)), 4.0 if place.kind == "sounding" else 2.5
     boxes = []
-    for top, bottom, code in place.stretches:
-        y = frame.y.pixel((place.ground - np.array([top, bottom])) / metres)
-        fill = f"url(#unit-{codes.index(code)})" if code in codes else "none"
-        box = {"fill": fill, "class": f"column {place.kind}"}
+    for stretch in place.stretches:
+        y = frame.y.pixel((place.ground - np.array([stretch.top, stretch.bottom])) / metres)
+        fill = f"url(#unit-{codes.index(stretch.unit)})" if stretch.unit in codes else "none"
+        faded = None if stretch.probability > 0.95 else f"{max(stretch.probability, 0.2) ** 1.5:.2f}"
+        box = {"fill": fill, "fill-opacity": faded, "class": "piece"}
         boxes.append(rectangle(x - half, float(y[0]), 2 * half, float(y[1] - y[0]), box))
+    boxes = _column_outline(frame, place, x, half, metres, boxes)
     for depth in place.picks:
         y_pick = float(frame.y.pixel((place.ground - depth) / metres))
         boxes.append(line(x - 8, y_pick, x + 8, y_pick, "pick"))
@@ -220,6 +262,24 @@ def _section_place(results: Results, frame: Frame, place: Place, at: float) -> M
     turned = {"transform": f"translate({x + 3:.1f} {top_pixel - 5:.1f}) rotate(-50)", "class": "halo small"}
     boxes.append(element("text", turned, ("" if place.kind == "sounding" else "well ") + place.name[:16]))
     return joined(boxes)
+
+
+def _column_outline(
+    frame: Frame, place: Place, x: float, half: float, metres: float, pieces: list[Markup]
+) -> list[Markup]:
+    """Pieces on paper within an outline; at its foot an arrow where it is a bound, a diamond where rock is not seen."""
+    if not place.stretches:
+        return pieces
+    top, foot = (float(y) for y in frame.y.pixel(np.array([place.ground, _foot(place)]) / metres))
+    paper = rectangle(x - half, top, 2 * half, foot - top, {"class": "paper"})
+    outline = rectangle(x - half, top, 2 * half, foot - top, {"class": f"column {place.kind} {place.status or ''}"})
+    marks = {
+        "deeper_than": f"M{x:.1f} {foot:.1f}v10m-3.5 -4.5l3.5 4.5l3.5 -4.5",
+        "not_distinct": f"M{x:.1f} {foot:.1f}l4 4l-4 4l-4 -4Z",
+    }
+    if place.status not in marks:
+        return [paper, *pieces, outline]
+    return [paper, *pieces, outline, element("path", {"d": marks[place.status], "class": f"foot {place.status}"})]
 
 
 def draw_overview(results: Results) -> Markup:

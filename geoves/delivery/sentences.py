@@ -64,7 +64,7 @@ def tell_hidden(column: UnitColumn, template: Template, unit: LengthUnit) -> str
 
 def tell_contrast(column: UnitColumn) -> str:
     """How well rock stands out from what lies on it, in plain words; empty where the curve never reaches it."""
-    if not np.isfinite(column.base_contrast):
+    if column.bedrock_status == "deeper_than" or not np.isfinite(column.base_contrast):
         return ""
     ratio = float(np.exp(abs(column.base_contrast)))
     strength = next((words for least, words in CONTRASTS if ratio >= least), "")

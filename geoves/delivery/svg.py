@@ -180,3 +180,13 @@ def staircase(top_depth: ArrayLike, values: ArrayLike, end: float) -> tuple[np.n
     """Corners (value, depth) of a layered model drawn down to `end`."""
     depths = np.minimum(np.append(np.asarray(top_depth, dtype=float), end), end)
     return np.repeat(np.asarray(values, dtype=float), 2), np.repeat(depths, 2)[1:-1]
+
+
+def mark_path(number: int, x: float, y: float) -> str:
+    """The outline of a mark about a pixel: circle, square, triangle and diamond in turn."""
+    return (
+        f"M{x - 3.6:.1f} {y:.1f}a3.6 3.6 0 1 0 7.2 0a3.6 3.6 0 1 0 -7.2 0Z",
+        f"M{x - 3.3:.1f} {y - 3.3:.1f}h6.6v6.6h-6.6Z",
+        f"M{x:.1f} {y - 4.4:.1f}l4.2 7.2h-8.4Z",
+        f"M{x:.1f} {y - 4.6:.1f}l4.6 4.6l-4.6 4.6l-4.6 -4.6Z",
+    )[number % 4]

@@ -1,27 +1,39 @@
 """Figures: places of marks, ticks, ramps and what is said of them."""
 
+from itertools import pairwise
 from xml.etree import ElementTree as ET
 
 import attrs
 import numpy as np
 import pytest
+import shapely
 from scipy.spatial.transform import Rotation
 
-from geoves.delivery.figures import (
-    draw_columns,
-    draw_cross_validation,
-    draw_curve,
-    draw_models,
-    draw_variogram,
-    largest_misfits,
-    modelled_semivariance,
-)
+from geoves.delivery.figures import draw_cross_validation, draw_variogram, largest_misfits, modelled_semivariance
 from geoves.delivery.markup import element, joined, text
 from geoves.delivery.ramps import GREY, faded_colours, ramp_colours, value_range
-from geoves.delivery.sections import draw_overview, draw_section, sample_cells, sample_smoothly, section_lines
+from geoves.delivery.sections import (
+    column_stretches,
+    draw_overview,
+    draw_section,
+    places_near,
+    sample_cells,
+    sample_smoothly,
+    section_lines,
+)
 from geoves.delivery.sentences import tell_readings_aside
+from geoves.delivery.sounding_figures import (
+    depth_shown,
+    draw_columns,
+    draw_curve,
+    draw_models,
+    pick_members,
+    respond,
+    segment_factors,
+)
 from geoves.delivery.svg import Scale, even_ticks, logarithmic_ticks, staircase
 from geoves.delivery.unit_look import ROLE_COLOURS, unit_colours
+from geoves.domain.earth import LayeredModel
 from geoves.domain.units import Role
 
 
@@ -70,8 +82,8 @@ def test_place_figures_are_sound_xml_with_titles_and_units(small_results):
     sounding, inverted, column = drawn(small_results)
     figures = (
         draw_curve(sounding, inverted, "ft"),
-        draw_models(sounding, inverted, template, "ft"),
-        draw_columns(column, inverted, template, "ft", None),
+        draw_models(sounding, inverted, template, "ft", 90.0),
+        draw_columns(column, inverted, template, "ft", None, 90.0),
     )
     for figure in figures:
         root = parsed(figure)
@@ -97,14 +109,78 @@ def test_readings_aside_give_their_reasons(small_results):
     assert tell_readings_aside(sounding.curve, inverted, "m") == ["AB/2 15 m: stands 90 % above its neighbours"]
 
 
-def test_columns_show_each_layer_filled_to_one(small_results):
+def test_columns_show_each_layer_filled_to_one_where_there_is_no_profile(small_results):
     _, inverted, column = drawn(small_results)
-    root = parsed(draw_columns(column, inverted, small_results.region.template, "m", None))
+    plain = attrs.evolve(column, profile_depth=np.empty(0), profile=np.empty((0, 0)))
+    root = parsed(draw_columns(plain, inverted, small_results.region.template, "m", None, 90.0))
     boxes = [one for one in root.iter("rect") if one.get("fill", "").startswith("url(")]
     widths = {}
     for box in boxes:
         widths[box.get("y")] = widths.get(box.get("y"), 0.0) + float(box.get("width"))
     np.testing.assert_allclose(list(widths.values()), 100.0, atol=0.3)
+
+
+def _bands(svg):
+    """The filled bands of a column, as shapely reads their corners, by the number of their unit."""
+    found = {}
+    for one in parsed(svg).iter("path"):
+        if one.get("fill", "").startswith("url("):
+            corners = [tuple(map(float, xy.split())) for xy in one.get("d").strip("MZ").split("L")]
+            found[int(one.get("fill")[10:-1])] = shapely.Polygon(corners).buffer(0)
+    return found
+
+
+def test_profile_is_stacked_to_one_and_drawn_as_it_is(small_results):
+    """Shapely measures each band along slices: as wide as its probability, and all of them as wide as the box."""
+    _, inverted, column = drawn(small_results)
+    deepest = depth_shown(inverted, column)
+    bands = _bands(draw_columns(column, inverted, small_results.region.template, "m", None, deepest))
+    assert shapely.union_all(list(bands.values())).area == pytest.approx(sum(b.area for b in bands.values()), rel=0.01)
+    middle = 0.5 * (column.profile_depth[1:] + column.profile_depth[:-1])
+    for depth, shares in zip(middle, column.profile, strict=True):
+        y = 38.0 + 224.0 * depth / deepest
+        cut = shapely.LineString([(0, y), (300, y)])
+        widths = [bands[i].intersection(cut).length if i in bands else 0.0 for i in range(5)]
+        np.testing.assert_allclose(widths, 100.0 * shares / shares.sum(), atol=1.2)
+
+
+def test_profile_of_a_bound_ends_where_knowledge_does(small_results):
+    _, inverted, column = drawn(small_results, 4)
+    assert column.bedrock_status == "deeper_than"
+    deepest = 2.0 * column.profile_depth[-1]
+    svg = draw_columns(column, inverted, small_results.region.template, "m", None, deepest)
+    assert max(band.bounds[3] for band in _bands(svg).values()) == pytest.approx(38.0 + 112.0, abs=0.2)
+    assert "not known" in svg
+
+
+def test_fan_of_curves_is_that_of_the_members(small_results):
+    """Over equal layers the response is their resistivity (exact for any array); the segment's factor lies on it."""
+    sounding, inverted, _ = drawn(small_results)
+    ensemble = inverted.ensemble
+    even = attrs.evolve(ensemble, resistivity=np.full_like(ensemble.resistivity, 40.0))
+    curves = respond(sounding.curve, attrs.evolve(inverted, ensemble=even), np.array([0, 7]))
+    wanted = np.where(sounding.curve.segment == 0, 40.0, 40.0 * 1.06)
+    np.testing.assert_allclose(curves, np.tile(wanted, (2, 1)), rtol=1e-6)
+    assert pick_members(inverted).size == 25
+    fan = [one for one in parsed(draw_curve(sounding, inverted, "m")).iter("path") if one.get("class") == "fan"]
+    assert fan[0].get("d").count("M") == 25 * 2
+
+
+def test_factors_count_the_segments_that_were_fitted(small_results):
+    """Where the first potential spacing has no used reading the second is the first that was fitted: factor 1."""
+    sounding, inverted, _ = drawn(small_results)
+    curve = sounding.curve
+    used = attrs.evolve(curve, used=curve.segment > 0)
+    assert segment_factors(used, inverted).tolist() == [1.0] * 14
+    assert segment_factors(curve, inverted).tolist() == [1.0] * 8 + [1.06] * 6
+
+
+def test_smooth_model_is_drawn_where_there_is_one(small_results):
+    sounding, inverted, _ = drawn(small_results)
+    smooth = LayeredModel(np.full(9, 8.0), np.geomspace(30.0, 70.0, 10))
+    drawn_with = draw_models(sounding, attrs.evolve(inverted, smooth=smooth), small_results.region.template, "m", 90.0)
+    assert 'class="smooth"' in drawn_with
+    assert 'class="smooth"' not in draw_models(sounding, inverted, small_results.region.template, "m", 90.0)
 
 
 def test_variograms_reach_95_percent_of_the_sill_at_their_practical_length(small_results):
@@ -160,6 +236,31 @@ def test_sections_and_overview_are_sound_xml(small_results, small_results_in_fee
     assert "elevation (US ft)" in draw_section(small_results_in_feet, *lines[0])
     marks = [one for one in parsed(draw_overview(small_results)).iter("path") if "mark" in one.get("class", "").split()]
     assert len(marks) == len(small_results.survey.soundings) + len(small_results.survey.wells)
+
+
+def test_columns_of_a_section_say_the_most_probable_unit_and_end_where_knowledge_does(small_results):
+    codes = small_results.region.template.codes
+    for number in (0, 4):
+        _, inverted, column = drawn(small_results, number)
+        pieces = column_stretches(column, inverted.model.top_depth, codes)
+        assert pieces[0].top == 0.0
+        assert all(one.bottom == other.top for one, other in pairwise(pieces))
+        middle = 0.5 * (column.profile_depth[1:] + column.profile_depth[:-1])
+        for depth, shares in zip(middle, column.profile, strict=True):
+            at = [one for one in pieces if one.top <= depth < one.bottom]
+            assert all(codes[int(np.argmax(shares))] == one.unit for one in at)
+            assert all(abs(one.probability - shares.max()) <= 0.1 for one in at)
+    assert pieces[-1].bottom == column.bedrock_depth  # the last of the two is a bound
+    plain = attrs.evolve(column, profile_depth=np.empty(0), profile=np.empty((0, 0)), bedrock_depth=np.nan)
+    assert [one.unit for one in column_stretches(plain, inverted.model.top_depth, codes)] == list(codes)
+
+
+def test_section_marks_bounds_and_what_is_not_distinct(small_results):
+    title, line = section_lines(small_results)[0]
+    feet = [one.get("class") for one in parsed(draw_section(small_results, title, line)).iter("path")]
+    near = {place.status for place in places_near(small_results, line, 250.0)}
+    assert "deeper_than" in near
+    assert ("foot deeper_than" in feet) == ("deeper_than" in near)
 
 
 def test_sections_cross_the_axis_at_right_angles(small_results):
