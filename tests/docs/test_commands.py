@@ -138,3 +138,16 @@ def test_the_demo_checks_without_faults(tmp_path):
     done = geoves("check", "region.toml", cwd=tmp_path)
     assert (done.returncode, done.stderr) == (0, "")
     assert "154 soundings, 16 wells, 480 permits, 3 picks" in done.stdout
+
+
+def test_the_notebook_runs_as_it_stands():
+    blocks = re.findall(r"```python\n(.*?)```", (ROOT / "docs/how-to/notebook.md").read_text("utf-8"), re.DOTALL)
+    *statements, drawing = blocks
+    names = {}
+    exec("\n".join(statements), names)  # noqa: S102 - the page's own code
+    assert eval(drawing, names)._repr_html_().startswith("<iframe")  # noqa: S307
+    column = names["column"]
+    # The readings were computed for 3 m of 40 and 30 m of 18 on 150 ohm m, with 2 % noise and a shift of 3 %.
+    assert column.bedrock_status == "seen"
+    # One band in ten does not hold the truth, so the median is judged: within a quarter.
+    assert 25.0 < column.basal_depth[1] < 41.0
