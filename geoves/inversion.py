@@ -47,7 +47,7 @@ class InversionOptions:
 
 
 # Broad priors of the blind inversion, standard deviations in natural logs, and the bounds of its search.
-RESISTIVITY_DEVIATION, THICKNESS_DEVIATION = 1.2, 1.0
+RESISTIVITY_DEVIATION, THICKNESS_DEVIATION = 1.2, 2.2
 LEAST_RESISTIVITY, MOST_RESISTIVITY = 0.5, 50_000.0
 LEAST_THICKNESS, MOST_THICKNESS = 0.2, 500.0
 # Members weighed for each that is kept.
