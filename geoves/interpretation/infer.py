@@ -23,6 +23,7 @@ from geoves.domain.tops import (
 from geoves.domain.units import Role, Template
 from geoves.interpretation import sequences, soundings, wells
 from geoves.interpretation.calibration import calibrate_template
+from geoves.interpretation.nearby import condition_on_wells
 from geoves.interpretation.options import InterpretationOptions
 from geoves.kernels import damped_steps, layered_earth
 from geoves.kernels.damped_steps import Readings
@@ -73,7 +74,13 @@ def interpret(
             drawn = list(chain.from_iterable(map(sample, blocks)))
             template, calibration = calibrate_template(template, drawn, options.fewest_to_calibrate)
         work = partial(
-            _interpret_block, picks=picks, template=template, presence=presence, options=options, wavenumber=wavenumber
+            _interpret_block,
+            picks=picks,
+            well_tops=tuple(chain.from_iterable(reading.tops for reading in logged)),
+            template=template,
+            presence=presence,
+            options=options,
+            wavenumber=wavenumber,
         )
         readings += chain.from_iterable(map(work, blocks))
     readings += logged
@@ -140,6 +147,7 @@ def _interpret_block(
     pairs: Sequence[tuple[Sounding, Inverted]],
     *,
     picks: dict[str, list[Pick]],
+    well_tops: Sequence[Top],
     template: Template,
     presence: FloatArray,
     options: InterpretationOptions,
@@ -149,6 +157,8 @@ def _interpret_block(
     results = []
     for (sounding, inverted), (draws, bound) in zip(pairs, weighed, strict=True):
         contact = soundings.find_basal_contact(draws, bound, template, options)
+        generator = np.random.default_rng([options.random_seed, *sounding.name.encode(), 1])
+        contact = condition_on_wells(contact, sounding, well_tops, options, generator)
         decided = picks.get(sounding.name, [])
         results.append(_read_sounding(sounding, inverted, draws, contact, decided, template, options))
     return results

@@ -29,6 +29,7 @@ class InterpretationOptions:
     broad_log_depth_deviation   a contact known worse than this is no datum at all
     notice_chi_square           a bound is set where basal material would change the curve by this much
     relative_depth_floor        least error of a sounding's depth: ground is never quite layered
+    well_reach                  how far a well weighs a sounding's columns, in the unit of the CRS; 0 for not at all
     well_contact_error          least error (m) of a contact in a driller's log
     well_relative_error         and its growth with depth
     least_match                 how alike (0 to 100) a driller's word and a term must be
@@ -43,6 +44,7 @@ class InterpretationOptions:
     broad_log_depth_deviation: float = 0.6
     notice_chi_square: float = 16.0
     relative_depth_floor: float = 0.05
+    well_reach: float = 400.0
     well_contact_error: float = 0.3
     well_relative_error: float = 0.01
     least_match: float = 80.0

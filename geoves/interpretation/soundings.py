@@ -32,7 +32,7 @@ class BasalContact:
     """What the draws say of the basal contact and the rock under it; depths in m.
 
     depth, gravel : (m,) of the draws that reach it, equally probable    bound : m, 0 where the curve excludes nothing
-    log_deviation : of the contact's depth    pick : the interpreter's decision that was applied
+    log_deviation : of the contact's depth    wells : those beside it that weighed it    picks : decisions applied
     """
 
     depth: FloatArray
@@ -40,6 +40,7 @@ class BasalContact:
     status: BedrockStatus
     bound: float
     log_deviation: float
+    wells: tuple[str, ...] = ()
     picks: tuple[Pick, ...] = ()
 
     @property
@@ -129,7 +130,8 @@ def contact_tops(
     deep = [unit.code for unit in template.units if unit.role is Role.DEEP_AQUIFER]
     decided = contact.picks[-1] if contact.picks else None
     kind = "pick" if decided else "sounding"
-    source = f"pick by {decided.interpreter}: {decided.reason}" if decided else _SOURCES[contact.status]
+    beside = f", weighed by well {', '.join(contact.wells)} beside it" if contact.wells else ""
+    source = f"pick by {decided.interpreter}: {decided.reason}" if decided else _SOURCES[contact.status] + beside
 
     def top(unit: str, name: str, status: str, depth: float, error: float) -> Top:
         return Top(
