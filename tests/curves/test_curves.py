@@ -42,14 +42,16 @@ def test_layered_ground_raises_no_doubt(curve):
 
 
 def test_field_noise_of_three_percent_raises_hardly_any():
-    """Twenty noisy curves: a jump of 15 % is four deviations of a reading against its two neighbours."""
+    """440 readings: a jump of 15 % is four deviations of one against its two neighbours; steps of 20 % in AB/2 rise
+    by the noise alone, where the curve does at 45 degrees nearly.
+    """
     generator = np.random.default_rng(3)
     soundings = [
         sounding_of(printed_ground(curve) * np.exp(0.03 * generator.standard_normal(SPACING.size)))
         for curve in (ALL_CURVES[0], *ALL_CURVES[3:6], ALL_CURVES[7])
         for _ in range(4)
     ]
-    assert len(doubts_of(*soundings)) <= 2
+    assert len(doubts_of(*soundings)) <= 4
 
 
 @pytest.mark.parametrize("factor", [1.35, 0.7])
@@ -62,9 +64,9 @@ def test_a_jump_is_doubted_at_its_own_row_and_spacing(factor, spoilt):
     (found,) = doubts
     assert (found.severity, found.column, found.place) == ("doubt", "apparent_resistivity", "Heron 4")
     assert f"AB/2 {SPACING[spoilt]:g} m" in found.value
-    # Against the chord of its neighbours; the curve itself bends by a few per cent at most.
+    # Against the chord of its neighbours, which the curve's own bend at its least value lies 5 % below.
     said = float(found.expected.split("%")[0]) / 100.0
-    assert said == pytest.approx(factor - 1.0, abs=0.05)
+    assert said == pytest.approx(factor - 1.0, abs=0.06)
 
 
 def test_a_rise_steeper_than_one_to_one_is_doubted_where_it_ends():
