@@ -14,7 +14,14 @@ from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_colours, value_range
 from geoves.delivery.sections import lines_of
-from geoves.delivery.sentences import readings_aside, tell_doubt, tell_sounding, tell_trade_offs
+from geoves.delivery.sentences import (
+    readings_aside,
+    tell_doubt,
+    tell_opinion,
+    tell_pick,
+    tell_sounding,
+    tell_trade_offs,
+)
 from geoves.delivery.sounding_figures import segment_factors
 from geoves.delivery.unit_look import ROLE_WORDS, unit_colours
 from geoves.domain.arrays import FloatArray
@@ -234,18 +241,11 @@ def _describe_model(inverted: Inverted | None, column: UnitColumn | None, result
     if inverted is None or column is None:
         return {"status": None, "sentence": "No model was made of this sounding.", "model": None, "depth": None}
     low, high = find_layer_ranges(inverted).resistivity
-    codes = results.region.template.codes
+    template, unit = results.region.template, results.region.length_unit
     return {
         "status": column.bedrock_status,
-        "sentence": tell_sounding(column, results.region.template, results.region.length_unit),
-        "doubts": [
-            words
-            for words in (
-                *tell_doubt(column, results.region.template, results.region.length_unit),
-                tell_trade_offs(inverted),
-            )
-            if words
-        ],
+        "sentence": tell_sounding(column, template, unit),
+        "doubts": [words for words in (*tell_doubt(column, template, unit), tell_trade_offs(inverted)) if words],
         "rms": _rounded(inverted.rms_percent),
         "depth": _rounded(column.bedrock_depth),
         "error": _rounded(column.bedrock_depth_error),
@@ -254,15 +254,22 @@ def _describe_model(inverted: Inverted | None, column: UnitColumn | None, result
             "rho": _figures(inverted.model.resistivity),
             "low": _figures(low),
             "high": _figures(high),
-            "unit": [codes.index(code) for code in column.unit],
+            "unit": [template.codes.index(code) for code in column.unit],
             "probability": _figures(column.unit_probability),
             "reach": _rounded(inverted.investigated_depth),
         },
-        "picks": [
-            {"unit": pick.unit, "status": pick.status, "depth": pick.depth, "who": pick.interpreter, "why": pick.reason}
-            for pick in column.picks
-        ],
+        "profile": _describe_profile(column),
+        "pickDepths": [pick.depth for pick in column.picks if pick.depth is not None],
+        "opinions": [tell_opinion(opinion, results.region.length_unit) for opinion in column.pick_opinions],
     }
+
+
+def _describe_profile(column: UnitColumn) -> dict[str, Any] | None:
+    """Each unit's probability in slices of depth, in whole percent; None where there is no profile."""
+    if not column.profile_depth.size:
+        return None
+    percent = np.round(100.0 * column.profile / np.maximum(column.profile.sum(axis=1, keepdims=True), 1e-9))
+    return {"edges": [round(float(edge), 1) for edge in column.profile_depth], "percent": percent.astype(int).tolist()}
 
 
 def _describe_well(results: Results, well: Well, to_degrees: pyproj.Transformer) -> dict[str, Any]:
@@ -274,6 +281,11 @@ def _describe_well(results: Results, well: Well, to_degrees: pyproj.Transformer)
         "rock": min((one.top for one in readings if one.unit == rock), default=None),
         "water": well.water_level,
         "conductance": well.specific_conductance,
+        "picks": [
+            tell_pick(pick, results.region.template, results.region.length_unit)
+            for pick in results.survey.picks
+            if pick.place == well.name
+        ],
         "log": [
             [one.top, one.bottom, one.description, codes.index(one.unit) if one.unit in codes else None]
             for one in readings

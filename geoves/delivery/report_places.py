@@ -15,7 +15,7 @@ from geoves.domain.earth import Inverted
 from geoves.domain.region import METRES, LengthUnit
 from geoves.domain.results import Results
 from geoves.domain.survey import Sounding
-from geoves.domain.tops import UnitColumn
+from geoves.domain.tops import UnitCalibration, UnitColumn
 from geoves.domain.units import Template
 
 NEAR_WELL = 3000.0  # m: a log farther away would suggest a likeness that nothing supports
@@ -189,14 +189,23 @@ def _template_table(results: Results) -> Markup:
         ):
             if share >= 0.5:
                 shown[code].append(float(rho))
+    calibrated = {one.unit: _calibration_words(one) for one in results.interpretation.calibration}
     rows = []
     for unit in results.region.template.units:
         values = np.array(shown[unit.code])
         spread = "–" if not values.size else f"{np.quantile(values, 0.05):.0f} to {np.quantile(values, 0.95):.0f}"
         given = f"{unit.resistivity_p05:g} to {unit.resistivity_p95:g}"
-        rows.append((place_name(unit.name), given, spread, values.size))
-    headings = ("unit", "template (Ω m, central 90 %)", "layers read as it (Ω m, central 90 %)", "layers")
+        rows.append((place_name(unit.name), given, calibrated.get(unit.code, "as given"), spread, values.size))
+    headings = ("unit", "template (Ω m, central 90 %)", "as used", "layers read as it (Ω m, central 90 %)", "layers")
     return table(headings, rows, "The template and what the layers show")
+
+
+def _calibration_words(one: UnitCalibration) -> str:
+    """The range that was used, and how many soundings' worth of evidence moved it or was too little to."""
+    if not one.used:
+        return f"as given ({one.soundings:.0f} soundings are too few to move it)"
+    low, high = one.after
+    return f"{low:.0f} to {high:.0f} (moved by {one.soundings:.0f} soundings)"
 
 
 def _wells_table(results: Results) -> Markup:

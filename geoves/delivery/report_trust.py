@@ -8,6 +8,7 @@ import numpy as np
 
 from geoves.delivery.figures import draw_cross_validation, draw_variogram, largest_misfits
 from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table, unit_label
+from geoves.delivery.sentences import tell_opinion
 from geoves.domain.grids import CrossValidation, Variogram
 from geoves.domain.results import Results
 
@@ -135,6 +136,8 @@ def write_decisions(results: Results) -> Markup:
     if not results.survey.picks:
         words = "No picks were given: every contact is the program’s own reading of curve, template and logs."
         return joined([element("p", {}, words), *remarks])
+    opinions = [one for column in results.interpretation.columns for one in column.pick_opinions]
+    said = {(one.pick.place, one.pick.unit): tell_opinion(one, unit) for one in opinions}
     rows = [
         (
             place_name(pick.place),
@@ -144,11 +147,12 @@ def write_decisions(results: Results) -> Markup:
             "–" if pick.depth_error is None else format_length(pick.depth_error, unit, 1),
             pick.interpreter,
             pick.reason,
+            said.get((pick.place, pick.unit), "–"),
         )
         for pick in results.survey.picks
     ]
-    headings = ("place", "unit", "status", "depth", "error", "interpreter", "reason")
-    words = "A pick outranks what the program infers."
+    headings = ("place", "unit", "status", "depth", "error", "interpreter", "reason", "what the curve says")
+    words = "A pick outranks what the program infers; what the curve by itself says of it stands beside it."
     return joined([element("p", {}, words), table(headings, rows, f"Picks: {len(rows)}"), *remarks])
 
 

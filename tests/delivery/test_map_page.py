@@ -2,16 +2,22 @@
 
 import re
 
+import attrs
+import geopandas
 import numpy as np
 import pyproj
 import pytest
+import shapely
+import shapely.affinity
 from selenium.webdriver.common.action_chains import ActionChains
 from selenium.webdriver.common.by import By
 from selenium.webdriver.common.keys import Keys
 
 from geoves.delivery.map_data import control_points, encode_grid, thin_stack
 from geoves.delivery.map_page import write_map_page
+from geoves.delivery.sentences import tell_opinion, tell_sounding
 from geoves.domain.grids import Grid
+from geoves.domain.survey import Pick
 
 READY = "document.body.dataset.ready === 'yes'"
 
@@ -258,3 +264,66 @@ def test_paper_shows_what_the_screen_showed(opened):
     assert float(seen[0]) <= float(before[0]) < float(before[2]) <= float(seen[2])
     opened.run("window.dispatchEvent(new Event('afterprint'))")
     assert opened.run("return map_geoves.getSize().x") > 640
+
+
+def test_contour_numbers_keep_apart_on_a_steep_flank(browser, small_results, tmp_path):
+    """Twelve contours 40 m apart. Boxes of the browser's own layout: none that is shown meets another."""
+    axis = small_results.layers["valley_axis"].geometry.iloc[0]
+    flank = [shapely.affinity.translate(axis, 0.0, 40.0 * i) for i in range(12)]
+    contours = geopandas.GeoDataFrame(
+        {"elevation": 300.0 + 5.0 * np.arange(12)}, geometry=flank, crs=small_results.region.crs
+    )
+    layers = {**small_results.layers, "bedrock_contours": contours}
+    browser.open(write_map_page(attrs.evolve(small_results, layers=layers), tmp_path / "map.html"))
+    browser.wait_for(READY)
+    counts = []
+    for zoom in (13, 14, 15, 16):
+        browser.run("map_geoves.setZoom(arguments[0], {animate: false})", zoom)
+        boxes = browser.run(
+            "return [...document.querySelectorAll('.contour')].filter(c => c.style.opacity !== '0')"
+            ".map(c => {const b = c.querySelector('text').getBoundingClientRect();"
+            "return [b.left, b.right, b.top, b.bottom]})"
+        )
+        counts.append(len(boxes))
+        for k, one in enumerate(boxes):
+            for other in boxes[:k]:
+                assert one[1] < other[0] or other[1] < one[0] or one[3] < other[2] or other[3] < one[2]
+    assert 0 < counts[0] < counts[-1] <= 12
+
+
+@pytest.mark.parametrize("width", [390, 900, 1300])
+def test_the_legend_covers_no_mark(browser, page, width):
+    browser.open(page, width=width)
+    browser.wait_for(READY)
+    meets = browser.run(
+        "const meet = (a, b) => a.left < b.right && b.left < a.right && a.top < b.bottom && b.top < a.bottom;"
+        "const box = q => document.querySelector(q).getBoundingClientRect();"
+        "return ['#legend', '#readout', '.panel'].map(q => meet(box(q), box('#map_geoves')))"
+    )
+    assert meets == [False, False, False]
+
+
+def test_panel_shows_the_profile_and_says_what_the_report_says(opened, small_results):
+    template = small_results.region.template
+    column = next(one for one in small_results.interpretation.columns if one.sounding == "Larch 7")
+    opened.driver.find_element(By.ID, "wanted").send_keys("Larch 7", Keys.ENTER)
+    words = opened.run("return document.getElementById('answer').textContent")
+    assert tell_sounding(column, template, "m") in words
+    assert tell_opinion(column.pick_opinions[0], "m") in words
+    assert opened.run("return document.querySelectorAll('#answer .pick').length") == 1
+    # Bands of units, stacked: their outermost edges are the box of the probabilities, 114 pixels wide.
+    ends = opened.run(
+        "const b = [...document.querySelectorAll('#answer svg.figure path[fill^=\"#\"]')].map(p => p.getBBox());"
+        "return [Math.min(...b.map(o => o.x)), Math.max(...b.map(o => o.x + o.width))]"
+    )
+    np.testing.assert_allclose(ends, [222.0, 336.0], atol=0.2)
+
+
+def test_a_pick_at_a_well_is_told_in_its_panel(browser, small_results, tmp_path):
+    pick = Pick("W-2", "shale", "at", 42.0, 3.0, "A. Reader", "deepened by hand")
+    survey = attrs.evolve(small_results.survey, picks=(*small_results.survey.picks, pick))
+    browser.open(write_map_page(attrs.evolve(small_results, survey=survey), tmp_path / "map.html"))
+    browser.wait_for(READY)
+    browser.driver.find_element(By.ID, "wanted").send_keys("W-2", Keys.ENTER)
+    words = browser.run("return document.getElementById('answer').textContent")
+    assert "Decided by A. Reader: Shale & siltstone at 42 m ± 3 (deepened by hand)." in words

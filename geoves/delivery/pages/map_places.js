@@ -71,7 +71,7 @@ function permitMarkers(map, open) {
   const grow = () => {
     const zoom = map.getZoom(), seen = map.getBounds();
     for (const { permit, dot } of dots) {
-      dot.setRadius(Math.min(7, Math.max(1.5, 1.5 + 0.9 * (zoom - 12))));
+      dot.setRadius(Math.min(7, Math.max(1.8, 1.8 + 0.9 * (zoom - 12))));
       const wanted = zoom >= 15 && map.hasLayer(group) && seen.contains(permit.at);
       if (wanted && !dot.getTooltip()) {
         dot.bindTooltip(named(permit.name), { permanent: true, direction: "right", className: "permit-name" });
@@ -79,6 +79,7 @@ function permitMarkers(map, open) {
     }
   };
   map.on("zoomend moveend", grow);
+  grow();
   return group;
 }
 
@@ -99,11 +100,11 @@ function lineLayers(map) {
         lines(one.paths, "#fff", 3.2, { opacity: 0.8 }),
         lines(one.paths, "#7a1fa2", 1.8, { dashArray: one.value === "likely" ? null : "5 5" }),
       ])),
-    labels: L.layerGroup(contourLabels(given.bedrock_contours)),
+    labels: contourLabels(given.bedrock_contours),
   };
 }
 
-// A number at the middle of each contour's longest piece.
+// A number on each contour's longest pieces; where two would touch, the later one waits for a closer look.
 function contourLabels(contours) {
   return contours.flatMap((one) => {
     const longest = one.paths.reduce((best, path) => path.length > best.length ? path : best, []);
@@ -111,9 +112,40 @@ function contourLabels(contours) {
     const words = draw("svg", { width: 50, height: 14, viewBox: "0 0 50 14", "aria-hidden": "true" },
       draw("text", { x: 25, y: 11, "text-anchor": "middle", class: "halo" }, lengthNumber(one.value)));
     const icon = L.divIcon({ className: "contour", html: words, iconSize: [50, 14] });
-    const middle = longest[Math.floor(longest.length / 2)];
-    return [L.marker(middle, { icon, interactive: false, keyboard: false, pane: "lines" })];
+    const marker = L.marker(longest[0], { icon, interactive: false, keyboard: false, pane: "numbers" });
+    marker.candidates = [0.5, 0.4, 0.6, 0.3, 0.7, 0.2, 0.8, 0.1, 0.9].map((share) => longest[Math.floor(longest.length * share)]);
+    return [marker];
   });
+}
+
+// Marks shrink where they would hide each other: by the room that each has on the screen, in pixels.
+function sizeMarks(map) {
+  const [west, south, east, north] = projection.bounds;
+  const corners = [[west, south], [east, north]].map((corner) => map.latLngToLayerPoint(toDegrees(...corner)));
+  const area = Math.abs((corners[1].x - corners[0].x) * (corners[1].y - corners[0].y));
+  const room = Math.sqrt(area / Math.max(1, described.soundings.length + described.wells.length));
+  map.getContainer().style.setProperty("--mark", Math.min(1, Math.max(0.55, room / 56)).toFixed(2));
+}
+
+const LABEL_ROOM = { wide: 46, high: 18 };  // pixels that a contour's number keeps from the next one
+const MARK_ROOM = { wide: 22, high: 14 };   // and from a mark
+
+// Each label at the first of its places that is free of labels and marks, hidden where none is.
+function spreadLabels(map, labels) {
+  const marks = [...described.soundings, ...described.wells];
+  const taken = marks.map(({ at }) => ({ point: map.latLngToLayerPoint(at), room: MARK_ROOM }));
+  for (const label of labels) {
+    const free = label.candidates.find((at) => {
+      const { x, y } = map.latLngToLayerPoint(at);
+      return taken.every(({ point, room }) =>
+        Math.abs(point.x - x) > room.wide || Math.abs(point.y - y) > room.high);
+    });
+    if (free) {
+      taken.push({ point: map.latLngToLayerPoint(free), room: LABEL_ROOM });
+      label.setLatLng(free);
+    }
+    label.setOpacity(free ? 1 : 0);
+  }
 }
 
 // How near the depth of rock is truly known: in words before the numbers.
@@ -168,21 +200,21 @@ function permitFacts(permit) {
 function soundingFacts(sounding) {
   const facts = [make("p", { class: "says" }, sounding.sentence)];
   if (!sounding.model) return facts;
+  facts.push(...[...sounding.opinions, ...sounding.doubts].map((words) => make("p", {}, words)));
   facts.push(make("p", { class: "soft" }, `${statusWords[sounding.status]}; `
     + `${sounding.model.rho.length} layers; misfit ${sounding.rms.toFixed(1)} %; `
     + `the curve reaches to about ${lengthWords(sounding.model.reach)}`));
-  for (const pick of sounding.picks) {
-    const depth = known(pick.depth) ? ` ${lengthWords(pick.depth, 1)}` : "";
-    facts.push(make("p", {}, `Pick by ${pick.who}: ${pick.unit} ${pick.status}${depth}; ${pick.why}`));
-  }
   return facts;
 }
 
 function wellFacts(well) {
-  const facts = [`${wellSays(well)}`, `total depth ${lengthWords(well.total)}`];
+  const facts = [wellSays(well)];
+  if (known(well.rock)) facts.push(`total depth ${lengthWords(well.total)}`);
   if (known(well.water)) facts.push(`water at ${lengthWords(well.water, 1)}`);
   if (known(well.conductance)) facts.push(`${Math.round(well.conductance)} \u00b5S/cm at 25 \u00b0C`);
-  return [make("p", { class: "says" }, `${facts.join("; ")}.`)];
+  const said = facts.join("; ");
+  return [make("p", { class: "says" }, `${said[0].toUpperCase()}${said.slice(1)}.`),
+    ...well.picks.map((words) => make("p", {}, words))];
 }
 
 function markKey() {

@@ -67,11 +67,17 @@ function drawReading(curve, i, x, y) {
   return [draw("line", { x1: x, x2: x, y1: ends[0], y2: ends[1], class: "bar-line" }), mark];
 }
 
+// How deep the drawing of a sounding reaches, m: past its lowest interface and its column of probabilities.
+function depthShown({ model, profile }) {
+  const lowest = 1.15 * model.top[model.top.length - 1];
+  return Math.max(lowest, profile ? profile.edges[profile.edges.length - 1] : 1.4 * lowest, 10);
+}
+
+// Resistivity against depth with what each layer may be, and beside it the probability of every unit.
 function drawModel(sounding) {
   const { model } = sounding;
-  const lowest = model.top[model.top.length - 1];
-  const deepest = Math.max(1.35 * lowest, 10) / region.unit.metres;
-  const box = { left: 52, right: 336, top: 8, bottom: 220 };
+  const deepest = depthShown(sounding) / region.unit.metres;
+  const box = { left: 52, right: 200, top: 8, bottom: 220 };
   const [low, high] = logarithmicEnds([...model.low, ...model.high, ...model.rho], 1.5);
   const x = scaleOf(low, high, box.left, box.right, true), y = scaleOf(0, deepest, box.top, box.bottom, false);
   const tops = model.top.map((metres) => metres / region.unit.metres);
@@ -80,14 +86,55 @@ function drawModel(sounding) {
   const bands = tops.map((top, i) => draw("rect", { class: "band", x: svgNumber(x(model.low[i])), y: svgNumber(y(top)),
     width: svgNumber(x(model.high[i]) - x(model.low[i])), height: svgNumber(Math.max(0, y(bottoms[i]) - y(top))) }));
   const stairs = model.rho.flatMap((rho, i) => [[x(rho), y(tops[i])], [x(rho), y(bottoms[i])]]);
-  const labels = model.unit.map((unit, i) => y(bottoms[i]) - y(tops[i]) < 13 ? null : draw("text",
-    { x: box.right - 5, y: svgNumber((y(tops[i]) + y(bottoms[i])) / 2 + 4), class: "halo", "text-anchor": "end" },
-    `${described.units[unit].name} ${model.probability[i].toFixed(2)}`));
-  figure.append(draw("title", {}, `Layered model of ${model.rho.length} layers`), ...axes(box,
-    { ticks: logarithmicTicks(low, high), scale: x, label: "resistivity (\u03a9 m), band of 90 %" },
+  figure.append(draw("title", {}, `Layered model of ${model.rho.length} layers, and units by probability`), ...axes(box,
+    { ticks: logarithmicTicks(low, high), scale: x, label: "resistivity (\u03a9 m)" },
     { ticks: evenTicks(0, deepest, 5), scale: y, label: `depth (${region.unit.label})` }), ...bands,
-    draw("path", { class: "model", d: pathOf(stairs) }), ...labels.filter(Boolean));
+    draw("path", { class: "model", d: pathOf(stairs) }), ...drawShares(sounding, y, box, deepest));
   return figure;
+}
+
+// Each unit's probability at each depth, stacked to one, with the interpreter's picks across it.
+function drawShares(sounding, y, box, deepest) {
+  const left = 222, right = 336;
+  const slices = sharesByDepth(sounding, deepest);
+  const across = scaleOf(0, 1, left, right, false);
+  const line = (slice, unit) => across(slice.shares.slice(0, unit).reduce((sum, share) => sum + share, 0));
+  const parts = described.units.flatMap((unit, i) => {
+    if (!slices.some(({ shares }) => shares[i] > 0.004)) return [];
+    const outer = slices.map((slice) => [line(slice, i + 1), y(slice.depth)]);
+    const inner = slices.map((slice) => [line(slice, i), y(slice.depth)]).reverse();
+    return [draw("path", { d: `${pathOf([...outer, ...inner])}Z`, fill: unit.colour })];
+  });
+  const names = described.units.flatMap((unit, i) => {
+    const best = slices.filter(({ shares }) => shares[i] === Math.max(...shares));
+    const [top, bottom] = best.length ? [y(best[0].depth), y(best[best.length - 1].depth)] : [0, 0];
+    const words = unit.name.length > 19 ? `${unit.name.slice(0, 18)}\u2026` : unit.name;
+    return bottom - top < 13 ? [] : [draw("text", { x: (left + right) / 2, y: svgNumber((top + bottom) / 2 + 4),
+      class: "halo", "text-anchor": "middle" }, words)];
+  });
+  const picks = (sounding.pickDepths || []).map((depth) => svgNumber(y(depth / region.unit.metres)))
+    .map((at) => draw("path", { d: `M${left - 6} ${at}H${right + 6}`, class: "pick" }));
+  return [...parts, draw("path", { d: `M${left} ${box.top}H${right}V${box.bottom}H${left}Z`, class: "frame" }), ...names,
+    ...picks, draw("text", { x: (left + right) / 2, y: box.bottom + 28, "text-anchor": "middle" }, "probability"),
+    ...[0, 0.5, 1].map((tick) => draw("text",
+      { x: svgNumber(across(tick)), y: box.bottom + 13, class: "tick", "text-anchor": "middle" }, String(tick)))];
+}
+
+// Depths in the region's unit with the share of each unit: of the profile, else of the model's layers.
+function sharesByDepth({ model, profile, status }, deepest) {
+  const even = (percent) => percent.map((one) => one / Math.max(1, percent.reduce((sum, other) => sum + other, 0)));
+  if (!profile) {
+    const tops = [...model.top.map((metres) => metres / region.unit.metres), deepest];
+    return model.unit.flatMap((unit, i) => [tops[i], tops[i + 1]].map((depth) =>
+      ({ depth, shares: described.units.map((_, k) => Number(k === unit)) })));
+  }
+  const { edges, percent } = profile;
+  const inside = percent.map((one, i) => (
+    { depth: (edges[i] + edges[i + 1]) / 2 / region.unit.metres, shares: even(one) }));
+  const last = inside[inside.length - 1].shares;
+  // Below the profile of a bound nothing is said; below a contact that was found lies what lies at its end.
+  const end = status === "deeper_than" ? edges[edges.length - 1] / region.unit.metres : deepest;
+  return [{ depth: 0, shares: inside[0].shares }, ...inside, { depth: end, shares: last }];
 }
 
 // A well's log as a strip with the driller's words.

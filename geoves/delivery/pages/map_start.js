@@ -3,7 +3,7 @@
 const say = (words) => { document.getElementById("said").textContent = words; };
 
 function makePanes(map) {
-  const order = { surface: 250, lines: 380, permits: 420 };
+  const order = { surface: 250, lines: 380, permits: 420, numbers: 430 };
   for (const [name, index] of Object.entries(order)) {
     map.createPane(name).style.zIndex = index;
     if (name !== "permits") map.getPane(name).style.pointerEvents = "none";
@@ -23,11 +23,12 @@ function startSurface(map) {
     if (overlay) overlay.setUrl(picture);
     else overlay = L.imageOverlay(picture, bounds, { pane: "surface", interactive: false, alt: "" }).addTo(map);
     drawLegend(surface, mode.value);
+    map.invalidateSize({ animate: false });  // what the legend takes the map gives
   };
   choice.addEventListener("change", show);
   mode.addEventListener("change", show);
-  map.fitBounds(bounds, { animate: false, padding: [6, 6] });
   show();
+  map.fitBounds(bounds, { animate: false, padding: [6, 6] });
   return { bounds, current: () => surfaceNamed(choice.value) };
 }
 
@@ -50,6 +51,14 @@ function startReadout(map, current) {
       make("br"), `${event.latlng.lat.toFixed(5)}, ${event.latlng.lng.toFixed(5)}`);
   });
   map.on("mouseout", () => box.replaceChildren());
+}
+
+// On a narrow screen: the panel's first lines, and over them that part of the map in which the place lies.
+function bringIntoSight(map, panel, at) {
+  window.scrollTo(0, panel.offsetTop - 0.62 * window.innerHeight);
+  const caution = document.getElementById("caution").getBoundingClientRect().bottom;
+  const hidden = Math.max(0, caution - map.getContainer().getBoundingClientRect().top);
+  map.panInside(at, { paddingTopLeft: [24, hidden + 24], paddingBottomRight: [24, 24], animate: false });
 }
 
 // What the panel shows, and the way back from it.
@@ -80,7 +89,7 @@ function startPanel(map) {
     panel.scrollTop = 0;
     panel.focus({ preventScroll: true });
     // On a phone the panel lies under the map: both are brought into sight.
-    if (window.innerWidth <= 800) window.scrollTo(0, panel.offsetTop - 0.45 * window.innerHeight);
+    if (window.innerWidth <= 800) bringIntoSight(map, panel, at);
     say(`${title}. ${[...answer.querySelectorAll(".says")].map((part) => part.textContent).join(" ")}`);
   };
   document.addEventListener("keydown", (event) => {
@@ -96,7 +105,9 @@ function startPlaces(show) {
   const rests = (place, itself) => restsOn(place.e, place.n, itself, openers);
   openers.sounding = (one) => show(one.at, `Sounding ${one.name}`, [
     ...soundingFacts(one), make("h3", {}, "Curve"), drawCurve(one),
-    ...(one.model ? [make("h3", {}, "Model"), drawModel(one)] : []), make("h3", {}, "Predicted column here"),
+    ...(one.model ? [make("h3", {}, "What the ground may be"), drawModel(one),
+      make("p", { class: "soft" }, "Left, the layered model with its 90 % band. Right, how probable each unit is at each "
+        + "depth; an orange line is an interpreter\u2019s pick.")] : []), make("h3", {}, "Predicted column here"),
     ...columnParts(one.e, one.n), ...rests(one, one)]);
   openers.well = (one) => show(one.at, `Well ${one.name}`, [
     ...wellFacts(one), ...(one.log.length ? [drawLog(one)] : []),
@@ -113,7 +124,7 @@ function startLayers(map, openers) {
     ["Wells", wellMarkers(openers.well), true],
     ["Permits", permitMarkers(map, openers.permit), true],
     ["Valley axis", lines.axis, true],
-    ["Bedrock contours", L.layerGroup([lines.contours, lines.labels]), true],
+    ["Bedrock contours", L.layerGroup([lines.contours, ...lines.labels]), true],
     ["Thickness contours", lines.thickness, false],
     ["Extent of likely gravel", lines.extent, true],
     ["Boundary", lines.boundary, true],
@@ -124,6 +135,12 @@ function startLayers(map, openers) {
     return make("label", {}, box, ` ${words}`);
   }));
   for (const [, layer, on] of layers.reverse()) if (on) layer.addTo(map);
+  const spread = () => {
+    sizeMarks(map);
+    spreadLabels(map, lines.labels);
+  };
+  map.on("zoomend resize", spread);
+  spread();
 }
 
 // Paper has its own width: the view is fitted into it, and the screen's comes back after.
@@ -153,7 +170,7 @@ async function start() {
   document.getElementById("caution").textContent = described.caution;
   document.getElementById("title").textContent = region.name;
   await unpackAll();
-  map.options.zoomSnap = 0.25;
+  map.options.zoomSnap = 0.1;
   map.attributionControl.setPrefix("Drawn with Leaflet");
   makePanes(map);
   const { current } = startSurface(map);

@@ -147,6 +147,6 @@ function drawLegend(surface, mode) {
   const unit = surface.quantity === "probability" ? "" : ` (${quantityUnit(surface)})`;
   const title = asWidth ? `${surface.title}: width of the 90 % band` : `${surface.title}${unit}`;
   const datum = surface.quantity === "elevation" ? ` Heights: ${region.datumName || "datum not declared"}.` : "";
-  box.replaceChildren(make("h2", {}, title), figure,
+  box.replaceChildren(figure, make("h2", {}, title),
     make("p", {}, `${explained}Hatched: no data near, or outside the region.${datum}`));
 }
