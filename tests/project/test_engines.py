@@ -9,7 +9,7 @@ from threadpoolctl import threadpool_info
 from geoves.inversion import InversionOptions, invert
 from geoves.project.engines import open_engine, watched
 
-UNEVEN = [40_000, 3, 30_000, 2, 20_000, 1, 0]  # the first blocks take longest
+UNEVEN = [150_000, 3, 40_000, 2, 20_000, 1, 0]  # the first blocks take longest
 
 
 @pytest.mark.parametrize("workers", [1, 2])
