@@ -60,6 +60,7 @@ FIRST_INTERFACE, LAST_INTERFACE = 0.8, 0.35
 FELT_CHI_SQUARE = 4.0
 # The survey's noise is not believed outside of these factors of the default.
 LEAST_NOISE_FACTOR, MOST_NOISE_FACTOR = 0.5, 4.0
+DEFAULT_STRENGTH = 20.0
 
 
 def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map = map) -> tuple[Inverted, ...]:  # noqa: A002 - the seam is named for what it replaces
@@ -136,10 +137,15 @@ def _pooled_residuals(
 
 
 def _survey_noise(residual: FloatArray, options: InversionOptions) -> float:
-    """Relative error of a reading: the normal-consistent median absolute residual, which outliers do not move."""
+    """Relative error of a reading: the normal-consistent median absolute residual, which outliers do not move.
+
+    The default speaks like DEFAULT_STRENGTH readings more, so that a few residuals cannot make a curve too sure.
+    """
     if not residual.size:
         return options.default_error
     spread = float(np.median(np.abs(residual))) / 0.6745
+    n = residual.size
+    spread = np.sqrt((n * spread**2 + DEFAULT_STRENGTH * options.default_error**2) / (n + DEFAULT_STRENGTH))
     return float(np.clip(spread, LEAST_NOISE_FACTOR * options.default_error, MOST_NOISE_FACTOR * options.default_error))
 
 

@@ -187,10 +187,13 @@ def _read_sounding(
         known = values[~np.isnan(values)]
         if template.with_role(role) and known.size:
             thicknesses += soundings.role_thickness(sounding, known, role, source)
+    decided_absent = soundings.absent_thickness(sounding, picks, template)
+    replaced = {row.role for row in decided_absent}
+    tops = soundings.contact_tops(sounding, contact, template, options)
     return PlaceReading(
         column=soundings.read_column(inverted, draws, contact, template, opinions),
-        tops=tuple(soundings.contact_tops(sounding, contact, template, options)),
-        thicknesses=tuple(thicknesses),
+        tops=(*tops, *soundings.other_picks(sounding, picks, template)),
+        thicknesses=(*(row for row in thicknesses if row.role not in replaced), *decided_absent),
         shallow_resistivities=tuple(soundings.shallow_resistivity(sounding, draws, template)),
     )
 

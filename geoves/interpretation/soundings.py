@@ -9,10 +9,10 @@ from scipy.special import ndtr
 
 from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.earth import Inverted
-from geoves.domain.survey import Pick, Sounding
+from geoves.domain.survey import Pick, Sounding, Well
 from geoves.domain.tops import BedrockStatus, PickOpinion, ShallowResistivity, Thickness, Top, UnitColumn
 from geoves.domain.units import Z_95, Role, Template
-from geoves.interpretation.options import InterpretationOptions
+from geoves.interpretation.options import THICKNESS_BY_ROLE, InterpretationOptions
 from geoves.interpretation.sequences import ColumnDraws, HalfSpace
 from geoves.kernels import layered_earth, unit_sequence
 from geoves.kernels.damped_steps import Curves
@@ -31,7 +31,8 @@ PRESENT = 1.0
 class BasalContact:
     """What the draws say of the basal contact and the rock under it; depths in m.
 
-    depth, gravel : (m,) of the draws that reach it, equally probable    bound : m, 0 where the curve excludes nothing
+    depth, gravel : (m,) of the draws that reach it, equally probable
+    bound : m, 0 where the curve excludes nothing    rock_bound : m, where the interpreter's bound on rock is deeper
     log_deviation : of the contact's depth    wells : those beside it that weighed it    picks : decisions applied
     """
 
@@ -40,6 +41,7 @@ class BasalContact:
     status: BedrockStatus
     bound: float
     log_deviation: float
+    rock_bound: float = 0.0
     wells: tuple[str, ...] = ()
     picks: tuple[Pick, ...] = ()
 
@@ -107,19 +109,42 @@ def apply_picks(
         if pick.status == "absent":
             contact = attrs.evolve(contact, gravel=np.zeros_like(contact.gravel))
         elif pick.status == "below" and pick.depth is not None:
-            contact = attrs.evolve(contact, status="deeper_than", bound=pick.depth)
+            contact = _decide_below(contact, pick.depth, role)
         elif pick.depth is not None:
-            error = pick.depth_error or 0.05 * pick.depth
-            depth = np.maximum(pick.depth + error * generator.standard_normal(max(contact.depth.size, 100)), 0.1)
-            gravel = generator.choice(contact.gravel, depth.size) if contact.gravel.size else np.zeros(depth.size)
-            if role is Role.BEDROCK:
-                gravel = np.minimum(gravel, 0.9 * depth)
-                depth = depth - gravel
-            contact = attrs.evolve(
-                contact, depth=depth, gravel=gravel, status="seen", log_deviation=float(np.std(np.log(depth)))
-            )
+            contact = _decide_at(contact, pick.depth, pick.depth_error or 0.05 * pick.depth, role, generator)
         contact = attrs.evolve(contact, picks=(*contact.picks, pick))
     return contact
+
+
+def _decide_at(
+    contact: BasalContact, depth: float, error: float, role: Role, generator: np.random.Generator
+) -> BasalContact:
+    """The contact at a decided depth: of rock, with the inferred gravel on it; of gravel, with the gravel under it."""
+    basal = np.maximum(depth + error * generator.standard_normal(max(contact.depth.size, 100)), 0.1)
+    # A decided top of gravel means that there is some.
+    pool = contact.gravel[contact.gravel >= PRESENT] if role is Role.DEEP_AQUIFER else contact.gravel
+    gravel = generator.choice(pool, basal.size) if pool.size else np.zeros(basal.size)
+    if role is Role.BEDROCK:
+        gravel = np.minimum(gravel, 0.9 * basal)
+        basal = basal - gravel
+    deviation = float(np.std(np.log(basal)))
+    return attrs.evolve(contact, depth=basal, gravel=gravel, status="seen", bound=0.0, log_deviation=deviation)
+
+
+def _decide_below(contact: BasalContact, depth: float, role: Role) -> BasalContact:
+    """The contact deeper than a decided depth: those draws that are, or a bound where none is.
+
+    Rock deeper than a depth leaves room for gravel above it: the basal contact is bounded only as far as the thickest
+    gravel reaches.
+    """
+    drawn = contact.rock if role is Role.BEDROCK else contact.depth
+    deeper = drawn > depth
+    if contact.status != "deeper_than" and np.count_nonzero(deeper) >= LEAST_ALLOWED * max(drawn.size, 1):
+        kept, gravel = contact.depth[deeper], contact.gravel[deeper]
+        return attrs.evolve(contact, depth=kept, gravel=gravel, log_deviation=float(np.std(np.log(kept))))
+    room = THICKNESS_BY_ROLE[Role.DEEP_AQUIFER][1] if role is Role.BEDROCK else 0.0
+    bound, rock_bound = max(contact.bound, depth - room, 1.0), max(contact.rock_bound, depth)
+    return attrs.evolve(contact, status="deeper_than", bound=bound, rock_bound=rock_bound)
 
 
 def contact_tops(
@@ -140,7 +165,8 @@ def contact_tops(
         )  # fmt: skip
 
     if contact.status == "deeper_than":
-        return [top(rock, name, "below", contact.bound, np.nan) for name in ("basal", "bedrock")]
+        bounds = (("basal", contact.bound), ("bedrock", max(contact.bound, contact.rock_bound)))
+        return [top(rock, name, "below", bound, np.nan) for name, bound in bounds]
     if not contact.depth.size or contact.log_deviation > options.broad_log_depth_deviation:
         return []
     present = float(np.mean(contact.gravel >= PRESENT))
@@ -153,6 +179,37 @@ def contact_tops(
     if deep and not present:
         rows.append(top(deep[0], Role.DEEP_AQUIFER, "absent", np.nan, np.nan))
     return rows
+
+
+def other_picks(place: Sounding | Well, picks: Sequence[Pick], template: Template) -> list[Top]:
+    """Rows for what was decided of units above the basal contact: kept and shown, though no surface is made of them."""
+    role = {unit.code: unit.role for unit in template.units}
+    rows = []
+    for pick in picks:
+        if role[pick.unit] in {Role.DEEP_AQUIFER, Role.BEDROCK}:
+            continue
+        depth = np.nan if pick.depth is None or pick.status == "absent" else pick.depth
+        error = pick.depth_error or 0.05 * depth if pick.status == "at" else np.nan
+        rows.append(
+            Top(
+                place.name, "pick", place.easting, place.northing, pick.unit, role[pick.unit], pick.status,
+                depth, place.ground_elevation - depth, error, f"pick by {pick.interpreter}: {pick.reason}",
+            )
+        )  # fmt: skip
+    return rows
+
+
+def absent_thickness(place: Sounding | Well, picks: Sequence[Pick], template: Template) -> list[Thickness]:
+    """A thickness of nothing for each unit that the interpreter decided to be absent."""
+    role = {unit.code: unit.role for unit in template.units}
+    return [
+        Thickness(
+            place.name, "pick", place.easting, place.northing, role[pick.unit], 0.0, LEAST_THICKNESS_ERROR, False,
+            f"pick by {pick.interpreter}: {pick.reason}",
+        )
+        for pick in picks
+        if pick.status == "absent"
+    ]  # fmt: skip
 
 
 _SOURCES = {

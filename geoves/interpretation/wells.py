@@ -1,5 +1,8 @@
 """Wells: drillers' words in the order of the column, contacts and bounds from them."""
 
+from collections.abc import Sequence
+
+import attrs
 import numpy as np
 
 from geoves.domain.arrays import FloatArray
@@ -8,6 +11,7 @@ from geoves.domain.tops import PlaceKind, Thickness, Top, TopStatus, WellReading
 from geoves.domain.units import Role, Template
 from geoves.interpretation.options import InterpretationOptions
 from geoves.interpretation.sequences import log_within
+from geoves.interpretation.soundings import absent_thickness, other_picks
 from geoves.interpretation.words import claim_words
 from geoves.kernels.unit_sequence import ordered_transition, read_units
 
@@ -119,38 +123,46 @@ def _thicknesses(
 
 
 def apply_well_picks(
-    tops: list[Top], thicknesses: list[Thickness], well: Well, picks: list[Pick], template: Template
+    tops: list[Top], thicknesses: list[Thickness], well: Well, picks: Sequence[Pick], template: Template
 ) -> tuple[list[Top], list[Thickness]]:
-    """The log's contacts with the interpreter's decisions put in their place."""
+    """The log's contacts with the interpreter's decisions in their place.
+
+    A decided top of rock carries the gravel that the log shows on it: the basal contact is that much higher.
+    """
     role = {unit.code: unit.role for unit in template.units}
     for pick in picks:
+        if role[pick.unit] not in {Role.BEDROCK, Role.DEEP_AQUIFER} or pick.status == "absent" or pick.depth is None:
+            continue
         name = "bedrock" if role[pick.unit] is Role.BEDROCK else "basal"
-        if role[pick.unit] not in {Role.BEDROCK, Role.DEEP_AQUIFER}:
-            continue
-        source = f"pick by {pick.interpreter}: {pick.reason}"
-        if pick.status == "absent":
-            thicknesses = [t for t in thicknesses if t.role != role[pick.unit]]
-            thicknesses.append(
-                Thickness(well.name, "pick", well.easting, well.northing, role[pick.unit], 0.0, 0.4, False, source)
-            )
-            continue
-        depth = float(pick.depth or 0.0)
-        error = pick.depth_error or 0.05 * depth
-        tops = [top for top in tops if top.contact != name]
-        elevation = well.ground_elevation - depth
-        tops.append(
-            Top(
-                well.name,
-                "pick",
-                well.easting,
-                well.northing,
-                pick.unit,
-                name,
-                pick.status,
-                depth,
-                elevation,
-                error if pick.status == "at" else np.nan,
-                source,
-            )
-        )
-    return tops, thicknesses
+        tops = [*(top for top in tops if top.contact != name), _decided_top(well, pick, name, pick.depth)]
+        if name == "bedrock" and pick.status == "at":
+            logged = next((top for top in tops if top.contact == "basal" and top.status == "at"), None)
+            if logged is None or logged.depth >= pick.depth or logged.unit == pick.unit:
+                tops = [*(top for top in tops if top.contact != "basal"), _decided_top(well, pick, "basal", pick.depth)]
+            else:
+                thicknesses = [_decided_gravel(row, pick.depth - logged.depth, pick) for row in thicknesses]
+    decided = absent_thickness(well, picks, template)
+    replaced = {row.role for row in decided}
+    kept = [row for row in thicknesses if row.role not in replaced]
+    return [*tops, *other_picks(well, picks, template)], [*kept, *decided]
+
+
+def _decided_top(well: Well, pick: Pick, contact: str, depth: float) -> Top:
+    error = (pick.depth_error or 0.05 * depth) if pick.status == "at" else np.nan
+    source = f"pick by {pick.interpreter}: {pick.reason}"
+    row = _top(well, pick.unit, contact, pick.status, depth, error, source)
+    return attrs.evolve(row, kind="pick")
+
+
+def _decided_gravel(row: Thickness, thickness: float, pick: Pick) -> Thickness:
+    """The deep gravel's thickness down to the decided rock; other rows as they are."""
+    if row.role != Role.DEEP_AQUIFER:
+        return row
+    return attrs.evolve(
+        row,
+        thickness=thickness,
+        standard_error=float(np.hypot(row.standard_error, pick.depth_error or 0.05 * (pick.depth or 0.0))),
+        at_least=False,
+        kind="pick",
+        source=f"pick by {pick.interpreter}: {pick.reason}",
+    )

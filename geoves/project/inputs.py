@@ -8,6 +8,7 @@ from geoves.domain.findings import Finding
 from geoves.domain.grids import Grid
 from geoves.domain.region import Region
 from geoves.domain.survey import Survey
+from geoves.domain.units import Role
 from geoves.errors import InputError
 from geoves.project.settings import Settings, read_settings
 from geoves.reading import FaultyInputError, read_region, read_survey
@@ -37,6 +38,15 @@ def read_inputs(region_path: Path) -> Inputs:
 
 
 def _find_setting_faults(region: Region) -> tuple[Finding, ...]:
+    """Faults of the steps' options, and a template that ends above what is to be mapped."""
+    lacking: tuple[Finding, ...] = ()
+    if not region.template.with_role(Role.BEDROCK):
+        expected = "no unit has the role bedrock; every column must end in one: add it as the last [[unit]]"
+        lacking = (Finding("fault", region.path.name, 0, "unit", "", expected),)
+    return (*lacking, *_find_option_faults(region))
+
+
+def _find_option_faults(region: Region) -> tuple[Finding, ...]:
     try:
         read_settings(region)
     except InputError as error:

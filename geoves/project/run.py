@@ -74,6 +74,7 @@ def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, A
         "remarks": list(stack.remarks),
         "bedrock_status": provenance.summarise(statuses),
         "noise": inverted[0].noise if inverted else None,
+        "template_calibration": [attrs.asdict(one) for one in interpretation.calibration],
         "covariances": [attrs.asdict(one, filter=_scalars) for one in stack.variograms],
         "figures_of_merit": merit,
         "doubts": len(doubts),
