@@ -16,7 +16,7 @@ PickStatus = Literal["at", "below", "absent"]
 
 def _extra() -> Any:
     """Columns beyond the contract's, carried through as they were typed: a copy, read-only by its type."""
-    return attrs.field(factory=dict, converter=dict)
+    return attrs.field(factory=dict, converter=dict, hash=False)
 
 
 @attrs.frozen
