@@ -16,7 +16,16 @@ from geoves.domain.grids import CrossValidation, Grid, Surface, SurfaceStack, Va
 from geoves.domain.region import Delivery, Region
 from geoves.domain.results import Results
 from geoves.domain.survey import Curve, Ground, LogInterval, Permit, Pick, Sounding, Survey, Well
-from geoves.domain.tops import Interpretation, PickOpinion, ShallowResistivity, Thickness, Top, UnitColumn, WellReading
+from geoves.domain.tops import (
+    Interpretation,
+    PickOpinion,
+    ShallowResistivity,
+    Thickness,
+    Top,
+    UnitCalibration,
+    UnitColumn,
+    WellReading,
+)
 from geoves.domain.units import Z_95, Role, Template, Unit
 
 CRS = "EPSG:26914"
@@ -260,7 +269,17 @@ def small_interpretation():
             Top(well, "well", thing.easting, thing.northing, "shale", "bedrock", word, depth, level, error, "log")
         )
     return Interpretation(
-        columns, tuple(readings), tuple(tops), tuple(thicknesses), tuple(shallow), ("muck & boulders",), ("A remark.",)
+        columns,
+        tuple(readings),
+        tuple(tops),
+        tuple(thicknesses),
+        tuple(shallow),
+        unmapped_words=("muck & boulders",),
+        calibration=(
+            UnitCalibration("blue_clay", (12.0, 26.0), (14.0, 24.0), 21.0, used=True),
+            UnitCalibration("shale", (50.0, 95.0), (50.0, 95.0), 3.0, used=False),
+        ),
+        remarks=("A remark.",),
     )
 
 

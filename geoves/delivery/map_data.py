@@ -15,6 +15,7 @@ from geoves.delivery.markup import unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_colours, value_range
 from geoves.delivery.sections import lines_of
 from geoves.delivery.sentences import (
+    LIKELIHOODS,
     readings_aside,
     tell_doubt,
     tell_opinion,
@@ -65,6 +66,7 @@ def describe_region(results: Results) -> dict[str, Any]:
             "useLimits": region.delivery.use_limits,
         },
         "caution": SHORT_CAUTION,
+        "likelihoods": LIKELIHOODS,
         "cautions": list(list_cautions()),
         "grid": _describe_grid(stack.grid),
         "everyCell": round(stack.grid.cell_size / results.stack.grid.cell_size),

@@ -108,22 +108,22 @@ def _layer_table(inverted: Inverted, column: UnitColumn, template: Template, uni
 
 
 def _span(ends: FloatArray) -> str:
-    """A range to three figures, or its one number where both ends read the same; an en dash where there is none."""
+    """A range, or its one number where both ends read the same; an en dash where there is none."""
     if not np.isfinite(ends).all():
         return "–"
-    low, high = (_three_figures(float(end)) for end in ends)
+    low, high = (few_figures(float(end)) for end in ends)
     return low if low == high else f"{low} to {high}"
 
 
-def _three_figures(value: float) -> str:
-    """A number as it is read aloud.
+def few_figures(value: float) -> str:
+    """Two figures, three from 100 on: a range is known no better.
 
-    >>> _three_figures(0.01234), _three_figures(31.44), _three_figures(4321.0)
-    ('0.0123', '31.4', '4,320')
+    >>> few_figures(0.01234), few_figures(31.44), few_figures(4321.0), few_figures(0.00004)
+    ('0.012', '31', '4,320', '0.00004')
     """
     if value >= 100.0:
         return f"{float(f'{value:.3g}'):,.0f}"
-    return f"{value:.3g}"
+    return np.format_float_positional(float(f"{value:.2g}"), trim="-")
 
 
 def _strip_facts(job: StripJob, inverted: Inverted, column: UnitColumn) -> str:

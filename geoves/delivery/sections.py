@@ -365,7 +365,7 @@ def _ramp_legend(results: Results, x: float) -> Markup:
     box = {"x": f"{x:.1f}", "y": 34, "width": 16, "height": 166}
     return joined(
         [
-            label(x, 20, f"bedrock ({unit_label(results.region.length_unit)})", "axis"),
+            label(x, 20, f"bedrock elevation ({unit_label(results.region.length_unit)})", "axis"),
             embedded_image(bar, box),
             *(label(x + 22, float(scale.pixel(tick)) + 4, tick_text(tick), "tick") for tick in scale.ticks(6)),
             label(x, 222, "greyer: less sure", "tick"),

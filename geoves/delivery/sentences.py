@@ -10,8 +10,14 @@ from geoves.domain.survey import Curve, Pick
 from geoves.domain.tops import PickOpinion, UnitColumn
 from geoves.domain.units import Role, Template
 
-# From this probability on, a thing is called by its word. The map's script calls it the same.
-LIKELIHOODS = ((0.9, "very likely"), (0.66, "likely"), (0.33, "about as likely as not"), (0.1, "unlikely"))
+# From this probability on, a thing is called by its word; the map's script has the same words from here.
+LIKELIHOODS = (
+    (0.9, "very likely"),
+    (0.66, "likely"),
+    (0.33, "about as likely as not"),
+    (0.1, "unlikely"),
+    (0.0, "very unlikely"),
+)
 # A ratio of resistivities from this on is called by its word; common practice with noise of a few percent.
 CONTRASTS = ((4.0, "a strong contrast"), (2.0, "a clear contrast"), (1.3, "a weak contrast"))
 SET_ASIDE = 0.5  # a reading with less robust weight than this counts as set aside by the fit
@@ -23,7 +29,7 @@ def name_likelihood(probability: float) -> str:
     >>> name_likelihood(0.7), name_likelihood(0.05)
     ('likely', 'very unlikely')
     """
-    return next((words for least, words in LIKELIHOODS if probability >= least), "very unlikely")
+    return next(words for least, words in LIKELIHOODS if probability >= least)
 
 
 def tell_sounding(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
@@ -41,15 +47,18 @@ def tell_sounding(column: UnitColumn, template: Template, unit: LengthUnit) -> s
     if not known:
         return f"Bedrock begins at about {format_length(column.bedrock_depth, unit)}."
     begins = f"{_capital(contact)} begins at {format_length(column.basal_depth[1], unit)}"
-    return f"{begins}, {_range(column.basal_depth, unit)} with 90 % probability{_gravel_on_rock(column, template)}."
+    return (
+        f"{begins}, {_range(column.basal_depth, unit)} with 90 % probability{_gravel_on_rock(column, template, unit)}."
+    )
 
 
-def _gravel_on_rock(column: UnitColumn, template: Template) -> str:
+def _gravel_on_rock(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
     deep = _deep_aquifer(template)
     if not deep or not np.isfinite(column.gravel_probability):
         return ""
     chance = column.gravel_probability
-    return f"; {deep} on the rock is {name_likelihood(chance)} ({chance:.2f})"
+    rock = format_length(column.bedrock_depth, unit)
+    return f"; {deep} on the rock is {name_likelihood(chance)} ({chance:.2f}), which puts rock at {rock} on average"
 
 
 def tell_hidden(column: UnitColumn, template: Template, unit: LengthUnit) -> str:

@@ -59,6 +59,34 @@ def test_the_reading_set_aside_is_hollow_and_says_why(browser, page, small_resul
     assert hollow == 1
 
 
+def test_calibration_says_what_it_changed_and_what_it_left(browser, page):
+    browser.open(page)
+    words = browser.run("return document.getElementById('wells').textContent")
+    assert "14 to 24 (moved by 21 soundings)" in words
+    assert "as given (3 soundings are too few to move it)" in words
+
+
+def test_layers_stand_in_a_table_with_their_ranges(browser, page, small_results):
+    """The first sounding's, by numpy's own plain quantiles: its members are equally probable."""
+    browser.open(page)
+    rows = browser.run(
+        "return [...document.querySelectorAll('#sounding-0 table tbody tr')]"
+        ".map(r => [...r.cells].map(c => c.innerText))"
+    )
+    ensemble = small_results.inverted[0].ensemble
+    assert len(rows) == 5
+    clay = ensemble.thickness[:, 2] * ensemble.resistivity[:, 2]
+    shown = [float(part.replace(",", "")) for part in rows[2][6].split(" to ")]
+    np.testing.assert_allclose(shown, np.quantile(clay, [0.05, 0.95]), rtol=0.03)
+    assert rows[-1][3] == rows[-1][5] == "–"
+
+
+def test_picks_stand_with_what_the_curve_says(browser, page):
+    browser.open(page)
+    words = browser.run("return document.getElementById('decisions').textContent")
+    assert "would be chance in 40 of 100 cases" in words
+
+
 def test_cautions_are_all_there_and_one_stays_in_sight(browser, page):
     browser.open(page)
     shown = browser.run("return document.body.textContent")

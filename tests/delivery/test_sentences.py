@@ -26,6 +26,7 @@ def column(small_results):
     """A contact at 100 ft, between 80 and 120 ft, with gravel of up to 30 ft at even odds."""
     return attrs.evolve(
         small_results.interpretation.columns[0],
+        bedrock_depth=105.0 * FOOT,
         basal_depth=np.array([80.0, 100.0, 120.0]) * FOOT,
         gravel_probability=0.5,
         gravel_limit=30.0 * FOOT,
@@ -36,7 +37,7 @@ def test_the_contact_is_told_in_the_regions_unit(column, small_results):
     template = small_results.region.template
     assert tell_sounding(column, template, "ft") == (
         "Basal gravel or rock begins at 100 ft, between 80 and 120 ft with 90 % probability; "
-        "basal gravel on the rock is about as likely as not (0.50)."
+        "basal gravel on the rock is about as likely as not (0.50), which puts rock at 105 ft on average."
     )
     assert tell_hidden(column, template, "ft").startswith("Up to 30 ft of basal gravel could lie on the rock")
     assert " m" not in tell_sounding(column, template, "ft").replace("about", "")

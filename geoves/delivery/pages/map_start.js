@@ -67,7 +67,7 @@ function startPanel(map) {
   let ring = null, before = null;
   const intro = () => {
     answer.replaceChildren(make("h2", {}, "What is under a place?"),
-      make("p", {}, "Click the map, choose a mark, or search for a permit. With the keyboard: arrows move the map, "
+      make("p", { class: "screen" }, "Click the map, choose a mark, or search for a permit. With the keyboard: arrows move the map, "
         + "Enter asks at its middle, Tab goes from mark to mark, Escape closes."),
       make("p", { class: "soft" }, `${described.soundings.length} soundings, ${described.wells.length} wells, `
         + `${described.permits.length} permits.`));

@@ -27,7 +27,7 @@ function writeTables(openers) {
     known(one.gravel_probability) ? one.gravel_probability.toFixed(2) : dash, lengthCell(one.requested)]);
   document.getElementById("tables").append(
     make("h2", {}, "Cautions"), make("ul", {}, described.cautions.map((caution) => make("li", {}, caution))),
-    ...factTable("Soundings", ["sounding", "bedrock", `depth (${unit})`, "standard error", "in words"], soundings),
+    ...factTable("Soundings", ["sounding", "what the curve says", `rock (${unit})`, "standard error", "in words"], soundings),
     ...factTable("Wells", ["well", `total depth (${unit})`, `rock (${unit})`, "in words"], wells),
     ...factTable("Permits", ["permit", "predicted", `rock (${unit})`, "90 % band", `gravel, mean (${unit})`,
       "90 % band", "gravel probability", `asked for (${unit})`], permits),

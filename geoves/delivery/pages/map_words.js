@@ -60,11 +60,8 @@ function valueWords(quantity, value) {
 
 // Plain words for a probability; the number always stands beside them.
 function likelihoodWords(probability) {
-  if (probability >= 0.9) return "very likely";
-  if (probability >= 0.66) return "likely";
-  if (probability > 0.33) return "about as likely as not";
-  if (probability > 0.1) return "unlikely";
-  return "very unlikely";
+  const [, words] = described.likelihoods.find(([least]) => probability >= least);
+  return words;
 }
 
 const named = (name) => make("span", { class: "name" }, name);
