@@ -20,9 +20,9 @@ class CurveOptions:
     largest_jump          relative misfit of one reading against its neighbours on both sides that is flagged
     """
 
-    fewest_readings: int = 5
-    steepest_rise: float = 1.15
-    largest_jump: float = 0.15
+    fewest_readings: int = attrs.field(default=5, validator=attrs.validators.ge(3))
+    steepest_rise: float = attrs.field(default=1.15, validator=attrs.validators.gt(0))
+    largest_jump: float = attrs.field(default=0.15, validator=attrs.validators.gt(0))
 
 
 def prepare_curves(survey: Survey, options: CurveOptions | None = None) -> Survey:

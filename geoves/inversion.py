@@ -35,15 +35,19 @@ class InversionOptions:
     block                   soundings inverted at a time: bounds the memory
     """
 
-    least_layers: int = 2
-    most_layers: int = 6
-    default_error: float = 0.03
-    segment_deviation: float = 0.05
-    draws: int = 200
-    smooth_layers: int = 30
-    fewest_readings: int = 5
-    block: int = 16
+    least_layers: int = attrs.field(default=2, validator=attrs.validators.ge(2))
+    most_layers: int = attrs.field(default=6, validator=[attrs.validators.ge(2), attrs.validators.le(10)])
+    default_error: float = attrs.field(default=0.03, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
+    segment_deviation: float = attrs.field(default=0.05, validator=attrs.validators.gt(0))
+    draws: int = attrs.field(default=200, validator=attrs.validators.ge(20))
+    smooth_layers: int = attrs.field(default=30, validator=attrs.validators.ge(5))
+    fewest_readings: int = attrs.field(default=5, validator=attrs.validators.ge(3))
+    block: int = attrs.field(default=16, validator=attrs.validators.ge(1))
     random_seed: int = 0
+
+    def __attrs_post_init__(self) -> None:
+        if self.least_layers > self.most_layers:
+            raise ValueError(f"least_layers ({self.least_layers}) is above most_layers ({self.most_layers})")
 
 
 # Broad priors of the blind inversion, standard deviations in natural logs, and the bounds of its search.
@@ -89,18 +93,22 @@ def invert_block(
     """The blocky models of some soundings with a known noise."""
     curves = damped_steps.stack_curves([Readings(*s.curve.readings(noise)) for s in soundings], wavenumber)
     fits = _fit_all_counts(curves, soundings, options)
-    evidence = np.array([fit.log_evidence for fit, _ in fits.values()])
-    counts = list(fits)
-    chosen = [counts[i] for i in np.argmax(evidence, axis=0)]
     results = []
-    for i, (sounding, k) in enumerate(zip(soundings, chosen, strict=True)):
+    for i, (sounding, k) in enumerate(zip(soundings, _choose_counts(fits), strict=True)):
         row = np.array([i])
         fit, prior = fits[k]
         described = _describe(sounding, curves.take(row), (fit.take(i), prior.take(row)), noise, options)
-        criterion = dict(zip(counts, (-evidence[:, i]).tolist(), strict=True))
+        criterion = {count: -float(one.log_evidence[i]) for count, (one, _) in fits.items()}
         results.append(attrs.evolve(described, criterion=criterion))
     smooth = _fit_smooth(curves, soundings, results, options)
     return [attrs.evolve(one, smooth=model) for one, model in zip(results, smooth, strict=True)]
+
+
+def _choose_counts(fits: dict[int, tuple[Fit, Prior]]) -> list[int]:
+    """The layer count of the greatest evidence for each curve."""
+    counts = list(fits)
+    evidence = np.array([fit.log_evidence for fit, _ in fits.values()])
+    return [counts[i] for i in np.argmax(evidence, axis=0)]
 
 
 def _fit_smooth(
@@ -121,18 +129,17 @@ def _pooled_residuals(
     soundings: Sequence[Sounding], *, options: InversionOptions, wavenumber: FloatArray
 ) -> FloatArray:
     """Log residuals of the readings without a typed error, widened for the degrees of freedom that the fit took."""
+    noise = options.default_error
+    curves = damped_steps.stack_curves([Readings(*s.curve.readings(noise)) for s in soundings], wavenumber)
+    fits = _fit_all_counts(curves, soundings, options)
     pooled = []
-    for sounding, inverted in zip(
-        soundings,
-        invert_block(soundings, options=options, wavenumber=wavenumber, noise=options.default_error),
-        strict=True,
-    ):
-        used = sounding.curve.used
-        _, _, apparent, _, segment = sounding.curve.readings(inverted.noise)
-        residual = np.log(apparent / (inverted.predicted[used] * inverted.segment_factor[segment]))
-        untyped = np.isnan(sounding.curve.relative_error[used])
-        taken = 2 * inverted.n_layers - 1 + inverted.segment_factor.size - 1
-        pooled.append(residual[untyped] * np.sqrt(apparent.size / max(apparent.size - taken, 1)))
+    for i, (sounding, k) in enumerate(zip(soundings, _choose_counts(fits), strict=True)):
+        fit = fits[k][0]
+        untyped = np.isnan(sounding.curve.relative_error[sounding.curve.used])
+        shifts = curves.segments[i] @ fit.unknowns[i, 2 * k - 1 :]
+        residual = (curves.log_apparent_resistivity[i] - fit.log_response[i] - shifts)[: untyped.size]
+        taken = 2 * k - 1 + int(np.count_nonzero(curves.segments[i].any(axis=0)))
+        pooled.append(residual[untyped] * np.sqrt(untyped.size / max(untyped.size - taken, 1)))
     return np.concatenate(pooled)
 
 

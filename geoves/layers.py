@@ -37,15 +37,15 @@ class LayerOptions:
     circle_points       points by which a circle of location is averaged
     """
 
-    contours: int = 12
-    likely: float = 0.66
-    possible: float = 0.33
-    least_incision: float = 10.0
-    incision_share: float = 0.25
-    regional_quantile: float = 0.75
-    least_valley_length: float = 0.08
-    axis_cells: int = 150_000
-    circle_points: int = 96
+    contours: int = attrs.field(default=12, validator=attrs.validators.ge(2))
+    likely: float = attrs.field(default=0.66, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
+    possible: float = attrs.field(default=0.33, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
+    least_incision: float = attrs.field(default=10.0, validator=attrs.validators.gt(0))
+    incision_share: float = attrs.field(default=0.25, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
+    regional_quantile: float = attrs.field(default=0.75, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
+    least_valley_length: float = attrs.field(default=0.08, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
+    axis_cells: int = attrs.field(default=150_000, validator=attrs.validators.ge(100))
+    circle_points: int = attrs.field(default=96, validator=attrs.validators.ge(4))
 
 
 def derive_layers(

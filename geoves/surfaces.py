@@ -36,6 +36,9 @@ from geoves.kernels.kriging import krige, leave_one_out
 Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
 
 
+MODELS = ("matern32", "exponential", "spherical", "gaussian")
+
+
 @attrs.frozen
 class SurfaceOptions:
     """model             covariance of the fields: matern32, exponential, spherical or gaussian
@@ -50,16 +53,16 @@ class SurfaceOptions:
     block                cells kriged at a time: bounds the memory
     """
 
-    model: str = "matern32"
-    reach: float = 0.0
-    reach_in_spacings: float = 3.0
-    present: float = 1.0
-    least_probability: float = 0.05
-    probable: float = 0.5
-    bound_deviation: float = 0.05
-    absence_deviation: float = 0.5
-    fewest: int = 5
-    block: int = 8192
+    model: str = attrs.field(default="matern32", validator=attrs.validators.in_(MODELS))
+    reach: float = attrs.field(default=0.0, validator=attrs.validators.ge(0))
+    reach_in_spacings: float = attrs.field(default=3.0, validator=attrs.validators.gt(0))
+    present: float = attrs.field(default=1.0, validator=attrs.validators.gt(0))
+    least_probability: float = attrs.field(default=0.05, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
+    probable: float = attrs.field(default=0.5, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
+    bound_deviation: float = attrs.field(default=0.05, validator=attrs.validators.gt(0))
+    absence_deviation: float = attrs.field(default=0.5, validator=attrs.validators.gt(0))
+    fewest: int = attrs.field(default=5, validator=attrs.validators.ge(3))
+    block: int = attrs.field(default=8192, validator=attrs.validators.ge(1))
 
 
 class Evidence(NamedTuple):

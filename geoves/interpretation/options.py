@@ -35,18 +35,18 @@ class InterpretationOptions:
     least_match                 how alike (0 to 100) a driller's word and a term must be
     """
 
-    presence: float = 0.5
+    presence: float = attrs.field(default=0.5, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
     calibrate: bool = True
-    fewest_to_calibrate: int = 10
-    draws: int = 400
-    seen_log_bayes_factor: float = 2.3
-    seen_log_depth_deviation: float = 0.2
-    broad_log_depth_deviation: float = 0.6
-    notice_chi_square: float = 16.0
-    relative_depth_floor: float = 0.05
-    well_reach: float = 400.0
-    well_contact_error: float = 0.3
-    well_relative_error: float = 0.01
-    least_match: float = 80.0
-    block: int = 16
+    fewest_to_calibrate: int = attrs.field(default=10, validator=attrs.validators.ge(1))
+    draws: int = attrs.field(default=400, validator=attrs.validators.ge(50))
+    seen_log_bayes_factor: float = attrs.field(default=2.3, validator=attrs.validators.ge(0))
+    seen_log_depth_deviation: float = attrs.field(default=0.2, validator=attrs.validators.gt(0))
+    broad_log_depth_deviation: float = attrs.field(default=0.6, validator=attrs.validators.gt(0))
+    notice_chi_square: float = attrs.field(default=16.0, validator=attrs.validators.gt(0))
+    relative_depth_floor: float = attrs.field(default=0.05, validator=attrs.validators.ge(0))
+    well_reach: float = attrs.field(default=400.0, validator=attrs.validators.ge(0))
+    well_contact_error: float = attrs.field(default=0.3, validator=attrs.validators.gt(0))
+    well_relative_error: float = attrs.field(default=0.01, validator=attrs.validators.ge(0))
+    least_match: float = attrs.field(default=80.0, validator=[attrs.validators.gt(0), attrs.validators.le(100)])
+    block: int = attrs.field(default=16, validator=attrs.validators.ge(1))
     random_seed: int = 0

@@ -272,9 +272,11 @@ def read_column(
     best = unit_sequence.read_units(np.log(share), flat, down).best
     rock = contact.rock
     bounded = contact.status == "deeper_than"
-    depth = contact.bound if bounded else (float(np.mean(rock)) if rock.size else np.nan)
+    depth = max(contact.bound, contact.rock_bound) if bounded else (float(np.mean(rock)) if rock.size else np.nan)
     error = np.nan if bounded or not rock.size else float(np.std(rock))
-    deepest = max(10.0, contact.bound, *(np.quantile(rock, [0.95]) if rock.size and not bounded else [0.0]))
+    deepest = max(
+        10.0, contact.bound, contact.rock_bound, *(np.quantile(rock, [0.95]) if rock.size and not bounded else [0.0])
+    )
     edges = np.linspace(0.0, PROFILE_MARGIN * deepest, PROFILE_SLICES + 1)
     known = rock.size > 0 and not bounded
     shallow_probability, shallow = _shallow_quantiles(draws, template)

@@ -16,7 +16,7 @@ ABBREVIATIONS = {
     "frac": "fractured", "wtr": "water", "tp": "top",
 }  # fmt: skip
 
-# Two words are never the same below this share of like letters: one slip in four letters, as in "caly" for "clay".
+# Two words are never the same below this share of like letters: one slip in four letters.
 LEAST_ALIKE_WORD = 0.74
 
 

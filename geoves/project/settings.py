@@ -55,8 +55,23 @@ def _read_options(region: Region, table: str, kind: type, seed: dict[str, int], 
         if not fits or isinstance(value, bool) is not (wanted is bool):
             faults.append(f"{where}; expected {_KINDS[wanted]}, such as {fields[key].default!r}")
             continue
+        try:
+            kind(**{key: wanted(value)})
+        except ValueError as error:
+            faults.append(f"{where}; {_say_limit(error, key)}")
+            continue
         options[key] = wanted(value)
-    return kind(**options)
+    try:
+        return kind(**options)
+    except ValueError as error:
+        faults.append(f"{region.path.name}, [{table}]: {error}")
+        return kind()
+
+
+def _say_limit(error: ValueError, key: str) -> str:
+    """What a validator expected, from its message: "'block' must be >= 1: 0"."""
+    said = str(error.args[0]).replace(f"'{key}' must be in", "expected one of").replace(f"'{key}' must be", "expected")
+    return said.split(" (got")[0].rsplit(":", 1)[0]
 
 
 _KINDS = {int: "a whole number", float: "a number", str: "a word in quotes", bool: "true or false"}

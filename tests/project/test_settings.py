@@ -94,3 +94,23 @@ def test_a_faulty_job_writes_nothing(tmp_path):
     with pytest.raises(InputError):
         job.run(region)
     assert sorted(path.name for path in region.parent.iterdir()) == before
+
+
+@pytest.mark.parametrize(
+    ("table", "key", "value", "expected"),
+    [
+        ("surfaces", "model", "bogus", "one of ('matern32'"),
+        ("surfaces", "block", 0, ">= 1"),
+        ("surfaces", "reach", -5.0, ">= 0"),
+        ("inversion", "most_layers", 1, ">= 2"),
+        ("inversion", "least_layers", 7, "above most_layers"),
+        ("interpretation", "presence", 1.0, "< 1"),
+        ("layers", "likely", 2.0, "< 1"),
+    ],
+)
+def test_a_value_out_of_its_limits_is_a_fault_in_words(small_region_settings, table, key, value, expected):
+    with pytest.raises(InputError) as caught:
+        read_settings(small_region_settings({table: {key: value}}))
+    (line,) = caught.value.lines
+    assert table in line
+    assert expected in line
