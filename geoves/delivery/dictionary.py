@@ -223,7 +223,7 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     Column(
                         "base_contrast",
                         "Contrast at the base",
-                        "Resistivity of rock over that of what lies on it; near 1 a curve tells them not apart.",
+                        "Resistivity of rock over that of what lies on it; near 1 no curve tells them apart.",
                         "ratio",
                     ),
                     _GROUND,

@@ -149,7 +149,7 @@ def _sounding_row(
             "basal_depth_p95": column.basal_depth[2],
             "gravel_probability": column.gravel_probability,
             "gravel_limit": column.gravel_limit,
-            "base_contrast": float(np.exp(column.base_contrast)),
+            "base_contrast": np.nan if column.bedrock_status == "deeper_than" else float(np.exp(column.base_contrast)),
             "sentence": tell_all(column, results.region.template, results.region.length_unit),
             "interpreter": "; ".join(dict.fromkeys(pick.interpreter for pick in column.picks)),
         }

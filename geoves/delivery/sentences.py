@@ -62,9 +62,9 @@ def _gravel_on_rock(column: UnitColumn, template: Template, unit: LengthUnit) ->
 
 
 def tell_hidden(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
-    """How much of the deep aquifer could lie on this rock and not show; empty where that is not known."""
+    """How much of the deep aquifer could lie on this rock and not show; empty where that is not known or was decided."""
     deep, limit = _deep_aquifer(template), column.gravel_limit
-    if not deep or not np.isfinite(limit):
+    if not deep or not np.isfinite(limit) or any(pick.status == "absent" for pick in column.picks):
         return ""
     if limit < 1.0:
         return f"Hardly any {deep} could hide on the rock: less than {format_length(1.0, unit)}."
@@ -136,7 +136,7 @@ def tell_readings_aside(curve: Curve, inverted: Inverted, unit: LengthUnit) -> l
         if not curve.used[i]:
             shown.append(f"{spacing}: {(curve.reason[i] if i < len(curve.reason) else '') or 'not used'}")
         else:
-            shown.append(f"{spacing}: far from the curve of every layered model; set aside by the fit")
+            shown.append(f"{spacing}: far from the curve of every layered model")
     return shown
 
 

@@ -157,6 +157,7 @@ def test_values_are_the_results_own(package, small_results):
     assert soundings.remarks["Larch 6"].startswith("Set aside: AB/2 4 m: far from the curve")
     assert soundings.base_contrast["Larch 1"] == pytest.approx(np.exp(0.7))
     assert np.isnan(soundings.gravel_limit["Larch 5"])
+    assert np.isnan(soundings.base_contrast["Larch 5"])
     assert soundings.basal_depth_p95["Larch 2"] - soundings.basal_depth["Larch 2"] == pytest.approx(5.0, abs=2e-3)
     assert soundings.segment_factors["Larch 1"] == "1.000; 1.060"
     wells = geopandas.read_file(package, layer="wells").set_index("well")

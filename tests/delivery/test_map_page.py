@@ -291,7 +291,7 @@ def test_contour_numbers_keep_apart_on_a_steep_flank(browser, small_results, tmp
     assert 0 < counts[0] < counts[-1] <= 12
 
 
-@pytest.mark.parametrize("width", [390, 900, 1300])
+@pytest.mark.parametrize("width", [390, 900, 1020, 1300])
 def test_the_legend_covers_no_mark(browser, page, width):
     browser.open(page, width=width)
     browser.wait_for(READY)
@@ -301,6 +301,8 @@ def test_the_legend_covers_no_mark(browser, page, width):
         "return ['#legend', '#readout', '.panel'].map(q => meet(box(q), box('#map_geoves')))"
     )
     assert meets == [False, False, False]
+    # Nor does it press the map into a corner: 850 pixels are the window's height.
+    assert browser.run("return map_geoves.getSize().y") > 400
 
 
 def test_panel_shows_the_profile_and_says_what_the_report_says(opened, small_results):

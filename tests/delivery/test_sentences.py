@@ -93,13 +93,14 @@ def test_picks_are_told_with_what_the_curve_says(column, small_results):
     silent = PickOpinion(pick, np.nan, np.nan, 0.0, against=False)
     assert tell_opinion(silent, "ft") == "The curve neither confirms nor contradicts this pick."
     gone = attrs.evolve(pick, status="absent", depth=None, depth_error=None)
+    assert tell_hidden(attrs.evolve(column, picks=(gone,)), template, "m") == ""
     assert "gives it a probability of 0.65" in tell_opinion(PickOpinion(gone, 0.65, 30.0, 0.0, against=False), "m")
 
 
 def test_readings_and_trade_offs_are_told_from_their_fields(small_results):
     sounding, inverted = small_results.survey.soundings[5], small_results.inverted[5]
     said = tell_readings_aside(sounding.curve, inverted, "m")
-    assert said == ["AB/2 4 m: far from the curve of every layered model; set aside by the fit"]
+    assert said == ["AB/2 4 m: far from the curve of every layered model"]
     feet = tell_readings_aside(sounding.curve, inverted, "ft")
     assert feet[0].startswith("AB/2 13.12 ft")
     assert tell_trade_offs(attrs.evolve(inverted, trade_offs=("layer 2: S", "layer 3: T"))) == "Layer 2: S. Layer 3: T."

@@ -89,7 +89,7 @@ function startPanel(map) {
     panel.scrollTop = 0;
     panel.focus({ preventScroll: true });
     // On a phone the panel lies under the map: both are brought into sight.
-    if (window.innerWidth <= 800) bringIntoSight(map, panel, at);
+    if (window.innerWidth <= 1000) bringIntoSight(map, panel, at);
     say(`${title}. ${[...answer.querySelectorAll(".says")].map((part) => part.textContent).join(" ")}`);
   };
   document.addEventListener("keydown", (event) => {
