@@ -62,7 +62,7 @@ def _gravel_on_rock(column: UnitColumn, template: Template, unit: LengthUnit) ->
 
 
 def tell_hidden(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
-    """How much of the deep aquifer could lie on this rock and not show; empty where not known, or decided to be none."""
+    """How much of the deep aquifer could lie on this rock and not show; empty where unknown or decided to be none."""
     deep, limit = _deep_aquifer(template), column.gravel_limit
     if not deep or not np.isfinite(limit) or any(pick.status == "absent" for pick in column.picks):
         return ""
