@@ -18,6 +18,7 @@ from geoves.delivery.dictionary import LAYERS, Column, LayerWords, convert_to_de
 from geoves.delivery.layer_ranges import LayerRanges, find_layer_ranges
 from geoves.delivery.metadata import render_geopackage_record
 from geoves.delivery.sentences import readings_aside, tell_all, tell_readings_aside, tell_trade_offs
+from geoves.delivery.sounding_figures import segment_factors
 from geoves.domain.earth import Inverted
 from geoves.domain.region import LengthUnit
 from geoves.domain.results import Results
@@ -89,6 +90,8 @@ def build_frames(results: Results) -> Mapping[str, tuple[geopandas.GeoDataFrame,
         "soundings": _build_soundings(results),
         "model_layers": _build_model_layers(results),
         "tops": _build_tops(results),
+        "readings": _build_readings(results),
+        "picks": _build_picks(results),
         "wells": _build_wells(results),
         "well_intervals": _build_well_intervals(results),
     }
@@ -199,6 +202,46 @@ def _build_tops(results: Results) -> Rows:
         for top in results.interpretation.tops
     ]
     return _point_rows(rows)
+
+
+def _build_readings(results: Results) -> Rows:
+    inverted = {found.sounding: found for found in results.inverted}
+    rows: list[dict[str, Any]] = []
+    extras: list[Mapping[str, Any]] = []
+    for sounding in results.survey.soundings:
+        curve, found = sounding.curve, inverted.get(sounding.name)
+        factor = None if found is None else segment_factors(curve, found)
+        for i in range(curve.half_spacing.size):
+            row = {
+                "place_at": (sounding.easting, sounding.northing),
+                "sounding": sounding.name,
+                "ab2": curve.half_spacing[i],
+                "mn2": curve.potential_half_spacing[i],
+                "apparent_resistivity": curve.apparent_resistivity[i],
+                "error_percent": 100.0 * curve.relative_error[i],
+                "segment": int(curve.segment[i]) + 1,
+                "used": bool(curve.used[i]),
+                "reason": curve.reason[i] if curve.reason else "",
+            }
+            if found is not None and factor is not None:
+                row |= {"predicted": found.predicted[i] * factor[i], "trust": found.robust_weight[i]}
+            rows.append(row)
+            extras.append(curve.extra[i] if curve.extra else {})
+    return _point_rows(rows, extras)
+
+
+def _build_picks(results: Results) -> Rows:
+    places: dict[str, Sounding | Well] = {well.name: well for well in results.survey.wells}
+    places |= {sounding.name: sounding for sounding in results.survey.soundings}
+    names = ("place", "unit", "status", "depth", "depth_error", "interpreter", "reason")
+    rows = [
+        {
+            "place_at": (places[pick.place].easting, places[pick.place].northing),
+            **{name: getattr(pick, name) for name in names},
+        }
+        for pick in results.survey.picks
+    ]
+    return _point_rows(rows, [pick.extra for pick in results.survey.picks])
 
 
 def _build_wells(results: Results) -> Rows:

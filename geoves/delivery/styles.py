@@ -213,6 +213,8 @@ _RULES: dict[str, tuple[Rule, ...]] = {
         Rule("Deeper than this", Mark("triangle", GREY, size=6.0), (("status", "=", "below"),)),
         Rule("Absent", Mark("x", GREY, size=6.0), (("status", "=", "absent"),)),
     ),
+    "readings": (Rule("Field reading", Mark("square", PAPER, GREY, 3.0)),),
+    "picks": (Rule("Interpreter's pick", Mark("cross", SURE, SURE, 9.0), (), "place"),),
     "wells": (
         Rule("Well that reached bedrock", Mark("square", SURE, size=9.0), (("reached_bedrock", "=", "1"),), "well"),
         Rule("Well that ended above it", Mark("square", PAPER, size=9.0), (("reached_bedrock", "=", "0"),), "well"),

@@ -20,7 +20,7 @@ from geoves.errors import DeliveryError
 
 TAGS = {"software": "geoves", "date": "2026-06-01T09:30:00Z"}
 
-# The contract's layers with the columns that it names, written out by hand.
+# The contract's layers with the columns that it names, written out by hand, and the tables that have no layer there.
 CONTRACT = {
     "soundings": ["sounding", "rms_percent", "n_layers", "bedrock_status"],
     "model_layers": [
@@ -28,6 +28,8 @@ CONTRACT = {
         "resistivity_p95", "unit", "unit_probability",
     ],
     "tops": ["place", "kind", "unit", "status", "depth", "elevation", "standard_error", "source"],
+    "readings": ["sounding", "ab2", "mn2", "apparent_resistivity", "used", "reason"],
+    "picks": ["place", "unit", "status", "depth", "depth_error", "interpreter", "reason"],
     "wells": ["well"],
     "well_intervals": ["well", "description", "unit", "confidence"],
     "bedrock_contours": ["elevation"],
@@ -259,3 +261,18 @@ def test_failure_leaves_the_old_file_and_no_litter(small_results, tmp_path):
         write_geopackage(small_results, path, {})
     assert path.read_text(encoding="utf-8") == "old"
     assert [p.name for p in tmp_path.iterdir()] == ["layers.gpkg"]
+
+
+def test_extra_columns_of_readings_and_picks_are_carried_through(small_results, tmp_path):
+    soundings = []
+    for sounding in small_results.survey.soundings:
+        size = sounding.curve.half_spacing.size
+        extra = tuple({"operator": f"crew {i}"} for i in range(size))
+        soundings.append(attrs.evolve(sounding, curve=attrs.evolve(sounding.curve, extra=extra)))
+    picks = tuple(attrs.evolve(pick, extra={"meeting": "in May"}) for pick in small_results.survey.picks)
+    survey = attrs.evolve(small_results.survey, soundings=tuple(soundings), picks=picks)
+    path = write_geopackage(attrs.evolve(small_results, survey=survey), tmp_path / "layers.gpkg", TAGS)
+    readings = geopandas.read_file(path, layer="readings")
+    assert len(readings) == sum(one.curve.half_spacing.size for one in soundings)
+    assert readings["operator"].str.startswith("crew ").all()
+    assert set(geopandas.read_file(path, layer="picks")["meeting"]) == {"in May"}

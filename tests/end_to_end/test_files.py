@@ -41,6 +41,8 @@ COLUMNS = {
     "model_layers": "sounding layer top_depth bottom_depth top_elevation resistivity resistivity_p05 resistivity_p95 "
     "unit unit_probability",
     "tops": "place kind unit status depth elevation standard_error source",
+    "readings": "sounding ab2 mn2 apparent_resistivity used reason",
+    "picks": "place unit status depth depth_error interpreter reason",
     "wells": "well",
     "well_intervals": "well",
     "bedrock_contours": "",
@@ -51,7 +53,7 @@ COLUMNS = {
     "gravel_top_depth_p95 gravel_thickness gravel_thickness_p05 gravel_thickness_p95 gravel_probability",
 }
 LINES = ("bedrock_contours", "thickness_contours", "valley_axis")
-POINTS = ("soundings", "model_layers", "tops", "wells", "well_intervals", "permits")
+POINTS = ("soundings", "model_layers", "tops", "readings", "picks", "wells", "well_intervals", "permits")
 GEOMETRIES = dict.fromkeys(POINTS, ("Point",)) | dict.fromkeys(LINES, ("LineString", "MultiLineString"))
 GEOMETRIES["gravel_extent"] = ("Polygon", "MultiPolygon")
 
