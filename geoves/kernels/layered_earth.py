@@ -133,33 +133,36 @@ def response_and_sensitivity(
     Arguments as for `response`. Reverse-mode derivative of the recurrence: some 2.5 times the cost of the response.
     """
     n_models, k = resistivity.shape
+    fall = -2.0 * wavenumber
     transform = np.broadcast_to(resistivity[:, -1:], (n_models, wavenumber.size))
     excess = np.zeros_like(transform)
-    # d T_i / d T_{i+1}, d (T_i - rho_i) / d ln h_i and d (T_i - rho_i) / d ln rho_i, from the base upward
-    through, by_thickness, by_resistivity = (np.empty((k - 1, n_models, wavenumber.size)) for _ in range(3))
+    # From the base upward, d T_i / d T_{i+1}, and in the rows of the gradient d (T_i - rho_i) / d ln h_i, d ln rho_i
+    through = np.empty((max(k - 1, 0), n_models, wavenumber.size))
+    gradient = np.zeros((n_models, 2 * k - 1, wavenumber.size))
     for i in range(k - 2, -1, -1):
-        rho, h = resistivity[:, i, None], thickness[:, i, None]
+        rho, exponent = resistivity[:, i, None], thickness[:, i, None] * fall
+        decay = np.exp(exponent)
         total = transform + rho
-        decay = np.exp(-2.0 * wavenumber * h)
         echo = (transform - rho) / total * decay
-        excess = 2.0 * rho * echo / (1.0 - echo)
-        by_echo = 2.0 * rho / (1.0 - echo) ** 2
-        through[i] = by_echo * decay * 2.0 * rho / total**2
-        by_thickness[i] = by_echo * echo * (-2.0 * wavenumber * h)
-        by_resistivity[i] = excess - by_echo * decay * 2.0 * rho * transform / total**2
+        inverse = 1.0 / (1.0 - echo)
+        excess = 2.0 * rho * echo * inverse
+        by_echo = 2.0 * rho * inverse * inverse
+        by_transform = by_echo * decay * (2.0 * rho) / (total * total)
+        through[i] = by_transform
+        gradient[:, i] = by_echo * echo * exponent
+        gradient[:, k - 1 + i] = excess - by_transform * transform
         transform = rho + excess
     apparent = resistivity[:, :1] + np.matmul(weights, excess[..., None])[..., 0]
-    gradient = np.zeros((n_models, wavenumber.size, 2 * k - 1))
-    passed = np.ones_like(excess)
+    passed = None
     for i in range(k - 1):
-        gradient[:, :, i] = passed * by_thickness[i]
-        # T_i holds rho_i itself too; at the top that part is the rho_1 outside of the transform.
-        direct = resistivity[:, i, None] if i else 0.0
-        gradient[:, :, k - 1 + i] = passed * (by_resistivity[i] + direct)
-        passed = passed * through[i]
-    if k > 1:
-        gradient[:, :, -1] = passed * resistivity[:, -1:]
-    sensitivity = np.matmul(weights, gradient)
+        if passed is not None:
+            gradient[:, i] *= passed
+            # T_i holds rho_i itself too; at the top that part is the rho_1 outside of the transform.
+            gradient[:, k - 1 + i] = (gradient[:, k - 1 + i] + resistivity[:, i, None]) * passed
+        passed = through[i] if passed is None else passed * through[i]
+    if passed is not None:
+        gradient[:, -1] = passed * resistivity[:, -1:]
+    sensitivity = np.matmul(weights, gradient.transpose(0, 2, 1))
     sensitivity[:, :, k - 1] += resistivity[:, :1]
     return apparent, sensitivity / apparent[..., None]
 
