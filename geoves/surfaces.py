@@ -31,7 +31,7 @@ from geoves.kernels.inequality import (
     latent_moments,
     rectified_normal_moments,
 )
-from geoves.kernels.kriging import krige, leave_one_out
+from geoves.kernels.kriging import estimate_offset, krige, leave_one_out
 
 Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
 
@@ -48,6 +48,8 @@ class SurfaceOptions:
     least_probability    a gravel's top is drawn where its presence is at least this probable
     probable             the shallow aquifer's resistivity is drawn where its presence is at least this probable
     bound_deviation      softness of a bound on log depth
+    tie_deviation        by how much (natural log) all soundings together may differ from the wells; 0 not to tie them
+    fewest_wells         wells and picks with a depth that the tie needs
     absence_deviation    softness (m) of an absence
     fewest               data that a fitted covariance needs
     block                cells kriged at a time: bounds the memory
@@ -60,6 +62,8 @@ class SurfaceOptions:
     least_probability: float = attrs.field(default=0.05, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
     probable: float = attrs.field(default=0.5, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
     bound_deviation: float = attrs.field(default=0.05, validator=attrs.validators.gt(0))
+    tie_deviation: float = attrs.field(default=0.1, validator=attrs.validators.ge(0))
+    fewest_wells: int = attrs.field(default=4, validator=attrs.validators.ge(2))
     absence_deviation: float = attrs.field(default=0.5, validator=attrs.validators.gt(0))
     fewest: int = attrs.field(default=5, validator=attrs.validators.ge(3))
     block: int = attrs.field(default=8192, validator=attrs.validators.ge(1))
@@ -142,6 +146,8 @@ def build_surfaces(
     cells = np.column_stack([axis[covered] for axis in np.meshgrid(grid.easting, grid.northing)])
     interpolate = partial(_interpolate, cells=cells, options=options, map=map)
 
+    basal, tied = _tie_to_wells(basal, options)
+    remarks += tied
     contact = interpolate(basal)
     kriged = [(basal, contact)]
     gravel: Kriged | None = None
@@ -197,6 +203,28 @@ def _basal_evidence(interpretation: Interpretation, options: SurfaceOptions) -> 
             np.full(len(below), options.bound_deviation),
         ),
     )
+
+
+def _tie_to_wells(evidence: Evidence, options: SurfaceOptions) -> tuple[Evidence, list[str]]:
+    """The soundings' log depths shifted by what they differ from the wells' on the whole, if wells are enough to tell.
+
+    A template a little off, or layers less uniform than a model's, put every depth of a survey off by one factor. The
+    doubt about the factor is added to the soundings' errors.
+    """
+    by_curve = np.array([kind == "sounding" for kind in evidence.kind], dtype=bool)
+    if options.tie_deviation == 0 or np.sum(~by_curve) < options.fewest_wells or np.sum(by_curve) < options.fewest:
+        return evidence, []
+    covariance = fit_covariance(evidence.points, evidence.values, evidence.error_variance, options.model)
+    offset, deviation = estimate_offset(
+        evidence.points, evidence.values, evidence.error_variance, by_curve, options.tie_deviation, covariance
+    )
+    tied = evidence._replace(
+        values=evidence.values - np.where(by_curve, offset, 0.0),
+        error_variance=evidence.error_variance + np.where(by_curve, deviation**2, 0.0),
+    )
+    words = "deeper" if offset > 0 else "shallower"
+    said = f"soundings put the basal contact {abs(np.expm1(offset)):.0%} {words} than wells and picks do"
+    return tied, [f"{said} (give or take {deviation:.0%}); their depths were divided by {np.exp(offset):.2f}"]
 
 
 def _thickness_evidence(interpretation: Interpretation, role: Role, title: str, options: SurfaceOptions) -> Evidence:

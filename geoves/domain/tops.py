@@ -90,7 +90,8 @@ class UnitColumn:
                       "not_distinct" (NaN where it says nothing), the bound for "deeper_than"
     profile_depth     edges of slices of depth, m (d+1,), and in `profile` (d, units) each unit's probability there
     basal_depth       5, 50 and 95 % quantiles of the depth of the basal contact, m (3,), NaN where nothing is known
-    gravel_probability  of at least 1 m of basal gravel; gravel_limit m: as much of it could hide unseen on this rock
+    gravel_probability  of at least 1 m of basal gravel; gravel_prior: what was assumed before the curve spoke;
+                      gravel_limit m: as much of it could hide unseen on this rock
     shallow_probability  of at least 1 m of the shallow aquifer; shallow_resistivity ohm m: its 5, 50 and 95 % quantiles
                       where it is present (3,)
     base_contrast     natural log of rock's resistivity over that of what lies on it, from the draws that reach it
@@ -111,6 +112,7 @@ class UnitColumn:
     basal_depth: FloatArray = attrs.field(factory=lambda: np.full(3, np.nan), converter=floats, eq=by_value, repr=shape)
     gravel_probability: float = float("nan")
     gravel_limit: float = float("nan")
+    gravel_prior: float = float("nan")
     shallow_probability: float = float("nan")
     shallow_resistivity: FloatArray = attrs.field(
         factory=lambda: np.full(3, np.nan), converter=floats, eq=by_value, repr=shape
