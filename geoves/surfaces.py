@@ -155,11 +155,13 @@ def build_surfaces(
     canvas = Canvas(grid, covered, ground[covered])
     if template.with_role(Role.DEEP_AQUIFER):
         evidence = _thickness_evidence(interpretation, Role.DEEP_AQUIFER, "Thickness of the deep gravel", options)
-        gravel = interpolate(evidence) if evidence.size >= options.fewest else None
         remarks += _say_how_few(evidence, options)
-        if gravel is not None:
+        if evidence.size >= options.fewest:
+            gravel = interpolate(evidence)
             kriged.append((evidence, gravel))
-            surfaces += _gravel_surfaces(contact, gravel, canvas, options)
+        else:
+            gravel = _assume_everywhere(evidence, contact)
+        surfaces += _gravel_surfaces(contact, gravel, canvas, options)
     else:
         remarks.append("the template has no deep aquifer: no surface of its thickness")
     surfaces += _bedrock_surfaces(contact, gravel, canvas)
@@ -304,11 +306,21 @@ def _latent_prior(evidence: Evidence) -> tuple[float, float]:
 def _say_how_few(evidence: Evidence, options: SurfaceOptions) -> list[str]:
     n_values, n_bounds = len(evidence.values), len(evidence.bounds.bound)
     if evidence.size < options.fewest:
-        return [f"{evidence.title}: {n_values} thicknesses and {n_bounds} absences or bounds are too few for a surface"]
+        few = f"{n_values} thicknesses and {n_bounds} absences or bounds are too few for a map"
+        return [f"{evidence.title}: {few}; where it is drawn, one doubtful thickness stands for the whole region"]
     if n_values < options.fewest:
         few = f"only {n_values} thicknesses beside {n_bounds} absences or bounds, each of which entered by itself"
         return [f"{evidence.title}: {few}; the surface is a first guess"]
     return []
+
+
+def _assume_everywhere(evidence: Evidence, contact: Kriged) -> Kriged:
+    """The same doubtful thickness at every cell: what the few places say on the whole, without any map of it.
+
+    Leaving it out would call the top of the gravel bedrock.
+    """
+    mean, deviation = _latent_prior(evidence)
+    return contact._replace(mean=np.full_like(contact.mean, mean), deviation=np.full_like(contact.mean, deviation))
 
 
 def _krige_block(
@@ -372,7 +384,8 @@ def _gravel_surfaces(contact: Kriged, gravel: Kriged, canvas: Canvas, options: S
     grid, place = canvas.grid, canvas.place
     # Bedrock plus thickness, by the means of both: the basal contact itself.
     top = canvas.ground - np.exp(contact.mean + 0.5 * contact.deviation**2)
-    top = np.where(probability >= options.least_probability, top, np.nan)
+    low, high = (canvas.ground - np.exp(contact.mean + sign * Z_95 * contact.deviation) for sign in (1, -1))
+    shown = probability >= options.least_probability
     return [
         Surface(
             name="deep_gravel_thickness",
@@ -385,7 +398,15 @@ def _gravel_surfaces(contact: Kriged, gravel: Kriged, canvas: Canvas, options: S
             p95=place(np.maximum(gravel.mean + Z_95 * gravel.deviation, 0.0)),
         ),
         Surface("deep_gravel_probability", "Probability of deep gravel", "probability", grid, place(probability)),
-        Surface("deep_gravel_top_elevation", "Top of the deep gravel", "elevation", grid, place(top)),
+        Surface(
+            name="deep_gravel_top_elevation",
+            title="Top of the deep gravel",
+            quantity="elevation",
+            grid=grid,
+            estimate=place(np.where(shown, top, np.nan)),
+            p05=place(np.where(shown, low, np.nan)),
+            p95=place(np.where(shown, high, np.nan)),
+        ),
     ]
 
 
@@ -498,6 +519,9 @@ def _cross_validate(evidence: Evidence, kriged: Kriged) -> CrossValidation:
     """Each datum proper against what all other data and bounds say of its place, its own error in the doubt."""
     predicted, variance = leave_one_out(kriged.points, kriged.values, kriged.error_variance, kriged.covariance)
     own = slice(0, len(evidence.values))
+    if evidence.unit == "m":
+        # A latent thickness below 0 is no gravel, not less than none.
+        predicted = np.maximum(predicted, 0.0)
     return CrossValidation(
         title=evidence.title,
         unit=evidence.unit,

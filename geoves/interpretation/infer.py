@@ -154,13 +154,17 @@ def _interpret_block(
     wavenumber: FloatArray,
 ) -> list[PlaceReading]:
     weighed = _weigh_block(pairs, template, presence, options, wavenumber)
+    deep = soundings.role_mask(template, Role.DEEP_AQUIFER)
+    gravel_prior = float(1.0 - np.prod(1.0 - presence[deep])) if np.any(deep) else np.nan
     results = []
     for (sounding, inverted), (draws, bound) in zip(pairs, weighed, strict=True):
         contact = soundings.find_basal_contact(draws, bound, template, options)
         generator = np.random.default_rng([options.random_seed, *sounding.name.encode(), 1])
         contact = condition_on_wells(contact, sounding, well_tops, options, generator)
         decided = picks.get(sounding.name, [])
-        results.append(_read_sounding(sounding, inverted, draws, contact, decided, template, options))
+        reading = _read_sounding(sounding, inverted, draws, contact, decided, template, options)
+        column = None if reading.column is None else attrs.evolve(reading.column, gravel_prior=gravel_prior)
+        results.append(attrs.evolve(reading, column=column))
     return results
 
 

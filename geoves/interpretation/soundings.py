@@ -10,7 +10,16 @@ from scipy.special import ndtr
 from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.earth import Inverted
 from geoves.domain.survey import Pick, Sounding, Well
-from geoves.domain.tops import BedrockStatus, PickOpinion, ShallowResistivity, Thickness, Top, UnitColumn
+from geoves.domain.tops import (
+    BedrockStatus,
+    PickOpinion,
+    PlaceKind,
+    ShallowResistivity,
+    Thickness,
+    Top,
+    TopStatus,
+    UnitColumn,
+)
 from geoves.domain.units import Z_95, Role, Template
 from geoves.interpretation.options import THICKNESS_BY_ROLE, InterpretationOptions
 from geoves.interpretation.sequences import ColumnDraws, HalfSpace
@@ -19,6 +28,8 @@ from geoves.kernels.damped_steps import Curves
 
 # A resistivity is a datum where the curve adds this much to what the template already knows (share of its precision).
 LEAST_GAIN = 0.25
+# What a basal contact is the top of, where gravel and rock are not told apart.
+UNDECIDED = "basal"
 # A unit's presence is decided beyond this probability, and its thickness is then known no better than this (m).
 DECIDED, LEAST_THICKNESS_ERROR = 0.9, 0.5
 # A bound lies no deeper than this quantile of the contact's depth where at least this share of draws still reach it.
@@ -121,12 +132,15 @@ def _decide_at(
 ) -> BasalContact:
     """The contact at a decided depth: of rock, with the inferred gravel on it; of gravel, with the gravel under it."""
     basal = np.maximum(depth + error * generator.standard_normal(max(contact.depth.size, 100)), 0.1)
-    # A decided top of gravel means that there is some.
-    pool = contact.gravel[contact.gravel >= PRESENT] if role is Role.DEEP_AQUIFER else contact.gravel
-    gravel = generator.choice(pool, basal.size) if pool.size else np.zeros(basal.size)
     if role is Role.BEDROCK:
+        # The gravel that is likeliest goes with the decided rock, so that the surfaces meet it.
+        gravel = np.full(basal.size, np.median(contact.gravel) if contact.gravel.size else 0.0)
         gravel = np.minimum(gravel, 0.9 * basal)
         basal = basal - gravel
+    else:
+        # A decided top of gravel means that there is some.
+        pool = contact.gravel[contact.gravel >= PRESENT]
+        gravel = generator.choice(pool, basal.size) if pool.size else np.zeros(basal.size)
     deviation = float(np.std(np.log(basal)))
     return attrs.evolve(contact, depth=basal, gravel=gravel, status="seen", bound=0.0, log_deviation=deviation)
 
@@ -150,35 +164,58 @@ def _decide_below(contact: BasalContact, depth: float, role: Role) -> BasalConta
 def contact_tops(
     sounding: Sounding, contact: BasalContact, template: Template, options: InterpretationOptions
 ) -> list[Top]:
-    """Rows of the basal contact and of bedrock at a sounding: data, bounds, or none where nothing is known."""
+    """Rows of the basal contact and of bedrock at a sounding: data, bounds, or none where nothing is known.
+
+    A row is the interpreter's where the value is; what the curve says beside a decision stays the curve's.
+    """
     rock = next(unit.code for unit in template.units if unit.role is Role.BEDROCK)
     deep = [unit.code for unit in template.units if unit.role is Role.DEEP_AQUIFER]
-    decided = contact.picks[-1] if contact.picks else None
-    kind = "pick" if decided else "sounding"
-    beside = f", weighed by well {', '.join(contact.wells)} beside it" if contact.wells else ""
-    source = f"pick by {decided.interpreter}: {decided.reason}" if decided else _SOURCES[contact.status] + beside
+    role = {unit.code: unit.role for unit in template.units}
+    decided = {"bedrock" if role[pick.unit] is Role.BEDROCK else "basal": pick for pick in contact.picks}
 
-    def top(unit: str, name: str, status: str, depth: float, error: float) -> Top:
-        return Top(
-            sounding.name, kind, sounding.easting, sounding.northing, unit, name, status,  # type: ignore[arg-type]
-            depth, sounding.ground_elevation - depth, error, source,
-        )  # fmt: skip
+    def top(unit: str, name: str, status: TopStatus, depth: float, error: float) -> Top:
+        pick = decided.get(name)
+        if pick is not None and pick.status == status and pick.depth is not None:
+            depth = pick.depth
+            error = (pick.depth_error or 0.05 * depth) if status == "at" else np.nan
+            kind: PlaceKind = "pick"
+            source = _name_pick(pick)
+        else:
+            beside = f", weighed by well {', '.join(contact.wells)} beside it" if contact.wells else ""
+            others = "".join(f", with the {_name_pick(one)}" for one in contact.picks)
+            kind, source = "sounding", _SOURCES[contact.status] + beside + others
+        elevation = sounding.ground_elevation - depth
+        place = (sounding.name, kind, sounding.easting, sounding.northing)
+        return Top(*place, unit, name, status, depth, elevation, error, source)
 
     if contact.status == "deeper_than":
         bounds = (("basal", contact.bound), ("bedrock", max(contact.bound, contact.rock_bound)))
         return [top(rock, name, "below", bound, np.nan) for name, bound in bounds]
     if not contact.depth.size or contact.log_deviation > options.broad_log_depth_deviation:
         return []
-    present = float(np.mean(contact.gravel >= PRESENT))
-    upper = deep[0] if deep and present >= 0.5 else rock
-    floor = 0.0 if decided else options.relative_depth_floor
+    present = float(np.mean(contact.gravel >= PRESENT)) if deep else 0.0
+    upper = deep[0] if present >= DECIDED else (rock if present <= 1.0 - DECIDED else UNDECIDED)
     rows = []
     for unit, name, depth in ((upper, "basal", contact.depth), (rock, "bedrock", contact.rock)):
         middle = float(np.exp(np.mean(np.log(depth)))) if name == "basal" else float(np.mean(depth))
-        rows.append(top(unit, name, "at", middle, float(np.hypot(np.std(depth), floor * middle))))
+        error = float(np.hypot(np.std(depth), options.relative_depth_floor * middle))
+        rows.append(top(unit, name, "at", middle, error))
+    rows += [
+        top(pick.unit, name, "below", pick.depth or 0.0, np.nan)
+        for name, pick in decided.items()
+        if pick.status == "below"
+    ]
     if deep and not present:
-        rows.append(top(deep[0], Role.DEEP_AQUIFER, "absent", np.nan, np.nan))
+        absent = next((pick for pick in contact.picks if pick.status == "absent"), None)
+        source = _name_pick(absent) if absent else _SOURCES[contact.status]
+        kind: PlaceKind = "pick" if absent else "sounding"
+        place = (sounding.name, kind, sounding.easting, sounding.northing)
+        rows.append(Top(*place, deep[0], Role.DEEP_AQUIFER, "absent", np.nan, np.nan, np.nan, source))
     return rows
+
+
+def _name_pick(pick: Pick) -> str:
+    return f"pick by {pick.interpreter}: {pick.reason}"
 
 
 def other_picks(place: Sounding | Well, picks: Sequence[Pick], template: Template) -> list[Top]:
@@ -193,7 +230,7 @@ def other_picks(place: Sounding | Well, picks: Sequence[Pick], template: Templat
         rows.append(
             Top(
                 place.name, "pick", place.easting, place.northing, pick.unit, role[pick.unit], pick.status,
-                depth, place.ground_elevation - depth, error, f"pick by {pick.interpreter}: {pick.reason}",
+                depth, place.ground_elevation - depth, error, _name_pick(pick),
             )
         )  # fmt: skip
     return rows
@@ -205,7 +242,7 @@ def absent_thickness(place: Sounding | Well, picks: Sequence[Pick], template: Te
     return [
         Thickness(
             place.name, "pick", place.easting, place.northing, role[pick.unit], 0.0, LEAST_THICKNESS_ERROR, False,
-            f"pick by {pick.interpreter}: {pick.reason}",
+            _name_pick(pick),
         )
         for pick in picks
         if pick.status == "absent"

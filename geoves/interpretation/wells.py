@@ -17,6 +17,8 @@ from geoves.kernels.unit_sequence import ordered_transition, read_units
 
 # What a unit pays (nats) for an interval whose words it does not claim, and for words that nothing claims.
 UNCLAIMED, UNSAID = -6.0, -1.0
+# Of a thickness between two contacts in a log, m.
+THICKNESS_ERROR = 0.4
 
 
 def read_log(well: Well, template: Template, options: InterpretationOptions) -> list[WellReading]:
@@ -70,28 +72,44 @@ def _log_depth(top: float, template: Template) -> FloatArray:
 def well_tops(
     well: Well, readings: list[WellReading], template: Template, options: InterpretationOptions
 ) -> tuple[list[Top], list[Thickness]]:
-    """Contacts that the log shows, bounds where it ends above them, thicknesses of the two aquifers."""
+    """Contacts that the log shows, bounds where it ends above them, thicknesses of the two aquifers.
+
+    What no unit claims, and stretches that the log leaves out, are not known: a contact below such a stretch lies
+    somewhere in it, a bound goes no deeper than the last known interval, and nothing is absent that could lie there.
+    """
     role = {unit.code: unit.role for unit in template.units}
     rock = next(unit.code for unit in template.units if unit.role is Role.BEDROCK)
     known = [reading for reading in readings if reading.unit]
     if not known:
         return [], []
-    end = max(well.total_depth, *(reading.bottom for reading in readings))
     basal = next((r for r in known if role[r.unit or ""] in {Role.DEEP_AQUIFER, Role.BEDROCK}), None)
     bedrock = next((r for r in known if role[r.unit or ""] is Role.BEDROCK), None)
     tops = []
     for name, unit, found in (("basal", basal.unit if basal else rock, basal), ("bedrock", rock, bedrock)):
-        status: TopStatus = "at" if found else "below"
-        depth = found.top if found else end
-        error = np.hypot(options.well_contact_error, options.well_relative_error * depth) if found else np.nan
-        source = "driller's log" if found else "driller's log ends above it"
-        tops.append(_top(well, unit or rock, name, status, depth, float(error), source))
-    if bedrock and not any(role[r.unit or ""] is Role.DEEP_AQUIFER for r in known):
+        if found is None:
+            source = "driller's log ends above it"
+            tops.append(_top(well, unit or rock, name, "below", known[-1].bottom, np.nan, source))
+            continue
+        unknown = _unknown_above(found, known)
+        depth = found.top - 0.5 * unknown
+        error = float(np.hypot(options.well_contact_error, options.well_relative_error * depth))
+        source = "driller's log" + (f", within {unknown:.1f} m that no unit claims" if unknown else "")
+        tops.append(
+            _top(well, unit or rock, name, "at", depth, float(np.hypot(error, unknown / np.sqrt(12.0))), source)
+        )
+    no_gravel = bedrock and not any(role[r.unit or ""] is Role.DEEP_AQUIFER for r in known)
+    if bedrock and no_gravel and not _unknown_above(bedrock, known):
         tops += [
             _top(well, unit.code, unit.role, "absent", np.nan, np.nan, "driller's log")
             for unit in template.with_role(Role.DEEP_AQUIFER)
         ]
-    return tops, _thicknesses(well, known, role, end, reached=bedrock is not None)
+    return tops, _thicknesses(well, known, role)
+
+
+def _unknown_above(found: WellReading, known: Sequence[WellReading]) -> float:
+    """Metres right above an interval that no known interval covers."""
+    above = max((reading.bottom for reading in known if reading.bottom <= found.top + 1e-6), default=found.top)
+    return max(found.top - above, 0.0)
 
 
 def _top(well: Well, unit: str, contact: str, status: TopStatus, depth: float, error: float, source: str) -> Top:
@@ -100,23 +118,25 @@ def _top(well: Well, unit: str, contact: str, status: TopStatus, depth: float, e
     return Top(well.name, kind, well.easting, well.northing, unit, contact, status, depth, elevation, error, source)
 
 
-def _thicknesses(
-    well: Well, known: list[WellReading], role: dict[str, Role], end: float, *, reached: bool
-) -> list[Thickness]:
+def _thicknesses(well: Well, known: list[WellReading], role: dict[str, Role]) -> list[Thickness]:
+    """Thickness of each aquifer where the log passes it or meets it, with what is not known beside it as its error."""
+    order = list(Role)
     rows = []
     for which in (Role.SHALLOW_AQUIFER, Role.DEEP_AQUIFER):
         if which not in role.values():
             continue
         mine = [reading for reading in known if role[reading.unit or ""] is which]
-        ended_inside = bool(mine) and not reached and mine[-1].bottom >= end - 0.1
-        passed = reached or any(list(Role).index(role[r.unit or ""]) > list(Role).index(which) for r in known)
-        # A log that ends above the basal gravel says nothing of its thickness.
-        if not mine and not passed:
+        below = next((r for r in known if order.index(role[r.unit or ""]) > order.index(which)), None)
+        # A log that ends above a unit, or does not tell what lies where it would be, says nothing of it.
+        if not mine and (below is None or _unknown_above(below, known)):
             continue
+        open_ended = bool(mine) and mine[-1] is known[-1]
         thickness = sum(reading.bottom - reading.top for reading in mine)
+        unknown = sum(_unknown_above(reading, known) for reading in (*mine, *([below] if below else [])))
+        error = float(np.hypot(THICKNESS_ERROR, unknown / np.sqrt(12.0)))
         rows.append(
             Thickness(
-                well.name, "well", well.easting, well.northing, which, thickness, 0.4, ended_inside, "driller's log"
+                well.name, "well", well.easting, well.northing, which, thickness, error, open_ended, "driller's log"
             )
         )
     return rows

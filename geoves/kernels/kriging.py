@@ -115,7 +115,7 @@ def estimate_offset(
     prior_deviation: float,
     covariance: Covariance,
 ) -> tuple[float, float]:
-    """By how much the data of one kind (`member`, (n,)) lie above the others, all else told by the field; its deviation.
+    """By how much the data of one kind (`member`, (n,)) lie above the others in one field, and its deviation.
 
     The offset is normal about 0 with `prior_deviation` beforehand, the field's mean anything. Generalised least
     squares with a prior on one coefficient (Omre and Halvorsen 1989, Mathematical Geology 21, 767-786, from memory).

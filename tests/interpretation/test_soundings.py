@@ -92,9 +92,9 @@ def test_a_pick_below_makes_a_bound_of_a_contact_that_was_seen():
     """Rock is bounded by the pick; the basal contact may lie higher by as much as gravel may be thick, 30 m."""
     found = picked(pick_of("below", 70.0))
     assert found.columns[0].bedrock_status == "deeper_than"
-    for contact, bound in (("basal", 40.0), ("bedrock", 70.0)):
+    for contact, bound, kind in (("basal", 40.0, "sounding"), ("bedrock", 70.0, "pick")):
         (top,) = tops_by(found, "Picked", contact)
-        assert (top.status, top.depth, top.kind) == ("below", bound, "pick")
+        assert (top.status, top.depth, top.kind) == ("below", bound, kind)
         assert "R. Alder" in top.source
 
 

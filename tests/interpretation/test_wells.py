@@ -1,5 +1,6 @@
 """Drillers' words and wells: what a log shows, what it only bounds, and what nothing claims."""
 
+import numpy as np
 import pytest
 
 from geoves.domain.survey import Pick
@@ -92,8 +93,9 @@ def test_a_well_that_stops_above_rock_is_a_bound():
     found = read_places([], FULL, wells=[well_of("W", (0, 3, "topsoil"), (3, 48, "blue clay"), total=50.0)])
     for contact in ("basal", "bedrock"):
         (top,) = tops_by(found, "W", contact)
-        assert (top.status, top.depth) == ("below", 50.0)
-        assert top.elevation == pytest.approx(352.0)
+        # The log is silent of the last 2 m of the hole.
+        assert (top.status, top.depth) == ("below", 48.0)
+        assert top.elevation == pytest.approx(354.0)
     assert not [row for row in found.thicknesses if row.role == "deep_aquifer"]
 
 
@@ -105,6 +107,24 @@ def test_a_well_that_ends_in_gravel_knows_a_least_thickness_and_a_bound():
     assert (rock.status, rock.depth) == ("below", 47.0)
     (deep,) = [row for row in found.thicknesses if row.role == "deep_aquifer"]
     assert (deep.thickness, deep.at_least) == (7.0, True)
+
+
+def test_words_that_nothing_claims_above_rock_leave_gravel_open_and_the_contact_within_them():
+    log = well_of("W", (0, 3, "topsoil"), (3, 40, "blue clay"), (40, 46, "muck & stumps"), (46, 50, "limestone"))
+    found = read_places([], FULL, wells=[log])
+    for contact in ("basal", "bedrock"):
+        (top,) = tops_by(found, "W", contact)
+        assert (top.status, top.depth) == ("at", 43.0)
+        # Evenly likely over 6 m: 6 / sqrt(12) m, with the contact's own error.
+        assert top.standard_error == pytest.approx(np.hypot(6 / np.sqrt(12), np.hypot(0.3, 0.43)), rel=1e-6)
+    assert not [top for top in found.tops if top.status == "absent"]
+    assert not [row for row in found.thicknesses if row.role == "deep_aquifer"]
+
+
+def test_words_that_nothing_claims_at_the_foot_bound_nothing():
+    log = well_of("W", (0, 3, "topsoil"), (3, 40, "blue clay"), (40, 46, "granite"))
+    (top,) = tops_by(read_places([], FULL, wells=[log]), "W", "bedrock")
+    assert (top.status, top.depth) == ("below", 40.0)
 
 
 def test_rock_without_gravel_is_an_absence():
