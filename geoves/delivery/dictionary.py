@@ -137,9 +137,9 @@ RASTERS: Mapping[str, RasterWords] = MappingProxyType(
 
 _BEDROCK_STATUS = MappingProxyType(
     {
-        "seen": "the curve shows where bedrock begins",
-        "not_distinct": "bedrock and what lies on it are not told apart by resistivity",
-        "deeper_than": "the curve ends above bedrock: its depth is a lower bound",
+        "seen": "base seen: the curve shows where basal gravel or rock begins, not which of the two",
+        "not_distinct": "base not distinct: its resistivity is too like that of what lies on it",
+        "deeper_than": "base deeper than the curve reached: the depth is a lower bound",
     }
 )
 _TOP_STATUS = MappingProxyType(
@@ -203,7 +203,12 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     Column("rms_percent", "Misfit", "Root mean square misfit of the used readings.", "percent"),
                     Column("noise_percent", "Noise", "Relative error of a reading, by the residuals.", "percent"),
                     Column("n_layers", "Layers", "Number of layers that the criterion chose.", "count"),
-                    Column("bedrock_status", "Bedrock", "What the curve says of bedrock.", codes=_BEDROCK_STATUS),
+                    Column(
+                        "bedrock_status",
+                        "Base (gravel or rock)",
+                        "What the curve says of the base.",
+                        codes=_BEDROCK_STATUS,
+                    ),
                     Column("bedrock_depth", "Bedrock depth", "Depth to bedrock, or its lower bound.", "length"),
                     Column("bedrock_depth_error", "Bedrock depth error", "Standard error of that depth.", "length"),
                     *_banded("basal_depth", "Basal contact depth", "Depth at which basal gravel or rock begins."),

@@ -16,6 +16,7 @@ from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_
 from geoves.delivery.sections import lines_of
 from geoves.delivery.sentences import (
     LIKELIHOODS,
+    STATUS_WORDS,
     readings_aside,
     tell_doubt,
     tell_opinion,
@@ -67,6 +68,7 @@ def describe_region(results: Results) -> dict[str, Any]:
         },
         "caution": SHORT_CAUTION,
         "likelihoods": LIKELIHOODS,
+        "statusWords": dict(STATUS_WORDS),
         "cautions": list(list_cautions()),
         "grid": _describe_grid(stack.grid),
         "everyCell": round(stack.grid.cell_size / results.stack.grid.cell_size),

@@ -17,8 +17,9 @@ def write_answers(results: Results) -> Markup:
         for asked, number, words in numbers
     ]
     caption = (
-        "Black circle: bedrock seen; grey diamond: rock and what lies on it not told apart; white triangle: bedrock is "
-        "deeper than the curve reached; square: well. White line: the valley’s axis; A, B, C: the sections across it."
+        "Black circle: base seen (basal gravel or rock, which a curve seldom tells apart); grey diamond: base not "
+        "distinct; white triangle: base deeper than the curve reached; square: well. White line: the valley’s axis; "
+        "A, B, C: the sections across it."
     )
     scroll = {"class": "scroll", "tabindex": "0", "role": "region", "aria-label": "Map of bedrock elevation"}
     return joined(
@@ -55,7 +56,7 @@ def _valley_length(results: Results) -> tuple[str, str, str]:
     near = "1 km" if results.region.length_unit == "m" else "0.6 mi"
     words = (
         f"of it {_far(results, main.length * metres)} in the main valley; {_far(results, supported)} of the whole lies "
-        f"within {near} of a sounding that saw bedrock or a well that reached it"
+        f"within {near} of a sounding that saw the base or a well that reached rock"
     )
     return asked, _far(results, float(axis.length.sum()) * metres), words
 

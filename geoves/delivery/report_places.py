@@ -8,7 +8,14 @@ import numpy as np
 
 from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table, unit_label
-from geoves.delivery.sentences import tell_doubt, tell_opinion, tell_readings_aside, tell_sounding, tell_trade_offs
+from geoves.delivery.sentences import (
+    STATUS_WORDS,
+    tell_doubt,
+    tell_opinion,
+    tell_readings_aside,
+    tell_sounding,
+    tell_trade_offs,
+)
 from geoves.delivery.sounding_figures import NearWell, depth_shown, draw_columns, draw_curve, draw_models
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
@@ -19,12 +26,6 @@ from geoves.domain.tops import UnitCalibration, UnitColumn
 from geoves.domain.units import Template
 
 NEAR_WELL = 3000.0  # m: a log farther away would suggest a likeness that nothing supports
-
-STATUS_WORDS = {
-    "seen": "bedrock seen",
-    "not_distinct": "bedrock not distinct",
-    "deeper_than": "bedrock deeper than the curve shows",
-}
 
 
 @attrs.frozen

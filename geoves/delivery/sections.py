@@ -267,7 +267,7 @@ def _section_place(results: Results, frame: Frame, place: Place, at: float) -> M
 def _column_outline(
     frame: Frame, place: Place, x: float, half: float, metres: float, pieces: list[Markup]
 ) -> list[Markup]:
-    """Pieces on paper within an outline; at its foot an arrow where it is a bound, a diamond where rock is not seen."""
+    """Pieces on paper within an outline; at its foot an arrow: a bound; a diamond: base not distinct."""
     if not place.stretches:
         return pieces
     top, foot = (float(y) for y in frame.y.pixel(np.array([place.ground, _foot(place)]) / metres))
@@ -332,7 +332,7 @@ def _overview_places(results: Results, frame: Frame) -> list[Markup]:
 
 
 def status_mark(status: str, x: float, y: float) -> str:
-    """Circle: bedrock seen; diamond: not distinct; triangle pointing down: deeper than."""
+    """Circle: base seen; diamond: not distinct; triangle pointing down: deeper than."""
     return {
         "seen": f"M{x - 4:.1f} {y:.1f}a4 4 0 1 0 8 0a4 4 0 1 0 -8 0Z",
         "not_distinct": f"M{x:.1f} {y - 5:.1f}l5 5l-5 5l-5 -5Z",

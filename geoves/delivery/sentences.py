@@ -1,5 +1,8 @@
 """What a curve says of its place, in sentences and in the region's unit: one wording for the pages and the layers."""
 
+from collections.abc import Mapping
+from types import MappingProxyType
+
 import numpy as np
 
 from geoves.delivery.markup import format_length, unit_label
@@ -20,6 +23,15 @@ LIKELIHOODS = (
 )
 # A ratio of resistivities from this on is called by its word; common practice with noise of a few percent.
 CONTRASTS = ((4.0, "a strong contrast"), (2.0, "a clear contrast"), (1.3, "a weak contrast"))
+# What a curve says of the base: basal gravel or rock, whichever comes first, for it seldom tells them apart.
+STATUS_WORDS: Mapping[str, str] = MappingProxyType(
+    {
+        "seen": "base seen (gravel or rock)",
+        "not_distinct": "base not distinct",
+        "deeper_than": "base deeper than the curve reached",
+    }
+)
+UNDECIDED = 0.15  # a curve that moves the chance of gravel by less than this has not decided it
 SET_ASIDE = 0.5  # a reading with less robust weight than this counts as set aside by the fit
 
 
@@ -56,8 +68,12 @@ def _gravel_on_rock(column: UnitColumn, template: Template, unit: LengthUnit) ->
     deep = _deep_aquifer(template)
     if not deep or not np.isfinite(column.gravel_probability):
         return ""
-    chance = column.gravel_probability
+    chance, before = column.gravel_probability, column.gravel_prior
     rock = format_length(column.bedrock_depth, unit)
+    # A prior that is not known leaves the comparison false: the chance is then told as it is.
+    if abs(chance - before) < UNDECIDED:
+        opened = f"; whether {deep} lies on the rock this curve does not decide (assumed beforehand: {before:.2f})"
+        return f"{opened}; rock is put at {rock} on average"
     return f"; {deep} on the rock is {name_likelihood(chance)} ({chance:.2f}), which puts rock at {rock} on average"
 
 
@@ -72,8 +88,8 @@ def tell_hidden(column: UnitColumn, template: Template, unit: LengthUnit) -> str
 
 
 def tell_contrast(column: UnitColumn) -> str:
-    """How well rock stands out from what lies on it, in plain words; empty where the curve never reaches it."""
-    if column.bedrock_status == "deeper_than" or not np.isfinite(column.base_contrast):
+    """How well rock stands out from what lies on it, in plain words; empty where the curve did not see the base."""
+    if column.bedrock_status != "seen" or not np.isfinite(column.base_contrast):
         return ""
     ratio = float(np.exp(abs(column.base_contrast)))
     strength = next((words for least, words in CONTRASTS if ratio >= least), "")

@@ -203,10 +203,15 @@ def _list_rules(name: str, results: Results) -> tuple[Rule, ...]:
 
 _RULES: dict[str, tuple[Rule, ...]] = {
     "soundings": (
-        Rule("Bedrock seen", Mark("circle", SURE), (("bedrock_status", "=", "seen"),), "sounding"),
-        Rule("Bedrock not distinct", Mark("circle", GREY), (("bedrock_status", "=", "not_distinct"),), "sounding"),
+        Rule("Base seen (gravel or rock)", Mark("circle", SURE), (("bedrock_status", "=", "seen"),), "sounding"),
+        Rule("Base not distinct", Mark("circle", GREY), (("bedrock_status", "=", "not_distinct"),), "sounding"),
         Rule("Too few readings", Mark("cross", GREY, GREY), (("bedrock_status", "null", ""),), "sounding"),
-        Rule("Bedrock deeper than", Mark("triangle", GREY), (("bedrock_status", "=", "deeper_than"),), "sounding"),
+        Rule(
+            "Base deeper than the curve reached",
+            Mark("triangle", GREY),
+            (("bedrock_status", "=", "deeper_than"),),
+            "sounding",
+        ),
     ),
     "tops": (
         Rule("Top at this depth", Mark("circle", SURE, size=6.0), (("status", "=", "at"),)),

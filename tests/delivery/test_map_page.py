@@ -127,13 +127,14 @@ def test_enter_on_the_map_asks_at_its_middle(opened):
 
 
 def test_support_is_said_before_the_numbers(opened):
-    """Larch 8 saw bedrock; beside it, 300 m away, the page says so, and farther off that nothing was measured."""
+    """Larch 8 saw the base; beside it, 300 m away, the page says so, and farther off that nothing was measured."""
     opened.driver.find_element(By.ID, "wanted").send_keys("502700 4600200", Keys.ENTER)
     words = "return document.getElementById('answer').textContent"
-    assert "Measured nearby: rock was seen 300 m away." in opened.run(words)
+    assert "Measured nearby: the base (gravel or rock) was seen 300 m away." in opened.run(words)
     opened.run("document.getElementById('wanted').value = ''")
     opened.driver.find_element(By.ID, "wanted").send_keys("501800 4600200", Keys.ENTER)
-    assert "Estimated, not measured here: the nearest place that saw rock is 950 m away." in opened.run(words)
+    far = "Estimated, not measured here: the nearest place that saw the base (gravel or rock) is 950 m away."
+    assert far in opened.run(words)
 
 
 @pytest.mark.parametrize("mode", ["both", "value", "width"])

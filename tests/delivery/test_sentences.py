@@ -43,6 +43,21 @@ def test_the_contact_is_told_in_the_regions_unit(column, small_results):
     assert " m" not in tell_sounding(column, template, "ft").replace("about", "")
 
 
+@pytest.mark.parametrize(("before", "decides"), [(0.36, False), (0.5, False), (0.64, False), (0.34, True), (0.9, True)])
+def test_a_curve_that_hardly_moves_the_chance_of_gravel_does_not_decide_it(column, small_results, before, decides):
+    template = small_results.region.template
+    said = tell_sounding(attrs.evolve(column, gravel_prior=before), template, "ft")
+    assert ("as likely as not (0.50)" in said) == decides
+    undecided = f"whether basal gravel lies on the rock this curve does not decide (assumed beforehand: {before:.2f})"
+    assert (undecided in said) == (not decides)
+
+
+def test_contrast_is_told_only_of_a_base_that_was_seen(column):
+    strong = attrs.evolve(column, base_contrast=2.0)
+    assert tell_contrast(strong)
+    assert not any(tell_contrast(attrs.evolve(strong, bedrock_status=one)) for one in ("not_distinct", "deeper_than"))
+
+
 def test_what_is_not_known_is_not_told(column, small_results):
     template = small_results.region.template
     blind = attrs.evolve(

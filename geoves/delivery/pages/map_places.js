@@ -21,8 +21,8 @@ const wellShape = (well) => known(well.rock) ? "rock" : "ended";
 
 function soundingSays({ status, depth }) {
   if (status === null) return "no model";
-  if (status === "deeper_than") return `bedrock deeper than ${lengthWords(depth)}`;
-  return known(depth) ? `${statusWords[status]}, ${lengthWords(depth)}` : statusWords[status];
+  if (status === "deeper_than") return `base deeper than ${lengthWords(depth)}`;
+  return known(depth) ? `${statusWords[status]}, rock put at ${lengthWords(depth)}` : statusWords[status];
 }
 
 const wellSays = (well) => known(well.rock) ? `reached rock at ${lengthWords(well.rock)}`
@@ -153,9 +153,10 @@ function supportWords(easting, northing) {
   const near = nearestPlaces(easting, northing, Infinity);
   const knows = near.find(({ kind, place }) => kind === "well" ? known(place.rock) : place.status === "seen");
   const well = near.find(({ kind, place }) => kind === "well" && known(place.rock));
-  const first = !knows ? "Not known: no place here saw rock."
-    : knows.distance <= NEARBY ? `Measured nearby: rock was seen ${distanceWords(knows.distance)} away.`
-      : `Estimated, not measured here: the nearest place that saw rock is ${distanceWords(knows.distance)} away.`;
+  const what = knows?.kind === "well" ? "rock" : "the base (gravel or rock)";
+  const first = !knows ? "Not known: no place here saw the base."
+    : knows.distance <= NEARBY ? `Measured nearby: ${what} was seen ${distanceWords(knows.distance)} away.`
+      : `Estimated, not measured here: the nearest place that saw ${what} is ${distanceWords(knows.distance)} away.`;
   const far = !well || well.distance > WELL_FAR;
   return far ? `${first} It rests on soundings alone: no well within ${distanceWords(WELL_FAR)} reached rock.` : first;
 }
@@ -220,8 +221,7 @@ function wellFacts(well) {
 function markKey() {
   const item = (shape, words) => make("li", {}, symbol(shape), words);
   return make("div", { class: "key" }, make("h3", {}, "Marks"), make("ul", {},
-    item("seen", "sounding that saw bedrock"), item("not_distinct", "sounding: bedrock not distinct"),
-    item("deeper_than", "sounding: bedrock deeper than it reached"), item("rock", "well that reached rock"),
+    ...Object.entries(statusWords).map(([status, words]) => item(status, `sounding: ${words}`)), item("rock", "well that reached rock"),
     item("ended", "well that ended above rock")),
   make("p", { class: "soft" }, "Small dots: permits. Bold line: valley axis. Thin lines: bedrock contours. "
     + "Violet: extent of likely gravel, dashed where only possible."));

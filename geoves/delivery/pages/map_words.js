@@ -4,11 +4,7 @@ const described = JSON.parse(document.getElementById("described").textContent);
 const region = described.region;
 const SVG = "http://www.w3.org/2000/svg";
 
-const statusWords = {
-  seen: "bedrock seen",
-  not_distinct: "bedrock not distinct from what lies on it",
-  deeper_than: "bedrock deeper than the curve reached",
-};
+const { statusWords } = described;
 
 // An element with attributes and children; strings become text, never markup.
 function make(tag, attributes = {}, ...children) {
