@@ -234,8 +234,9 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     _GROUND,
                     Column(
                         "investigated_depth",
-                        "Investigated depth",
-                        "Below it a change of resistivity alters the curve by less than its error.",
+                        "Depth of the last noticeable change",
+                        "Halving or doubling the resistivity of all that lies below it would go unnoticed; no depth to "
+                        "which rock was investigated.",
                         "length",
                     ),
                     Column("largest_ab2", "Largest AB/2", "Largest half spacing of the current electrodes.", "length"),

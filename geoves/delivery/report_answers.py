@@ -5,9 +5,12 @@ import shapely
 
 from geoves.delivery.cautions import list_cautions
 from geoves.delivery.markup import Markup, element, format_length, joined
-from geoves.delivery.sections import LIKELY, describe_depth, draw_overview, main_axis
+from geoves.delivery.sections import LIKELY, draw_overview, main_axis
 from geoves.domain.grids import CrossValidation
 from geoves.domain.results import Results
+from geoves.domain.units import Role
+
+FEW_THICKNESSES = 10  # fewer measured thicknesses than this make no variogram
 
 
 def write_answers(results: Results) -> Markup:
@@ -27,7 +30,7 @@ def write_answers(results: Results) -> Markup:
             element("dl", {"class": "numbers"}, *shown),
             element("figure", {}, element("div", scroll, draw_overview(results)), element("figcaption", {}, caption)),
             element("h3", {}, "How sure"),
-            *(element("p", {}, words) for words in confidence_in_words(results)),
+            *(element("p", {}, words) for words in (*confidence_in_words(results), *tell_limits(results))),
             element("h3", {}, "Cautions"),
             element("ul", {"class": "cautions"}, *(element("li", {}, caution) for caution in list_cautions())),
         ]
@@ -78,14 +81,18 @@ def _supported_length(results: Results) -> float:
 def _gravel_area(results: Results) -> tuple[str, str, str]:
     asked = "Area where deep gravel is likely"
     surface = results.stack.surfaces.get("deep_gravel_probability")
+    remarks = _remarks_with(results, "deep gravel")
     if surface is None or not np.isfinite(surface.estimate).any():
-        return asked, "not mapped", "the template names no deep aquifer"
+        named = bool(results.region.template.with_role(Role.DEEP_AQUIFER))
+        unknown = " ".join(remarks) or "nowhere could its probability be estimated"
+        return asked, "not mapped", unknown if named else "the template names no deep aquifer"
     cell = (results.stack.grid.cell_size * results.region.crs_unit_metres) ** 2
     likely, nearly_sure, possible = (float((surface.estimate >= p).sum()) * cell for p in (LIKELY, 0.9, 0.33))
     words = (
         f"where the probability is {LIKELY} or more; {_wide(results, nearly_sure)} at 0.9 or more, "
         f"{_wide(results, possible)} at 0.33 or more"
     )
+    words = ". ".join((words, *remarks)) + ("." if remarks else "")
     return asked, _wide(results, likely), words
 
 
@@ -95,11 +102,47 @@ def _deepest_rock(results: Results) -> tuple[str, str, str]:
     if surface is None or not np.isfinite(surface.estimate).any():
         return asked, "not mapped", "no depth to bedrock could be estimated"
     row, column = np.unravel_index(int(np.nanargmax(surface.estimate)), surface.estimate.shape)
-    said = describe_depth(results, "bedrock_depth", int(row), int(column))
-    number, _, band = said.partition(" (")
-    median = format_length(float(np.nanmedian(surface.estimate)), results.region.length_unit)
-    words = f"below the ground, {band.rstrip(')')} with 90 % probability; over the region the median is {median}"
-    return asked, number, words
+    unit = results.region.length_unit
+    best = format_length(float(surface.estimate[row, column]), unit)
+    median = format_length(float(np.nanmedian(surface.estimate)), unit)
+    words = "the deepest cell of an uncertain surface tends to be overstated"
+    over = f"over the region the median is {median}"
+    if surface.p05 is None or surface.p95 is None:
+        return asked, best, f"below the ground; {words}; {over}"
+    metres = results.region.metres_per_length_unit
+    low, high = (float(band[row, column]) for band in (surface.p05, surface.p95))
+    number = f"{low / metres:,.0f} to {format_length(high, unit)}"
+    return asked, number, f"below the ground with 90 % probability, {best} on average; {words}; {over}"
+
+
+def _remarks_with(results: Results, words: str) -> list[str]:
+    """The surfaces' remarks that hold these words, each with a capital and without its full stop."""
+    return [f"{one[:1].upper()}{one[1:].rstrip('.')}" for one in results.stack.remarks if words in one]
+
+
+def tell_limits(results: Results) -> list[str]:
+    """What leaving places out cannot show: how little the gravel rests on, and errors that all soundings share."""
+    shared = (
+        "Leaving places out one at a time cannot see an error that all soundings share, such as a template that is off "
+        "or ground that is not layered flat."
+    )
+    tied = [f"{one}." for one in _remarks_with(results, "than wells and picks do")]
+    return [*_gravel_support(results), " ".join((shared, *tied))]
+
+
+def _gravel_support(results: Results) -> list[str]:
+    units = results.region.template.with_role(Role.DEEP_AQUIFER)
+    if not units:
+        return []
+    rows = [one for one in results.interpretation.thicknesses if one.role == Role.DEEP_AQUIFER]
+    measured = [one.kind for one in rows if one.thickness > 0 and not one.at_least]
+    counted = [f"{measured.count(kind)} at {kind}s" for kind in ("well", "sounding", "pick") if kind in measured]
+    by_kind = f" ({', '.join(counted)})" if counted else ""
+    number = f"{len(measured)} thickness{'' if len(measured) == 1 else 'es'}{by_kind}"
+    bounds = len(rows) - len(measured)
+    others = f"{bounds} absence or bound" if bounds == 1 else f"{bounds} absences or bounds"
+    guess = "between them it is a guess" if len(measured) < FEW_THICKNESSES else "between them it is interpolated"
+    return [f"{units[0].name}: its thickness rests on {number} and on {others}; {guess}."]
 
 
 def confidence_in_words(results: Results) -> list[str]:

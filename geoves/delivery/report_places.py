@@ -104,7 +104,15 @@ def _layer_table(inverted: Inverted, column: UnitColumn, template: Template, uni
     ]
     length = unit_label(unit)
     top, thick = f"top ({length})", f"thickness ({length})"
-    headings = ("layer", "most like", top, thick, "resistivity (Ω m)", "S (siemens)", "T (Ω m²)")
+    headings = (
+        "layer",
+        "most like",
+        top,
+        thick,
+        "resistivity (Ω m)",
+        "conductance S (siemens)",
+        "transverse resistance T (Ω m²)",
+    )
     return table(headings, rows, "Layers: what the models that fit allow, 5 to 95 %")
 
 
@@ -134,7 +142,7 @@ def _strip_facts(job: StripJob, inverted: Inverted, column: UnitColumn) -> str:
         f"{inverted.n_layers} layers",
         f"misfit {inverted.rms_percent:.1f} %",
         f"AB/2 to {format_length(float(np.nanmax(spacing)), job.unit)}" if spacing.size else "",
-        f"reaches to about {format_length(inverted.investigated_depth, job.unit)}",
+        f"halving or doubling all below {format_length(inverted.investigated_depth, job.unit)} would go unnoticed",
         f"spread towards {job.sounding.azimuth_deg:.0f}°" if job.sounding.azimuth_deg is not None else "",
         job.sounding.date,
     ]

@@ -8,7 +8,7 @@ import numpy as np
 import shapely
 from scipy.ndimage import map_coordinates
 
-from geoves.delivery.markup import Markup, element, format_length, joined, unit_label
+from geoves.delivery.markup import Markup, element, joined, unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, embedded_image, faded_colours, ramp_colours, value_range
 from geoves.delivery.svg import (
     Frame,
@@ -371,14 +371,3 @@ def _ramp_legend(results: Results, x: float) -> Markup:
             label(x, 222, "greyer: less sure", "tick"),
         ]
     )
-
-
-def describe_depth(results: Results, name: str, row: int, column: int) -> str:
-    """A surface's value at a cell with its 90 % band, in the region's unit."""
-    surface = results.stack.surfaces[name]
-    unit = results.region.length_unit
-    said = format_length(float(surface.estimate[row, column]), unit)
-    if surface.p05 is None or surface.p95 is None:
-        return said
-    low, high = float(surface.p05[row, column]), float(surface.p95[row, column])
-    return f"{said} (between {format_length(low, unit)} and {format_length(high, unit)})"

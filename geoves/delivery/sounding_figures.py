@@ -162,7 +162,7 @@ def draw_models(sounding: Sounding, inverted: Inverted, template: Template, unit
     parts.append(polyline(*stairs(model.top_depth, model.resistivity), "model"))
     if inverted.investigated_depth < deepest:
         at = float(frame.y.pixel(inverted.investigated_depth / metres))
-        parts += [line(52, at, 290, at, "limit"), label(287, at - 4, "the curve reaches to here", "note", "end")]
+        parts += [line(52, at, 290, at, "limit"), label(287, at - 4, "what lies below goes unnoticed", "note", "end")]
     title = f"Layered model of {sounding.name}: {model.resistivity.size} layers, with {len(members)} that fit as well"
     return drawing(300, HEIGHT, title, *parts)
 

@@ -8,11 +8,12 @@ import numpy as np
 import pytest
 
 from geoves.delivery.cautions import list_cautions
-from geoves.delivery.report_answers import confidence_in_words
+from geoves.delivery.report_answers import confidence_in_words, tell_limits, write_answers
 from geoves.delivery.report_page import write_report_page
 from geoves.delivery.report_trust import without_logarithm
 from geoves.delivery.sentences import tell_sounding
 from geoves.domain.grids import CrossValidation
+from geoves.domain.units import Template
 
 RECORD = {"versions": {"geoves": "0.1.0"}, "inputs": {"soundings.csv": "0" * 64}, "figures": [{"rmse": 6.123456}, {}]}
 
@@ -143,6 +144,29 @@ def test_confidence_counts_what_the_bands_held(small_results):
     (said,) = confidence_in_words(small_results)
     assert "Half were met within 4.5 m" in said
     assert "held 88 %" in said
+
+
+def test_gravel_is_told_with_its_caution_and_what_no_test_can_see(small_results):
+    few = "Thickness of the deep gravel: only 2 thicknesses beside 11 absences"
+    tie = "soundings put the basal contact 1% deeper than wells and picks do"
+    told = attrs.evolve(small_results, stack=attrs.evolve(small_results.stack, remarks=(few, tie)))
+    assert few in write_answers(told)
+    gravel, shared = tell_limits(told)
+    rows = [one for one in small_results.interpretation.thicknesses if one.role == "deep_aquifer"]
+    measured = sum(one.thickness > 0 and not one.at_least for one in rows)
+    assert f"rests on {measured} thickness" in gravel
+    assert "cannot see an error that all soundings share" in shared
+    assert shared.endswith(f"S{tie[1:]}.")
+
+
+def test_unmapped_gravel_is_told_by_its_true_reason(small_results):
+    stack = attrs.evolve(small_results.stack, surfaces={}, remarks=())
+    unmapped = attrs.evolve(small_results, stack=stack)
+    assert "names no deep aquifer" not in write_answers(unmapped)
+    units = tuple(one for one in small_results.region.template.units if one.role != "deep_aquifer")
+    without = attrs.evolve(unmapped, region=attrs.evolve(small_results.region, template=Template(units)))
+    assert "names no deep aquifer" in write_answers(without)
+    assert len(tell_limits(without)) == 1
 
 
 def test_logarithms_are_told_as_percentages_and_drawn_as_lengths(small_results):

@@ -204,7 +204,7 @@ function soundingFacts(sounding) {
   facts.push(...[...sounding.opinions, ...sounding.doubts].map((words) => make("p", {}, words)));
   facts.push(make("p", { class: "soft" }, `${statusWords[sounding.status]}; `
     + `${sounding.model.rho.length} layers; misfit ${sounding.rms.toFixed(1)} %; `
-    + `the curve reaches to about ${lengthWords(sounding.model.reach)}`));
+    + `halving or doubling all resistivity below ${lengthWords(sounding.model.reach)} would go unnoticed`));
   return facts;
 }
 
