@@ -73,7 +73,7 @@ def describe_region(results: Results) -> dict[str, Any]:
         "grid": _describe_grid(stack.grid),
         "everyCell": round(stack.grid.cell_size / results.stack.grid.cell_size),
         "projection": control_points(stack.grid, region.crs),
-        "ramps": {name: _hexadecimal(name) for name in ("cividis", "viridis", "magma_r")},
+        "ramps": {name: _hexadecimal(name) for name in sorted({*QUANTITY_RAMPS.values(), "magma_r"})},
         "surfaces": [{**_describe_surface(stack.surfaces[name]), "drawn": name in SHOWN_SURFACES} for name in shown],
         "ground": encode_grid(stack.ground),
         "units": [

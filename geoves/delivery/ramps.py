@@ -19,7 +19,7 @@ GREY = (205, 205, 202)  # what a colour fades to where the doubt is largest
 QUANTITY_RAMPS: Mapping[str, str] = MappingProxyType(
     {
         "elevation": "cividis",
-        "depth": "cividis",
+        "depth": "cividis_r",  # so that one end is deep rock, whether as an elevation or as a depth
         "thickness": "viridis",
         "resistivity": "viridis",
         "probability": "viridis",

@@ -82,8 +82,10 @@ def _page(results: Results, body: Markup) -> str:
 
 def _made_for(results: Results) -> str:
     delivery = results.region.delivery
-    counted = f"{len(results.survey.soundings)} soundings, {len(results.survey.wells)} wells"
-    said = [f"Report of a resistivity survey: {counted}, {len(results.survey.permits)} permits"]
+    survey = results.survey
+    things = {"sounding": len(survey.soundings), "well": len(survey.wells), "permit": len(survey.permits)}
+    counted = ", ".join(f"{count:,} {thing}{'' if count == 1 else 's'}" for thing, count in things.items())
+    said = [f"Report of a resistivity survey: {counted}"]
     said += [words for words in (delivery.organisation, delivery.contact, delivery.use_limits) if words]
     return ". ".join(words.rstrip(".") for words in said) + "."
 
@@ -109,9 +111,10 @@ def _write_sections(results: Results) -> Markup:
     words = (
         "Ground in green, bedrock as a bold line within its 90 % band, gravel where it is likely (0.66 or more). "
         "Soundings near the section stand as broad columns of the unit that is most probable at each depth, paler the "
-        "less probable it is. A column with an arrow at its foot ends at the depth that bedrock must exceed; a dashed "
-        "one on a diamond does not show bedrock by itself. Wells stand as narrow columns; an orange bar is an "
-        "interpreter’s pick. A, B and C are dashed on the map above, read from west to east."
+        "less probable it is. A column with an arrow at its foot ends at the depth that the base, gravel or rock, must "
+        "exceed; a dashed one on a diamond does not show the base by itself. Wells stand as narrow columns with how "
+        "far off the section they are: another depth there is no contradiction. An orange bar is an interpreter’s "
+        "pick. A, B and C are dashed on the map above, read from west to east."
     )
     return joined([element("p", {}, words), unit_key(results.region.template), *figures])
 

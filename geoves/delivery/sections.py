@@ -30,6 +30,7 @@ from geoves.domain.tops import BedrockStatus, UnitColumn
 from geoves.domain.units import Role
 
 SAMPLES = 500
+WELL_REACH = 1500.0  # m: wells are few, and a log that far off still tells what kind of ground to expect
 LIKELY = 0.66  # a probability that is called likely on the pages and in the layer of the gravel's extent
 WIDTH = 900
 
@@ -121,10 +122,12 @@ class Place:
     stretches: tuple[Stretch, ...]
     picks: tuple[float, ...]
     status: BedrockStatus | None = None  # of a sounding
+    off: float = 0.0  # how far from the section, m
 
 
 def places_near(results: Results, section: Any, within: float) -> list[Place]:
-    """Soundings and wells no farther than `within` from a line."""
+    """Soundings no farther than `within` from a line, and wells within WELL_REACH that stand beside it."""
+    metres = results.region.crs_unit_metres
     columns = {column.sounding: column for column in results.interpretation.columns}
     models = {one.sounding: one for one in results.inverted}
     found = []
@@ -139,11 +142,13 @@ def places_near(results: Results, section: Any, within: float) -> list[Place]:
         found.append(Place(sounding.name, "sounding", along, level, parts, picks, status))
     for well in results.survey.wells:
         point = shapely.Point(well.easting, well.northing)
-        if section.distance(point) <= within:
+        along, off = section.project(point), section.distance(point)
+        beside = 0.0 < along < section.length and off * metres <= WELL_REACH
+        if off <= within or beside:
             readings = [one for one in results.interpretation.well_readings if one.well == well.name]
             logged = tuple(Stretch(one.top, one.bottom, one.unit) for one in readings)
             level = _ground_level(results, well)
-            found.append(Place(well.name, "well", section.project(point), level, logged, ()))
+            found.append(Place(well.name, "well", along, level, logged, (), off=off * metres))
     return sorted(found, key=lambda place: place.along)
 
 
@@ -208,7 +213,7 @@ def draw_section(results: Results, title: str, section: Any) -> Markup:
     margin = 0.06 * (highest - lowest)
     far, far_unit = (1609.344, "mi") if region.length_unit != "m" else (1000.0, "km")
     x = distance * crs_metres / far
-    frame = Frame(Scale(0.0, float(x[-1]), 66, WIDTH - 46), Scale(lowest - margin, highest + 2.5 * margin, 282, 50))
+    frame = Frame(Scale(0.0, float(x[-1]), 66, WIDTH - 62), Scale(lowest - margin, highest + 2.5 * margin, 306, 74))
     bedrock_index = len(region.template.units) - 1
     parts = [
         frame.band(x, np.full_like(x, lowest - margin), estimate, "section-rock"),
@@ -224,7 +229,7 @@ def draw_section(results: Results, title: str, section: Any) -> Markup:
     vertical = abs(frame.y.end - frame.y.start) / ((frame.y.high - frame.y.low) * metres)
     horizontal = (frame.x.end - frame.x.start) / (section.length * crs_metres)
     parts.append(label(66, 14, f"{title}; heights drawn {vertical / horizontal:.0f} times larger than lengths", "axis"))
-    return drawing(WIDTH, 320, title, *parts)
+    return drawing(WIDTH, 344, title, *parts)
 
 
 def _foot(place: Place) -> float:
@@ -260,8 +265,15 @@ def _section_place(results: Results, frame: Frame, place: Place, at: float) -> M
         boxes.append(line(x - 8, y_pick, x + 8, y_pick, "pick"))
     top_pixel = float(frame.y.pixel(place.ground / metres))
     turned = {"transform": f"translate({x + 3:.1f} {top_pixel - 5:.1f}) rotate(-50)", "class": "halo small"}
-    boxes.append(element("text", turned, ("" if place.kind == "sounding" else "well ") + place.name[:16]))
+    boxes.append(element("text", turned, _section_label(results, place)))
     return joined(boxes)
+
+
+def _section_label(results: Results, place: Place) -> str:
+    if place.kind == "sounding":
+        return place.name[:16]
+    far, name = (1000.0, "km") if results.region.length_unit == "m" else (1609.344, "mi")
+    return f"{place.name[:16]} ({place.off / far:.1f} {name})"
 
 
 def _column_outline(

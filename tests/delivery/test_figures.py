@@ -263,6 +263,19 @@ def test_section_marks_bounds_and_what_is_not_distinct(small_results):
     assert ("foot deeper_than" in feet) == ("deeper_than" in near)
 
 
+def test_wells_beside_a_section_stand_on_it_with_their_distance(small_results):
+    """A line 1 km beside a well shows it and says so; one whose end is 1 km short of it, or 2 km off, does not."""
+    well = small_results.survey.wells[0]
+    x, y = well.easting, well.northing
+    beside = shapely.LineString([(x - 3000, y + 1000), (x + 3000, y + 1000)])
+    (found,) = (one for one in places_near(small_results, beside, 100.0) if one.name == well.name)
+    assert (found.along, found.off) == pytest.approx((3000.0, 1000.0))
+    drawn_words = [one.text for one in parsed(draw_section(small_results, "Beside", beside)).iter("text")]
+    assert f"{well.name[:16]} (1.0 km)" in drawn_words
+    for away in ([(x - 3000, y), (x - 1000, y)], [(x - 3000, y + 2000), (x + 3000, y + 2000)]):
+        assert well.name not in {one.name for one in places_near(small_results, shapely.LineString(away), 100.0)}
+
+
 def test_sections_cross_the_axis_at_right_angles(small_results):
     """A quarter turn by scipy's rotations carries the axis's direction onto the section's."""
     (_, axis), *across = section_lines(small_results)

@@ -13,7 +13,7 @@ from selenium.webdriver.common.action_chains import ActionChains
 from selenium.webdriver.common.by import By
 from selenium.webdriver.common.keys import Keys
 
-from geoves.delivery.map_data import control_points, encode_grid, thin_stack
+from geoves.delivery.map_data import control_points, describe_region, encode_grid, thin_stack
 from geoves.delivery.map_page import write_map_page
 from geoves.delivery.sentences import tell_opinion, tell_sounding
 from geoves.domain.grids import Grid
@@ -82,6 +82,47 @@ def test_blank_cells_say_so(opened, small_results):
     longitude, latitude = to_degrees.transform(grid.easting[-2], grid.northing[1])
     opened.driver.find_element(By.ID, "wanted").send_keys(f"{latitude:.6f}, {longitude:.6f}", Keys.ENTER)
     assert "No prediction here" in opened.run("return document.getElementById('answer').textContent")
+
+    answer = opened.run("return document.getElementById('answer').textContent")
+    assert "The nearest places" in answer
+    assert "Estimated, not measured" not in answer
+
+
+def test_depth_asked_for_is_compared_with_gravel_and_rock(browser, small_results, tmp_path):
+    """Gravel from 40 m at the earliest, rock between 60 and 90 m."""
+    expected = {
+        30.0: "very likely ends above the base here, gravel or rock; rock lies between 60 and 90 m.",
+        50.0: "may reach gravel, from 40 m, and ends above rock; rock lies between 60 and 90 m.",
+        70.0: "may reach rock; rock lies between 60 and 90 m.",
+        95.0: "very likely reaches rock; rock lies between 60 and 90 m.",
+        20.0: "no depths are predicted here to compare it with.",
+    }
+    first = small_results.survey.permits[0]
+    permits = tuple(attrs.evolve(first, name=f"Q-{d:.0f}", requested_depth=d, location_accuracy=None) for d in expected)
+    layer = small_results.layers["permits"].iloc[[0] * len(permits)].reset_index(drop=True)
+    layer = layer.assign(
+        permit=[one.name for one in permits], gravel_probability=0.5, gravel_top_depth_p05=40.0,
+        bedrock_depth_p05=[60.0] * 4 + [np.nan], bedrock_depth_p95=90.0,
+    )  # fmt: skip
+    survey = attrs.evolve(small_results.survey, permits=permits)
+    told = attrs.evolve(small_results, survey=survey, layers={**small_results.layers, "permits": layer})
+    browser.open(write_map_page(told, tmp_path / "map.html"))
+    browser.wait_for(READY)
+    for permit, (depth, words) in zip(permits, expected.items(), strict=True):
+        browser.run("document.getElementById('wanted').value = ''")
+        browser.driver.find_element(By.ID, "wanted").send_keys(permit.name, Keys.ENTER)
+        answer = browser.run("return document.getElementById('answer').textContent")
+        assert f"Asks for {depth:.0f} m: {words}" in answer
+        assert "location accuracy: not stated" in answer
+
+
+def test_one_colour_end_is_deep_rock(small_results):
+    """The shallowest depth is painted as the highest rock: light; the deepest as the lowest: dark."""
+    ramps = describe_region(small_results)["ramps"]
+    named = {one["name"]: one["ramp"] for one in describe_region(small_results)["surfaces"]}
+    depth, elevation = (ramps[named[name]] for name in ("bedrock_depth", "bedrock_elevation"))
+    assert depth[:6] == elevation[-6:]
+    assert depth[-6:] == elevation[:6]
 
 
 def test_search_finds_a_permit_and_tells_its_column(opened, small_results):

@@ -166,6 +166,7 @@ function restsOn(easting, northing, itself, openers) {
     `${distanceWords(distance)}: ${kind} `,
     make("button", { class: "link", click: () => openers[kind](place) }, place.name),
     `, ${kind === "well" ? wellSays(place) : soundingSays(place)}`));
+  if (!columnAt(easting, northing)) return [make("h3", {}, "The nearest places"), make("ul", {}, items)];
   return [make("h3", {}, "What this rests on"), make("p", {}, supportWords(easting, northing)), make("ul", {}, items)];
 }
 
@@ -183,13 +184,23 @@ function columnParts(easting, northing) {
   ];
 }
 
+// The depth that a permit asks for against where gravel may begin and rock may lie.
+function requestWords({ requested, bedrock_depth_p05: low, bedrock_depth_p95: high, ...permit }) {
+  const asks = `Asks for ${lengthWords(requested)}`;
+  if (!known(low) || !known(high)) return `${asks}: no depths are predicted here to compare it with.`;
+  const rock = `rock lies between ${lengthNumber(low)} and ${lengthWords(high)}`;
+  const gravel = known(permit.gravel_top_depth_p05) && permit.gravel_probability >= 0.05
+    ? permit.gravel_top_depth_p05 : low;
+  if (requested <= gravel) return `${asks}: very likely ends above the base here, gravel or rock; ${rock}.`;
+  if (requested <= low) return `${asks}: may reach gravel, from ${lengthWords(gravel)}, and ends above rock; ${rock}.`;
+  return requested < high ? `${asks}: may reach rock; ${rock}.` : `${asks}: very likely reaches rock; ${rock}.`;
+}
+
 function permitFacts(permit) {
-  const facts = [permit.use, known(permit.requested) ? `asks for ${lengthWords(permit.requested)}` : "",
-    known(permit.radius) ? `placed to within ${lengthWords(permit.radius)}` : ""].filter(Boolean);
-  const parts = facts.length ? [make("p", { class: "soft" }, facts.join("; "))] : [];
-  if (known(permit.requested) && known(permit.bedrock_depth_p05) && permit.requested > permit.bedrock_depth_p05) {
-    parts.push(make("p", {}, "The depth asked for may reach rock."));
-  }
+  const facts = [permit.use, known(permit.radius) ? `placed to within ${lengthWords(permit.radius)}`
+    : "location accuracy: not stated"].filter(Boolean);
+  const parts = [make("p", { class: "soft" }, facts.join("; "))];
+  if (known(permit.requested)) parts.push(make("p", { class: "says" }, requestWords(permit)));
   if (known(permit.radius) && permit.covered) {
     parts.push(make("p", {}, "Over the whole circle of its location: rock between "
       + `${lengthNumber(permit.bedrock_depth_p05)} and ${lengthWords(permit.bedrock_depth_p95)}, gravel `

@@ -69,8 +69,8 @@ function startPanel(map) {
     answer.replaceChildren(make("h2", {}, "What is under a place?"),
       make("p", { class: "screen" }, "Click the map, choose a mark, or search for a permit. With the keyboard: arrows move the map, "
         + "Enter asks at its middle, Tab goes from mark to mark, Escape closes."),
-      make("p", { class: "soft" }, `${described.soundings.length} soundings, ${described.wells.length} wells, `
-        + `${described.permits.length} permits.`));
+      make("p", { class: "soft" }, `${counted(described.soundings.length, "sounding")}, `
+        + `${counted(described.wells.length, "well")}, ${counted(described.permits.length, "permit")}.`));
   };
   const close = () => {
     if (ring) ring.remove();

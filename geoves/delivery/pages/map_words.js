@@ -60,6 +60,8 @@ function likelihoodWords(probability) {
   return words;
 }
 
+const counted = (count, thing) => `${grouped(count)} ${thing}${count === 1 ? "" : "s"}`;
+
 const named = (name) => make("span", { class: "name" }, name);
 const svgNumber = (value) => value.toFixed(1);
 
