@@ -9,18 +9,16 @@ from numpy.typing import ArrayLike
 
 from geoves.domain.arrays import FloatArray
 from geoves.domain.findings import Finding
-from geoves.domain.survey import Curve, Sounding, Survey
+from geoves.domain.survey import FEWEST_READINGS, Curve, Sounding, Survey
 from geoves.errors import InputError
 
 
 @attrs.frozen
 class CurveOptions:
-    """fewest_readings    used readings that a sounding needs to be inverted
-    steepest_rise         slope on log-log axes: above 1 no layered ground can rise, and noise takes its share
-    largest_jump          relative misfit of one reading against its neighbours on both sides that is flagged
+    """steepest_rise    slope on log-log axes: above 1 no layered ground can rise, and noise takes its share
+    largest_jump     relative misfit of one reading against its neighbours on both sides that is flagged
     """
 
-    fewest_readings: int = attrs.field(default=5, validator=attrs.validators.ge(3))
     steepest_rise: float = attrs.field(default=1.15, validator=attrs.validators.gt(0))
     largest_jump: float = attrs.field(default=0.15, validator=attrs.validators.gt(0))
 
@@ -81,8 +79,8 @@ def _doubt_curve(sounding: Sounding, options: CurveOptions) -> list[Finding]:
     curve = sounding.curve
     doubts = []
     n_used = int(np.sum(curve.used))
-    if n_used < options.fewest_readings:
-        expected = f"a sounding needs {options.fewest_readings} usable readings; it says nothing by itself"
+    if not curve.is_enough:
+        expected = f"a sounding needs {FEWEST_READINGS} usable readings; it says nothing by itself"
         doubts.append(Finding("doubt", "readings", 0, "", f"{n_used} usable readings", expected, sounding.name))
     for segment in np.unique(curve.segment):
         rows = np.flatnonzero((curve.segment == segment) & curve.used)

@@ -31,7 +31,6 @@ class InversionOptions:
     segment_deviation       prior standard deviation of the log factor that a change of MN brings
     draws                   models of each sounding's ensemble
     smooth_layers           layers of the smooth model
-    fewest_readings         used readings that a sounding needs
     block                   soundings inverted at a time: bounds the memory
     """
 
@@ -41,7 +40,6 @@ class InversionOptions:
     segment_deviation: float = attrs.field(default=0.05, validator=attrs.validators.gt(0))
     draws: int = attrs.field(default=200, validator=attrs.validators.ge(20))
     smooth_layers: int = attrs.field(default=30, validator=attrs.validators.ge(5))
-    fewest_readings: int = attrs.field(default=5, validator=attrs.validators.ge(3))
     block: int = attrs.field(default=16, validator=attrs.validators.ge(1))
     random_seed: int = 0
 
@@ -74,7 +72,7 @@ def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map 
     second inverts with it.
     """
     options = options or InversionOptions()
-    fitting = [s for s in survey.soundings if np.sum(s.curve.used) >= options.fewest_readings]
+    fitting = [s for s in survey.soundings if s.curve.is_enough]
     if not fitting:
         return ()
     wavenumber = layered_earth.shared_wavenumbers(
@@ -82,7 +80,8 @@ def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map 
     )
     blocks = [fitting[i : i + options.block] for i in range(0, len(fitting), options.block)]
     first = partial(_pooled_residuals, options=options, wavenumber=wavenumber)
-    noise = _survey_noise(np.concatenate(list(map(first, blocks))), options)
+    untyped = [block for block in blocks if any(np.isnan(s.curve.relative_error[s.curve.used]).any() for s in block)]
+    noise = _survey_noise(np.concatenate([np.empty(0), *map(first, untyped)]), options)
     second = partial(invert_block, options=options, wavenumber=wavenumber, noise=noise)
     return tuple(chain.from_iterable(map(second, blocks)))
 

@@ -47,6 +47,10 @@ class LayerOptions:
     axis_cells: int = attrs.field(default=150_000, validator=attrs.validators.ge(100))
     circle_points: int = attrs.field(default=96, validator=attrs.validators.ge(4))
 
+    def __attrs_post_init__(self) -> None:
+        if self.possible >= self.likely:
+            raise ValueError(f"possible ({self.possible}) is not below likely ({self.likely})")
+
 
 def derive_layers(
     stack: SurfaceStack, survey: Survey, region: Region, options: LayerOptions | None = None

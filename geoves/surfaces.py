@@ -80,6 +80,7 @@ class Evidence(NamedTuple):
     values: FloatArray
     error_variance: FloatArray
     bounds: Bounds
+    bound_kind: tuple[str, ...] = ()
 
     @property
     def size(self) -> int:
@@ -115,7 +116,7 @@ class Canvas(NamedTuple):
 # Thickness (m) that is expected of a unit, were it there, when no place shows it.
 THIN = 5.0
 # Quantiles (mid-points of even shares) by which the sum of two independent quantities is summarised.
-QUANTILES = (np.arange(20) + 0.5) / 20
+CONTACT_QUANTILES, GRAVEL_QUANTILES = ((np.arange(n) + 0.5) / n for n in (60, 20))
 
 
 def build_surfaces(
@@ -146,9 +147,14 @@ def build_surfaces(
     cells = np.column_stack([axis[covered] for axis in np.meshgrid(grid.easting, grid.northing)])
     interpolate = partial(_interpolate, cells=cells, options=options, map=map)
 
-    basal, tied = _tie_to_wells(basal, options)
+    basal, shared_deviation, tied = _tie_to_wells(basal, options)
     remarks += tied
     contact = interpolate(basal)
+    if shared_deviation:
+        # The doubt about the tie does not average out over soundings: a cell has it as far as it rests on them.
+        by_curve = np.array([kind == "sounding" for kind in (*basal.kind, *basal.bound_kind)], dtype=float)
+        share, _ = _krige_cells(contact._replace(values=by_curve), cells, options, map)
+        contact = contact._replace(deviation=np.hypot(contact.deviation, share * shared_deviation))
     kriged = [(basal, contact)]
     gravel: Kriged | None = None
     surfaces: list[Surface] = []
@@ -159,9 +165,9 @@ def build_surfaces(
         if evidence.size >= options.fewest:
             gravel = interpolate(evidence)
             kriged.append((evidence, gravel))
+            surfaces += _gravel_surfaces(contact, gravel, canvas, options)
         else:
             gravel = _assume_everywhere(evidence, contact)
-        surfaces += _gravel_surfaces(contact, gravel, canvas, options)
     else:
         remarks.append("the template has no deep aquifer: no surface of its thickness")
     surfaces += _bedrock_surfaces(contact, gravel, canvas)
@@ -197,36 +203,47 @@ def _basal_evidence(interpretation: Interpretation, options: SurfaceOptions) -> 
         tuple(top.kind for top in at),
         _points(at),
         np.log([max(top.depth, 0.1) for top in at]),
-        np.array([(top.standard_error / max(top.depth, 0.1)) ** 2 for top in at]),
+        np.array([log_variance(top.standard_error / max(top.depth, 0.1)) for top in at]),
         Bounds(
             _points(below),
             np.log([top.depth for top in below]),
             np.ones(len(below)),
             np.full(len(below), options.bound_deviation),
         ),
+        tuple(top.kind for top in below),
     )
 
 
-def _tie_to_wells(evidence: Evidence, options: SurfaceOptions) -> tuple[Evidence, list[str]]:
+def log_variance(relative_error: float) -> float:
+    """Variance of the log of a log-normal depth whose standard deviation is so much of its median.
+
+    (e^v - 1) e^v = r², solved for v.
+    """
+    return float(np.log(0.5 + 0.5 * np.sqrt(1.0 + 4.0 * relative_error**2)))
+
+
+def _tie_to_wells(evidence: Evidence, options: SurfaceOptions) -> tuple[Evidence, float, list[str]]:
     """The soundings' log depths shifted by what they differ from the wells' on the whole, if wells are enough to tell.
 
     A template a little off, or layers less uniform than a model's, put every depth of a survey off by one factor. The
-    doubt about the factor is added to the soundings' errors.
+    bounds of curves are shifted with them. Also gives the deviation of the factor's log, and what was done in words.
     """
     by_curve = np.array([kind == "sounding" for kind in evidence.kind], dtype=bool)
     if options.tie_deviation == 0 or np.sum(~by_curve) < options.fewest_wells or np.sum(by_curve) < options.fewest:
-        return evidence, []
+        return evidence, 0.0, []
     covariance = fit_covariance(evidence.points, evidence.values, evidence.error_variance, options.model)
     offset, deviation = estimate_offset(
         evidence.points, evidence.values, evidence.error_variance, by_curve, options.tie_deviation, covariance
     )
+    bounded_by_curve = np.array([kind == "sounding" for kind in evidence.bound_kind], dtype=bool)
+    shifted = evidence.bounds.bound - np.where(bounded_by_curve, offset, 0.0)
     tied = evidence._replace(
-        values=evidence.values - np.where(by_curve, offset, 0.0),
-        error_variance=evidence.error_variance + np.where(by_curve, deviation**2, 0.0),
+        values=evidence.values - np.where(by_curve, offset, 0.0), bounds=evidence.bounds._replace(bound=shifted)
     )
     words = "deeper" if offset > 0 else "shallower"
     said = f"soundings put the basal contact {abs(np.expm1(offset)):.0%} {words} than wells and picks do"
-    return tied, [f"{said} (give or take {deviation:.0%}); their depths were divided by {np.exp(offset):.2f}"]
+    done = f"their depths were divided by {np.exp(offset):.2f}"
+    return tied, deviation, [f"{said} (give or take {deviation:.0%}); {done}"]
 
 
 def _thickness_evidence(interpretation: Interpretation, role: Role, title: str, options: SurfaceOptions) -> Evidence:
@@ -286,10 +303,17 @@ def _interpolate(evidence: Evidence, *, cells: FloatArray, options: SurfaceOptio
     variance = np.concatenate([evidence.error_variance, pseudo_variance])
     if len(evidence.values) < options.fewest:
         covariance = fit_covariance(points, values, variance, options.model)
-    work = partial(_krige_block, points, values, variance, covariance)
+    kriged = Kriged(np.empty(0), np.empty(0), covariance, points, values, variance)
+    mean, spread = _krige_cells(kriged, cells, options, map)
+    return kriged._replace(mean=mean, deviation=np.sqrt(spread))
+
+
+def _krige_cells(kriged: Kriged, cells: FloatArray, options: SurfaceOptions, map: Map) -> tuple[FloatArray, FloatArray]:  # noqa: A002
+    """Estimate and variance (c,) from a quantity's data, block by block through the map."""
+    work = partial(_krige_block, kriged.points, kriged.values, kriged.error_variance, kriged.covariance)
     parts = list(map(work, [cells[i : i + options.block] for i in range(0, len(cells), options.block)]))
     mean, spread = (np.concatenate([part[i] for part in parts]) for i in (0, 1))
-    return Kriged(mean, np.sqrt(spread), covariance, points, values, variance)
+    return mean, spread
 
 
 def _latent_prior(evidence: Evidence) -> tuple[float, float]:
@@ -306,8 +330,8 @@ def _latent_prior(evidence: Evidence) -> tuple[float, float]:
 def _say_how_few(evidence: Evidence, options: SurfaceOptions) -> list[str]:
     n_values, n_bounds = len(evidence.values), len(evidence.bounds.bound)
     if evidence.size < options.fewest:
-        few = f"{n_values} thicknesses and {n_bounds} absences or bounds are too few for a map"
-        return [f"{evidence.title}: {few}; where it is drawn, one doubtful thickness stands for the whole region"]
+        few = f"{n_values} thicknesses and {n_bounds} absences or bounds are too few for a surface"
+        return [f"{evidence.title}: {few}; bedrock allows for as much of it everywhere as those say on the whole"]
     if n_values < options.fewest:
         few = f"only {n_values} thicknesses beside {n_bounds} absences or bounds, each of which entered by itself"
         return [f"{evidence.title}: {few}; the surface is a first guess"]
@@ -367,14 +391,14 @@ def _depth_quantiles(contact: Kriged, gravel: Kriged | None, share: float = 0.05
     """The `share` and 1 - `share` quantiles of contact plus gravel, (c,) each."""
     if gravel is None:
         return tuple(np.exp(contact.mean + sign * Z_95 * contact.deviation) for sign in (-1, 1))  # type: ignore[return-value]
-    normal = ndtri(QUANTILES)
+    contact_normal, gravel_normal = ndtri(CONTACT_QUANTILES), ndtri(GRAVEL_QUANTILES)
     low, high = np.empty_like(contact.mean), np.empty_like(contact.mean)
-    for start in range(0, contact.mean.size, 4096):
-        part = slice(start, start + 4096)
-        depth = np.exp(contact.mean[part, None] + contact.deviation[part, None] * normal)
-        thickness = np.maximum(gravel.mean[part, None] + gravel.deviation[part, None] * normal, 0.0)
+    for start in range(0, contact.mean.size, 2048):
+        part = slice(start, start + 2048)
+        depth = np.exp(contact.mean[part, None] + contact.deviation[part, None] * contact_normal)
+        thickness = np.maximum(gravel.mean[part, None] + gravel.deviation[part, None] * gravel_normal, 0.0)
         total = (depth[:, :, None] + thickness[:, None, :]).reshape(depth.shape[0], -1)
-        low[part], high[part] = np.quantile(total, [share, 1.0 - share], axis=1)
+        low[part], high[part] = np.quantile(total, [share, 1.0 - share], axis=1, method="hazen")
     return low, high
 
 

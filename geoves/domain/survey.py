@@ -10,6 +10,9 @@ from geoves.domain.arrays import BoolArray, FloatArray, IntArray, booleans, by_v
 from geoves.domain.findings import Finding
 from geoves.domain.grids import Grid
 
+# Used readings that a sounding needs.
+FEWEST_READINGS = 5
+
 Array = Literal["schlumberger", "wenner"]
 PickStatus = Literal["at", "below", "absent"]
 
@@ -39,6 +42,11 @@ class Curve:
     reason: tuple[str, ...] = ()
     row: IntArray = attrs.field(default=(), converter=integers, eq=by_value, repr=shape)
     extra: tuple[Mapping[str, Any], ...] = ()
+
+    @property
+    def is_enough(self) -> bool:
+        """Whether the used readings are enough to say anything."""
+        return int(np.sum(self.used)) >= FEWEST_READINGS
 
     def readings(self, noise: float) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, IntArray]:
         """The used readings as arrays: spacings, apparent resistivity, error (`noise` where none is typed), segment.

@@ -23,7 +23,6 @@ from geoves.domain.tops import (
 from geoves.domain.units import Role, Template
 from geoves.interpretation import sequences, soundings, wells
 from geoves.interpretation.calibration import calibrate_template
-from geoves.interpretation.nearby import condition_on_wells
 from geoves.interpretation.options import InterpretationOptions
 from geoves.kernels import damped_steps, layered_earth
 from geoves.kernels.damped_steps import Readings
@@ -76,7 +75,6 @@ def interpret(
         work = partial(
             _interpret_block,
             picks=picks,
-            well_tops=tuple(chain.from_iterable(reading.tops for reading in logged)),
             template=template,
             presence=presence,
             options=options,
@@ -147,7 +145,6 @@ def _interpret_block(
     pairs: Sequence[tuple[Sounding, Inverted]],
     *,
     picks: dict[str, list[Pick]],
-    well_tops: Sequence[Top],
     template: Template,
     presence: FloatArray,
     options: InterpretationOptions,
@@ -159,8 +156,6 @@ def _interpret_block(
     results = []
     for (sounding, inverted), (draws, bound) in zip(pairs, weighed, strict=True):
         contact = soundings.find_basal_contact(draws, bound, template, options)
-        generator = np.random.default_rng([options.random_seed, *sounding.name.encode(), 1])
-        contact = condition_on_wells(contact, sounding, well_tops, options, generator)
         decided = picks.get(sounding.name, [])
         reading = _read_sounding(sounding, inverted, draws, contact, decided, template, options)
         column = None if reading.column is None else attrs.evolve(reading.column, gravel_prior=gravel_prior)

@@ -29,7 +29,6 @@ class InterpretationOptions:
     broad_log_depth_deviation   a contact known worse than this is no datum at all
     notice_chi_square           a bound is set where basal material would change the curve by this much
     relative_depth_floor        least error of a sounding's depth: ground is never quite layered
-    well_reach                  how far a well weighs a sounding's columns, in the unit of the CRS; 0 for not at all
     well_contact_error          least error (m) of a contact in a driller's log
     well_relative_error         and its growth with depth
     least_match                 how alike (0 to 100) a driller's word and a term must be
@@ -41,10 +40,9 @@ class InterpretationOptions:
     draws: int = attrs.field(default=400, validator=attrs.validators.ge(50))
     seen_log_bayes_factor: float = attrs.field(default=2.3, validator=attrs.validators.ge(0))
     seen_log_depth_deviation: float = attrs.field(default=0.2, validator=attrs.validators.gt(0))
-    broad_log_depth_deviation: float = attrs.field(default=0.6, validator=attrs.validators.gt(0))
+    broad_log_depth_deviation: float = attrs.field(default=0.4, validator=attrs.validators.gt(0))
     notice_chi_square: float = attrs.field(default=16.0, validator=attrs.validators.gt(0))
     relative_depth_floor: float = attrs.field(default=0.05, validator=attrs.validators.ge(0))
-    well_reach: float = attrs.field(default=400.0, validator=attrs.validators.ge(0))
     well_contact_error: float = attrs.field(default=0.3, validator=attrs.validators.gt(0))
     well_relative_error: float = attrs.field(default=0.01, validator=attrs.validators.ge(0))
     least_match: float = attrs.field(default=80.0, validator=[attrs.validators.gt(0), attrs.validators.le(100)])

@@ -165,7 +165,8 @@ def _log_depth_limits(sequence: UnitSequence, thickness: FloatArray, template: T
     total = np.zeros(len(thickness))
     for unit in sorted(set(sequence.units)):
         limits = template.units[unit].depth_to_top
-        if limits and unit != sequence.units[0]:
+        # A unit that begins the column may be cut off by the ground; a buried aquifer may not.
+        if limits and (unit != sequence.units[0] or template.units[unit].role is Role.DEEP_AQUIFER):
             total += log_within(top[:, unit], limits)
     return total
 
@@ -214,12 +215,16 @@ def draw_columns(
 
 
 def _unit_columns(sequence: UnitSequence, unknowns: FloatArray, n_units: int) -> tuple[FloatArray, FloatArray]:
-    """Thickness and log resistivity (m, u) of each unit, of two layers added and the thicker taken."""
+    """Thickness and log resistivity (m, u) of each unit; of its layers, thicknesses add up and the thickest speaks."""
     k = len(sequence.units)
     thickness, log_resistivity = np.zeros((len(unknowns), n_units)), np.full((len(unknowns), n_units), np.nan)
+    thickest = np.zeros_like(thickness)
     for i, unit in enumerate(sequence.units):
-        thickness[:, unit] += np.exp(unknowns[:, i]) if i < k - 1 else np.nan
-        log_resistivity[:, unit] = unknowns[:, k - 1 + i]
+        own = np.exp(unknowns[:, i]) if i < k - 1 else np.full(len(unknowns), np.inf)
+        thickness[:, unit] += own if i < k - 1 else np.nan
+        thicker = own > thickest[:, unit]
+        log_resistivity[thicker, unit] = unknowns[thicker, k - 1 + i]
+        thickest[thicker, unit] = own[thicker]
     return thickness, log_resistivity
 
 

@@ -44,7 +44,7 @@ class BasalContact:
 
     depth, gravel : (m,) of the draws that reach it, equally probable
     bound : m, 0 where the curve excludes nothing    rock_bound : m, where the interpreter's bound on rock is deeper
-    log_deviation : of the contact's depth    wells : those beside it that weighed it    picks : decisions applied
+    log_deviation : of the contact's depth    picks : decisions applied
     """
 
     depth: FloatArray
@@ -53,7 +53,6 @@ class BasalContact:
     bound: float
     log_deviation: float
     rock_bound: float = 0.0
-    wells: tuple[str, ...] = ()
     picks: tuple[Pick, ...] = ()
 
     @property
@@ -181,9 +180,8 @@ def contact_tops(
             kind: PlaceKind = "pick"
             source = _name_pick(pick)
         else:
-            beside = f", weighed by well {', '.join(contact.wells)} beside it" if contact.wells else ""
             others = "".join(f", with the {_name_pick(one)}" for one in contact.picks)
-            kind, source = "sounding", _SOURCES[contact.status] + beside + others
+            kind, source = "sounding", _SOURCES[contact.status] + others
         elevation = sounding.ground_elevation - depth
         place = (sounding.name, kind, sounding.easting, sounding.northing)
         return Top(*place, unit, name, status, depth, elevation, error, source)

@@ -3,6 +3,7 @@
 import os
 from collections.abc import Callable, Iterable, Iterator
 from concurrent.futures import ProcessPoolExecutor
+from concurrent.futures.process import BrokenProcessPool
 from contextlib import contextmanager
 from multiprocessing import get_context
 from typing import Any
@@ -11,6 +12,7 @@ import numpy as np  # noqa: F401 - loaded before threads are limited, with scipy
 import scipy.linalg  # noqa: F401
 from threadpoolctl import threadpool_limits
 
+from geoves.errors import EngineError
 from geoves.project.progress import Step
 
 Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
@@ -30,8 +32,14 @@ def open_engine(workers: int | None = None) -> Iterator[Map]:
         if workers == 1:
             yield map
             return
-        with ProcessPoolExecutor(workers, mp_context=get_context("spawn"), initializer=_keep_to_one_thread) as pool:
-            yield pool.map
+        try:
+            with ProcessPoolExecutor(workers, mp_context=get_context("spawn"), initializer=_keep_to_one_thread) as pool:
+                yield pool.map
+        except BrokenProcessPool as error:
+            raise EngineError(
+                "a worker process ended before its work was done: the machine may lack memory, or a script that calls "
+                'geoves lacks the line `if __name__ == "__main__":` before its work'
+            ) from error
 
 
 def _keep_to_one_thread() -> None:

@@ -12,6 +12,7 @@ import numpy as np
 
 from geoves.domain.grids import CrossValidation, SurfaceStack
 from geoves.domain.region import Region
+from geoves.errors import InputError
 from geoves.project.settings import Settings
 
 # Libraries whose versions can move a digit of the result.
@@ -35,6 +36,8 @@ def make_record(region: Region, settings: Settings, fingerprints: Mapping[str, s
     SOURCE_DATE_EPOCH (reproducible-builds.org) sets the day, so that a run can be repeated to the byte on any other.
     """
     epoch = os.environ.get("SOURCE_DATE_EPOCH")
+    if epoch and not epoch.isdecimal():
+        raise InputError(f"SOURCE_DATE_EPOCH: {epoch!r}; expected a whole number of seconds since 1970")
     moment = datetime.fromtimestamp(int(epoch), UTC) if epoch else datetime.now(UTC)
     return {
         "region": region.name,

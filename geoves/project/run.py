@@ -33,14 +33,15 @@ from geoves.reading import fingerprint_files
 from geoves.surfaces import build_surfaces
 
 
-def run(region_path: Path, out: Path | None = None, progress: Progress | None = None) -> Summary:
+def run(region_path: Path | str, out: Path | str | None = None, progress: Progress | None = None) -> Summary:
     """Do the whole job and say in a few lines what was found, what was not, and where the files are.
 
     Raises InputError where the inputs are wrong, EngineError where a step cannot be computed, DeliveryError where the
     delivery cannot be written; what stood in the folder before stands then still.
     """
     progress = progress or SilentProgress()
-    folder = out or region_path.parent / "delivery"
+    region_path = Path(region_path)
+    folder = region_path.parent / "delivery" if out is None else Path(out)
     results, record = compute(region_path, progress)
     with open_engine() as engine:
         deliver(results, record, folder, progress, engine)

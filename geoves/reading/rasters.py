@@ -8,8 +8,8 @@ from contextlib import contextmanager
 import attrs
 import numpy as np
 import rasterio
-from affine import Affine
 from pyproj import Transformer
+from rasterio import Affine
 from rasterio.enums import Resampling
 from rasterio.errors import NotGeoreferencedWarning, RasterioError
 from rasterio.vrt import WarpedVRT
