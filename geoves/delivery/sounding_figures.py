@@ -268,7 +268,7 @@ def _bedrock_mark(frame: Frame, column: UnitColumn, metres: float) -> Markup:
     if column.bedrock_status == "deeper_than":
         at = float(frame.y.pixel(column.bedrock_depth / metres))
         arrow = f"M148 {at:.1f}v14m-4 -5l4 5l4 -5"
-        return element("path", {"d": arrow, "class": "bound"}, element("title", {}, "bedrock is deeper than this"))
+        return element("path", {"d": arrow, "class": "bound"}, element("title", {}, "the base is deeper than this"))
     band = 1.645 * np.nan_to_num(column.bedrock_depth_error)
     top, at, bottom = frame.y.pixel((column.bedrock_depth + np.array([-band, 0.0, band])) / metres)
     bracket = f"M143 {top:.1f}h5V{bottom:.1f}h-5M143 {at:.1f}h9"

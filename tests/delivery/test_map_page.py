@@ -116,6 +116,22 @@ def test_depth_asked_for_is_compared_with_gravel_and_rock(browser, small_results
         assert "location accuracy: not stated" in answer
 
 
+def test_a_probability_fades_towards_even_odds(opened):
+    """The legend's middle is nearly grey, its ends are not; without doubt in the colour none of it is."""
+    choose = (
+        "const [surface, mode] = ['surface', 'mode'].map(id => document.getElementById(id));"
+        "surface.value = 'deep_gravel_probability'; mode.value = arguments[0];"
+        "surface.dispatchEvent(new Event('change'));"
+        "return [...document.querySelectorAll('#legend rect')]"
+        ".map(r => r.getAttribute('fill').match(/\\d+/g).map(Number))"
+    )
+    start, middle, end = (np.ptp(opened.run(choose, "both")[i]) for i in (0, 24, 48))
+    assert middle < 20
+    assert min(start, end) > 60
+    assert "not decided" in opened.run("return document.getElementById('legend').textContent")
+    assert np.ptp(opened.run(choose, "value")[24]) > 60
+
+
 def test_one_colour_end_is_deep_rock(small_results):
     """The shallowest depth is painted as the highest rock: light; the deepest as the lowest: dark."""
     ramps = describe_region(small_results)["ramps"]

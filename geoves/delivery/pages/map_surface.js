@@ -24,8 +24,12 @@ function cellColour(surface, mode, cell) {
   const width = widthAt(surface, cell);
   if (mode === "width" && width !== null) return rampColour("magma_r", 0.06 + 0.8 * shareOf(surface.doubt, width));
   const colour = rampColour(surface.ramp, shareOf(surface.range, scaled(surface, value)));
+  if (mode === "both" && surface.quantity === "probability") return faded(colour, undecided(value));
   return mode === "value" || width === null ? colour : faded(colour, shareOf(surface.doubt, width));
 }
+
+// A probability is its own doubt: 1 at even odds, none from 0.05 down and from 0.95 up.
+const undecided = (probability) => 1 - Math.abs(probability - 0.5) / 0.45;
 
 function faded(colour, doubt) {
   const share = Number.isNaN(doubt) ? FADE_MOST : Math.min(FADE_MOST, Math.max(0, doubt));
@@ -118,6 +122,7 @@ function drawLegend(surface, mode) {
   const box = document.getElementById("legend");
   const both = mode === "both" && surface.doubt !== null;
   const asWidth = mode === "width" && surface.doubt !== null;
+  const chance = mode === "both" && surface.quantity === "probability";
   const rows = both ? 4 : 1, left = 8, width = 196, high = both ? 12 : 16;
   const figure = draw("svg", { viewBox: `0 0 280 ${rows * high + 22}`, role: "img", "aria-label": "Legend" });
   for (let row = 0; row < rows; row += 1) {
@@ -125,6 +130,7 @@ function drawLegend(surface, mode) {
       const share = column / 48;
       let colour = asWidth ? rampColour("magma_r", 0.06 + 0.8 * share) : rampColour(surface.ramp, share);
       if (both) colour = faded(colour, row / (rows - 1));
+      else if (chance) colour = faded(colour, undecided(share));
       const place = { x: left + column * 4, y: row * high, width: 4.4, height: high + 0.4 };
       figure.append(draw("rect", { ...place, fill: `rgb(${colour.map(Math.round)})` }));
     }
@@ -143,6 +149,7 @@ function drawLegend(surface, mode) {
     figure.append(beside(10, `band ${narrow}`), beside(rows * high - 2, `band ${broad}`));
   }
   const explained = both ? "Down: wider 90 % band, less sure. "
+    : chance ? "Greyer towards 0.5: not decided. "
     : surface.doubt === null && mode !== "value" ? "A probability shows its own doubt. " : "";
   const unit = surface.quantity === "probability" ? "" : ` (${quantityUnit(surface)})`;
   const title = asWidth ? `${surface.title}: width of the 90 % band` : `${surface.title}${unit}`;
