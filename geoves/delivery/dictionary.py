@@ -186,7 +186,10 @@ _WELL = Column("well", "Well", "Name of the well.")
 _UNIT = Column("unit", "Unit", "Code of the unit in the resistivity template.")
 _GROUND = Column("ground_elevation", "Ground elevation", "Elevation of the land surface at the place.", "length")
 _RADIUS = Column(
-    "location_accuracy", "Location accuracy", "Radius of the circle in which the place lies; empty: none.", "length"
+    "location_accuracy",
+    "Location accuracy",
+    "Radius of the circle in which the place lies; empty: not stated.",
+    "length",
 )
 
 LAYERS: Mapping[str, LayerWords] = MappingProxyType(
