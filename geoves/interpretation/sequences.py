@@ -21,6 +21,8 @@ DEPTH_LIMIT_DEVIATION = 0.15
 # Factors on the prior's thicknesses that the search starts from.
 START_FACTORS = (0.5, 1.8)
 SEGMENT_DEVIATION = 0.05
+# Members weighed in each sequence for each column that is kept in the end.
+SAMPLES_PER_DRAW = 2
 # Sequences this much (nats) behind the best are not drawn from, and no Bayes factor is stated beyond it.
 LEAST_LOG_WEIGHT = 7.0
 
@@ -193,7 +195,7 @@ def draw_columns(
     what is pooled from them is resampled to `options.draws` columns of equal weight.
     """
     kept = np.flatnonzero(log_weight > log_weight.max() - LEAST_LOG_WEIGHT)
-    per_sequence = max(options.draws // 2, 50)
+    per_sequence = SAMPLES_PER_DRAW * options.draws
     thickness, log_resistivity, reaches, weight = [], [], [], []
     for q in kept.tolist():
         sequence = sequences[q]
