@@ -31,7 +31,7 @@ TABLES = {
         "bedrock_valley": "in valley",
         "bias": "bias",
         "bias_valley": "in valley",
-        "held": "90 % holds",
+        "held": "held 90 %",
         "held_valley": "in valley",
         "width": "width",
         "width_valley": "in valley",
@@ -43,8 +43,8 @@ TABLES = {
         "gravel": "RMSE",
         "gravel_valley": "in valley",
         "brier": "Brier",
-        "climatology": "of climat.",
-        "shallow_log": "shallow ln",
+        "climatology": "climat.",
+        "shallow_log": "shallow",
         "shallow_blank": "blank",
     },
     "Soundings: bedrock_status, and the depth of rock called seen": {
@@ -140,9 +140,9 @@ def print_tables(title, rows):
         held = {name: words for name, words in columns.items() if name in frame}
         if held:
             print(f"\n{title}. {heading}")
-            print(f"{'seed':>6}" + "".join(f"{words:>12}" for words in held.values()))
+            print(f"{'seed':>6}" + "".join(f"{words:>10}" for words in held.values()))
             for seed, figures in frame.iterrows():
-                print(f"{seed:>6}" + "".join(f"{write_figure(figures[name]):>12}" for name in held))
+                print(f"{seed:>6}" + "".join(f"{write_figure(figures[name]):>10}" for name in held))
 
 
 def write_figure(value):
