@@ -180,7 +180,7 @@ def contact_tops(
             kind: PlaceKind = "pick"
             source = _name_pick(pick)
         else:
-            others = "".join(f", with the {_name_pick(one)}" for one in contact.picks)
+            others = "".join(f", held to what {one.interpreter} decided ({one.reason})" for one in contact.picks)
             kind, source = "sounding", _SOURCES[contact.status] + others
         elevation = sounding.ground_elevation - depth
         place = (sounding.name, kind, sounding.easting, sounding.northing)
