@@ -1,0 +1,71 @@
+"""Evidence -> a quantity on the covered cells: its covariance fitted, its data and bounds kriged block by block."""
+
+from collections.abc import Callable, Iterable
+from functools import partial
+from typing import Any, NamedTuple
+
+import numpy as np
+
+from geoves.domain.arrays import FloatArray
+from geoves.kernels.covariances import Covariance, fit_covariance
+from geoves.kernels.inequality import bounds_alone_as_values, fit_covariance_with_bounds
+from geoves.kernels.kriging import krige
+from geoves.surfaces.evidence import Evidence, latent_prior
+from geoves.surfaces.options import SurfaceOptions
+
+Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
+
+
+class Kriged(NamedTuple):
+    """A quantity on the covered cells: mean and deviation (c,); the covariance, and the data kriged."""
+
+    mean: FloatArray
+    deviation: FloatArray
+    covariance: Covariance
+    points: FloatArray
+    values: FloatArray
+    error_variance: FloatArray
+
+
+def interpolate(evidence: Evidence, *, cells: FloatArray, options: SurfaceOptions, map: Map) -> Kriged:  # noqa: A002
+    """Fit the covariance to data and bounds together, then krige both, block by block through the map.
+
+    With fewer data proper than a fit needs, each bound first becomes a pseudo-datum by itself.
+    """
+    points = np.vstack([evidence.points, evidence.bounds.points])
+    if len(evidence.values) >= options.fewest:
+        covariance, pseudo_value, pseudo_variance = fit_covariance_with_bounds(
+            evidence.points, evidence.values, evidence.error_variance, evidence.bounds, options.model
+        )
+    else:
+        pseudo_value, pseudo_variance = bounds_alone_as_values(evidence.bounds, *latent_prior(evidence))
+    values = np.concatenate([evidence.values, pseudo_value])
+    variance = np.concatenate([evidence.error_variance, pseudo_variance])
+    if len(evidence.values) < options.fewest:
+        covariance = fit_covariance(points, values, variance, options.model)
+    kriged = Kriged(np.empty(0), np.empty(0), covariance, points, values, variance)
+    mean, spread = krige_cells(kriged, cells, options, map)
+    return kriged._replace(mean=mean, deviation=np.sqrt(spread))
+
+
+def krige_cells(kriged: Kriged, cells: FloatArray, options: SurfaceOptions, map: Map) -> tuple[FloatArray, FloatArray]:  # noqa: A002
+    """Estimate and variance (c,) from a quantity's data, block by block through the map."""
+    work = partial(_krige_block, kriged.points, kriged.values, kriged.error_variance, kriged.covariance)
+    parts = list(map(work, [cells[i : i + options.block] for i in range(0, len(cells), options.block)]))
+    mean, spread = (np.concatenate([part[i] for part in parts]) for i in (0, 1))
+    return mean, spread
+
+
+def _krige_block(
+    points: FloatArray, values: FloatArray, variance: FloatArray, covariance: Covariance, cells: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    return krige(points, values, variance, cells, covariance)
+
+
+def assume_everywhere(evidence: Evidence, contact: Kriged) -> Kriged:
+    """The same doubtful thickness at every cell: what the few places say on the whole, without any map of it.
+
+    Leaving it out would call the top of the gravel bedrock.
+    """
+    mean, deviation = latent_prior(evidence)
+    return contact._replace(mean=np.full_like(contact.mean, mean), deviation=np.full_like(contact.mean, deviation))
