@@ -51,9 +51,8 @@ def _read_options(region: Region, table: str, kind: type, seed: dict[str, int], 
             faults.append(f"{where} is not a setting of this table; expected one of {known}")
             continue
         wanted = type(fields[key].default)
-        fits = isinstance(value, wanted) or (wanted is float and isinstance(value, int))
-        if not fits or isinstance(value, bool) is not (wanted is bool):
-            faults.append(f"{where}; expected {_KINDS[wanted]}, such as {fields[key].default!r}")
+        if not _fits(value, wanted):
+            faults.append(f"{where}; expected {_KINDS[wanted]}, such as {_show(fields[key].default)}")
             continue
         try:
             kind(**{key: wanted(value)})
@@ -68,10 +67,29 @@ def _read_options(region: Region, table: str, kind: type, seed: dict[str, int], 
         return kind()
 
 
+def _fits(value: Any, wanted: type) -> bool:
+    """Whether a typed value is of the kind that an option holds: whole numbers serve as numbers, lists hold numbers."""
+    if wanted is tuple:
+        return isinstance(value, list) and all(_fits(one, float) for one in value)
+    fits = isinstance(value, wanted) or (wanted is float and isinstance(value, int))
+    return fits and isinstance(value, bool) is (wanted is bool)
+
+
+def _show(default: Any) -> str:
+    """A default as region.toml would have it, or nearly so."""
+    return repr(list(default) or [5.0]) if isinstance(default, tuple) else repr(default)
+
+
 def _say_limit(error: ValueError, key: str) -> str:
     """What a validator expected, from its message: "'block' must be >= 1: 0"."""
     said = str(error.args[0]).replace(f"'{key}' must be in", "expected one of").replace(f"'{key}' must be", "expected")
     return said.split(" (got")[0].rsplit(":", 1)[0]
 
 
-_KINDS = {int: "a whole number", float: "a number", str: "a word in quotes", bool: "true or false"}
+_KINDS = {
+    int: "a whole number",
+    float: "a number",
+    str: "a word in quotes",
+    bool: "true or false",
+    tuple: "a list of numbers",
+}

@@ -19,6 +19,8 @@ class SurfaceOptions:
     absence_deviation    softness (m) of an absence
     fewest               data that a fitted covariance needs
     block                cells kriged at a time: bounds the memory
+    thicker_than         m: thicknesses of the deep gravel whose exceedance gets a surface of its own
+    members              realisations of the column that surfaces without a closed form are summarised from
     """
 
     model: str = attrs.field(default="matern32", validator=attrs.validators.in_(MODELS))
@@ -33,3 +35,8 @@ class SurfaceOptions:
     absence_deviation: float = attrs.field(default=0.5, validator=attrs.validators.gt(0))
     fewest: int = attrs.field(default=5, validator=attrs.validators.ge(3))
     block: int = attrs.field(default=8192, validator=attrs.validators.ge(1))
+    thicker_than: tuple[float, ...] = attrs.field(
+        default=(), validator=attrs.validators.deep_iterable(attrs.validators.gt(0))
+    )
+    members: int = attrs.field(default=100, validator=attrs.validators.ge(20))
+    random_seed: int = attrs.field(default=0, validator=attrs.validators.ge(0))

@@ -37,6 +37,8 @@ def shown(default):
     """A default as region.toml has it."""
     if isinstance(default, bool):
         return str(default).lower()
+    if isinstance(default, tuple):
+        return str(list(default))
     return f'"{default}"' if isinstance(default, str) else str(default)
 
 
