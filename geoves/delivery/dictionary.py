@@ -234,6 +234,13 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                         "Resistivity of rock over that of what lies on it; near 1 no curve tells them apart.",
                         "ratio",
                     ),
+                    Column(
+                        "water_level",
+                        "Water level",
+                        "Depth to the water table, carried from wells; empty where none shows it.",
+                        "length",
+                    ),
+                    Column("water_level_error", "Water level error", "Standard error of that depth.", "length"),
                     _GROUND,
                     Column(
                         "investigated_depth",

@@ -124,8 +124,9 @@ def _write_soundings(results: Results, strips: list[Markup]) -> Markup:
         "Left, the curve: readings with one standard deviation, a mark of its own for each potential spacing, and the "
         "curve of the chosen model; the grey ones behind it belong to models that fit as well. Middle, those models "
         "against depth, and above them the template’s ranges. Right, what the ground may be: each unit’s "
-        "probability at each depth, stacked to one; the bracket is the 90 % band of the depth to bedrock, an arrow a "
-        "depth that the base exceeds. Beside it the nearest well’s log on the same depths, where one is within 3 km. "
+        "probability at each depth, stacked to one, paler for coarse ground above a known water level; the bracket is "
+        "the 90 % band of the depth to bedrock, an arrow a depth that the base exceeds. Beside it the nearest well’s "
+        "log on the same depths, where one is within 3 km. "
         "In the table S is a layer’s thickness over its resistivity, T their product, lengths in metres: a curve often "
         "knows one of them better than it knows either part."
     )

@@ -15,6 +15,7 @@ from geoves.delivery.sentences import (
     tell_readings_aside,
     tell_sounding,
     tell_trade_offs,
+    tell_water_level,
 )
 from geoves.delivery.sounding_figures import NearWell, depth_shown, draw_columns, draw_curve, draw_models
 from geoves.domain.arrays import FloatArray
@@ -156,6 +157,7 @@ def _strip_notes(job: StripJob, inverted: Inverted, column: UnitColumn) -> Marku
         notes.append(f"Later potential spacings were found shifted by a factor of {', '.join(factors)}.")
     notes += [f"Set aside: {words}." for words in tell_readings_aside(job.sounding.curve, inverted, job.unit)]
     notes += [f"{words[:1].upper()}{words[1:].rstrip('.')}." for words in inverted.remarks]
+    notes += [words for words in (tell_water_level(column, job.unit),) if words]
     notes += [tell_opinion(opinion, job.unit) for opinion in column.pick_opinions]
     if job.sounding.note:
         notes.append(f"Field note: {job.sounding.note}")
@@ -185,7 +187,8 @@ def write_wells_and_template(results: Results) -> Markup:
         parts.insert(0, element("p", {}, "Words that no unit claims, and that decide nothing: ", unmapped, "."))
     else:
         parts.insert(0, element("p", {}, "Every word of the logs was claimed by a unit."))
-    return joined([*parts, _template_table(results), _wells_table(results)])
+    remarks = [element("p", {}, remark) for remark in found.remarks]
+    return joined([*parts, *remarks, _template_table(results), _wells_table(results)])
 
 
 def _template_table(results: Results) -> Markup:

@@ -130,12 +130,11 @@ def write_doubts(results: Results) -> Markup:
 
 
 def write_decisions(results: Results) -> Markup:
-    """Chapter 7: the picks and their reasons, and what the interpretation remarks."""
+    """Chapter 7: the picks and their reasons, with what the curve says of each."""
     unit = results.region.length_unit
-    remarks = [element("p", {}, remark) for remark in results.interpretation.remarks]
     if not results.survey.picks:
         words = "No picks were given: every contact is the program’s own reading of curve, template and logs."
-        return joined([element("p", {}, words), *remarks])
+        return element("p", {}, words)
     opinions = [one for column in results.interpretation.columns for one in column.pick_opinions]
     said = {(one.pick.place, one.pick.unit): tell_opinion(one, unit) for one in opinions}
     rows = [
@@ -153,7 +152,7 @@ def write_decisions(results: Results) -> Markup:
     ]
     headings = ("place", "unit", "status", "depth", "error", "interpreter", "reason", "what the curve says")
     words = "A pick outranks what the program infers; what the curve by itself says of it stands beside it."
-    return joined([element("p", {}, words), table(headings, rows, f"Picks: {len(rows)}"), *remarks])
+    return joined([element("p", {}, words), table(headings, rows, f"Picks: {len(rows)}")])
 
 
 def write_making(results: Results, record: Mapping[str, Any]) -> Markup:

@@ -109,6 +109,15 @@ def tell_doubt(column: UnitColumn, template: Template, unit: LengthUnit) -> list
     return [words for words in (tell_hidden(column, template, unit), tell_contrast(column)) if words]
 
 
+def tell_water_level(column: UnitColumn, unit: LengthUnit) -> str:
+    """Where the water level was taken to lie and what that means here; empty where no well shows it."""
+    depth, error = column.water_level / METRES[unit]
+    if not np.isfinite(depth):
+        return ""
+    level = f"The wells around put the water level at {depth:.1f} ± {error:.1f} {unit_label(unit)} here"
+    return f"{level}: coarse ground above it counts as drained, and does not speak for the aquifer's resistivity."
+
+
 def tell_trade_offs(inverted: Inverted) -> str:
     """Which combinations the curve knows although it does not know their parts; empty where there are none."""
     return " ".join(f"{_capital(words).rstrip('.')}." for words in inverted.trade_offs)

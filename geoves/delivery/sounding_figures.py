@@ -228,10 +228,32 @@ def _stacked_profile(
         if best.size and y[best[-1]] - y[best[0]] > 13:
             name = unit.name if len(unit.name) < 18 else unit.name[:16] + "…"
             names.append(label(90, (y[best[0]] + y[best[-1]]) / 2 + 4, name, "halo", "middle"))
+    bands.append(_above_water(frame, column, template, metres))
     if ends < deepest:
         at = float(frame.y.pixel(0.5 * (ends + deepest) / metres))
         names.append(label(90, at + 4, "not known", "note", "middle"))
     return [*bands, *names]
+
+
+def _above_water(frame: Frame, column: UnitColumn, template: Template, metres: float) -> Markup:
+    """Steps over the coarse units' bands: how probable drained ground, above the water level, is at each depth."""
+    if not column.above_water.size or column.above_water.max() <= PALEST:
+        return Markup("")
+    first = next(i for i, unit in enumerate(template.units) if unit.is_coarse)
+    shares = column.profile / np.maximum(column.profile.sum(axis=1, keepdims=True), 1e-9)
+    left = shares[:, :first].sum(axis=1)
+    # Under a pick the bands are the decided ones: drained ground is drawn no wider than they are.
+    coarse = [i for i, unit in enumerate(template.units) if unit.is_coarse]
+    drained = np.minimum(column.above_water, shares[:, coarse].sum(axis=1))
+    edges = frame.y.pixel(column.profile_depth / metres)
+    boxes = [
+        rectangle(float(x), float(a), float(b - x), float(c - a), {"class": "above-water"})
+        for x, b, a, c, share in zip(
+            frame.x.pixel(left), frame.x.pixel(left + drained), edges[:-1], edges[1:], drained, strict=True
+        )
+        if share > PALEST
+    ]
+    return element("g", {}, element("title", {}, "above the water level: drained"), *boxes)
 
 
 def _bends(x: FloatArray, y: FloatArray) -> list[tuple[float, float]]:

@@ -145,7 +145,10 @@ class Ground:
 
 @attrs.frozen
 class Survey:
-    """All that the inputs hold, in the region's CRS and SI units, with the doubts met while reading."""
+    """All that the inputs hold, in the region's CRS and SI units, with the doubts met while reading.
+
+    crs_unit_metres is the length of the CRS's unit: eastings and northings times it are metres.
+    """
 
     soundings: tuple[Sounding, ...]
     wells: tuple[Well, ...] = ()
@@ -154,3 +157,4 @@ class Survey:
     ground: Ground | None = None
     boundary: Any = None  # a shapely (Multi)Polygon in the region's CRS
     doubts: tuple[Finding, ...] = ()
+    crs_unit_metres: float = 1.0

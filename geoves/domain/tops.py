@@ -95,6 +95,9 @@ class UnitColumn:
     shallow_probability  of at least 1 m of the shallow aquifer; shallow_resistivity ohm m: its 5, 50 and 95 % quantiles
                       where it is present (3,)
     base_contrast     natural log of rock's resistivity over that of what lies on it, from the draws that reach it
+    water_level       depth of the water table and its standard deviation, m (2,), NaN where none is known
+    above_water       (d,) probability of coarse ground above the water level in each slice of the profile; empty where
+                      none was looked for
     picks             the interpreter's decisions here; `pick_opinions` what the curve says of each
     """
 
@@ -118,6 +121,8 @@ class UnitColumn:
         factory=lambda: np.full(3, np.nan), converter=floats, eq=by_value, repr=shape
     )
     base_contrast: float = float("nan")
+    water_level: FloatArray = attrs.field(factory=lambda: np.full(2, np.nan), converter=floats, eq=by_value, repr=shape)
+    above_water: FloatArray = attrs.field(factory=lambda: np.empty(0), converter=floats, eq=by_value, repr=shape)
 
 
 @attrs.frozen

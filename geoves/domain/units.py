@@ -11,6 +11,10 @@ from geoves.domain.arrays import FloatArray
 Z_95 = 1.6448536269514722
 
 
+_COARSE_WORDS = frozenset({"sand", "sandy", "gravel", "cobbles", "pebbles"})
+_FINE_WORDS = frozenset({"clay", "loam", "silt", "till", "soil", "topsoil", "muck", "peat"})
+
+
 class Role(StrEnum):
     """What a unit is to the agency's question, whatever its local name."""
 
@@ -35,6 +39,17 @@ class Unit:
     colour: str | None = None
 
     @property
+    def is_coarse(self) -> bool:
+        """Whether it is far more resistive above the water level: a shallow aquifer, or a cover of sand or gravel.
+
+        A cover counts where all its terms in drillers' logs name sand or gravel, and none clay, loam, silt or till.
+        """
+        if self.role is Role.COVER:
+            words = [set(term.lower().split()) for term in self.log_terms]
+            return bool(words) and all(one & _COARSE_WORDS and not one & _FINE_WORDS for one in words)
+        return self.role is Role.SHALLOW_AQUIFER
+
+    @property
     def log_resistivity_mean(self) -> float:
         """Mean of the natural log of resistivity, the range read as log-normal."""
         return 0.5 * (np.log(self.resistivity_p05) + np.log(self.resistivity_p95))
@@ -47,9 +62,13 @@ class Unit:
 
 @attrs.frozen
 class Template:
-    """The units in their order from the top of the column down; the last is bedrock."""
+    """The units in their order from the top of the column down; the last is bedrock.
+
+    water_level : depth (m) of the water table and its standard deviation, where the template is that of one place
+    """
 
     units: tuple[Unit, ...]
+    water_level: tuple[float, float] | None = None
 
     def with_role(self, role: Role) -> tuple[Unit, ...]:
         return tuple(unit for unit in self.units if unit.role is role)

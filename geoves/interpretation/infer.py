@@ -1,6 +1,6 @@
 """The step itself: all places of a survey, block by block."""
 
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from functools import partial
 from itertools import chain
 from typing import Any
@@ -24,6 +24,7 @@ from geoves.domain.units import Role, Template
 from geoves.interpretation import sequences, soundings, wells
 from geoves.interpretation.calibration import calibrate_template
 from geoves.interpretation.options import InterpretationOptions
+from geoves.interpretation.surroundings import Surroundings, find_surroundings
 from geoves.kernels import damped_steps, layered_earth
 from geoves.kernels.damped_steps import Readings
 
@@ -59,6 +60,7 @@ def interpret(
     picks = {pick.place: [p for p in survey.picks if p.place == pick.place] for pick in survey.picks}
     logged = [_interpret_well(well, picks.get(well.name, []), template, options) for well in survey.wells]
     presence = _presence_at_wells(logged, template, options)
+    around, remarks = find_surroundings(survey, [reading.well_readings for reading in logged], template, options)
     readings: list[PlaceReading] = []
     calibration: tuple[UnitCalibration, ...] = ()
     if pairs:
@@ -68,13 +70,19 @@ def interpret(
         blocks = [pairs[i : i + options.block] for i in range(0, len(pairs), options.block)]
         if options.calibrate:
             sample = partial(
-                _sample_block, template=template, presence=presence, options=options, wavenumber=wavenumber
+                _sample_block,
+                around=around,
+                template=template,
+                presence=presence,
+                options=options,
+                wavenumber=wavenumber,
             )
             drawn = list(chain.from_iterable(map(sample, blocks)))
             template, calibration = calibrate_template(template, drawn, options.fewest_to_calibrate)
         work = partial(
             _interpret_block,
             picks=picks,
+            around=around,
             template=template,
             presence=presence,
             options=options,
@@ -91,6 +99,7 @@ def interpret(
         shallow_resistivities=tuple(chain.from_iterable(r.shallow_resistivities for r in readings)),
         calibration=calibration,
         unmapped_words=tuple(sorted({word.description for word in words if word.unit is None})),
+        remarks=remarks,
     )
 
 
@@ -111,53 +120,80 @@ def _presence_at_wells(
 def _sample_block(
     pairs: Sequence[tuple[Sounding, Inverted]],
     *,
+    around: Mapping[str, Surroundings],
     template: Template,
     presence: FloatArray,
     options: InterpretationOptions,
     wavenumber: FloatArray,
 ) -> list[FloatArray]:
     """Log resistivities (m, u) of the columns drawn for each sounding, for the calibration."""
-    weighed = _weigh_block(pairs, template, presence, options, wavenumber)
+    local = [around[sounding.name].localise(template) for sounding, _ in pairs]
+    weighed = _weigh_block(pairs, local, presence, options, wavenumber)
     return [draws.log_resistivity for draws, _ in weighed]
 
 
 def _weigh_block(
     pairs: Sequence[tuple[Sounding, Inverted]],
-    template: Template,
+    local: Sequence[Template],
     presence: FloatArray,
     options: InterpretationOptions,
     wavenumber: FloatArray,
 ) -> Iterator[tuple[sequences.ColumnDraws, float]]:
-    """Columns drawn for each sounding of a block, and the depth above which basal material is excluded."""
+    """Columns drawn for each sounding of a block, and the depth above which basal material is excluded.
+
+    local : the template as it stands at each sounding
+    """
     curves = damped_steps.stack_curves([Readings(*s.curve.readings(one.noise)) for s, one in pairs], wavenumber)
-    admissible = sequences.admissible_sequences(template, presence)
-    fits = sequences.fit_sequences(admissible, template, curves)
-    log_weight = sequences.weigh_sequences(admissible, fits, template)
+    wet = np.array([one.water_level is not None for one in local])
+    weighed: dict[int, tuple[Sequence[sequences.UnitSequence], list[damped_steps.Fit], FloatArray]] = {}
+    for rows in (np.flatnonzero(~wet).tolist(), np.flatnonzero(wet).tolist()):
+        if rows:
+            places = [local[i] for i in rows]
+            weighed |= dict(zip(rows, _weigh_alike(places, curves.take(np.array(rows)), presence), strict=True))
     for i, (sounding, _) in enumerate(pairs):
         generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
-        own_fits, own_weight, own_curve = [fit.take(i) for fit in fits], log_weight[:, i], curves.take(np.array([i]))
-        draws = sequences.draw_columns(admissible, own_fits, own_weight, own_curve, template, options, generator)
+        admissible, own_fits, own_weight = weighed[i]
+        own_curve = curves.take(np.array([i]))
+        draws = sequences.draw_columns(admissible, own_fits, own_weight, own_curve, local[i], options, generator)
         half_space = sequences.best_half_space(admissible, own_fits, own_weight)
-        yield draws, soundings.excluded_depth(half_space, own_curve, template, options)
+        yield draws, soundings.excluded_depth(half_space, own_curve, local[i], options)
+
+
+def _weigh_alike(
+    local: Sequence[Template], curves: damped_steps.Curves, presence: FloatArray
+) -> Iterator[tuple[Sequence[sequences.UnitSequence], list[damped_steps.Fit], FloatArray]]:
+    """The sequences that stand to choice at places that all know their water level, or all don't; for each place
+    their fits and log weights.
+    """
+    template = local[0]
+    admissible = sequences.admissible_sequences(template, presence)
+    if template.water_level is not None:
+        admissible = sequences.cut_at_water(admissible, template)
+    fits = sequences.fit_sequences(admissible, template, curves, local)
+    log_weight = sequences.weigh_sequences(admissible, fits, template, local)
+    for i in range(len(local)):
+        yield admissible, [fit.take(i) for fit in fits], log_weight[:, i]
 
 
 def _interpret_block(
     pairs: Sequence[tuple[Sounding, Inverted]],
     *,
     picks: dict[str, list[Pick]],
+    around: Mapping[str, Surroundings],
     template: Template,
     presence: FloatArray,
     options: InterpretationOptions,
     wavenumber: FloatArray,
 ) -> list[PlaceReading]:
-    weighed = _weigh_block(pairs, template, presence, options, wavenumber)
+    local = [around[sounding.name].localise(template) for sounding, _ in pairs]
+    weighed = _weigh_block(pairs, local, presence, options, wavenumber)
     deep = soundings.role_mask(template, Role.DEEP_AQUIFER)
     gravel_prior = float(1.0 - np.prod(1.0 - presence[deep])) if np.any(deep) else np.nan
     results = []
-    for (sounding, inverted), (draws, bound) in zip(pairs, weighed, strict=True):
-        contact = soundings.find_basal_contact(draws, bound, template, options)
+    for (sounding, inverted), here, (draws, bound) in zip(pairs, local, weighed, strict=True):
+        contact = soundings.find_basal_contact(draws, bound, here, options)
         decided = picks.get(sounding.name, [])
-        reading = _read_sounding(sounding, inverted, draws, contact, decided, template, options)
+        reading = _read_sounding(sounding, inverted, draws, contact, decided, here, options)
         column = None if reading.column is None else attrs.evolve(reading.column, gravel_prior=gravel_prior)
         results.append(attrs.evolve(reading, column=column))
     return results

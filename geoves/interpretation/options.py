@@ -31,6 +31,7 @@ class InterpretationOptions:
     relative_depth_floor        least error of a sounding's depth: ground is never quite layered
     well_contact_error          least error (m) of a contact in a driller's log
     well_relative_error         and its growth with depth
+    water_level_reach           how far (m) a well's water level is carried to soundings; 0 to leave it out
     least_match                 how alike (0 to 100) a driller's word and a term must be
     """
 
@@ -45,6 +46,7 @@ class InterpretationOptions:
     relative_depth_floor: float = attrs.field(default=0.05, validator=attrs.validators.ge(0))
     well_contact_error: float = attrs.field(default=0.3, validator=attrs.validators.gt(0))
     well_relative_error: float = attrs.field(default=0.01, validator=attrs.validators.ge(0))
+    water_level_reach: float = attrs.field(default=2000.0, validator=attrs.validators.ge(0))
     least_match: float = attrs.field(default=80.0, validator=[attrs.validators.gt(0), attrs.validators.le(100)])
     block: int = attrs.field(default=16, validator=attrs.validators.ge(1))
     random_seed: int = 0

@@ -9,6 +9,13 @@ import numpy as np
 from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.units import Z_95, Role, Template
 from geoves.interpretation.options import THICKNESS_BY_ROLE, InterpretationOptions
+from geoves.interpretation.water import (
+    DRY_LOG_DEVIATION,
+    DRY_LOG_MEAN,
+    log_normal,
+    log_split_weight,
+    log_water_between,
+)
 from geoves.kernels import damped_steps, ensembles
 from geoves.kernels.damped_steps import Curves, Fit, Prior
 
@@ -21,6 +28,10 @@ DEPTH_LIMIT_DEVIATION = 0.15
 # Factors on the prior's thicknesses that the search starts from.
 START_FACTORS = (0.5, 1.8)
 SEGMENT_DEVIATION = 0.05
+# The part of a unit above the water level is searched for about this share of the level's depth, natural logs.
+DRY_SHARE, DRY_THICKNESS_DEVIATION, SHALLOWEST_WATER = 0.65, 0.5, 0.5
+# No sequence is left out for the water level alone before it is drawn from (nats).
+MOST_AGAINST = -4.0
 # Members weighed in each sequence for each column that is kept in the end.
 SAMPLES_PER_DRAW = 2
 # Sequences this much (nats) behind the best are not drawn from, and no Bayes factor is stated beyond it.
@@ -33,7 +44,7 @@ class UnitSequence:
 
     A unit may have two layers: a skin of soil on the cover, a siltier part of the clay. `reaches` is False where the
     sequence ends above the basal contact, its last layer being the half-space. `widening` stretches the spread of a
-    layer's log resistivity.
+    layer's log resistivity. `dry` says which layers lie above the water level, empty where none is known.
     """
 
     units: tuple[int, ...]
@@ -41,6 +52,15 @@ class UnitSequence:
     widening: tuple[float, ...]
     reaches: bool
     log_prior: float
+    dry: tuple[bool, ...] = ()
+
+    @property
+    def split(self) -> int | None:
+        """The dry layer under which the same unit goes on below the water level."""
+        wet = [not dry for dry in self.dry]
+        return next(
+            (i for i in range(len(wet) - 1) if wet[i + 1] > wet[i] and self.units[i] == self.units[i + 1]), None
+        )
 
 
 @attrs.frozen
@@ -50,12 +70,14 @@ class ColumnDraws:
     thickness : (m, u) m, 0 where a unit is absent, of the half-space not a number
     log_resistivity : (m, u), NaN where absent    reaches : (m,) the basal contact lies within the model
     log_bayes_factor : of sequences with the basal contact against those that end above it
+    dry : (m, u) m of each unit above the water level, empty where none is known
     """
 
     thickness: FloatArray
     log_resistivity: FloatArray
     reaches: BoolArray
     log_bayes_factor: float
+    dry: FloatArray = attrs.field(factory=lambda: np.empty((0, 0)))
 
 
 @attrs.frozen
@@ -92,6 +114,37 @@ def admissible_sequences(template: Template, presence: FloatArray) -> tuple[Unit
     return tuple(sequences)
 
 
+def cut_at_water(sequences: Sequence[UnitSequence], template: Template) -> tuple[UnitSequence, ...]:
+    """Every sequence with its coarse layers below the water level, above it, or one cut by it, from the top down.
+
+    Each keeps the sequence's prior: how probable the cut is follows from the water level and the layers' depths.
+    """
+    cut: list[UnitSequence] = []
+    for sequence in sequences:
+        cut.append(attrs.evolve(sequence, dry=(False,) * len(sequence.units)))
+        coarse = [i for i, unit in enumerate(sequence.units) if template.units[unit].is_coarse]
+        for last in coarse:
+            dry = tuple(i in coarse and i <= last for i in range(len(sequence.units)))
+            if last < len(sequence.units) - 1:
+                cut.append(attrs.evolve(sequence, dry=dry))
+            cut.append(_split_layer(sequence, last, dry))
+    return tuple(cut)
+
+
+def _split_layer(sequence: UnitSequence, layer: int, dry: tuple[bool, ...]) -> UnitSequence:
+    """A sequence with one layer in two, the upper one dry."""
+    after = layer + 1
+    unit, widening, ranges = sequence.units[layer], sequence.widening[layer], sequence.thickness
+    own = ranges[layer] if layer < len(ranges) else THICKNESS_BY_ROLE[Role.SHALLOW_AQUIFER]
+    return attrs.evolve(
+        sequence,
+        units=(*sequence.units[:after], unit, *sequence.units[after:]),
+        thickness=(*ranges[:layer], own, *ranges[layer:]),
+        widening=(*sequence.widening[:after], widening, *sequence.widening[after:]),
+        dry=(*dry[:after], False, *dry[after:]),
+    )
+
+
 def _layer_variants(
     column: tuple[int, ...], template: Template
 ) -> list[tuple[tuple[int, ...], tuple[tuple[float, float], ...], tuple[float, ...]]]:
@@ -116,30 +169,87 @@ def _layer_variants(
     ]
 
 
-def sequence_prior(sequence: UnitSequence, template: Template, curves: Curves) -> tuple[Prior, FloatArray]:
-    """Prior (b, p) of a sequence and the mean (p,) from which its search starts."""
+def sequence_prior(
+    sequence: UnitSequence, template: Template, curves: Curves, local: Sequence[Template] = ()
+) -> tuple[Prior, FloatArray]:
+    """Prior (b, p) of a sequence and the mean (p,) from which its search starts.
+
+    local : the template as it stands at the place of each curve, where that differs
+    """
+    places = local or (template,)
     layers = list(sequence.units)
     k, n_curves, n_segments = len(layers), curves.segments.shape[0], curves.segments.shape[2]
-    log_range = np.log(np.array(sequence.thickness).reshape(-1, 2))
-    mean = np.concatenate([log_range.mean(axis=1), template.log_resistivity_means[layers], np.zeros(n_segments)])
-    deviation = np.concatenate(
-        [
-            np.diff(log_range, axis=1)[:, 0] / (2.0 * Z_95),
-            template.log_resistivity_deviations[layers] * sequence.widening,
-            np.full(n_segments, SEGMENT_DEVIATION),
-        ]
-    )
+    thickness_mean, thickness_deviation = _thickness_prior(sequence, _water_levels(places))
+    dry = np.array(sequence.dry or (False,) * k)
+    resistivity_mean = np.array([one.log_resistivity_means[layers] for one in places]) + dry * DRY_LOG_MEAN
+    own = np.array([one.log_resistivity_deviations[layers] for one in places]) * sequence.widening
+    shift = np.zeros((len(places), n_segments))
+    mean = np.hstack([thickness_mean, resistivity_mean, shift])
+    deviation = np.hstack([thickness_deviation, np.hypot(own, dry * DRY_LOG_DEVIATION), shift + SEGMENT_DEVIATION])
     reach = 5.0 * deviation
-    reach[2 * k - 1 :] = 0.7
-    full = (n_curves, mean.size)
-    return Prior(*(np.broadcast_to(row, full) for row in (mean, deviation, mean - reach, mean + reach))), mean
+    reach[:, 2 * k - 1 :] = 0.7
+    full = (n_curves, mean.shape[1])
+    prior = Prior(*(np.broadcast_to(rows, full) for rows in (mean, deviation, mean - reach, mean + reach)))
+    return prior, mean.mean(axis=0)
 
 
-def fit_sequences(sequences: Sequence[UnitSequence], template: Template, curves: Curves) -> list[Fit]:
-    """The most probable model of each sequence for each curve, the best of several starts."""
+def _water_levels(places: Sequence[Template]) -> FloatArray:
+    """Depth of the water level and its deviation (b, 2), m, NaN where none is known."""
+    return np.array([one.water_level or (np.nan, np.nan) for one in places])
+
+
+def _thickness_prior(sequence: UnitSequence, water: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Mean and deviation (b, k-1) of the log thicknesses; of a part above the water level from that level (b, 2)."""
+    log_range = np.log(np.array(sequence.thickness).reshape(-1, 2))
+    full = (len(water), len(log_range))
+    mean = np.broadcast_to(log_range.mean(axis=1), full).copy()
+    deviation = np.broadcast_to(np.diff(log_range, axis=1)[:, 0] / (2.0 * Z_95), full).copy()
+    if sequence.split is not None:
+        mean[:, sequence.split] = np.log(DRY_SHARE * np.maximum(water.max(axis=1), SHALLOWEST_WATER))
+        deviation[:, sequence.split] = DRY_THICKNESS_DEVIATION
+    return mean, deviation
+
+
+def _log_water(sequence: UnitSequence, unknowns: FloatArray, template: Template, water: FloatArray) -> FloatArray:
+    """Log weight (m,) of the water level on models of a sequence; water : (m or 1, 2), its depth and deviation, m.
+
+    The part above it enters the fit with a prior of its own; the weight puts the true one in its place.
+    """
+    if not sequence.dry:
+        return np.zeros(len(unknowns))
+    k = len(sequence.units)
+    water = np.broadcast_to(water, (len(unknowns), 2))
+    edge = np.zeros((len(unknowns), 1))
+    edges = np.hstack([edge, np.cumsum(np.exp(unknowns[:, : k - 1]), axis=1), edge + np.inf])
+    split = sequence.split
+    if split is None:
+        coarse = [i for i, unit in enumerate(sequence.units) if template.units[unit].is_coarse]
+        dry = [i for i in coarse if sequence.dry[i]]
+        wet = [i for i in coarse if not sequence.dry[i]]
+        return log_water_between(edges[:, dry[-1] + 1] if dry else -edges[:, k], edges[:, wet[0] if wet else k], water)
+    mean, deviation = _thickness_prior(sequence, water)
+    wet_part = split + 1 if split + 1 < k - 1 else None
+    low, high = np.log(sequence.thickness[split])
+    weight = log_split_weight(
+        unknowns[:, split],
+        None if wet_part is None else unknowns[:, wet_part],
+        edges[:, split + 1],
+        water,
+        (0.5 * (low + high), (high - low) / (2.0 * Z_95)),
+    )
+    for part in (split, wet_part):
+        if part is not None:
+            weight = weight - log_normal(unknowns[:, part], mean[:, part], deviation[:, part])
+    return weight
+
+
+def fit_sequences(
+    sequences: Sequence[UnitSequence], template: Template, curves: Curves, local: Sequence[Template] = ()
+) -> list[Fit]:
+    """The most probable model of each sequence for each curve, the best of several starts; local as for the prior."""
     fits = []
     for sequence in sequences:
-        prior, mean = sequence_prior(sequence, template, curves)
+        prior, mean = sequence_prior(sequence, template, curves, local)
         k = len(sequence.units)
         best: Fit | None = None
         for factor in START_FACTORS if k > 1 else (1.0,):
@@ -152,12 +262,18 @@ def fit_sequences(sequences: Sequence[UnitSequence], template: Template, curves:
     return fits
 
 
-def weigh_sequences(sequences: Sequence[UnitSequence], fits: Sequence[Fit], template: Template) -> FloatArray:
+def weigh_sequences(
+    sequences: Sequence[UnitSequence], fits: Sequence[Fit], template: Template, local: Sequence[Template] = ()
+) -> FloatArray:
     """Log of prior times evidence (q, b) by Laplace's approximation, the limits of depth applied to the best model."""
+    water = _water_levels(local or (template,))
     log_weight = []
     for sequence, fit in zip(sequences, fits, strict=True):
         thickness, _ = _unit_columns(sequence, fit.unknowns, len(template.units))
-        log_weight.append(sequence.log_prior + fit.log_evidence + _log_depth_limits(sequence, thickness, template))
+        limits = _log_depth_limits(sequence, thickness, template)
+        # At one model alone the water level is told too sharply; the draws weigh it in full.
+        level = np.maximum(_log_water(sequence, fit.unknowns, template, water), MOST_AGAINST)
+        log_weight.append(sequence.log_prior + fit.log_evidence + limits + level)
     return np.array(log_weight)
 
 
@@ -196,7 +312,7 @@ def draw_columns(
     """
     kept = np.flatnonzero(log_weight > log_weight.max() - LEAST_LOG_WEIGHT)
     per_sequence = SAMPLES_PER_DRAW * options.draws
-    thickness, log_resistivity, reaches, weight = [], [], [], []
+    thickness, log_resistivity, reaches, weight, dry = [], [], [], [], []
     for q in kept.tolist():
         sequence = sequences[q]
         prior, _ = sequence_prior(sequence, template, curves)
@@ -208,26 +324,43 @@ def draw_columns(
         # Of one sequence, members share its prior; their mean weight is its evidence.
         weight.append(
             sequence.log_prior + members.log_weight - np.log(len(h)) + _log_depth_limits(sequence, h, template)
-        )
-    h, r, reached, pooled = (np.concatenate(parts) for parts in (thickness, log_resistivity, reaches, weight))
+            + _log_water(sequence, members.unknowns, template, _water_levels([template]))
+        )  # fmt: skip
+        dry.append(_dry_columns(sequence, members.unknowns, len(template.units)))
+    h, r, reached, pooled, above = (np.concatenate(p) for p in (thickness, log_resistivity, reaches, weight, dry))
     rows = ensembles.resample(pooled, options.draws, generator)
     with_contact, without = (np.logaddexp.reduce(pooled[mask], initial=-np.inf) for mask in (reached, ~reached))
     bayes = float(np.clip(with_contact - without, -LEAST_LOG_WEIGHT, LEAST_LOG_WEIGHT))
-    return ColumnDraws(h[rows], r[rows], reached[rows], bayes)
+    drawn_dry = above[rows] if template.water_level else np.empty((0, 0))
+    return ColumnDraws(h[rows], r[rows], reached[rows], bayes, drawn_dry)
 
 
 def _unit_columns(sequence: UnitSequence, unknowns: FloatArray, n_units: int) -> tuple[FloatArray, FloatArray]:
-    """Thickness and log resistivity (m, u) of each unit; of its layers, thicknesses add up and the thickest speaks."""
+    """Thickness and log resistivity (m, u) of each unit; of its layers, thicknesses add up and the thickest speaks.
+
+    A layer above the water level adds to its unit's thickness and does not speak for its resistivity.
+    """
     k = len(sequence.units)
     thickness, log_resistivity = np.zeros((len(unknowns), n_units)), np.full((len(unknowns), n_units), np.nan)
     thickest = np.zeros_like(thickness)
     for i, unit in enumerate(sequence.units):
         own = np.exp(unknowns[:, i]) if i < k - 1 else np.full(len(unknowns), np.inf)
         thickness[:, unit] += own if i < k - 1 else np.nan
+        if sequence.dry and sequence.dry[i]:
+            continue
         thicker = own > thickest[:, unit]
         log_resistivity[thicker, unit] = unknowns[thicker, k - 1 + i]
         thickest[thicker, unit] = own[thicker]
     return thickness, log_resistivity
+
+
+def _dry_columns(sequence: UnitSequence, unknowns: FloatArray, n_units: int) -> FloatArray:
+    """Thickness (m, u) of each unit above the water level, m."""
+    dry = np.zeros((len(unknowns), n_units))
+    for i, unit in enumerate(sequence.units):
+        if sequence.dry and sequence.dry[i]:
+            dry[:, unit] += np.exp(unknowns[:, i])
+    return dry
 
 
 def best_half_space(sequences: Sequence[UnitSequence], fits: Sequence[Fit], log_weight: FloatArray) -> HalfSpace:

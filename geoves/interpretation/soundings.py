@@ -333,6 +333,8 @@ def read_column(
         shallow_probability=shallow_probability,
         shallow_resistivity=shallow,
         base_contrast=_base_contrast(draws, template),
+        water_level=np.array(template.water_level or (np.nan, np.nan)),
+        above_water=_above_water(draws, edges),
     )
 
 
@@ -342,6 +344,19 @@ def _profile(draws: ColumnDraws, contact: BasalContact, template: Template, edge
     if any(pick.status != "below" for pick in contact.picks) and contact.depth.size:
         thickness = _decided_columns(draws, contact, template)
     return np.array([_unit_share(thickness, a, b) for a, b in pairwise(edges)])
+
+
+def _above_water(draws: ColumnDraws, edges: FloatArray) -> FloatArray:
+    """Share (d,) of each slice of depth that is coarse ground above the water level; empty where that is not known."""
+    if not draws.dry.size:
+        return np.empty(0)
+    h = np.where(np.isnan(draws.thickness), 1e5, draws.thickness)
+    top = np.cumsum(h, axis=1) - h
+    shares = []
+    for a, b in pairwise(edges):
+        inside = np.clip(np.minimum(top + draws.dry, b) - np.maximum(top, a), 0.0, None)
+        shares.append(np.mean(inside.sum(axis=1)) / (b - a))
+    return np.array(shares)
 
 
 def _decided_columns(draws: ColumnDraws, contact: BasalContact, template: Template) -> FloatArray:
@@ -376,7 +391,9 @@ def _base_contrast(draws: ColumnDraws, template: Template) -> float:
         return np.nan
     above = ~np.isnan(reached[:, :rock])
     last = rock - 1 - np.argmax(above[:, ::-1], axis=1)
-    return float(np.mean(reached[:, rock] - reached[np.arange(len(reached)), last]))
+    contrast = reached[:, rock] - reached[np.arange(len(reached)), last]
+    known = contrast[~np.isnan(contrast)]
+    return float(np.mean(known)) if known.size else np.nan
 
 
 def _unit_share(thickness: FloatArray, top: float, bottom: float) -> FloatArray:

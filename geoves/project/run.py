@@ -72,7 +72,7 @@ def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, A
     statuses = [column.bedrock_status for column in interpretation.columns]
     record |= {
         "reach": stack.reach,
-        "remarks": list(stack.remarks),
+        "remarks": [*interpretation.remarks, *stack.remarks],
         "bedrock_status": provenance.summarise(statuses),
         "noise": inverted[0].noise if inverted else None,
         "template_calibration": [attrs.asdict(one) for one in interpretation.calibration],

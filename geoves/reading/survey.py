@@ -79,6 +79,7 @@ def collect_survey(region: Region) -> SurveyFiles:
         ground=None if ground is None else ground.ground,
         boundary=boundary,
         doubts=tuple(finding for finding in ordered if finding.severity == "doubt"),
+        crs_unit_metres=region.crs_unit_metres,
     )
     return SurveyFiles(survey, grid, ordered)
 
