@@ -1,97 +1,109 @@
-"""The delivery folder: written beside, verified, moved into place, run.json last."""
+"""The delivery folder: written beside, verified, put in the place of the old one, run.json last."""
 
 import contextlib
-import hashlib
 import json
 import math
 import os
-import shutil
-import sys
 from collections.abc import Iterator, Mapping
-from pathlib import Path, PurePosixPath
-from typing import IO, Any
+from pathlib import Path
+from typing import Any
 
 import numpy as np
 
-from geoves.errors import DeliveryError
+from geoves.delivery.lock import hold_lock, say
+from geoves.delivery.swap import RECORD, Workplace, finish_interrupted, hash_file, stays_inside, swap
+from geoves.errors import DeliveryError, GeovesError
 
-if sys.platform == "win32":
-    import msvcrt
-else:
-    import fcntl
-
-RECORD = "run.json"
-_JOURNAL = "publishing.json"  # what a publication that was cut short had begun to write
-_STAGING, _REPLACED, _LOCK = "staging", "replaced", "lock"
+_PROBE, _PROBE_SIZE = "probe", 4 * 2**20  # bytes: what a disk must still take that is not to blame
 
 
 def name_workplace(folder: Path) -> Path:
-    """The hidden folder beside `folder` where a run writes before it publishes.
+    """The hidden folder beside `folder` where a run writes before it publishes; inside, where a disk begins there.
 
     >>> name_workplace(Path("county/delivery")).as_posix()
     'county/.geoves-delivery'
     """
-    return folder.parent / f".geoves-{folder.name}"
+    return (folder if folder.is_mount() else folder.parent) / f".geoves-{folder.name}"
 
 
 @contextlib.contextmanager
 def stage(folder: Path) -> Iterator[Path]:
-    """A new, empty folder beside `folder` to write a delivery into; it is gone when the block ends, however it ends.
+    """A new, empty folder to write a delivery into; it is gone when the block ends, however it ends.
 
-    One run at a time: raises DeliveryError where another holds the folder, or where it cannot be written.
+    What an earlier run that was killed left half done is completed or undone first. One run at a time: raises
+    DeliveryError where another holds the folder, where it cannot be written, or where the block failed for want of
+    room on the disk.
     """
-    folder = folder.absolute()
+    folder = folder.resolve()
     if folder.exists() and not folder.is_dir():
         raise DeliveryError(f"{folder} is a file; a delivery needs a folder")
-    workplace = name_workplace(folder)
-    with _hold_lock(workplace, folder):
+    if folder.exists() and not os.access(folder, os.W_OK | os.X_OK):
+        raise DeliveryError(f"{folder} cannot be written: it is read-only, or yours to read only")
+    workplace = Workplace(name_workplace(folder), folder)
+    with hold_lock(workplace.path, folder):
         try:
-            for leftover in (_STAGING, _REPLACED):
-                if (workplace / leftover).exists():
-                    shutil.rmtree(workplace / leftover)
-            staging = workplace / _STAGING
-            staging.mkdir()
+            finish_interrupted(workplace)
+            workplace.clear()
+            workplace.staging.mkdir()
         except OSError as error:
-            raise DeliveryError(f"{workplace} cannot be written: {_say(error)}") from error
+            if isinstance(error, GeovesError):
+                raise
+            raise DeliveryError(f"{workplace.path} cannot be written: {say(error)}") from error
         try:
-            yield staging
+            yield workplace.staging
+        except Exception as error:
+            fault = None if isinstance(error, GeovesError) else _find_disk_fault(workplace.staging)
+            if fault is None:
+                raise
+            raise DeliveryError(
+                f"{workplace.path} cannot be written: {fault}; the old delivery still stands"
+            ) from error
         finally:
-            shutil.rmtree(staging, ignore_errors=True)
-            shutil.rmtree(workplace / _REPLACED, ignore_errors=True)
+            if not workplace.journal.exists():  # a swap that could be neither made nor undone waits for the next start
+                with contextlib.suppress(OSError):
+                    workplace.clear()
 
 
 def publish(staging: Path, folder: Path, record: Mapping[str, Any]) -> None:
-    """Move every staged file to its place in `folder` and write run.json: `record` with a hash of each file.
+    """Put what is staged in the place of the old delivery, with run.json: `record` and a hash of each file.
 
     Before anything moves, every file is read and hashed and every name is free or ours: a file that stands there and
     that no earlier run wrote is the user's own and stops the delivery. What the earlier run wrote and this one does
     not is removed. Where a move fails, all moves are undone. Raises DeliveryError; the old delivery then still stands.
     """
-    folder = folder.absolute()
+    folder = folder.resolve()
     hashes = _hash_files(staging)
     ours = _list_own_files(folder)
     _refuse_collisions(folder, hashes, ours)
     text = json.dumps({**_plain(record), "files": hashes}, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
-    workplace = name_workplace(folder)
-    journal = workplace / _JOURNAL
     try:
-        folder.mkdir(parents=True, exist_ok=True)
-        workplace.mkdir(exist_ok=True)
-        journal.write_text(json.dumps({"files": dict.fromkeys(sorted({*ours, *hashes}), "")}), encoding="utf-8")
-        (workplace / RECORD).write_text(text, encoding="utf-8")
-        _move_all(staging, folder, workplace, sorted(ours | set(hashes)))
-        (workplace / RECORD).replace(folder / RECORD)
-        journal.unlink()
-        _remove_empty_folders(folder, ours - set(hashes))
+        (staging / RECORD).write_text(text, encoding="utf-8")
+        swap(Workplace(name_workplace(folder), folder), {**hashes, RECORD: hash_file(staging / RECORD)}, ours)
     except OSError as error:
-        raise DeliveryError(f"the delivery could not be put into {folder}: {_say(error)}") from error
+        raise DeliveryError(f"the delivery could not be put into {folder}: {say(error)}") from error
+
+
+def _find_disk_fault(staging: Path) -> str | None:
+    """What the system says when a little more is written, None where the disk still takes it.
+
+    The libraries that write rasters and layers each have words of their own for a full disk; the disk has one.
+    """
+    probe = staging / _PROBE
+    try:
+        probe.write_bytes(bytes(_PROBE_SIZE))
+    except OSError as error:
+        return error.strerror or str(error)
+    finally:
+        with contextlib.suppress(OSError):
+            probe.unlink(missing_ok=True)
+    return None
 
 
 def _plain(value: Any) -> Any:
     """A value as JSON can hold it: arrays as lists, what is not finite as null, what is neither as words.
 
-    >>> _plain({"noise": np.float32(0.5), "reach": float("nan"), "path": PurePosixPath("a/b"), 3: (1, np.int64(2))})
-    {'noise': 0.5, 'reach': None, 'path': 'a/b', '3': [1, 2]}
+    >>> _plain({"noise": np.float32(0.5), "reach": float("nan"), "path": Path("a"), 3: (1, np.int64(2))})
+    {'noise': 0.5, 'reach': None, 'path': 'a', '3': [1, 2]}
     """
     if isinstance(value, np.ndarray | np.generic):
         value = value.tolist()
@@ -102,12 +114,6 @@ def _plain(value: Any) -> Any:
     if isinstance(value, float) and not math.isfinite(value):
         return None
     return value if value is None or isinstance(value, bool | int | float | str) else str(value)
-
-
-def hash_file(path: Path) -> str:
-    """SHA-256 of a file, in hexadecimal."""
-    with path.open("rb") as stream:
-        return hashlib.file_digest(stream, "sha256").hexdigest()
 
 
 def _hash_files(staging: Path) -> dict[str, str]:
@@ -130,33 +136,19 @@ def _hash_files(staging: Path) -> dict[str, str]:
 
 
 def _list_own_files(folder: Path) -> set[str]:
-    """Names of the files that earlier runs wrote: of run.json, and of a publication that was cut short."""
-    own: set[str] = set()
-    for listing in (folder / RECORD, name_workplace(folder) / _JOURNAL):
-        try:
-            files = json.loads(listing.read_text(encoding="utf-8"))["files"]
-        except FileNotFoundError:
-            continue
-        except (OSError, ValueError, KeyError, TypeError) as error:
-            raise DeliveryError(
-                f"{listing} cannot be read as the record of an earlier run; move it away, then run again ({error})"
-            ) from error
-        if not isinstance(files, dict):
-            raise DeliveryError(f"{listing} does not list its files; move it away, then run again")
-        own |= {name for name in files if _stays_inside(name)}
-    return own
-
-
-def _stays_inside(name: str) -> bool:
-    """Whether a listed name lies within the folder: a record edited by hand must not reach beyond it.
-
-    >>> _stays_inside("surfaces/bedrock_depth.tif"), _stays_inside("../notes.txt"), _stays_inside("/etc/hosts")
-    (True, False, False)
-    """
-    path = PurePosixPath(name)
-    return (
-        bool(path.parts) and not path.is_absolute() and ".." not in path.parts and ":" not in name and "\\" not in name
-    )
+    """Names of the files that the earlier run wrote, as its run.json lists them."""
+    listing = folder / RECORD
+    try:
+        files = json.loads(listing.read_text(encoding="utf-8"))["files"]
+    except FileNotFoundError:
+        return set()
+    except (OSError, ValueError, KeyError, TypeError) as error:
+        raise DeliveryError(
+            f"{listing} cannot be read as the record of an earlier run; move it away, then run again ({error})"
+        ) from error
+    if not isinstance(files, dict):
+        raise DeliveryError(f"{listing} does not list its files; move it away, then run again")
+    return {name for name in files if stays_inside(name)}
 
 
 def _refuse_collisions(folder: Path, hashes: Mapping[str, str], ours: set[str]) -> None:
@@ -175,84 +167,3 @@ def _refuse_collisions(folder: Path, hashes: Mapping[str, str], ours: set[str]) 
     if foreign:
         listed = ", ".join(dict.fromkeys(foreign))
         raise DeliveryError(f"{folder} holds files that geoves did not write under its own names: {listed}; move them")
-
-
-def _move_all(staging: Path, folder: Path, workplace: Path, names: list[str]) -> None:
-    """Old files out of the way, new ones in; all undone where one fails. The old run.json goes first."""
-    replaced = workplace / _REPLACED
-    undo: list[tuple[Path, Path]] = []
-    try:
-        for name in (RECORD, *names):
-            place, old = folder / name, replaced / name
-            if place.is_file() or place.is_symlink():
-                old.parent.mkdir(parents=True, exist_ok=True)
-                place.replace(old)
-                undo.append((old, place))
-            if (staging / name).is_file():
-                place.parent.mkdir(parents=True, exist_ok=True)
-                (staging / name).replace(place)
-                undo.append((place, staging / name))
-    except OSError:
-        for now, before in reversed(undo):
-            now.replace(before)
-        raise
-
-
-def _remove_empty_folders(folder: Path, gone: set[str]) -> None:
-    for name in gone:
-        for above in (folder / name).parents:
-            if above == folder or not above.is_dir() or any(above.iterdir()):
-                break
-            above.rmdir()
-
-
-@contextlib.contextmanager
-def _hold_lock(workplace: Path, folder: Path) -> Iterator[None]:
-    """The lock of the operating system on a file in `workplace`, so that a run that was killed leaves none behind."""
-    stream = _open_locked(workplace, folder)
-    try:
-        yield
-    finally:
-        lock = workplace / _LOCK
-        if sys.platform == "win32":
-            stream.close()  # an open file cannot be removed there
-            with contextlib.suppress(OSError):
-                lock.unlink()
-        else:
-            lock.unlink(missing_ok=True)
-            stream.close()
-        with contextlib.suppress(OSError):  # stays where a journal does
-            workplace.rmdir()
-
-
-def _open_locked(workplace: Path, folder: Path) -> IO[bytes]:
-    lock = workplace / _LOCK
-    while True:
-        try:
-            workplace.mkdir(parents=True, exist_ok=True)
-            stream = lock.open("ab")
-        except FileNotFoundError:
-            continue  # a run that ended just now took its folder away
-        except OSError as error:
-            raise DeliveryError(f"{folder} cannot be written: {_say(error)}") from error
-        try:
-            _lock_file(stream)
-        except OSError as error:
-            stream.close()
-            raise DeliveryError(f"another run is writing {folder}; wait until it has ended") from error
-        if lock.exists() and os.path.samestat(lock.stat(), os.fstat(stream.fileno())):
-            return stream
-        stream.close()  # locked a file that its owner had just removed
-
-
-def _lock_file(stream: IO[bytes]) -> None:
-    """Lock an open file for this process alone; raises OSError at once where another holds it."""
-    if sys.platform == "win32":
-        msvcrt.locking(stream.fileno(), msvcrt.LK_NBLCK, 1)
-    else:
-        fcntl.flock(stream, fcntl.LOCK_EX | fcntl.LOCK_NB)
-
-
-def _say(error: OSError) -> str:
-    named = f"{error.strerror}: {error.filename}" if error.filename else error.strerror
-    return named or str(error)

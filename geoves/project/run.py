@@ -26,7 +26,7 @@ from geoves.layers import derive_layers
 from geoves.project import provenance
 from geoves.project.engines import Map, open_engine, watched
 from geoves.project.findings import name_inputs
-from geoves.project.inputs import read_inputs
+from geoves.project.inputs import Inputs, read_inputs
 from geoves.project.progress import Progress, SilentProgress, Summary
 from geoves.project.settings import Settings
 from geoves.reading import fingerprint_files
@@ -42,28 +42,40 @@ def run(region_path: Path | str, out: Path | str | None = None, progress: Progre
     progress = progress or SilentProgress()
     region_path = Path(region_path)
     folder = region_path.parent / "delivery" if out is None else Path(out)
-    results, record = compute(region_path, progress)
-    with open_engine() as engine:
-        deliver(results, record, folder, progress, engine)
+    inputs = _read(region_path, progress)
+    with stage(folder) as staging, open_engine() as engine:  # a folder in use is said before the work, not after it
+        results, record = work_out(inputs, progress, engine)
+        write_all(results, record, staging, progress, engine)
+        with _step(progress, "Moving the delivery into place"):
+            publish(staging, folder, record)
     return Summary(tuple(_tell(results, folder)))
 
 
 def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, Any]]:
     """Everything that the delivery is written from, and the record of how it came about."""
+    inputs = _read(region_path, progress)
+    with open_engine() as engine:
+        return work_out(inputs, progress, engine)
+
+
+def _read(region_path: Path, progress: Progress) -> Inputs:
     with _step(progress, "Reading the tables"):
-        inputs = read_inputs(region_path)
-        region, settings, grid = inputs.region, inputs.settings, inputs.grid
-        survey = prepare_curves(inputs.survey, settings.curves)
-        record = provenance.make_record(region, settings, fingerprint_files(region))
+        return read_inputs(region_path)
+
+
+def work_out(inputs: Inputs, progress: Progress, engine: Map) -> tuple[Results, dict[str, Any]]:
+    """From the inputs to everything that the delivery is written from, and the record of how it came about."""
+    region, settings, grid = inputs.region, inputs.settings, inputs.grid
+    survey = prepare_curves(inputs.survey, settings.curves)
+    record = provenance.make_record(region, settings, fingerprint_files(region))
     template = region.template
     n_blocks = ceil(len(survey.soundings) / settings.inversion.block)
-    with open_engine() as engine:
-        with progress.step("Inverting the curves", 2 * n_blocks) as step:
-            inverted = invert(survey, settings.inversion, map=watched(engine, step))
-        with progress.step("Reading columns from them", (1 + settings.interpretation.calibrate) * n_blocks) as step:
-            interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(engine, step))
-        with progress.step("Kriging the surfaces", _count_blocks(grid.shape, settings)) as step:
-            stack = build_surfaces(interpretation, survey, template, grid, settings.surfaces, map=watched(engine, step))
+    with progress.step("Inverting the curves", 2 * n_blocks) as step:
+        inverted = invert(survey, settings.inversion, map=watched(engine, step))
+    with progress.step("Reading columns from them", (1 + settings.interpretation.calibrate) * n_blocks) as step:
+        interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(engine, step))
+    with progress.step("Kriging the surfaces", _count_blocks(grid.shape, settings)) as step:
+        stack = build_surfaces(interpretation, survey, template, grid, settings.surfaces, map=watched(engine, step))
     with _step(progress, "Drawing contours, valley and permits"):
         layers = derive_layers(stack, survey, region, settings.layers)
     doubts = name_inputs([*survey.doubts, *_doubt_words(interpretation)], region)
@@ -85,21 +97,26 @@ def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, A
 
 def deliver(results: Results, record: Mapping[str, Any], folder: Path, progress: Progress, engine: Map) -> None:
     """Write everything beside the delivery folder, verify it, and move it in; run.json last."""
-    tags = provenance.make_tags(record)
     with stage(folder) as staging:
-        with _step(progress, "Writing rasters"):
-            files = [*write_rasters(results.stack, results.region, staging, tags)]
-        with _step(progress, "Writing layers.gpkg"):
-            files.append(write_geopackage(results, staging / "layers.gpkg", tags))
-        with _step(progress, "Writing metadata and styles"):
-            write_metadata(results, staging, record, files)
-            write_styles(results, staging)
-        with _step(progress, "Writing map.html"):
-            write_map_page(results, staging / "map.html")
-        with progress.step("Writing report.html", len(results.inverted)) as step:
-            write_report_page(results, staging / "report.html", record, map=watched(engine, step))
+        write_all(results, record, staging, progress, engine)
         with _step(progress, "Moving the delivery into place"):
-            publish(staging, folder, dict(record))
+            publish(staging, folder, record)
+
+
+def write_all(results: Results, record: Mapping[str, Any], staging: Path, progress: Progress, engine: Map) -> None:
+    """Every file of the delivery but run.json, into an empty folder."""
+    tags = provenance.make_tags(record)
+    with _step(progress, "Writing rasters"):
+        files = [*write_rasters(results.stack, results.region, staging, tags)]
+    with _step(progress, "Writing layers.gpkg"):
+        files.append(write_geopackage(results, staging / "layers.gpkg", tags))
+    with _step(progress, "Writing metadata and styles"):
+        write_metadata(results, staging, record, files)
+        write_styles(results, staging)
+    with _step(progress, "Writing map.html"):
+        write_map_page(results, staging / "map.html")
+    with progress.step("Writing report.html", len(results.inverted)) as step:
+        write_report_page(results, staging / "report.html", record, map=watched(engine, step))
 
 
 @contextmanager

@@ -3,8 +3,6 @@
 import hashlib
 import json
 import os
-import subprocess
-import sys
 from pathlib import Path
 
 import numpy as np
@@ -79,6 +77,7 @@ def test_failure_before_publishing_leaves_the_old_delivery(folder):
 
 def test_failure_of_a_move_is_undone(folder, monkeypatch):
     deliver(folder, {"a.txt": "old a", "b.txt": "old b", "c.txt": "old c"})
+    (folder / "notes.txt").write_text("mine", encoding="utf-8")
     before = contents(folder)
     replace = Path.replace
 
@@ -93,7 +92,7 @@ def test_failure_of_a_move_is_undone(folder, monkeypatch):
     monkeypatch.undo()
     assert contents(folder) == before
     deliver(folder, {"a.txt": "new a", "b.txt": "new b", "d.txt": "new d"})
-    assert set(contents(folder)) == {"a.txt", "b.txt", "d.txt", "run.json"}
+    assert set(contents(folder)) == {"a.txt", "b.txt", "d.txt", "notes.txt", "run.json"}
     assert not name_workplace(folder).exists()
 
 
@@ -155,6 +154,25 @@ def test_a_folder_without_permission_is_said_in_words(tmp_path):
         deliver(tmp_path / "delivery", {"map.html": "ours"})
 
 
+def test_a_folder_that_may_only_be_read_is_said_before_anything_is_written(folder, monkeypatch):
+    deliver(folder, {"map.html": "old"})
+    monkeypatch.setattr(os, "access", lambda *_: False)
+    with pytest.raises(DeliveryError, match="read-only"), stage(folder):
+        pytest.fail("nothing may be staged")
+    assert [path.name for path in folder.parent.iterdir()] == ["delivery"]
+
+
+def test_a_link_and_its_target_are_one_folder(folder):
+    deliver(folder, {"map.html": "old"})
+    link = folder.parent / "link"
+    link.symlink_to(folder, target_is_directory=True)
+    with stage(folder), pytest.raises(DeliveryError, match="another run"):
+        deliver(link, {"map.html": "second"})
+    deliver(link, {"map.html": "new"})
+    assert link.is_symlink()
+    assert contents(folder)["map.html"] == "new"
+
+
 def test_a_second_run_at_once_is_refused_and_does_no_harm(folder):
     with stage(folder) as staging:
         (staging / "map.html").write_text("first", encoding="utf-8")
@@ -164,32 +182,3 @@ def test_a_second_run_at_once_is_refused_and_does_no_harm(folder):
     assert contents(folder)["map.html"] == "first"
     deliver(folder, {"map.html": "third"})
     assert contents(folder)["map.html"] == "third"
-
-
-DIE_WHILE_PUBLISHING = """
-import os, sys
-from pathlib import Path
-from geoves.delivery.folder import publish, stage
-replace = Path.replace
-def die(self, target):
-    if Path(target).name == "b.txt" and self.parent.name == "staging":
-        os._exit(9)
-    return replace(self, target)
-Path.replace = die
-with stage(Path(sys.argv[1])) as staging:
-    for name in ("a.txt", "b.txt"):
-        (staging / name).write_text("new", encoding="utf-8")
-    publish(staging, Path(sys.argv[1]), {})
-"""
-
-
-def test_a_run_killed_while_publishing_is_mended_by_the_next(folder):
-    """No run.json stands over a half-moved delivery, and the next run knows its own files again."""
-    deliver(folder, {"a.txt": "old", "b.txt": "old"})
-    killed = subprocess.run([sys.executable, "-c", DIE_WHILE_PUBLISHING, str(folder)], check=False)
-    assert killed.returncode == 9
-    assert (folder / "a.txt").read_text(encoding="utf-8") == "new"
-    assert not (folder / "run.json").exists()
-    deliver(folder, {"a.txt": "newer"})
-    assert set(contents(folder)) == {"a.txt", "run.json"}
-    assert not name_workplace(folder).exists()
