@@ -9,8 +9,9 @@ from typing import Any
 from geoves.delivery.cautions import SHORT_CAUTION
 from geoves.delivery.markup import Markup, element, joined, place_name
 from geoves.delivery.report_answers import write_answers
-from geoves.delivery.report_places import StripJob, draw_strip, gather_strips, write_wells_and_template
+from geoves.delivery.report_places import StripJob, draw_strip, gather_strips
 from geoves.delivery.report_trust import write_decisions, write_doubts, write_making, write_trust
+from geoves.delivery.report_wells import write_wells_and_template
 from geoves.delivery.sections import draw_section, section_lines
 from geoves.delivery.svg import line, mark_path
 from geoves.delivery.unit_look import pattern_definitions, unit_key

@@ -1,13 +1,12 @@
-"""The report's strips, one for each sounding, and its chapter on wells and the template."""
+"""The report's strips, one for each sounding."""
 
-from collections import Counter
 from collections.abc import Iterator
 
 import attrs
 import numpy as np
 
 from geoves.delivery.layer_ranges import find_layer_ranges
-from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table, unit_label
+from geoves.delivery.markup import Markup, element, format_length, place_name, table, unit_label
 from geoves.delivery.sentences import (
     STATUS_WORDS,
     tell_doubt,
@@ -23,7 +22,7 @@ from geoves.domain.earth import Inverted
 from geoves.domain.region import METRES, LengthUnit
 from geoves.domain.results import Results
 from geoves.domain.survey import Sounding
-from geoves.domain.tops import UnitCalibration, UnitColumn
+from geoves.domain.tops import UnitColumn
 from geoves.domain.units import Template
 
 NEAR_WELL = 3000.0  # m: a log farther away would suggest a likeness that nothing supports
@@ -164,69 +163,3 @@ def _strip_notes(job: StripJob, inverted: Inverted, column: UnitColumn) -> Marku
     if not notes:
         return Markup("")
     return element("ul", {"class": "under"}, *(element("li", {}, note) for note in notes))
-
-
-def write_wells_and_template(results: Results) -> Markup:
-    """Chapter 4: what the drillers' words were taken to mean, and what each unit shows against the template."""
-    found = results.interpretation
-    names = {unit.code: unit.name for unit in results.region.template.units}
-    mapped = Counter((reading.description, reading.unit) for reading in found.well_readings)
-    confidence = {(one.description, one.unit): one.confidence for one in found.well_readings}
-    rows = [
-        (
-            words,
-            names.get(code, code) if code else "no unit claims these words",
-            count,
-            f"{confidence[words, code]:.2f}",
-        )
-        for (words, code), count in sorted(mapped.items(), key=lambda one: (one[0][1] or "", one[0][0]))
-    ]
-    parts = [table(("driller’s words", "taken as", "times", "confidence"), rows, "Words of the logs")]
-    if found.unmapped_words:
-        unmapped = joined((element("q", {}, words) for words in found.unmapped_words), ", ")
-        parts.insert(0, element("p", {}, "Words that no unit claims, and that decide nothing: ", unmapped, "."))
-    else:
-        parts.insert(0, element("p", {}, "Every word of the logs was claimed by a unit."))
-    remarks = [element("p", {}, remark) for remark in found.remarks]
-    return joined([*parts, *remarks, _template_table(results), _wells_table(results)])
-
-
-def _template_table(results: Results) -> Markup:
-    """Each unit's range as given, against what the soundings' layers of that unit show."""
-    models = {one.sounding: one.model for one in results.inverted}
-    shown: dict[str, list[float]] = {unit.code: [] for unit in results.region.template.units}
-    for column in results.interpretation.columns:
-        for code, rho, share in zip(
-            column.unit, models[column.sounding].resistivity, column.unit_probability, strict=True
-        ):
-            if share >= 0.5:
-                shown[code].append(float(rho))
-    calibrated = {one.unit: _calibration_words(one) for one in results.interpretation.calibration}
-    rows = []
-    for unit in results.region.template.units:
-        values = np.array(shown[unit.code])
-        spread = "–" if not values.size else f"{np.quantile(values, 0.05):.0f} to {np.quantile(values, 0.95):.0f}"
-        given = f"{unit.resistivity_p05:g} to {unit.resistivity_p95:g}"
-        rows.append((place_name(unit.name), given, calibrated.get(unit.code, "as given"), spread, values.size))
-    headings = ("unit", "template (Ω m, central 90 %)", "as used", "layers read as it (Ω m, central 90 %)", "layers")
-    return table(headings, rows, "The template and what the layers show")
-
-
-def _calibration_words(one: UnitCalibration) -> str:
-    """The range that was used, and how many soundings' worth of evidence moved it or was too little to."""
-    if not one.used:
-        return f"as given ({one.soundings:.0f} soundings are too few to move it)"
-    low, high = one.after
-    return f"{low:.0f} to {high:.0f} (moved by {one.soundings:.0f} soundings)"
-
-
-def _wells_table(results: Results) -> Markup:
-    unit, rock = results.region.length_unit, results.region.template.units[-1].code
-    rows = []
-    for well in results.survey.wells:
-        readings = [one for one in results.interpretation.well_readings if one.well == well.name]
-        top = min((one.top for one in readings if one.unit == rock), default=None)
-        total = format_length(well.total_depth, unit)
-        said = f"rock at {format_length(top, unit, 1)}" if top is not None else f"rock is deeper than {total}"
-        rows.append((place_name(well.name), total, said, len(well.intervals)))
-    return table(("well", "total depth", "what it says of rock", "intervals"), rows, "Control wells")

@@ -138,6 +138,32 @@ class WellReading:
 
 
 @attrs.frozen
+class WellWater:
+    """The water of the aquifer (a role) that a well ends in: specific conductance in µS/cm at 25 °C.
+
+    resistivity  of the water at the ground's temperature, ohm m; factor: over the survey's typical water, 1 where there
+                 are too few waters of that aquifer to have one
+    """
+
+    well: str
+    role: str
+    specific_conductance: float
+    resistivity: float
+    factor: float
+
+
+@attrs.frozen
+class WaterShift:
+    """The factor on an aquifer's range at a sounding, with the nearest well of that aquifer, `distance` m away."""
+
+    sounding: str
+    role: str
+    factor: float
+    well: str
+    distance: float
+
+
+@attrs.frozen
 class UnitCalibration:
     """What the survey's curves made of a unit's range in the template: ohm m, central 90 %, before and after.
 
@@ -163,3 +189,5 @@ class Interpretation:
     unmapped_words: tuple[str, ...] = ()
     calibration: tuple[UnitCalibration, ...] = ()
     remarks: tuple[str, ...] = ()
+    well_waters: tuple[WellWater, ...] = ()
+    water_shifts: tuple[WaterShift, ...] = ()

@@ -60,7 +60,8 @@ def interpret(
     picks = {pick.place: [p for p in survey.picks if p.place == pick.place] for pick in survey.picks}
     logged = [_interpret_well(well, picks.get(well.name, []), template, options) for well in survey.wells]
     presence = _presence_at_wells(logged, template, options)
-    around, remarks = find_surroundings(survey, [reading.well_readings for reading in logged], template, options)
+    known = find_surroundings(survey, [reading.well_readings for reading in logged], template, options)
+    around = known.around
     readings: list[PlaceReading] = []
     calibration: tuple[UnitCalibration, ...] = ()
     if pairs:
@@ -99,7 +100,9 @@ def interpret(
         shallow_resistivities=tuple(chain.from_iterable(r.shallow_resistivities for r in readings)),
         calibration=calibration,
         unmapped_words=tuple(sorted({word.description for word in words if word.unit is None})),
-        remarks=remarks,
+        remarks=known.remarks,
+        well_waters=known.waters,
+        water_shifts=known.shifts,
     )
 
 
@@ -126,10 +129,11 @@ def _sample_block(
     options: InterpretationOptions,
     wavenumber: FloatArray,
 ) -> list[FloatArray]:
-    """Log resistivities (m, u) of the columns drawn for each sounding, for the calibration."""
+    """Log resistivities (m, u) of the columns drawn for each sounding, for the calibration: as under typical water."""
     local = [around[sounding.name].localise(template) for sounding, _ in pairs]
     weighed = _weigh_block(pairs, local, presence, options, wavenumber)
-    return [draws.log_resistivity for draws, _ in weighed]
+    shifts = [one.log_resistivity_means - template.log_resistivity_means for one in local]
+    return [draws.log_resistivity - shift for shift, (draws, _) in zip(shifts, weighed, strict=True)]
 
 
 def _weigh_block(

@@ -32,6 +32,8 @@ class InterpretationOptions:
     well_contact_error          least error (m) of a contact in a driller's log
     well_relative_error         and its growth with depth
     water_level_reach           how far (m) a well's water level is carried to soundings; 0 to leave it out
+    ground_temperature          of the water in the ground, °C
+    conductance_range           over so many m what a well's water says of the ground around it falls by e; 0 for none
     least_match                 how alike (0 to 100) a driller's word and a term must be
     """
 
@@ -47,6 +49,8 @@ class InterpretationOptions:
     well_contact_error: float = attrs.field(default=0.3, validator=attrs.validators.gt(0))
     well_relative_error: float = attrs.field(default=0.01, validator=attrs.validators.ge(0))
     water_level_reach: float = attrs.field(default=2000.0, validator=attrs.validators.ge(0))
+    ground_temperature: float = attrs.field(default=10.0, validator=[attrs.validators.ge(0), attrs.validators.le(60)])
+    conductance_range: float = attrs.field(default=2000.0, validator=attrs.validators.ge(0))
     least_match: float = attrs.field(default=80.0, validator=[attrs.validators.gt(0), attrs.validators.le(100)])
     block: int = attrs.field(default=16, validator=attrs.validators.ge(1))
     random_seed: int = 0

@@ -1,0 +1,35 @@
+"""Chapter 4 of the report: what the wells did, in numbers that can be worked out again."""
+
+import re
+
+import attrs
+import numpy as np
+
+from geoves.delivery.report_wells import write_wells_and_template
+from geoves.delivery.sentences import tell_water_level
+from geoves.domain.tops import WaterShift, WellWater
+
+
+def chapter(results, **more):
+    """The chapter's text and the cells of its tables' rows, of results with more in their interpretation."""
+    found = attrs.evolve(results.interpretation, **more)
+    html = str(write_wells_and_template(attrs.evolve(results, interpretation=found)))
+    rows = [re.findall(r"<td[^>]*>(.*?)</td>", row, re.DOTALL) for row in re.findall(r"<tr>.*?</tr>", html, re.DOTALL)]
+    return html, [[re.sub(r"<[^>]+>", "", cell) for cell in row] for row in rows if row]
+
+
+def test_waters_and_shifts_stand_with_their_numbers(small_results):
+    """Typical water of 10 ohm m under a template of sqrt(38 x 55) = 45.7 ohm m: a formation factor of 4.6 (Archie)."""
+    waters = (WellWater("W-1", "deep_aquifer", 2000.0, 6.0, 0.6),)
+    shifts = (WaterShift("Larch 2", "deep_aquifer", 0.63, "W-1", 420.0),)
+    html, rows = chapter(small_results, well_waters=waters, water_shifts=shifts, remarks=("Said & done.",))
+    assert ["W-1", "Basal gravel", "2,000", "6.0", "4.6", "0.60"] in rows
+    assert ["Larch 2", "Basal gravel", "× 0.63", "W-1", "420 m"] in rows
+    assert "Said &amp; done." in html
+    assert "Waters of the aquifers" not in chapter(small_results)[0]
+
+
+def test_the_water_level_is_told_with_its_doubt_in_the_regions_unit(small_results):
+    column = attrs.evolve(small_results.interpretation.columns[0], water_level=np.array([3.048, 0.9144]))
+    assert "10.0 ± 3.0 ft here" in tell_water_level(column, "ft")
+    assert tell_water_level(small_results.interpretation.columns[0], "ft") == ""
