@@ -122,6 +122,8 @@ def response(weights: Floats, wavenumber: Floats, thickness: Floats, resistivity
         echo = (transform - rho) / (transform + rho) * np.exp(-2.0 * wavenumber * thickness[:, i, None])
         excess = 2.0 * rho * echo / (1.0 - echo)
         transform = rho + excess
+    if len(weights) == 1:  # one layout for all: a plain product of matrices
+        return np.asarray(resistivity[:, :1] + excess @ weights[0].T)
     return np.asarray(resistivity[:, :1] + np.matmul(weights, excess[..., None])[..., 0])
 
 
