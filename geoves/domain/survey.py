@@ -1,5 +1,6 @@
 """What came home from the field: soundings with their curves, wells with their logs, permits, picks."""
 
+import math
 from collections.abc import Mapping
 from typing import Any, Literal
 
@@ -12,6 +13,8 @@ from geoves.domain.grids import Grid
 
 # Used readings that a sounding needs.
 FEWEST_READINGS = 5
+# Neighbouring used AB/2 of a sounding that are farther apart than this factor leave it without a middle.
+WIDEST_GAP = 5.0
 
 Array = Literal["schlumberger", "wenner"]
 PickStatus = Literal["at", "below", "absent"]
@@ -23,6 +26,19 @@ def _extra() -> Any:
 
 
 @attrs.frozen
+class Measured:
+    """What a field sheet says of one reading, before anything is computed from it; NaN where the cell is empty.
+
+    apparent_resistivity ohm m, resistance_ohm, voltage_mv, current_ma; its spacings stand in the curve.
+    """
+
+    apparent_resistivity: float = attrs.field(default=math.nan, eq=str)  # so that NaN is NaN
+    resistance_ohm: float = attrs.field(default=math.nan, eq=str)
+    voltage_mv: float = attrs.field(default=math.nan, eq=str)
+    current_ma: float = attrs.field(default=math.nan, eq=str)
+
+
+@attrs.frozen
 class Curve:
     """One sounding's readings, in the order of `segment` and then of `half_spacing`.
 
@@ -30,7 +46,8 @@ class Curve:
     relative_error one standard deviation as a fraction (n,), NaN until one is assigned,
     segment int (n,): 0 for the first MN, 1 after its first change, and so on; used bool (n,): False where the
     reading is kept and drawn but not fitted; reason str (n,): why it is not used, empty where it is;
-    row int (n,): its row in the table of readings; extra (n,): its note and its columns beyond the contract's.
+    row int (n,): its row in the table of readings; extra (n,): its note and its columns beyond the contract's;
+    measured (n,): what was typed, for those who would recompute it.
     """
 
     half_spacing: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
@@ -42,11 +59,24 @@ class Curve:
     reason: tuple[str, ...] = ()
     row: IntArray = attrs.field(default=(), converter=integers, eq=by_value, repr=shape)
     extra: tuple[Mapping[str, Any], ...] = ()
+    measured: tuple[Measured, ...] = ()
 
     @property
     def is_enough(self) -> bool:
-        """Whether the used readings are enough to say anything."""
-        return int(np.sum(self.used)) >= FEWEST_READINGS
+        """Whether the used readings are enough to say anything: their number, and no gap in their middle."""
+        if int(np.sum(self.used)) < FEWEST_READINGS:
+            return False
+        low, high = self.widest_gap
+        return high <= WIDEST_GAP * low
+
+    @property
+    def widest_gap(self) -> tuple[float, float]:
+        """The two neighbouring used AB/2, m, that are farthest apart in ratio."""
+        spacing = np.unique(self.half_spacing[self.used])
+        if spacing.size < 2:
+            return (float(spacing[0]),) * 2 if spacing.size else (1.0, 1.0)
+        at = int(np.argmax(spacing[1:] / spacing[:-1]))
+        return float(spacing[at]), float(spacing[at + 1])
 
     def readings(self, noise: float) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray, IntArray]:
         """The used readings as arrays: spacings, apparent resistivity, error (`noise` where none is typed), segment.

@@ -2,6 +2,9 @@
 
 from pathlib import Path
 
+import attrs
+
+from geoves.domain.findings import Finding
 from geoves.domain.grids import Grid
 from geoves.domain.region import Region
 from geoves.domain.survey import Survey
@@ -23,6 +26,25 @@ def read_region(path: Path) -> Region:
     if file.region is None:
         raise AssertionError("a region without faults was not built")
     return file.region
+
+
+@attrs.frozen
+class InputsSeen:
+    """All that the inputs gave, faults or not: in pieces where there are faults, None where nothing could be read."""
+
+    region: Region | None
+    survey: Survey | None
+    grid: Grid | None
+    findings: tuple[Finding, ...]
+
+
+def look_at_inputs(path: Path) -> InputsSeen:
+    """Region and survey as far as they can be read, with every fault and doubt; nothing is raised."""
+    file = parse_region(path)
+    if file.region is None:
+        return InputsSeen(None, None, None, file.findings)
+    files = collect_survey(file.region)
+    return InputsSeen(file.region, files.survey, files.grid, (*file.findings, *files.findings))
 
 
 def read_survey(region: Region) -> tuple[Survey, Grid]:

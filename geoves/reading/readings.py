@@ -7,7 +7,7 @@ from itertools import groupby
 import attrs
 import numpy as np
 
-from geoves.domain.survey import Array, Curve
+from geoves.domain.survey import Array, Curve, Measured
 from geoves.reading.tables import Columns, Range, Row, Table, extras
 
 READING_COLUMNS = Columns(
@@ -22,11 +22,10 @@ _SPACING = Range("a spacing above 0; correct it, or set use to 0", 0.0, 1e6, abo
 _RESISTIVITY = Range("a resistivity in ohm m, above 0; correct it, or set use to 0", 0.0, 1e12, above=True)
 _RESISTANCE = Range("a resistance in ohm, above 0; correct it, or set use to 0", 0.0, above=True)
 _VOLTAGE = Range("a voltage in mV, above 0; correct it, or set use to 0", 0.0, above=True)
+_ANY = Range("a number")
 _CURRENT = Range("a current in mA, above 0; correct it, or set use to 0", 0.0, above=True)
 _ERROR = Range("one standard deviation in percent, 0 or more", 0.0)
 _USE = {"": True, "1": True, "yes": True, "true": True, "0": False, "no": False, "false": False}
-# Typed and recomputed apparent resistivities that differ by more than this fraction are doubted.
-_DISAGREEMENT = 0.05
 # AB/2 is 3 MN/2 in a Wenner array; rounding on the field sheet is let through.
 _WENNER_ROUNDING = 0.02
 
@@ -45,6 +44,7 @@ class Reading:
     relative_error: float
     reason: str | None
     extra: Mapping[str, str]
+    measured: Measured
 
 
 def geometric_factor(half_spacing: float, potential_half_spacing: float) -> float:
@@ -101,7 +101,17 @@ def _read_row(row: Row, metres: float, array: Array) -> Reading | None:
         return None
     reason = None if used else row.text("note") or "use is 0"
     extra = extras(row, READING_COLUMNS) | ({"note": row.text("note")} if row.text("note") else {})
-    return Reading(row.number, half, potential, resistivity, error / 100.0 if error else math.nan, reason, extra)
+    measured = _read_measured(row)
+    return Reading(
+        row.number, half, potential, resistivity, error / 100.0 if error else math.nan, reason, extra, measured
+    )
+
+
+def _read_measured(row: Row) -> Measured:
+    """The cells as typed; those that hold no number were complained of already."""
+    heard = row.without_complaints()
+    typed = {name: heard.number_in(name, _ANY) for name in attrs.fields_dict(Measured)}
+    return Measured(**{name: math.nan if value is None else value for name, value in typed.items()})
 
 
 def _read_spacings(row: Row, metres: float, array: Array) -> tuple[float, float]:
@@ -127,8 +137,8 @@ def _read_resistivity(row: Row, factor: float) -> float:
     """Apparent resistivity in ohm m, as typed or from what was measured; NaN, with a fault, where none of it stands.
 
     `factor` is the geometric factor in m, NaN where the spacings are faulty.
-    What was typed comes before what the resistance gives, and that before voltage over current; a doubt where they
-    disagree.
+    What was typed comes before what the resistance gives, and that before voltage over current; where they disagree
+    the checks of the curves say so.
     """
     found = {}
     if row.text("apparent_resistivity"):
@@ -142,9 +152,6 @@ def _read_resistivity(row: Row, factor: float) -> float:
         column = next((name for name in ("apparent_resistivity", "resistance_ohm") if name in row.cells), "voltage_mv")
         return row.required_number(column, _RESISTIVITY)
     column, taken = next(iter(found.items()))
-    for other, value in found.items():
-        if abs(taken - value) > _DISAGREEMENT * value:
-            row.doubt(column, f"the spacings and {other} give {value:.4g} ohm m, not {taken:.4g}, which is taken")
     if not (math.isnan(taken) or _RESISTIVITY.holds(taken)):
         row.complain(column, f"with these spacings it gives {taken:.4g} ohm m; expected {_RESISTIVITY.words}")
     return taken
@@ -168,4 +175,5 @@ def _build_curve(readings: Sequence[Reading], array: Array) -> Curve:
         reason=tuple(reading.reason or "" for _, reading in ordered),
         row=np.array([reading.row for _, reading in ordered], dtype=int),
         extra=tuple(reading.extra for _, reading in ordered),
+        measured=tuple(reading.measured for _, reading in ordered),
     )

@@ -37,9 +37,10 @@ def test_check_of_clean_inputs_exits_0_and_writes_the_doubts(county):
     assert (done.returncode, done.stderr) == (0, "")
     assert "No faults" in done.stdout
     rows = findings_in(county)
-    assert list(rows[0]) == ["severity", "file", "row", "column", "value", "expected", "place"]
+    told = ["severity", "file", "row", "column", "value", "expected", "place", "check", "why", "what_to_do"]
+    assert list(rows[0]) == told
     assert {row["severity"] for row in rows} == {"doubt"}
-    assert [path.name for path in (county / "check").iterdir()] == ["check.csv"]
+    assert sorted(path.name for path in (county / "check").iterdir()) == ["check.csv", "check.html"]
 
 
 def test_check_with_quiet_says_nothing(county):
@@ -69,7 +70,7 @@ def test_check_keeps_what_else_stands_in_its_folder(county):
     (county / "check").mkdir()
     (county / "check" / "mine.txt").write_text("mine", encoding="utf-8")
     assert geoves("check", county / "region.toml").returncode == 0
-    assert {path.name for path in (county / "check").iterdir()} == {"check.csv", "mine.txt"}
+    assert {path.name for path in (county / "check").iterdir()} == {"check.csv", "check.html", "mine.txt"}
 
 
 def test_check_that_cannot_be_written_exits_1(county):

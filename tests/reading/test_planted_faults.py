@@ -3,6 +3,7 @@
 import attrs
 import pytest
 
+from geoves.domain.survey import Measured
 from geoves.reading import FaultyInputError, read_region
 
 
@@ -265,16 +266,18 @@ def test_swapped_coordinates_are_doubted(folder):
     assert [(doubt.file, doubt.row, doubt.column) for doubt in folder.doubts()] == [("soundings.csv", 3, "x")]
 
 
-def test_recomputed_resistivity_that_disagrees_is_doubted(folder):
-    # K = 155.5088 m at 10 and 1 m (from the definition of the array): 0.0012 mV and 1 mA give 0.1866 ohm m.
+def test_what_was_typed_is_kept_for_those_who_recompute_it(folder):
     text = (
         "sounding,ab2,mn2,apparent_resistivity,voltage_mv,current_ma\n"
         "S1,10,1,186.6,0.0012,1\nS1,20,1,62.66,100,1000\nS2,15,5,60,,\n"
     )
     folder.write("readings.csv", text)
-    (doubt,) = folder.doubts()
-    assert (doubt.row, doubt.column, doubt.value) == (2, "apparent_resistivity", "186.6")
-    assert "voltage_mv give 0.1866 ohm m" in doubt.expected
+    first, second = folder.survey().soundings
+    assert [(one.apparent_resistivity, one.voltage_mv, one.current_ma) for one in first.curve.measured] == [
+        (186.6, 0.0012, 1.0),
+        (62.66, 100.0, 1000.0),
+    ]
+    assert second.curve.measured == (Measured(apparent_resistivity=60.0),)
 
 
 def test_a_pick_at_a_name_of_two_places_is_a_fault(folder):

@@ -1,0 +1,233 @@
+"""Curves against what layered ground can show: single readings, neighbours, slopes, and the changes of MN."""
+
+import math
+from collections.abc import Iterator
+
+import attrs
+import numpy as np
+
+from geoves.checking.curve_findings import doubt_curve, doubt_reading
+from geoves.checking.layered_ground import LayeredGround, Prediction, covariance_of, predict_each
+from geoves.checking.slips import explain_jump
+from geoves.domain.arrays import FloatArray
+from geoves.domain.findings import ExaminedCurve, Finding, Overlap
+from geoves.domain.survey import FEWEST_READINGS, Sounding
+
+# A reading is doubted from so many standard deviations off what all others let expect: one in 16 000 by chance.
+JUMP_LIMIT = 4.0
+# Two neighbours together: chi-square of two degrees of freedom of the same rarity, and each this far off by itself.
+CUSP_CHI_SQUARE, CUSP_LEAST = 22.0, 2.0
+# Root mean square of the readings' scores from which on a curve as a whole is rougher than layered ground and noise.
+ROUGH_LIMIT, FEWEST_FOR_ROUGH = 2.2, 8
+# Slopes: standard deviations of the noise beyond the steepest rise or fall that is told.
+SLOPE_LIMIT = 4.0
+# How many readings on a slope is looked for.
+LONGEST_SLOPE = 4
+# The steepest fall on log-log axes of 120 000 drawn columns (see steepest_fall).
+FALL_AT_TOP, FALL_PER_DROP = 1.5, 1.45
+
+
+@attrs.frozen
+class JudgedCurve:
+    """The used readings of a sounding, as arrays (n,), and what was made of them.
+
+    reading   their place in the curve    segment  counted from 0 without gaps
+    silent    True for readings that were set aside: off by too much to speak of the others
+    """
+
+    sounding: Sounding
+    reading: np.ndarray
+    half_spacing: FloatArray
+    potential_half_spacing: FloatArray
+    log_apparent: FloatArray
+    error: FloatArray
+    segment: np.ndarray
+    silent: np.ndarray
+    prediction: Prediction
+
+
+def judge_curve(sounding: Sounding, ground: LayeredGround, noise: float) -> JudgedCurve | None:
+    """Each used reading held against all others, the worst set aside one by one; None where there are too few.
+
+    noise : relative error of readings that have none typed
+    """
+    curve = sounding.curve
+    if int(np.sum(curve.used)) < FEWEST_READINGS:
+        return None
+    a, b, apparent, error, segment = curve.readings(noise)
+    error = np.maximum(error, 0.25 * noise)
+    log_apparent = np.log(apparent)
+    prior = covariance_of(ground, ground.find(a, b))
+    silent = np.zeros(a.size, dtype=bool)
+    while True:
+        prediction = predict_each(log_apparent, error, segment, prior, silent)
+        score = np.where(silent, 0.0, np.abs(prediction.score))
+        worst = int(np.argmax(score))
+        if score[worst] < JUMP_LIMIT or silent.sum() >= a.size // 3:
+            break
+        silent[worst] = True
+    silent &= np.abs(prediction.score) >= JUMP_LIMIT
+    reading = np.flatnonzero(curve.used)
+    return JudgedCurve(sounding, reading, a, b, log_apparent, error, segment, silent, prediction)
+
+
+def check_shape(judged: JudgedCurve, ground: LayeredGround) -> list[Finding]:
+    """Doubts about single readings, pairs of them, slopes, and the curve as a whole."""
+    jumps = list(_tell_jumps(judged, ground))
+    cusps = list(_tell_cusps(judged))
+    slopes = list(_tell_slopes(judged))
+    rough = [] if jumps or cusps else list(_tell_rough(judged))
+    return [*jumps, *cusps, *slopes, *rough]
+
+
+def _tell_jumps(judged: JudgedCurve, ground: LayeredGround) -> Iterator[Finding]:
+    expected = np.exp(judged.log_apparent - judged.prediction.residual)
+    for i in np.flatnonzero(judged.silent):
+        off, sure = float(judged.prediction.residual[i]), float(judged.prediction.deviation[i])
+        slip = explain_jump(
+            judged.half_spacing, judged.potential_half_spacing, judged.log_apparent, judged.prediction, int(i), ground
+        )
+        words = (
+            f"{math.expm1(off):+.0%} off the {expected[i]:.4g} ohm m that the other readings let expect over flat "
+            f"layers (known to {math.expm1(sure):.0%}); {slip}"
+        )
+        yield doubt_reading("jump", judged.sounding, int(judged.reading[i]), words)
+
+
+def _neighbours(judged: JudgedCurve) -> tuple[np.ndarray, np.ndarray]:
+    """Indices of readings one after the other in a segment, (p,) and (p,)."""
+    pairs = []
+    for segment in np.unique(judged.segment):
+        rows = np.flatnonzero((judged.segment == segment) & ~judged.silent)
+        rows = rows[np.argsort(judged.half_spacing[rows], kind="stable")]
+        pairs.append((rows[:-1], rows[1:]))
+    return np.concatenate([one for one, _ in pairs]), np.concatenate([other for _, other in pairs])
+
+
+def _tell_cusps(judged: JudgedCurve) -> Iterator[Finding]:
+    """Two neighbours that are off together: a bend sharper than the ground below can make."""
+    first, second = _neighbours(judged)
+    off, other_off, score = judged.prediction.pairs(first, second)
+    least = np.minimum(np.abs(off) / judged.error[first], np.abs(other_off) / judged.error[second])
+    told: set[int] = set()
+    for k in np.flatnonzero((score > CUSP_CHI_SQUARE) & (off * other_off > 0) & (least > CUSP_LEAST)):
+        i, j = int(first[k]), int(second[k])
+        if told & {i, j}:
+            continue
+        told |= {i, j}
+        words = (
+            f"the readings at AB/2 {judged.half_spacing[i]:g} and {judged.half_spacing[j]:g} m lie "
+            f"{math.expm1(off[k]):+.0%} and {math.expm1(other_off[k]):+.0%} off what all others let expect: a cusp "
+            "sharper than flat layers can make"
+        )
+        for one in (i, j):
+            yield doubt_reading("cusp", judged.sounding, int(judged.reading[one]), words)
+
+
+def _tell_rough(judged: JudgedCurve) -> Iterator[Finding]:
+    score = judged.prediction.score[~judged.silent]
+    rms = float(np.sqrt(np.mean(score**2)))
+    if score.size >= FEWEST_FOR_ROUGH and rms > ROUGH_LIMIT:
+        noise = float(np.median(judged.error))
+        words = (
+            f"the readings scatter {rms:.1f} times as much about flat layers as errors of {noise:.0%} allow; "
+            f"expected {ROUGH_LIMIT} times at most"
+        )
+        yield doubt_curve("rough_curve", judged.sounding, words)
+
+
+def steepest_rise(half_spacing: FloatArray, potential_half_spacing: FloatArray) -> FloatArray:
+    """Natural log of the curve that rises fastest: over an insulator, where the ideal reading goes with AB/2.
+
+    With MN/2 = b at AB/2 = a it is (a² - b²) / (2 b) ln((a + b) / (a - b)), the mean of the ideal curve over the
+    potential spread. The ideal curve of flat layers never rises more than in proportion to AB/2; then no reading at
+    one MN rises more than this either: the spread is a window of one density in 1/r, moved outward.
+    """
+    a, b = half_spacing, potential_half_spacing
+    return np.asarray(np.log((a * a - b * b) / (2.0 * b) * np.log((a + b) / (a - b))))
+
+
+def steepest_fall(drop: float) -> float:
+    """The steepest fall (d ln rho_a / d ln AB/2, negative) that a curve can have once it has come down by `drop`.
+
+    drop : natural log of the highest reading before over this one. There is no closed bound, as the fall over a perfect
+    conductor grows without end; but it grows with how far the curve has come down. The line bounds the slopes of
+    120 000 drawn columns of six layers with contrasts of up to e^9 (tests/checking/test_slopes.py draws them again).
+    """
+    return -(FALL_AT_TOP + FALL_PER_DROP * drop)
+
+
+def _tell_slopes(judged: JudgedCurve) -> Iterator[Finding]:
+    """The worst rise and the worst fall of each segment that flat layers cannot make, beyond noise."""
+    for segment in np.unique(judged.segment):
+        rows = np.flatnonzero((judged.segment == segment) & ~judged.silent)
+        rows = rows[np.argsort(judged.half_spacing[rows], kind="stable")]
+        a, y, error = judged.half_spacing[rows], judged.log_apparent[rows], judged.error[rows]
+        limit = steepest_rise(a, judged.potential_half_spacing[rows])
+        steep: list[tuple[float, str, int, int]] = []
+        for i in range(rows.size):
+            for j in range(i + 1, min(i + LONGEST_SLOPE, rows.size)):
+                if a[j] <= a[i]:
+                    continue
+                noise = float(np.hypot(error[i], error[j]))
+                rise = float(y[j] - y[i] - (limit[j] - limit[i]))
+                steep.append((rise / noise, "steep_rise", i, j))
+                high = float(y[: i + 1].max())
+                fall = (y[j] - y[i]) - steepest_fall(max(high - float(y[j]), 0.0)) * math.log(a[j] / a[i])
+                steep.append((-float(fall) / noise, "steep_fall", i, j))
+        for kind in ("steep_rise", "steep_fall"):
+            worst = max((one for one in steep if one[1] == kind), default=(0.0, kind, 0, 0))
+            if worst[0] > SLOPE_LIMIT:
+                yield _tell_slope(judged, kind, int(rows[worst[2]]), int(rows[worst[3]]))
+
+
+def _tell_slope(judged: JudgedCurve, kind: str, first: int, last: int) -> Finding:
+    a, y = judged.half_spacing, judged.log_apparent
+    slope = float((y[last] - y[first]) / np.log(a[last] / a[first]))
+    if kind == "steep_rise":
+        limit = steepest_rise(a[[first, last]], judged.potential_half_spacing[[first, last]])
+        allowed = float(np.diff(limit)[0] / np.log(a[last] / a[first]))
+        words = (
+            f"rises {slope:.2f} decades a decade of AB/2 from {a[first]:g} to {a[last]:g} m; flat layers allow "
+            f"{allowed:.2f} at most with this MN, 1 with a small one"
+        )
+    else:
+        words = (
+            f"falls {-slope:.2f} decades a decade of AB/2 from {a[first]:g} to {a[last]:g} m; no flat layers fall so "
+            "fast where a curve has come down no farther"
+        )
+    return doubt_reading(kind, judged.sounding, int(judged.reading[last]), words)
+
+
+def find_overlaps(judged: JudgedCurve) -> tuple[Overlap, ...]:
+    """Each change of MN: the spacings read with both, the ratio of new to old, and the layered ground's part in it."""
+    overlaps = []
+    for new in range(1, int(judged.segment.max()) + 1):
+        old_rows, new_rows = (np.flatnonzero(judged.segment == k) for k in (new - 1, new))
+        shared = [
+            (i, j)
+            for i in old_rows
+            for j in new_rows
+            if math.isclose(judged.half_spacing[i], judged.half_spacing[j], rel_tol=0.02)
+        ]
+        i, j = (np.array([pair[k] for pair in shared], dtype=int) for k in (0, 1))
+        layered = judged.prediction.layered
+        potential = judged.potential_half_spacing
+        overlaps.append(
+            Overlap(
+                (float(potential[old_rows[0]]), float(potential[new_rows[0]])),
+                judged.half_spacing[i],
+                np.exp(judged.log_apparent[j] - judged.log_apparent[i]),
+                np.exp(layered[j] - layered[i]),
+            )
+        )
+    return tuple(overlaps)
+
+
+def examined(judged: JudgedCurve) -> ExaminedCurve:
+    """What the page draws of a judged curve."""
+    n = judged.sounding.curve.half_spacing.size
+    expected, deviation = np.full(n, np.nan), np.full(n, np.nan)
+    expected[judged.reading] = np.exp(judged.log_apparent - judged.prediction.residual)
+    deviation[judged.reading] = judged.prediction.deviation
+    return ExaminedCurve(judged.sounding.name, expected, deviation, find_overlaps(judged))
