@@ -17,6 +17,7 @@ from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted, LayeredModel, ModelEnsemble
 from geoves.domain.survey import Sounding, Survey
 from geoves.kernels import damped_steps, ensembles, layered_earth
+from geoves.kernels.blocks import cut_blocks, restore_order
 from geoves.kernels.damped_steps import Curves, Fit, Prior, Readings
 from geoves.kernels.smooth_model import fit_smooth, smooth_thickness
 
@@ -63,6 +64,9 @@ FELT_CHI_SQUARE = 4.0
 # The survey's noise is not believed outside of these factors of the default.
 LEAST_NOISE_FACTOR, MOST_NOISE_FACTOR = 0.5, 4.0
 DEFAULT_STRENGTH = 20.0
+# Its natural log is rounded to this: finer than some hundred readings know it, and coarse enough that one sounding more
+# seldom changes what all others were inverted with.
+NOISE_STEP = 0.05
 
 
 def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map = map) -> tuple[Inverted, ...]:  # noqa: A002 - the seam is named for what it replaces
@@ -72,18 +76,20 @@ def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map 
     second inverts with it.
     """
     options = options or InversionOptions()
-    fitting = [s for s in survey.soundings if s.curve.is_enough]
+    fitting = [s.measured for s in survey.soundings if s.curve.is_enough]
     if not fitting:
         return ()
     wavenumber = layered_earth.shared_wavenumbers(
         (s.curve.half_spacing, s.curve.potential_half_spacing) for s in fitting
     )
-    blocks = [fitting[i : i + options.block] for i in range(0, len(fitting), options.block)]
+    rows = cut_blocks([s.name for s in fitting], options.block)
+    blocks = [[fitting[row] for row in block] for block in rows]
     first = partial(_pooled_residuals, options=options, wavenumber=wavenumber)
     untyped = [block for block in blocks if any(np.isnan(s.curve.relative_error[s.curve.used]).any() for s in block)]
     noise = _survey_noise(np.concatenate([np.empty(0), *map(first, untyped)]), options)
     second = partial(invert_block, options=options, wavenumber=wavenumber, noise=noise)
-    return tuple(chain.from_iterable(map(second, blocks)))
+    results = list(chain.from_iterable(map(second, blocks)))
+    return tuple(results[place] for place in restore_order(rows))
 
 
 def invert_block(
@@ -146,12 +152,14 @@ def _survey_noise(residual: FloatArray, options: InversionOptions) -> float:
     """Relative error of a reading: the normal-consistent median absolute residual, which outliers do not move.
 
     The default speaks like DEFAULT_STRENGTH readings more, so that a few residuals cannot make a curve too sure.
+    Rounded to steps of NOISE_STEP in its log.
     """
     if not residual.size:
         return options.default_error
     spread = float(np.median(np.abs(residual))) / 0.6745
     n = residual.size
     spread = np.sqrt((n * spread**2 + DEFAULT_STRENGTH * options.default_error**2) / (n + DEFAULT_STRENGTH))
+    spread = np.exp(NOISE_STEP * np.round(np.log(spread) / NOISE_STEP))
     return float(np.clip(spread, LEAST_NOISE_FACTOR * options.default_error, MOST_NOISE_FACTOR * options.default_error))
 
 

@@ -110,6 +110,15 @@ class Sounding:
     note: str = ""
     extra: Mapping[str, Any] = _extra()
 
+    @property
+    def measured(self) -> "Sounding":
+        """The same sounding without what people wrote beside it and where its rows stand in the table.
+
+        What is computed from it stays the same when a note is corrected, or rows are put in above its own.
+        """
+        curve = attrs.evolve(self.curve, reason=(), row=(), extra=())
+        return attrs.evolve(self, curve=curve, date="", note="", extra={})
+
 
 @attrs.frozen
 class LogInterval:

@@ -1,9 +1,9 @@
 """The step itself: all places of a survey, block by block."""
 
-from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from functools import partial
 from itertools import chain
-from typing import Any
+from typing import Any, NamedTuple
 
 import attrs
 import numpy as np
@@ -26,9 +26,19 @@ from geoves.interpretation.calibration import calibrate_template
 from geoves.interpretation.options import InterpretationOptions
 from geoves.interpretation.surroundings import Surroundings, find_surroundings
 from geoves.kernels import damped_steps, layered_earth
+from geoves.kernels.blocks import cut_blocks, restore_order
 from geoves.kernels.damped_steps import Readings
 
 Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
+
+
+class Place(NamedTuple):
+    """One sounding with all that its reading rests on beside the template: a block of them is whole in itself."""
+
+    sounding: Sounding
+    inverted: Inverted
+    around: Surroundings
+    picks: tuple[Pick, ...]
 
 
 @attrs.frozen
@@ -56,40 +66,43 @@ def interpret(
     """
     options = options or InterpretationOptions()
     by_name = {sounding.name: sounding for sounding in survey.soundings}
-    pairs = [(by_name[one.sounding], one) for one in inverted]
     picks = {pick.place: [p for p in survey.picks if p.place == pick.place] for pick in survey.picks}
     logged = [_interpret_well(well, picks.get(well.name, []), template, options) for well in survey.wells]
     presence = _presence_at_wells(logged, template, options)
     known = find_surroundings(survey, [reading.well_readings for reading in logged], template, options)
-    around = known.around
     readings: list[PlaceReading] = []
     calibration: tuple[UnitCalibration, ...] = ()
-    if pairs:
+    places = [
+        Place(by_name[one.sounding].measured, one, known.around[one.sounding], tuple(picks.get(one.sounding, ())))
+        for one in inverted
+    ]
+    if places:
         wavenumber = layered_earth.shared_wavenumbers(
-            (s.curve.half_spacing, s.curve.potential_half_spacing) for s, _ in pairs
+            (place.sounding.curve.half_spacing, place.sounding.curve.potential_half_spacing) for place in places
         )
-        blocks = [pairs[i : i + options.block] for i in range(0, len(pairs), options.block)]
+        rows = cut_blocks([one.sounding for one in inverted], options.block)
+        order = restore_order(rows)
+        blocks = [[places[row] for row in block] for block in rows]
         if options.calibrate:
             sample = partial(
                 _sample_block,
-                around=around,
                 template=template,
                 presence=presence,
                 options=options,
                 wavenumber=wavenumber,
             )
             drawn = list(chain.from_iterable(map(sample, blocks)))
+            drawn = [drawn[place] for place in order]
             template, calibration = calibrate_template(template, drawn, options.fewest_to_calibrate)
         work = partial(
             _interpret_block,
-            picks=picks,
-            around=around,
             template=template,
             presence=presence,
             options=options,
             wavenumber=wavenumber,
         )
-        readings += chain.from_iterable(map(work, blocks))
+        read = list(chain.from_iterable(map(work, blocks)))
+        readings += [read[place] for place in order]
     readings += logged
     words = tuple(chain.from_iterable(reading.well_readings for reading in readings))
     return Interpretation(
@@ -121,23 +134,22 @@ def _presence_at_wells(
 
 
 def _sample_block(
-    pairs: Sequence[tuple[Sounding, Inverted]],
+    places: Sequence[Place],
     *,
-    around: Mapping[str, Surroundings],
     template: Template,
     presence: FloatArray,
     options: InterpretationOptions,
     wavenumber: FloatArray,
 ) -> list[FloatArray]:
     """Log resistivities (m, u) of the columns drawn for each sounding, for the calibration: as under typical water."""
-    local = [around[sounding.name].localise(template) for sounding, _ in pairs]
-    weighed = _weigh_block(pairs, local, presence, options, wavenumber)
+    local = [place.around.localise(template) for place in places]
+    weighed = _weigh_block(places, local, presence, options, wavenumber)
     shifts = [one.log_resistivity_means - template.log_resistivity_means for one in local]
     return [draws.log_resistivity - shift for shift, (draws, _) in zip(shifts, weighed, strict=True)]
 
 
 def _weigh_block(
-    pairs: Sequence[tuple[Sounding, Inverted]],
+    places: Sequence[Place],
     local: Sequence[Template],
     presence: FloatArray,
     options: InterpretationOptions,
@@ -147,14 +159,16 @@ def _weigh_block(
 
     local : the template as it stands at each sounding
     """
-    curves = damped_steps.stack_curves([Readings(*s.curve.readings(one.noise)) for s, one in pairs], wavenumber)
+    curves = damped_steps.stack_curves(
+        [Readings(*one.sounding.curve.readings(one.inverted.noise)) for one in places], wavenumber
+    )
     wet = np.array([one.water_level is not None for one in local])
     weighed: dict[int, tuple[Sequence[sequences.UnitSequence], list[damped_steps.Fit], FloatArray]] = {}
     for rows in (np.flatnonzero(~wet).tolist(), np.flatnonzero(wet).tolist()):
         if rows:
-            places = [local[i] for i in rows]
-            weighed |= dict(zip(rows, _weigh_alike(places, curves.take(np.array(rows)), presence), strict=True))
-    for i, (sounding, _) in enumerate(pairs):
+            alike = [local[i] for i in rows]
+            weighed |= dict(zip(rows, _weigh_alike(alike, curves.take(np.array(rows)), presence), strict=True))
+    for i, (sounding, *_) in enumerate(places):
         generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
         admissible, own_fits, own_weight = weighed[i]
         own_curve = curves.take(np.array([i]))
@@ -180,23 +194,20 @@ def _weigh_alike(
 
 
 def _interpret_block(
-    pairs: Sequence[tuple[Sounding, Inverted]],
+    places: Sequence[Place],
     *,
-    picks: dict[str, list[Pick]],
-    around: Mapping[str, Surroundings],
     template: Template,
     presence: FloatArray,
     options: InterpretationOptions,
     wavenumber: FloatArray,
 ) -> list[PlaceReading]:
-    local = [around[sounding.name].localise(template) for sounding, _ in pairs]
-    weighed = _weigh_block(pairs, local, presence, options, wavenumber)
+    local = [place.around.localise(template) for place in places]
+    weighed = _weigh_block(places, local, presence, options, wavenumber)
     deep = soundings.role_mask(template, Role.DEEP_AQUIFER)
     gravel_prior = float(1.0 - np.prod(1.0 - presence[deep])) if np.any(deep) else np.nan
     results = []
-    for (sounding, inverted), here, (draws, bound) in zip(pairs, local, weighed, strict=True):
+    for (sounding, inverted, _, decided), here, (draws, bound) in zip(places, local, weighed, strict=True):
         contact = soundings.find_basal_contact(draws, bound, here, options)
-        decided = picks.get(sounding.name, [])
         reading = _read_sounding(sounding, inverted, draws, contact, decided, here, options)
         column = None if reading.column is None else attrs.evolve(reading.column, gravel_prior=gravel_prior)
         results.append(attrs.evolve(reading, column=column))

@@ -22,6 +22,7 @@ from geoves.domain.results import Results
 from geoves.domain.tops import Interpretation
 from geoves.interpretation import interpret
 from geoves.inversion import invert
+from geoves.kernels.blocks import cut_blocks
 from geoves.layers import derive_layers
 from geoves.project import provenance
 from geoves.project.engines import Map, open_engine, watched
@@ -69,10 +70,11 @@ def work_out(inputs: Inputs, progress: Progress, engine: Map) -> tuple[Results, 
     survey = prepare_curves(inputs.survey, settings.curves)
     record = provenance.make_record(region, settings, fingerprint_files(region))
     template = region.template
-    n_blocks = ceil(len(survey.soundings) / settings.inversion.block)
-    with progress.step("Inverting the curves", 2 * n_blocks) as step:
+    names = [sounding.name for sounding in survey.soundings if sounding.curve.is_enough]
+    n_curves, n_places = (len(cut_blocks(names, one.block)) for one in (settings.inversion, settings.interpretation))
+    with progress.step("Inverting the curves", 2 * n_curves) as step:
         inverted = invert(survey, settings.inversion, map=watched(engine, step))
-    with progress.step("Reading columns from them", (1 + settings.interpretation.calibrate) * n_blocks) as step:
+    with progress.step("Reading columns from them", (1 + settings.interpretation.calibrate) * n_places) as step:
         interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(engine, step))
     with progress.step("Kriging the surfaces", _count_blocks(grid.shape, settings)) as step:
         stack = build_surfaces(interpretation, survey, template, grid, settings.surfaces, map=watched(engine, step))
