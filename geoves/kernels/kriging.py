@@ -1,55 +1,140 @@
-"""Ordinary kriging of a field from data that each have an error of their own; the one door to PyKrige.
+"""Kriging of a field from data that each have an error of their own, by one factor of their covariance.
 
-The field varies about an unknown constant mean. Its nugget is variation between places too small to follow, not error:
-a cell is always a new place, so the nugget is in its variance, and no cell jumps to the datum that it happens to hold.
+The field varies about an unknown constant mean, or about a drift with unknown coefficients. Its nugget is variation
+between places too small to follow, not error: a cell is always a new place, so the nugget is in its variance, and no
+cell jumps to the datum that it happens to hold.
 """
+
+from collections.abc import Iterator
+from typing import NamedTuple, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
-from pykrige.ok import OrdinaryKriging
-from scipy.linalg import cho_factor, cho_solve
+from scipy.linalg import cho_factor, cho_solve, cholesky, solve_triangular
+from scipy.linalg.blas import dtrsm
+from scipy.spatial.distance import cdist
 from threadpoolctl import threadpool_limits
 
 from geoves.kernels.covariances import (
     Covariance,
     FloatArray,
     bounded_error_variance,
-    correlation,
+    correlate_in_place,
     covariance_matrix,
     scale_coordinates,
 )
 
+# Numbers in a block of covariances between cells and data: an estimate alone wants them in cache, a variance wants
+# blocks wide enough for the triangular solve.
+_CACHED, _WIDE = 2**15, 2**20
 
-class _KrigingWithErrors(OrdinaryKriging):
-    """Ordinary kriging with PyKrige that knows an error variance for each datum, in the unit of the sill.
 
-    PyKrige has no such argument. Its matrix is minus the semivariogram, bordered by ones, so a datum's error variance
-    belongs on the first n of its diagonal. A test guards that this private member exists and is asked.
+class FieldData(NamedTuple):
+    """What is known of a field: values with error variances (n,) at points (n, 2), two or more; repeats allowed.
+
+    drift : (n, p) values of what the field's mean is linear in, beside a constant; None for a constant mean.
     """
 
-    def __init__(
-        self, scaled: FloatArray, values: FloatArray, error_variance: FloatArray, covariance: Covariance
-    ) -> None:
-        def semivariogram(parameters: list[float], distance: FloatArray) -> FloatArray:
-            nugget_share, model_share = parameters
-            return nugget_share + model_share * (1.0 - correlation(distance, covariance.model))
+    points: FloatArray
+    values: FloatArray
+    error_variance: FloatArray
+    drift: FloatArray | None = None
 
-        self.error_variance = error_variance
-        super().__init__(
-            scaled[:, 0],
-            scaled[:, 1],
-            values,
-            variogram_model="custom",
-            variogram_parameters=[covariance.nugget / covariance.sill, covariance.partial_sill / covariance.sill],
-            variogram_function=semivariogram,
-            nlags=1,  # its own experimental variogram is not used
-            exact_values=False,
-        )
 
-    def _get_kriging_matrix(self, n: int) -> FloatArray:
-        matrix: FloatArray = super()._get_kriging_matrix(n)
-        matrix[np.arange(n), np.arange(n)] += self.error_variance
-        return matrix
+class KrigingEngine(Protocol):
+    """Whatever predicts a field: PyKrige, one factor of all data, or a factor for each tile."""
+
+    def predict(self, cells: FloatArray, drift: FloatArray | None = None) -> tuple[FloatArray, FloatArray]:
+        """Estimate and variance (m,) at `cells` (m, 2), where the drift is `drift` (m, p) if the data have one."""
+
+
+def standardise_drift(drift: FloatArray, known: FloatArray) -> FloatArray:
+    """`drift` (m, p) in deviations of the data's own, `known` (n, p), from its mean: what keeps the system solvable."""
+    spread = known.std(axis=0)
+    return np.asarray((drift - known.mean(axis=0)) / np.where(spread > 0.0, spread, 1.0))
+
+
+class CholeskyKriging:
+    """Kriging from one Cholesky factor of the data's covariance, cells block by block.
+
+    Coordinates are centred and counted in lengths, values centred, sills counted in the field's own. Generalised least
+    squares for the drift's coefficients: Cressie 1993, Statistics for Spatial Data, sect. 3.4.5 (from memory).
+    """
+
+    def __init__(self, data: FieldData, covariance: Covariance) -> None:
+        self.covariance, self._known_drift = covariance, data.drift
+        self._origin, self._level = data.points.mean(axis=0), float(data.values.mean())
+        self._points = scale_coordinates(data.points, covariance, self._origin)
+        sill = covariance.sill
+        self._share = covariance.partial_sill / sill
+        matrix = self._share * correlate_in_place(cdist(self._points, self._points), covariance.model)
+        noise = bounded_error_variance(data.error_variance, covariance)
+        matrix[np.diag_indices_from(matrix)] += (covariance.nugget + noise) / sill
+        self._factor = np.asfortranarray(cholesky(matrix, lower=True, overwrite_a=True, check_finite=False))
+        self._half = self._solve(self._drift_at(data.drift, len(data.values)))
+        self._information = cho_factor(self._half.T @ self._half, lower=True)
+        self._dual, self._coefficients = self._weigh((data.values - self._level)[:, None])
+
+    def predict(self, cells: FloatArray, drift: FloatArray | None = None) -> tuple[FloatArray, FloatArray]:
+        """Estimate and variance (m,) at `cells` (m, 2), each taken as a new place.
+
+        The variance is that of the field about the estimate, nugget included, errors of the data not.
+        """
+        estimate, variance = np.empty(len(cells)), np.empty(len(cells))
+        for part, between in self._blocks(cells, _WIDE):
+            here = self._drift_at(None if drift is None else drift[part], len(between))
+            estimate[part] = between @ self._dual[:, 0] + here @ self._coefficients[:, 0]
+            solved = dtrsm(1.0, self._factor, between.T, lower=1, overwrite_b=1).T
+            missing = here - solved @ self._half
+            drift_variance = np.sum(missing * cho_solve(self._information, missing.T).T, axis=1)
+            variance[part] = 1.0 - np.einsum("ij,ij->i", solved, solved) + drift_variance
+        variance *= self.covariance.sill
+        return self._level + estimate, np.maximum(variance, 0.0)
+
+    def estimate(self, cells: FloatArray, drift: FloatArray | None = None) -> FloatArray:
+        """The estimate (m,) alone, at a small part of the cost."""
+        return self._level + self._estimate(cells, drift, self._dual, self._coefficients)[:, 0]
+
+    def estimate_many(self, values: FloatArray, cells: FloatArray, drift: FloatArray | None = None) -> FloatArray:
+        """Estimates (m, r) from other `values` (n, r) at the same points with the same errors."""
+        return self._estimate(cells, drift, *self._weigh(values))
+
+    def _estimate(
+        self, cells: FloatArray, drift: FloatArray | None, dual: FloatArray, coefficients: FloatArray
+    ) -> FloatArray:
+        estimate = np.empty((len(cells), dual.shape[1]))
+        for part, between in self._blocks(cells, _CACHED if dual.shape[1] == 1 else _WIDE):
+            here = self._drift_at(None if drift is None else drift[part], len(between))
+            estimate[part] = between @ dual + here @ coefficients
+        return estimate
+
+    def _weigh(self, values: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """What `values` (n, r) give every covariance with them (n, r), and every drift (1 + p, r)."""
+        solved = self._solve(values)
+        coefficients = cho_solve(self._information, self._half.T @ solved)
+        rest = solved - self._half @ coefficients
+        return solve_triangular(self._factor, rest, lower=True, trans=1, check_finite=False), coefficients
+
+    def _solve(self, right: FloatArray) -> FloatArray:
+        return np.asarray(solve_triangular(self._factor, right, lower=True, check_finite=False))
+
+    def _drift_at(self, drift: FloatArray | None, count: int) -> FloatArray:
+        """(count, 1 + p): a constant beside the drift."""
+        if self._known_drift is None:
+            return np.ones((count, 1))
+        if drift is None:
+            raise ValueError("the data have a drift; the cells need its values too")
+        return np.column_stack([np.ones(count), standardise_drift(drift, self._known_drift)])
+
+    def _blocks(self, cells: FloatArray, numbers: int) -> Iterator[tuple[slice, FloatArray]]:
+        """Slices of the cells, and their correlations with the data (block, n), the nugget in neither."""
+        step = max(numbers // len(self._points), 16)
+        for start in range(0, len(cells), step):
+            part = slice(start, start + step)
+            distance = cdist(scale_coordinates(cells[part], self.covariance, self._origin), self._points)
+            between = correlate_in_place(distance, self.covariance.model)
+            between *= self._share
+            yield part, between
 
 
 @threadpool_limits.wrap(limits=1)  # blocks are small: threads cost more than they bring
@@ -59,32 +144,16 @@ def krige(
     error_variance: FloatArray,
     cells: FloatArray,
     covariance: Covariance,
-    *,
-    block: int = 1024,
 ) -> tuple[FloatArray, FloatArray]:
-    """Estimate and variance (m,) of the field at `cells` (m, 2), each taken as a new place.
+    """Estimate and variance (m,) of the field at `cells` (m, 2), each taken as a new place, about a constant mean.
 
     points : (n, 2), two or more, repeated places allowed      values, error_variance : (n,)
     The variance is that of the field about the estimate, nugget included, errors of the data not.
-    Cells are taken `block` at a time, or n at a time where data are more; each holds some 43 bytes a datum and cell.
     Ordinary kriging: Isaaks and Srivastava 1989, An Introduction to Applied Geostatistics, ch. 12. Checked in
-    tests/published/test_ordinary_kriging.py, and against GSTools and dense generalised least squares in
+    tests/published/test_ordinary_kriging.py, and against PyKrige, GSTools and dense generalised least squares in
     tests/kernels/test_kriging.py.
     """
-    origin, level, sill = points.mean(axis=0), values.mean(), covariance.sill
-    engine = _KrigingWithErrors(
-        scale_coordinates(points, covariance, origin),
-        (values - level) / np.sqrt(sill),
-        bounded_error_variance(error_variance, covariance) / sill,
-        covariance,
-    )
-    estimate, variance = np.empty(len(cells)), np.empty(len(cells))
-    step = max(block, len(values))
-    for start in range(0, len(cells), step):
-        part = slice(start, start + step)
-        scaled = scale_coordinates(cells[part], covariance, origin)
-        estimate[part], variance[part] = engine.execute("points", scaled[:, 0], scaled[:, 1], backend="vectorized")
-    return level + np.sqrt(sill) * estimate, sill * np.maximum(variance, 0.0)
+    return CholeskyKriging(FieldData(points, values, error_variance), covariance).predict(cells)
 
 
 def leave_one_out(

@@ -7,7 +7,8 @@ from pykrige.ok import OrdinaryKriging
 
 from geoves.kernels import kriging
 from geoves.kernels.covariances import Covariance
-from geoves.kernels.kriging import krige, leave_one_out
+from geoves.kernels.kriging import CholeskyKriging, FieldData, krige, leave_one_out
+from geoves.kernels.reference_kriging import ReferenceKriging
 from tests.reference.dense_kriging import krige_densely
 
 MODELS = ("matern32", "exponential", "spherical", "gaussian")
@@ -62,20 +63,61 @@ def test_the_private_member_is_there_and_is_asked(monkeypatch):
     monkeypatch.setattr(OrdinaryKriging, "_get_kriging_matrix", counted)
     points, values, errors, cells = county()
     covariance = Covariance("matern32", 0.0, 300.0, 9000.0)
-    engine = kriging._KrigingWithErrors(points / 9000.0, values, errors / 300.0, covariance)
-    with_errors = engine._get_kriging_matrix(40)
+    engine = ReferenceKriging(FieldData(points, values, errors), covariance)
+    with_errors = engine._engine._get_kriging_matrix(40)
     np.testing.assert_allclose(np.diag(with_errors)[:40], errors / 300.0)
     asked.clear()
-    krige(points, values, errors, cells, covariance)
+    engine.predict(cells)
     assert asked == [40]
 
 
-@pytest.mark.parametrize("block", [1, 7, 4096])
-def test_blocks_do_not_show(block):
+@pytest.mark.parametrize("numbers", [1, 100, 10**7])
+def test_blocks_do_not_show(numbers, monkeypatch):
     points, values, errors, cells = county(5)
-    covariance = Covariance("matern32", 5.0, 300.0, 9000.0)
-    whole, parts = (krige(points, values, errors, cells, covariance, block=size) for size in (100_000, block))
-    np.testing.assert_allclose(parts, whole, rtol=1e-10)
+    engine = CholeskyKriging(FieldData(points, values, errors), Covariance("matern32", 5.0, 300.0, 9000.0))
+    whole = engine.predict(cells)
+    monkeypatch.setattr(kriging, "_WIDE", numbers)
+    monkeypatch.setattr(kriging, "_CACHED", numbers)
+    np.testing.assert_allclose(engine.predict(cells), whole, rtol=1e-10)
+    np.testing.assert_allclose(engine.estimate(cells), whole[0], rtol=1e-10)
+
+
+@pytest.mark.parametrize("model", MODELS)
+@pytest.mark.parametrize("n_drifts", [0, 1, 2])
+def test_engines_agree(model, n_drifts):
+    """PyKrige, ordinary and universal, against the factor: 1e-8 of the values' own range and of the sill."""
+    points, values, errors, cells = county(120)
+    generator = np.random.default_rng(6)
+    drift = generator.normal(40.0, 9.0, (120, n_drifts)) if n_drifts else None
+    there = generator.normal(40.0, 9.0, (60, n_drifts)) if n_drifts else None
+    data = FieldData(points, values if drift is None else values + drift.sum(axis=1), errors, drift)
+    covariance = Covariance(model, 12.0, 300.0, 9000.0, 40.0, 0.35)
+    estimate, variance = CholeskyKriging(data, covariance).predict(cells, there)
+    expected, expected_variance = ReferenceKriging(data, covariance).predict(cells, there)
+    np.testing.assert_allclose(estimate, expected, atol=1e-8 * np.ptp(values))
+    np.testing.assert_allclose(variance, expected_variance, atol=1e-8 * 312.0)
+
+
+def test_a_drift_is_followed_beyond_the_data():
+    """Data that are linear in the drift alone are met wherever the drift is known, with errors or not."""
+    points, _, errors, cells = county(30)
+    height = np.sin(points[:, 0] / 3000.0) + points[:, 1] / 10_000.0
+    there = np.sin(cells[:, 0] / 3000.0) + cells[:, 1] / 10_000.0
+    data = FieldData(points, 7.0 - 3.0 * height, errors, height[:, None])
+    engine = CholeskyKriging(data, Covariance("matern32", 5.0, 300.0, 3000.0))
+    np.testing.assert_allclose(engine.predict(cells, there[:, None])[0], 7.0 - 3.0 * there, atol=1e-8)
+    with pytest.raises(ValueError, match="drift"):
+        engine.predict(cells)
+
+
+def test_many_values_at_once_are_each_as_if_alone():
+    points, values, errors, cells = county(30)
+    covariance = Covariance("matern32", 5.0, 300.0, 6000.0)
+    many = np.column_stack([values, np.cos(values), np.zeros(30)])
+    together = CholeskyKriging(FieldData(points, values, errors), covariance).estimate_many(many, cells)
+    for column in range(3):
+        alone, _ = krige(points, many[:, column], errors, cells, covariance)
+        np.testing.assert_allclose(together[:, column], alone, rtol=1e-9, atol=1e-9)
 
 
 def test_a_cell_at_a_datum_is_a_new_place():
