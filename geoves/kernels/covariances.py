@@ -89,16 +89,22 @@ def correlation(distance_in_lengths: FloatArray, model: str) -> FloatArray:
     return correlate_in_place(np.array(distance_in_lengths, dtype=float), model)
 
 
-def correlate_in_place(h: FloatArray, model: str) -> FloatArray:
-    """The same as `correlation`, written over the distances: what a kriging spends much of its time on."""
+def correlate_in_place(h: FloatArray, model: str, room: FloatArray | None = None) -> FloatArray:
+    """The same as `correlation`, written over the distances: what a kriging spends much of its time on.
+
+    room : an array of the same shape to write upon, so that blocks in a row need no new memory.
+    """
     if model == "spherical":
         np.minimum(h, 1.0, out=h)
-        h *= 0.5 * h * h - 1.5
+        room = np.multiply(h, h, out=room)
+        room *= 0.5
+        room -= 1.5
+        h *= room
         h += 1.0
         return h
     if model == "matern32":
         h *= -_MATERN32_PRACTICAL
-        decay = np.exp(h)
+        decay = np.exp(h, out=room)
         np.subtract(1.0, h, out=h)
         h *= decay
         return h

@@ -10,8 +10,8 @@ from typing import NamedTuple, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import cho_factor, cho_solve, cholesky, solve_triangular
-from scipy.linalg.blas import dtrsm
+from scipy.linalg import cho_factor, cho_solve, cholesky
+from scipy.linalg.lapack import dtrtri
 from scipy.spatial.distance import cdist
 from threadpoolctl import threadpool_limits
 
@@ -24,9 +24,12 @@ from geoves.kernels.covariances import (
     scale_coordinates,
 )
 
-# Numbers in a block of covariances between cells and data: an estimate alone wants them in cache, a variance wants
-# blocks wide enough for the triangular solve.
-_CACHED, _WIDE = 2**15, 2**20
+# Numbers in a block of covariances between cells and data: wide enough for products of matrices, 4 MB with its room.
+_BLOCK = 2**18
+# Rows of the triangular factor that are multiplied at once: what lies right of them is 0 and left out.
+_STRIPE = 128
+# Lengths within which cells lie together.
+_TOGETHER = 0.5
 
 
 class FieldData(NamedTuple):
@@ -70,8 +73,11 @@ class CholeskyKriging:
         matrix = self._share * correlate_in_place(cdist(self._points, self._points), covariance.model)
         noise = bounded_error_variance(data.error_variance, covariance)
         matrix[np.diag_indices_from(matrix)] += (covariance.nugget + noise) / sill
-        self._factor = np.asfortranarray(cholesky(matrix, lower=True, overwrite_a=True, check_finite=False))
-        self._half = self._solve(self._drift_at(data.drift, len(data.values)))
+        factor = cholesky(matrix, lower=True, overwrite_a=True, check_finite=False)
+        # Upper triangular: products with it run at twice the speed of solving with the factor.
+        self._whitening = np.ascontiguousarray(dtrtri(factor, lower=1)[0].T)
+        self._half = self._whitening.T @ self._drift_at(data.drift, len(data.values))
+        self._drift_weights = self._whitening @ self._half
         self._information = cho_factor(self._half.T @ self._half, lower=True)
         self._dual, self._coefficients = self._weigh((data.values - self._level)[:, None])
 
@@ -81,13 +87,12 @@ class CholeskyKriging:
         The variance is that of the field about the estimate, nugget included, errors of the data not.
         """
         estimate, variance = np.empty(len(cells)), np.empty(len(cells))
-        for part, between in self._blocks(cells, _WIDE):
+        for part, between in self._blocks(cells):
             here = self._drift_at(None if drift is None else drift[part], len(between))
             estimate[part] = between @ self._dual[:, 0] + here @ self._coefficients[:, 0]
-            solved = dtrsm(1.0, self._factor, between.T, lower=1, overwrite_b=1).T
-            missing = here - solved @ self._half
+            missing = here - between @ self._drift_weights
             drift_variance = np.sum(missing * cho_solve(self._information, missing.T).T, axis=1)
-            variance[part] = 1.0 - np.einsum("ij,ij->i", solved, solved) + drift_variance
+            variance[part] = 1.0 - self._explained(between) + drift_variance
         variance *= self.covariance.sill
         return self._level + estimate, np.maximum(variance, 0.0)
 
@@ -103,20 +108,26 @@ class CholeskyKriging:
         self, cells: FloatArray, drift: FloatArray | None, dual: FloatArray, coefficients: FloatArray
     ) -> FloatArray:
         estimate = np.empty((len(cells), dual.shape[1]))
-        for part, between in self._blocks(cells, _CACHED if dual.shape[1] == 1 else _WIDE):
+        for part, between in self._blocks(cells):
             here = self._drift_at(None if drift is None else drift[part], len(between))
             estimate[part] = between @ dual + here @ coefficients
         return estimate
 
     def _weigh(self, values: FloatArray) -> tuple[FloatArray, FloatArray]:
         """What `values` (n, r) give every covariance with them (n, r), and every drift (1 + p, r)."""
-        solved = self._solve(values)
+        solved = self._whitening.T @ values
         coefficients = cho_solve(self._information, self._half.T @ solved)
-        rest = solved - self._half @ coefficients
-        return solve_triangular(self._factor, rest, lower=True, trans=1, check_finite=False), coefficients
+        return self._whitening @ (solved - self._half @ coefficients), coefficients
 
-    def _solve(self, right: FloatArray) -> FloatArray:
-        return np.asarray(solve_triangular(self._factor, right, lower=True, check_finite=False))
+    def _explained(self, between: FloatArray) -> FloatArray:
+        """Share of the sill (block,) that the data explain, the drift known: the squared length of whitened rows."""
+        explained = np.zeros(len(between))
+        room = np.empty((len(between), _STRIPE))
+        for start in range(0, between.shape[1], _STRIPE):
+            end = min(start + _STRIPE, between.shape[1])
+            white = np.matmul(between[:, :end], self._whitening[:end, start:end], out=room[:, : end - start])
+            explained += np.einsum("ij,ij->i", white, white)
+        return explained
 
     def _drift_at(self, drift: FloatArray | None, count: int) -> FloatArray:
         """(count, 1 + p): a constant beside the drift."""
@@ -126,15 +137,37 @@ class CholeskyKriging:
             raise ValueError("the data have a drift; the cells need its values too")
         return np.column_stack([np.ones(count), standardise_drift(drift, self._known_drift)])
 
-    def _blocks(self, cells: FloatArray, numbers: int) -> Iterator[tuple[slice, FloatArray]]:
-        """Slices of the cells, and their correlations with the data (block, n), the nugget in neither."""
-        step = max(numbers // len(self._points), 16)
+    def _blocks(self, cells: FloatArray) -> Iterator[tuple[slice, FloatArray]]:
+        """Slices of the cells, and their correlations with the data (block, n), which the next block overwrites."""
+        step = min(max(_BLOCK // len(self._points), 16), max(len(cells), 1))
+        rooms = np.empty((2, step, len(self._points)))
         for start in range(0, len(cells), step):
-            part = slice(start, start + step)
-            distance = cdist(scale_coordinates(cells[part], self.covariance, self._origin), self._points)
-            between = correlate_in_place(distance, self.covariance.model)
+            part = slice(start, min(start + step, len(cells)))
+            between, room = rooms[:, : part.stop - start]
+            scaled = scale_coordinates(cells[part], self.covariance, self._origin)
+            _write_distances(scaled, self._points, between)
+            correlate_in_place(between, self.covariance.model, room)
             between *= self._share
             yield part, between
+
+
+def _write_distances(cells: FloatArray, points: FloatArray, out: FloatArray) -> None:
+    """(m, n) distances into `out`. Cells that lie together are counted from their middle: one product of matrices.
+
+    What cancels there is of the order of the cells' own extent, so that a distance is off by 1e-8 of it at worst.
+    """
+    middle = cells.mean(axis=0)
+    near = cells - middle
+    squared = np.einsum("ij,ij->i", near, near)
+    if squared.max() > _TOGETHER**2:
+        cdist(cells, points, out=out)
+        return
+    away = points - middle
+    left = np.column_stack([squared, near, np.ones(len(cells))])
+    right = np.column_stack([np.ones(len(points)), -2.0 * away, np.einsum("ij,ij->i", away, away)])
+    np.matmul(left, right.T, out=out)
+    np.maximum(out, 0.0, out=out)
+    np.sqrt(out, out=out)
 
 
 @threadpool_limits.wrap(limits=1)  # blocks are small: threads cost more than they bring

@@ -37,13 +37,13 @@ def build_surfaces(
             f"bedrock cannot be mapped: {len(basal.values)} places know the depth of the basal contact "
             f"and {len(basal.bounds.bound)} a bound; at least 3 depths are needed"
         )
-    ground, remarks = find_ground(survey, grid)
+    ground, remarks = find_ground(survey, grid, options)
     reach = options.reach or choose_reach(survey, options)
     covered = find_covered(survey, grid, reach) & np.isfinite(ground)
     if not covered.any():
         raise EngineError("no cell lies inside the boundary and within reach of a datum; look at the coordinates")
-    cells = np.column_stack([axis[covered] for axis in np.meshgrid(grid.easting, grid.northing)])
-    krige_quantity = partial(interpolate, cells=cells, options=options, map=map)
+    canvas = Canvas(grid, covered, ground[covered])
+    krige_quantity = partial(interpolate, canvas=canvas, options=options, map=map)
 
     basal, shared_deviation, tied = tie_to_wells(basal, options)
     remarks += tied
@@ -51,12 +51,11 @@ def build_surfaces(
     if shared_deviation:
         # The doubt about the tie does not average out over soundings: a cell has it as far as it rests on them.
         by_curve = np.array([kind == "sounding" for kind in (*basal.kind, *basal.bound_kind)], dtype=float)
-        share, _ = krige_cells(contact._replace(values=by_curve), cells, options, map)
+        share, _ = krige_cells(contact._replace(values=by_curve), canvas, options, map)
         contact = contact._replace(deviation=np.hypot(contact.deviation, share * shared_deviation))
     kriged = [(basal, contact)]
     gravel: Kriged | None = None
     surfaces: list[Surface] = []
-    canvas = Canvas(grid, covered, ground[covered])
     if template.with_role(Role.DEEP_AQUIFER):
         evidence = read_thickness(interpretation, Role.DEEP_AQUIFER, "Thickness of the deep gravel", options)
         remarks += say_how_few(evidence, options)
@@ -83,7 +82,7 @@ def build_surfaces(
         covered=covered,
         surfaces={surface.name: surface for surface in surfaces},
         variograms=tuple(describe_variogram(evidence, result) for evidence, result in kriged),
-        cross_validations=tuple(cross_validate(evidence, result) for evidence, result in kriged),
+        cross_validations=tuple(cross_validate(evidence, result, options) for evidence, result in kriged),
         reach=reach,
         remarks=tuple(remarks),
     )

@@ -10,7 +10,8 @@ from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.grids import Grid
 from geoves.domain.survey import Sounding, Survey, Well
 from geoves.kernels.covariances import fit_covariance
-from geoves.kernels.kriging import krige
+from geoves.kernels.kriging import FieldData
+from geoves.surfaces.engines import choose_engine
 from geoves.surfaces.evidence import locate
 from geoves.surfaces.options import SurfaceOptions
 
@@ -22,6 +23,12 @@ class Canvas(NamedTuple):
     covered: BoolArray
     ground: FloatArray
 
+    @property
+    def cells(self) -> FloatArray:
+        """Centres of the covered cells (c, 2), in the unit of the CRS, row by row from the north."""
+        rows, columns = np.nonzero(self.covered)
+        return np.column_stack([self.grid.easting[columns], self.grid.northing[rows]])
+
     def place(self, values: FloatArray) -> FloatArray:
         """Values of the covered cells (c,) on the grid, NaN elsewhere."""
         full = np.full(self.grid.shape, np.nan)
@@ -29,7 +36,7 @@ class Canvas(NamedTuple):
         return full
 
 
-def find_ground(survey: Survey, grid: Grid) -> tuple[FloatArray, list[str]]:
+def find_ground(survey: Survey, grid: Grid, options: SurfaceOptions) -> tuple[FloatArray, list[str]]:
     """Elevation of the land surface on the grid; kriged from the places where there is no raster, and said so."""
     if survey.ground is not None:
         return survey.ground.elevation, []
@@ -39,7 +46,10 @@ def find_ground(survey: Survey, grid: Grid) -> tuple[FloatArray, list[str]]:
     points, values = locate(places)[known], values[known]
     error = np.full(values.size, 0.25)
     cells = np.column_stack([axis.ravel() for axis in np.meshgrid(grid.easting, grid.northing)])
-    elevation, _ = krige(points, values, error, cells, fit_covariance(points, values, error))
+    engine = choose_engine(
+        FieldData(points, values, error), fit_covariance(points, values, error), options, grid.cell_size
+    )
+    elevation, _ = engine.predict(cells)
     return elevation.reshape(grid.shape), [
         "no ground raster: the land surface is kriged from the elevations of soundings and wells"
     ]

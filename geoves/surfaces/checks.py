@@ -4,9 +4,10 @@ import numpy as np
 
 from geoves.domain.grids import CrossValidation, Variogram
 from geoves.kernels.covariances import experimental_variogram
-from geoves.kernels.kriging import leave_one_out
+from geoves.surfaces.engines import leave_each_out
 from geoves.surfaces.evidence import Evidence
 from geoves.surfaces.interpolation import Kriged
+from geoves.surfaces.options import SurfaceOptions
 
 
 def describe_variogram(evidence: Evidence, kriged: Kriged) -> Variogram:
@@ -36,9 +37,9 @@ def describe_variogram(evidence: Evidence, kriged: Kriged) -> Variogram:
     )
 
 
-def cross_validate(evidence: Evidence, kriged: Kriged) -> CrossValidation:
+def cross_validate(evidence: Evidence, kriged: Kriged, options: SurfaceOptions) -> CrossValidation:
     """Each datum proper against what all other data and bounds say of its place, its own error in the doubt."""
-    predicted, variance = leave_one_out(kriged.points, kriged.values, kriged.error_variance, kriged.covariance)
+    predicted, variance = leave_each_out(kriged.data, kriged.covariance, options)
     own = slice(0, len(evidence.values))
     if evidence.unit == "m":
         # A latent thickness below 0 is no gravel, not less than none.

@@ -5,11 +5,14 @@ from functools import partial
 from typing import Any, NamedTuple
 
 import numpy as np
+from threadpoolctl import threadpool_limits
 
 from geoves.domain.arrays import FloatArray
 from geoves.kernels.covariances import Covariance, fit_covariance
 from geoves.kernels.inequality import bounds_alone_as_values, fit_covariance_with_bounds
-from geoves.kernels.kriging import krige
+from geoves.kernels.kriging import FieldData
+from geoves.surfaces.canvas import Canvas
+from geoves.surfaces.engines import choose_engine
 from geoves.surfaces.evidence import Evidence, latent_prior
 from geoves.surfaces.options import SurfaceOptions
 
@@ -26,8 +29,13 @@ class Kriged(NamedTuple):
     values: FloatArray
     error_variance: FloatArray
 
+    @property
+    def data(self) -> FieldData:
+        """The data as an engine takes them."""
+        return FieldData(self.points, self.values, self.error_variance)
 
-def interpolate(evidence: Evidence, *, cells: FloatArray, options: SurfaceOptions, map: Map) -> Kriged:  # noqa: A002
+
+def interpolate(evidence: Evidence, *, canvas: Canvas, options: SurfaceOptions, map: Map) -> Kriged:  # noqa: A002
     """Fit the covariance to data and bounds together, then krige both, block by block through the map.
 
     With fewer data proper than a fit needs, each bound first becomes a pseudo-datum by itself.
@@ -44,22 +52,24 @@ def interpolate(evidence: Evidence, *, cells: FloatArray, options: SurfaceOption
     if len(evidence.values) < options.fewest:
         covariance = fit_covariance(points, values, variance, options.model)
     kriged = Kriged(np.empty(0), np.empty(0), covariance, points, values, variance)
-    mean, spread = krige_cells(kriged, cells, options, map)
+    mean, spread = krige_cells(kriged, canvas, options, map)
     return kriged._replace(mean=mean, deviation=np.sqrt(spread))
 
 
-def krige_cells(kriged: Kriged, cells: FloatArray, options: SurfaceOptions, map: Map) -> tuple[FloatArray, FloatArray]:  # noqa: A002
+def krige_cells(kriged: Kriged, canvas: Canvas, options: SurfaceOptions, map: Map) -> tuple[FloatArray, FloatArray]:  # noqa: A002
     """Estimate and variance (c,) from a quantity's data, block by block through the map."""
-    work = partial(_krige_block, kriged.points, kriged.values, kriged.error_variance, kriged.covariance)
+    work = partial(_krige_block, kriged.data, kriged.covariance, options, canvas.grid.cell_size)
+    cells = canvas.cells
     parts = list(map(work, [cells[i : i + options.block] for i in range(0, len(cells), options.block)]))
     mean, spread = (np.concatenate([part[i] for part in parts]) for i in (0, 1))
     return mean, spread
 
 
+@threadpool_limits.wrap(limits=1)  # blocks are small: threads cost more than they bring
 def _krige_block(
-    points: FloatArray, values: FloatArray, variance: FloatArray, covariance: Covariance, cells: FloatArray
+    data: FieldData, covariance: Covariance, options: SurfaceOptions, cell_size: float, cells: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
-    return krige(points, values, variance, cells, covariance)
+    return choose_engine(data, covariance, options, cell_size).predict(cells)
 
 
 def assume_everywhere(evidence: Evidence, contact: Kriged) -> Kriged:

@@ -3,6 +3,7 @@
 import attrs
 
 MODELS = ("matern32", "exponential", "spherical", "gaussian")
+ENGINES = ("auto", "cholesky", "tiles", "pykrige")
 
 
 @attrs.frozen
@@ -19,6 +20,8 @@ class SurfaceOptions:
     absence_deviation    softness (m) of an absence
     fewest               data that a fitted covariance needs
     block                cells kriged at a time: bounds the memory
+    engine               what kriges: cholesky (one factor of all data), tiles (neighbourhoods), pykrige, or auto
+    all_at_once          auto: one factor up to so many data, tiles beyond
     thicker_than         m: thicknesses of the deep gravel whose exceedance gets a surface of its own
     members              realisations of the column that surfaces without a closed form are summarised from
     """
@@ -35,6 +38,8 @@ class SurfaceOptions:
     absence_deviation: float = attrs.field(default=0.5, validator=attrs.validators.gt(0))
     fewest: int = attrs.field(default=5, validator=attrs.validators.ge(3))
     block: int = attrs.field(default=8192, validator=attrs.validators.ge(1))
+    engine: str = attrs.field(default="auto", validator=attrs.validators.in_(ENGINES))
+    all_at_once: int = attrs.field(default=4000, validator=attrs.validators.ge(2))
     thicker_than: tuple[float, ...] = attrs.field(
         default=(), validator=attrs.validators.deep_iterable(attrs.validators.gt(0))
     )

@@ -76,8 +76,7 @@ def test_blocks_do_not_show(numbers, monkeypatch):
     points, values, errors, cells = county(5)
     engine = CholeskyKriging(FieldData(points, values, errors), Covariance("matern32", 5.0, 300.0, 9000.0))
     whole = engine.predict(cells)
-    monkeypatch.setattr(kriging, "_WIDE", numbers)
-    monkeypatch.setattr(kriging, "_CACHED", numbers)
+    monkeypatch.setattr(kriging, "_BLOCK", numbers)
     np.testing.assert_allclose(engine.predict(cells), whole, rtol=1e-10)
     np.testing.assert_allclose(engine.estimate(cells), whole[0], rtol=1e-10)
 
@@ -185,3 +184,14 @@ def test_bands_hold_what_they_promise():
         estimate, variance = krige(points, measured, errors, cells[:25], covariance)
         inside.append(np.mean(np.abs(truth[40:] - estimate) < 1.6449 * np.sqrt(variance)))
     assert np.mean(inside) == pytest.approx(0.9, abs=4.0 * np.std(inside) / np.sqrt(40.0))
+
+
+def test_a_cell_on_a_datum_among_cells_close_by_has_its_distance():
+    """Distances counted from the middle of a block cancel; a rough field would show it first."""
+    points, values, errors, _ = county(60)
+    covariance = Covariance("exponential", 0.0, 300.0, 9000.0)
+    cells = points[7] + np.array([(0.0, 0.0), (3.0, 0.0), (4000.0, 0.0), (-900.0, 1500.0)])
+    found = krige(points, values, errors, cells, covariance)
+    expected = krige_densely(points, values, errors, cells, covariance)
+    np.testing.assert_allclose(found[0], expected[0], atol=1e-7 * np.ptp(values))
+    np.testing.assert_allclose(found[1], expected[1], atol=1e-7 * 300.0)

@@ -476,3 +476,20 @@ def test_figures_count_places_proper_and_no_bounds(county):
     for title, one in fitted.items():
         assert one.n_data == len(crossed[title].place)
     assert f"{len(rest)} data and {len(bounds)} bounds" in fitted["Log depth of the basal contact"].remark
+
+
+# Who kriges
+
+
+@pytest.mark.parametrize("engine", ["cholesky", "tiles", "pykrige"])
+def test_engines_give_one_answer(county, stack, engine):
+    """Fewer than 128 data: the tiles' neighbourhoods hold them all."""
+    assert_alike(stack, county.build(SurfaceOptions(reach=600.0, engine=engine)), 1e-6)
+
+
+def test_many_data_are_kriged_by_tiles(county):
+    """Beyond `all_at_once` the tiles take over, leaving out included."""
+    tiled = county.build(SurfaceOptions(reach=600.0, all_at_once=20))
+    assert_alike(tiled, county.build(SurfaceOptions(reach=600.0)), 1e-6)
+    one, other = (built.cross_validations[0] for built in (tiled, county.build(SurfaceOptions(reach=600.0))))
+    assert np.allclose(one.predicted, other.predicted, atol=1e-8)
