@@ -19,6 +19,7 @@ from geoves.domain.survey import Sounding, Survey
 from geoves.kernels import damped_steps, ensembles, layered_earth
 from geoves.kernels.blocks import cut_blocks, restore_order
 from geoves.kernels.damped_steps import Curves, Fit, Prior, Readings
+from geoves.kernels.ensembles import Density, Effort
 from geoves.kernels.smooth_model import fit_smooth, smooth_thickness
 
 Blocks = Iterable[Any]
@@ -275,7 +276,8 @@ def _sample_models(
     """Equally probable models about the fit, and the covariance of their logs."""
     fit, prior = fitted
     generator = np.random.default_rng([options.random_seed, *sounding.name.encode()])
-    members = ensembles.sample_importance(fit, k, curves, prior, SAMPLES_PER_DRAW * options.draws, generator)
+    effort = Effort(SAMPLES_PER_DRAW * options.draws, 1, 1, 1, 0, 0.0)
+    (members,) = ensembles.sample_densities([Density(fit, k, prior)], curves, effort, generator)
     rows = ensembles.resample(members.log_weight, options.draws, generator)
     logs = members.unknowns[rows, : 2 * k - 1]
     models = np.exp(logs)

@@ -18,6 +18,7 @@ from geoves.interpretation.water import (
 )
 from geoves.kernels import damped_steps, ensembles
 from geoves.kernels.damped_steps import Curves, Fit, Prior
+from geoves.kernels.ensembles import Density, Effort
 
 # A skin of soil above the cover proper: thickness in m, and how much wider than the cover its resistivity spreads.
 SKIN_THICKNESS, SKIN_WIDENING = (0.3, 3.0), 2.0
@@ -32,8 +33,10 @@ SEGMENT_DEVIATION = 0.05
 DRY_SHARE, DRY_THICKNESS_DEVIATION, SHALLOWEST_WATER = 0.65, 0.5, 0.5
 # No sequence is left out for the water level alone before it is drawn from (nats).
 MOST_AGAINST = -4.0
-# Members weighed in each sequence for each column that is kept in the end.
-SAMPLES_PER_DRAW = 2
+# Members that columns are drawn from, for each column kept in the end: first those about the most probable models, then
+# a quarter each about several heaviest draws in rounds, until they are worth twice the columns.
+FIRST_PER_DRAW, EACH_PER_DRAW, ENOUGH_PER_DRAW = 2.0, 0.25, 2.0
+FEWEST_MEMBERS, HEAVIEST_AT_ONCE, MOST_ROUNDS = 48, 4, 20
 # Sequences this much (nats) behind the best are not drawn from, and no Bayes factor is stated beyond it.
 LEAST_LOG_WEIGHT = 7.0
 
@@ -307,32 +310,52 @@ def draw_columns(
 ) -> ColumnDraws:
     """Columns of one curve; `fits` and `curves` are batches of one, `log_weight` (q,) by Laplace's approximation.
 
-    Sequences within reach of the best are sampled by importance, which corrects both their weight and their draws;
-    what is pooled from them is resampled to `options.draws` columns of equal weight.
+    Sequences within reach of the best are sampled together by importance, which corrects both their weights and their
+    draws; what is pooled from them is resampled to `options.draws` columns of equal weight.
     """
     kept = np.flatnonzero(log_weight > log_weight.max() - LEAST_LOG_WEIGHT)
-    per_sequence = SAMPLES_PER_DRAW * options.draws
-    thickness, log_resistivity, reaches, weight, dry = [], [], [], [], []
-    for q in kept.tolist():
-        sequence = sequences[q]
-        prior, _ = sequence_prior(sequence, template, curves)
-        members = ensembles.sample_importance(fits[q], len(sequence.units), curves, prior, per_sequence, generator)
-        h, r = _unit_columns(sequence, members.unknowns, len(template.units))
-        thickness.append(h)
-        log_resistivity.append(r)
-        reaches.append(np.full(len(h), sequence.reaches))
-        # Of one sequence, members share its prior; their mean weight is its evidence.
-        weight.append(
-            sequence.log_prior + members.log_weight - np.log(len(h)) + _log_depth_limits(sequence, h, template)
-            + _log_water(sequence, members.unknowns, template, _water_levels([template]))
-        )  # fmt: skip
-        dry.append(_dry_columns(sequence, members.unknowns, len(template.units)))
-    h, r, reached, pooled, above = (np.concatenate(p) for p in (thickness, log_resistivity, reaches, weight, dry))
-    rows = ensembles.resample(pooled, options.draws, generator)
+    densities = [_as_density(sequences[q], fits[q], curves, template) for q in kept.tolist()]
+    sampled = ensembles.sample_densities(densities, curves, _effort(options), generator)
+    columns = [
+        (
+            *_unit_columns(sequences[q], members.unknowns, len(template.units)),
+            _dry_columns(sequences[q], members.unknowns, len(template.units)),
+        )
+        for q, members in zip(kept.tolist(), sampled, strict=True)
+    ]
+    h, r, above = (np.concatenate(parts) for parts in zip(*columns, strict=True))
+    reached = np.repeat([sequences[q].reaches for q in kept.tolist()], [len(own) for own, *_ in columns])
+    pooled = np.concatenate([members.log_weight for members in sampled])
+    # In the order of the columns' depth, an even spread over the weights is one over depths.
+    order = np.lexsort((np.nansum(h, axis=1), reached))
+    rows = order[ensembles.resample(pooled[order], options.draws, generator)]
     with_contact, without = (np.logaddexp.reduce(pooled[mask], initial=-np.inf) for mask in (reached, ~reached))
     bayes = float(np.clip(with_contact - without, -LEAST_LOG_WEIGHT, LEAST_LOG_WEIGHT))
     drawn_dry = above[rows] if template.water_level else np.empty((0, 0))
     return ColumnDraws(h[rows], r[rows], reached[rows], bayes, drawn_dry)
+
+
+def _effort(options: InterpretationOptions) -> Effort:
+    return Effort(
+        first=round(FIRST_PER_DRAW * options.draws),
+        fewest=FEWEST_MEMBERS,
+        each=round(EACH_PER_DRAW * options.draws),
+        at_once=HEAVIEST_AT_ONCE,
+        rounds=MOST_ROUNDS,
+        enough=ENOUGH_PER_DRAW * options.draws,
+    )
+
+
+def _as_density(sequence: UnitSequence, fit: Fit, curves: Curves, template: Template) -> Density:
+    """A sequence of one curve as a density to sample from, with limits of depth and the water level."""
+    prior, _ = sequence_prior(sequence, template, curves)
+
+    def log_limits(unknowns: FloatArray) -> FloatArray:
+        thickness, _ = _unit_columns(sequence, unknowns, len(template.units))
+        water = _log_water(sequence, unknowns, template, _water_levels([template]))
+        return _log_depth_limits(sequence, thickness, template) + water
+
+    return Density(fit, len(sequence.units), prior, sequence.log_prior, log_limits)
 
 
 def _unit_columns(sequence: UnitSequence, unknowns: FloatArray, n_units: int) -> tuple[FloatArray, FloatArray]:

@@ -174,6 +174,11 @@ def _evaluate(unknowns: Floats, n_layers: int, curves: Curves, prior: Prior) -> 
     return _State(misfit + _prior_misfit(unknowns, prior), gradient, hessian, log_response, robust_weight)
 
 
+def local_hessian(unknowns: Floats, n_layers: int, curves: Curves, prior: Prior) -> Floats:
+    """Gauss-Newton Hessians (b, p, p) of the objective at `unknowns` (b, p)."""
+    return _evaluate(unknowns, n_layers, curves, prior).hessian
+
+
 def _step(unknowns: Floats, state: _State, damping: Floats, prior: Prior) -> Floats:
     """A damped Gauss-Newton step (b, p), with unknowns held that push against a bound."""
     held = ((unknowns <= prior.lowest) & (state.gradient < 0)) | ((unknowns >= prior.highest) & (state.gradient > 0))

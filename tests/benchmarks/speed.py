@@ -1,4 +1,4 @@
-"""How much batching buys: ratios against references timed in the same run, on one thread.
+"""How much batching buys: ratios against references timed in the same run, on one thread; and a season on all cores.
 
 Run as `python -m tests.benchmarks.speed`. Times are the best of several runs; on a busy machine trust the ratios alone.
 """
@@ -19,6 +19,7 @@ from geoves.kernels.layered_earth import (
     response,
     response_and_sensitivity,
 )
+from tests.benchmarks import season
 from tests.reference import quadrature
 
 HALF_SPACING = np.geomspace(1.5, 500.0, 26)
@@ -215,6 +216,8 @@ def main():
         print_table(f"Response: {HALF_SPACING.size} spacings, {N_LAYERS} layers, finite MN", time_responses(rng))
         print_table(f"Derivative: {HALF_SPACING.size} spacings, {N_LAYERS} layers", time_sensitivities(rng))
         print_table("Inversion: 64 curves, 4 layers, 3 % noise, one start", time_inversions(rng))
+    print(f"\nA season on all cores: inversion and interpretation, calibrated, ensembles of {season.DRAWS}")
+    season.print_season(150)
 
 
 if __name__ == "__main__":
