@@ -5,7 +5,8 @@ from collections.abc import Iterator
 from pathlib import Path
 from textwrap import wrap
 
-from geoves.delivery.dictionary import LAYERS, RASTERS, Column, LayerWords, RasterWords, name_part, name_unit
+from geoves.delivery.dictionary import RASTERS, Column, LayerWords, RasterWords, name_part, name_unit
+from geoves.delivery.layer_words import LAYERS
 
 WIDTH = 118
 PAGE = Path(__file__).with_name("delivery.md")

@@ -14,8 +14,9 @@ import pandas as pd
 import pyogrio
 from pyogrio.errors import DataLayerError, DataSourceError
 
-from geoves.delivery.dictionary import LAYERS, Column, LayerWords, convert_to_delivery, name_unit
+from geoves.delivery.dictionary import Column, LayerWords, convert_to_delivery, name_unit
 from geoves.delivery.layer_ranges import LayerRanges, find_layer_ranges
+from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.metadata import render_geopackage_record
 from geoves.delivery.sentences import readings_aside, tell_all, tell_readings_aside, tell_trade_offs
 from geoves.delivery.sounding_figures import segment_factors

@@ -12,7 +12,8 @@ import pyproj
 from pygeometa.schemas.iso19139 import ISO19139OutputSchema
 
 from geoves.delivery.cautions import list_cautions
-from geoves.delivery.dictionary import LAYERS, LENGTH_UNITS, PART_TITLES, RASTERS, Part, name_part, name_unit
+from geoves.delivery.dictionary import LENGTH_UNITS, PART_TITLES, RASTERS, Part, name_part, name_unit
+from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.rasters import describe_vertical
 from geoves.domain.region import Region
 from geoves.domain.results import Results

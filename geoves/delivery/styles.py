@@ -12,7 +12,6 @@ from matplotlib import colormaps
 from matplotlib.colors import to_hex, to_rgb
 
 from geoves.delivery.dictionary import (
-    LAYERS,
     PART_TITLES,
     RASTERS,
     LayerWords,
@@ -22,6 +21,7 @@ from geoves.delivery.dictionary import (
     name_part,
     name_unit,
 )
+from geoves.delivery.layer_words import LAYERS
 from geoves.domain.arrays import FloatArray
 from geoves.domain.grids import Surface
 from geoves.domain.results import Results

@@ -149,7 +149,7 @@ class Well:
 
 @attrs.frozen
 class Permit:
-    """One well permit; requested_depth in m, location_accuracy a radius in m."""
+    """One well permit; requested_depth in m, location_accuracy a radius in m, location_method how it was placed."""
 
     name: str
     easting: float
@@ -157,6 +157,7 @@ class Permit:
     requested_depth: float | None = None
     use: str = ""
     location_accuracy: float | None = None
+    location_method: str = ""
     extra: Mapping[str, Any] = _extra()
 
 

@@ -5,7 +5,8 @@ import numpy as np
 import pytest
 from lxml import etree
 
-from geoves.delivery.dictionary import LAYERS, RASTERS, name_part
+from geoves.delivery.dictionary import RASTERS, name_part
+from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.styles import choose_breaks, write_styles
 from geoves.errors import DeliveryError
 

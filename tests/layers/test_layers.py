@@ -8,7 +8,9 @@ from scipy import ndimage
 
 from geoves.domain.grids import Grid, Surface
 from geoves.domain.survey import Permit
-from geoves.layers import LayerOptions, choose_interval, derive_layers, sample_bilinear
+from geoves.layers import LayerOptions, derive_layers
+from geoves.layers.lines import choose_interval
+from geoves.layers.sampling import sample_bilinear
 
 
 @pytest.fixture(scope="module")
@@ -27,7 +29,9 @@ def permits_of(results, permits, stack=None):
 
 
 def test_layers_have_the_contracts_names_and_the_regions_crs(layers, small_results):
-    assert set(layers) == {"bedrock_contours", "thickness_contours", "valley_axis", "gravel_extent", "permits"}
+    assert set(layers) == {
+        "bedrock_contours", "thickness_contours", "valley_axis", "valley_stations", "gravel_extent", "permits",
+    }  # fmt: skip
     assert all(layer.crs == small_results.region.crs for layer in layers.values())
     assert all(layer.geometry.is_valid.all() and len(layer) for layer in layers.values())
 
