@@ -363,6 +363,10 @@ def _permit_layer(permits):
                 "gravel_thickness_p05": max(thick - 2.0, 0.0) if inside else np.nan,
                 "gravel_thickness_p95": thick + 2.0,
                 "gravel_probability": 1.0 / (1.0 + np.exp(4.0 - thick)),
+                "location_method": p.location_method, "covered_share": float(inside),
+                "over_gravel": "undetermined" if inside else None,
+                "reach_probability": 0.4 if inside and p.requested_depth else np.nan,
+                "reaches_gravel": "undetermined" if inside and p.requested_depth else None,
                 "geometry": shapely.Point(p.easting, p.northing),
             }
         )  # fmt: skip
@@ -385,8 +389,20 @@ def small_layers():
             lowest_elevation=[312.0, 330.0],
             highest_elevation=[324.0, 345.0],
             mean_slope=[12.0 / axis.length, 15.0 / branch.length],
+            line=[1, 2],
             order=[1, 2],
+            joins=[0, 1],
             geometry=[axis, branch],
+        ),
+        "valley_stations": frame(
+            line=[1, 1, 2],
+            order=[1, 1, 2],
+            distance=[0.0, 2000.0, 0.0],
+            elevation=[324.0, 316.0, 345.0],
+            standard_error=[4.0, 5.0, 6.0],
+            depth=[78.0, 80.0, 60.0],
+            slope=[0.004, 0.004, 0.025],
+            geometry=[axis.interpolate(0.0), axis.interpolate(2000.0), branch.interpolate(0.0)],
         ),
         "gravel_extent": frame(
             likelihood=["likely", "possible"],

@@ -2,9 +2,10 @@
 
 import re
 import sqlite3
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from contextlib import closing
 from pathlib import Path
+from types import MappingProxyType
 from typing import Any
 
 import attrs
@@ -12,18 +13,20 @@ import geopandas
 import numpy as np
 import pandas as pd
 import pyogrio
+import shapely
 from pyogrio.errors import DataLayerError, DataSourceError
 
 from geoves.delivery.dictionary import Column, LayerWords, convert_to_delivery, name_unit
 from geoves.delivery.layer_ranges import LayerRanges, find_layer_ranges
 from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.metadata import render_geopackage_record
+from geoves.delivery.section_lines import lay_sections
 from geoves.delivery.sentences import readings_aside, tell_all, tell_readings_aside, tell_trade_offs
 from geoves.delivery.sounding_figures import segment_factors
 from geoves.domain.earth import Inverted
 from geoves.domain.region import LengthUnit
 from geoves.domain.results import Results
-from geoves.domain.survey import Sounding, Well
+from geoves.domain.survey import Permit, Sounding, Well
 from geoves.domain.tops import UnitColumn
 from geoves.domain.units import Role
 from geoves.errors import DeliveryError
@@ -87,20 +90,14 @@ def write_geopackage(results: Results, path: Path, tags: Mapping[str, str]) -> P
 
 def build_frames(results: Results) -> Mapping[str, tuple[geopandas.GeoDataFrame, Mapping[str, str]]]:
     """Each layer in the region's length unit with its extra columns, and the names that those had in their tables."""
-    built = {
-        "soundings": _build_soundings(results),
-        "model_layers": _build_model_layers(results),
-        "tops": _build_tops(results),
-        "readings": _build_readings(results),
-        "picks": _build_picks(results),
-        "wells": _build_wells(results),
-        "well_intervals": _build_well_intervals(results),
-    }
-    frames = {}
-    for name, words in LAYERS.items():
-        rows, extras = built[name] if name in built else _take_layer(results, name)
-        frames[name] = _finish_frame(words, rows, extras, results)
-    return frames
+    return {name: build_frame(name, results) for name in LAYERS}
+
+
+def build_frame(name: str, results: Results) -> tuple[geopandas.GeoDataFrame, Mapping[str, str]]:
+    """One layer in the region's length unit with its extra columns, and the names that those had in their table."""
+    build = _BUILDERS.get(name)
+    rows, extras = _take_layer(results, name) if build is None else build(results)
+    return _finish_frame(LAYERS[name], rows, extras, results)
 
 
 Rows = tuple[pd.DataFrame, Sequence[Mapping[str, Any]]]
@@ -268,6 +265,7 @@ def _build_wells(results: Results) -> Rows:
 
 def _build_well_intervals(results: Results) -> Rows:
     wells: dict[str, Well] = {well.name: well for well in results.survey.wells}
+    names = {unit.code: unit.name for unit in results.region.template.units}
     typed = {(w.name, log.top, log.bottom): log.extra for w in wells.values() for log in w.intervals}
     rows: list[dict[str, Any]] = []
     extras = []
@@ -281,6 +279,7 @@ def _build_well_intervals(results: Results) -> Rows:
                 "bottom": reading.bottom,
                 "description": reading.description,
                 "unit": reading.unit,
+                "term": names.get(reading.unit or ""),
                 "confidence": reading.confidence,
             }
         )
@@ -288,11 +287,49 @@ def _build_well_intervals(results: Results) -> Rows:
     return _point_rows(rows, extras)
 
 
+def _build_sections(results: Results) -> Rows:
+    metres = results.region.crs_unit_metres
+    rows = [
+        {"place_at": one.line, "section": one.title, "kind": one.kind, "length": one.line.length * metres}
+        for one in lay_sections(results)
+    ]
+    return _point_rows(rows)
+
+
+def _build_doubts(results: Results) -> Rows:
+    survey = results.survey
+    places: dict[str, Sounding | Well | Permit] = {permit.name: permit for permit in survey.permits}
+    places |= {well.name: well for well in survey.wells}
+    places |= {sounding.name: sounding for sounding in survey.soundings}
+    names = ("severity", "place", "file", "row", "column", "value", "expected", "check")
+    rows: list[dict[str, Any]] = []
+    for doubt in results.doubts:
+        place = places.get(doubt.place)
+        at = None if place is None else shapely.Point(place.easting, place.northing)
+        rows.append({"place_at": at, **{name: getattr(doubt, name) for name in names}})
+    return _point_rows(rows)
+
+
 def _take_layer(results: Results, name: str) -> Rows:
     layer = results.layers[name]
     rows = pd.DataFrame(layer.drop(columns=layer.geometry.name))
     rows["place_at"] = np.asarray(layer.geometry)
     return rows, [permit.extra for permit in results.survey.permits] if name == "permits" else ()
+
+
+_BUILDERS: Mapping[str, Callable[[Results], Rows]] = MappingProxyType(
+    {
+        "soundings": _build_soundings,
+        "model_layers": _build_model_layers,
+        "tops": _build_tops,
+        "readings": _build_readings,
+        "picks": _build_picks,
+        "wells": _build_wells,
+        "well_intervals": _build_well_intervals,
+        "sections": _build_sections,
+        "doubts": _build_doubts,
+    }
+)
 
 
 def _finish_frame(
@@ -318,13 +355,12 @@ def _finish_frame(
 
 def _type_values(values: pd.Series, column: Column, metres: float) -> Any:
     """A column in the delivery's unit and in one type, absent values as the type's null."""
+    absent = values.isna()
     if column.kind == "text":
-        return pd.Series([None if _is_absent(value) else str(value) for value in values], dtype=object)
-    if column.kind == "flag":
-        return pd.Series([None if _is_absent(value) else bool(value) for value in values], dtype="boolean")
-    if column.kind == "count":
-        return pd.Series([None if _is_absent(value) else int(value) for value in values], dtype="Int32")
-    numbers = np.array([np.nan if _is_absent(value) else float(value) for value in values], float)
+        return values.astype(object).where(absent, values.astype(str)).where(~absent, None)
+    if column.kind in ("flag", "count"):
+        return values.where(~absent, pd.NA).astype("boolean" if column.kind == "flag" else "Int32")
+    numbers = pd.to_numeric(values).to_numpy(float, na_value=np.nan)
     converted = convert_to_delivery(numbers, column.kind, metres)
     return np.round(converted, DECIMALS) if column.kind == "length" else converted
 

@@ -26,8 +26,31 @@ _ARRAY = MappingProxyType(
     {"schlumberger": "Schlumberger array", "wenner": "Wenner array, as AB/2 = 1.5 a and MN/2 = 0.5 a"}
 )
 _LIKELIHOOD = MappingProxyType(
-    {"likely": "probability of deep gravel of 0.66 or more", "possible": "probability of deep gravel of 0.33 to 0.66"}
+    {
+        "likely": "probability of deep gravel of 0.66 or more",
+        "possible": "probability of deep gravel of 0.33 to 0.66",
+        "not_shown": "probability of deep gravel below 0.33: the data do not show it, which is no proof of its absence",
+    }
 )
+_ANSWER = MappingProxyType(
+    {
+        "likely": "probability of 0.66 or more, all over the circle of location",
+        "unlikely": "probability of 0.34 or less, all over the circle of location",
+        "undetermined": "the odds are near even, or the circle straddles: yes in a part of it, no in another",
+    }
+)
+_SECTION_KIND = MappingProxyType(
+    {"named": "asked for in region.toml", "along": "along the valley's axis", "across": "across the valley"}
+)
+_SEVERITY = MappingProxyType(
+    {
+        "fault": "impossible: such a run stops before it delivers",
+        "doubt": "unlikely: flagged, and the run went on",
+        "note": "nothing suspicious, but good to know",
+    }
+)
+_LINE = Column("line", "Line", "Number of the line of valley_axis.", "count")
+_ORDER = Column("order", "Order", "1 for a main valley, 2 for its tributaries, and so on.", "count")
 
 
 def _banded(name: str, title: str, description: str) -> tuple[Column, ...]:
@@ -258,8 +281,9 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     _WELL,
                     Column("top", "Depth of top", "Depth to the interval's top.", "length"),
                     Column("bottom", "Depth of bottom", "Depth to the interval's bottom.", "length"),
-                    Column("description", "Description", "The driller's words."),
+                    Column("description", "Description", "The driller's words, as typed."),
                     _UNIT,
+                    Column("term", "Controlled term", "Name of that unit in the resistivity template."),
                     Column(
                         "confidence", "Confidence", "1 for a typed code or an exact term.", "fraction", span=(0.0, 1.0)
                     ),
@@ -291,7 +315,9 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                 "A line along the floor of the buried valley, drawn downstream; tributaries are lines of their own.",
                 "LineString",
                 (
-                    Column("order", "Order", "1 for a main valley, 2 for its tributaries, and so on.", "count"),
+                    _LINE,
+                    _ORDER,
+                    Column("joins", "Joins", "Line at which a tributary ends; 0 for a main valley.", "count"),
                     Column("length", "Length", "Length of the line on the ground.", "length"),
                     Column("lowest_elevation", "Lowest bedrock", "Lowest bedrock elevation along the line.", "length"),
                     Column("highest_elevation", "Highest bedrock", "Highest bedrock elevation along it.", "length"),
@@ -299,9 +325,29 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                 ),
             ),
             LayerWords(
+                "valley_stations",
+                "Stations along the axis",
+                "Points at round distances along each line of valley_axis, from its upper end, and at its lower end.",
+                "Point",
+                (
+                    _LINE,
+                    _ORDER,
+                    Column("distance", "Distance", "Along the line from its upper end.", "length"),
+                    Column("elevation", "Bedrock elevation", "Elevation of the valley's floor here.", "length"),
+                    Column("standard_error", "Standard error", "Standard error of that elevation.", "length"),
+                    Column("depth", "Depth", "Depth of the floor below the ground.", "length"),
+                    Column(
+                        "slope",
+                        "Slope",
+                        "Fall of the floor between the neighbouring stations; below 0 where it rises downstream.",
+                        "slope",
+                    ),
+                ),
+            ),
+            LayerWords(
                 "gravel_extent",
                 "Extent of the deep gravel",
-                "Where deep gravel is likely (probability 0.66 or more) or possible (0.33 to 0.66).",
+                "Where deep gravel is likely (probability 0.66 or more), possible (0.33 to 0.66) or not shown (below).",
                 "Polygon",
                 (
                     Column("likelihood", "Likelihood", "How sure the gravel is.", codes=_LIKELIHOOD),
@@ -319,6 +365,7 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     Column("permit", "Permit", "Name of the permit."),
                     Column("use", "Use", "Use of the water, as typed."),
                     Column("requested_depth", "Requested depth", "Depth that was asked for.", "length"),
+                    Column("location_method", "Location method", "How the place was found, as typed."),
                     _RADIUS,
                     Column("covered", "Covered", "Whether the surfaces reach this place.", "flag"),
                     Column("covered_share", "Covered share", "Of the circle of location.", "fraction", span=(0.0, 1.0)),
@@ -332,6 +379,47 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                         "fraction",
                         span=(0.0, 1.0),
                     ),
+                    Column("over_gravel", "Over deep gravel", "Whether deep gravel is there.", codes=_ANSWER),
+                    Column(
+                        "reach_probability",
+                        "Probability of reaching it",
+                        "Probability that deep gravel is there and begins above the requested depth.",
+                        "fraction",
+                        span=(0.0, 1.0),
+                    ),
+                    Column(
+                        "reaches_gravel",
+                        "Reaches deep gravel",
+                        "Whether a well of the requested depth meets deep gravel; empty where none was asked for.",
+                        codes=_ANSWER,
+                    ),
+                ),
+            ),
+            LayerWords(
+                "sections",
+                "Lines of the cross-sections",
+                "Where the report's sections run, each in the direction in which it is drawn.",
+                "LineString",
+                (
+                    Column("section", "Section", "Its title in the report."),
+                    Column("kind", "Kind", "Why it is there.", codes=_SECTION_KIND),
+                    Column("length", "Length", "Length of the line on the ground.", "length"),
+                ),
+            ),
+            LayerWords(
+                "doubts",
+                "Doubts about the inputs",
+                "What the checks flagged, at its place; without geometry where it belongs to no place.",
+                "Point",
+                (
+                    Column("severity", "Severity", "How grave it is.", codes=_SEVERITY),
+                    Column("place", "Place", "Name of the sounding, the well or the permit, where there is one."),
+                    Column("file", "File", "The input in which it stands."),
+                    Column("row", "Row", "Row of that table as a spreadsheet counts; 0 where none applies.", "count"),
+                    Column("column", "Column", "Column of that table."),
+                    Column("value", "Value", "What stands there."),
+                    Column("expected", "Expected", "What is unlikely about it, and what was expected."),
+                    Column("check", "Check", "Name of the check that found it, where it has one."),
                 ),
             ),
         )

@@ -13,7 +13,7 @@ from geoves.delivery.cautions import SHORT_CAUTION, list_cautions
 from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_colours, value_range
-from geoves.delivery.sections import lines_of
+from geoves.delivery.section_lines import lay_sections, lines_of
 from geoves.delivery.sentences import (
     LIKELIHOODS,
     STATUS_WORDS,
@@ -326,7 +326,14 @@ def _describe_lines(results: Results, to_degrees: pyproj.Transformer) -> dict[st
     axis, extent = layers.get("valley_axis"), layers.get("gravel_extent")
     described["valley_axis"] = [] if axis is None else paths(axis.geometry)
     rows = [] if extent is None else zip(extent["likelihood"], extent.geometry, strict=True)
-    described["gravel_extent"] = [{"value": str(value), "paths": paths([shape])} for value, shape in rows]
+    described["gravel_extent"] = [
+        {"value": str(value), "paths": paths([shape])} for value, shape in rows if value != "not_shown"
+    ]
+    described["sections"] = [
+        {"mark": one.mark, "title": one.title, "paths": paths([one.line])}
+        for one in lay_sections(results)
+        if one.kind != "along"
+    ]
     return described
 
 

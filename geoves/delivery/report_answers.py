@@ -5,7 +5,8 @@ import shapely
 
 from geoves.delivery.cautions import list_cautions
 from geoves.delivery.markup import Markup, element, format_length, joined
-from geoves.delivery.sections import LIKELY, draw_overview, main_axis
+from geoves.delivery.section_lines import main_axis
+from geoves.delivery.sections import LIKELY, draw_overview
 from geoves.domain.grids import CrossValidation
 from geoves.domain.results import Results
 from geoves.domain.units import Role
@@ -22,7 +23,7 @@ def write_answers(results: Results) -> Markup:
     caption = (
         "Black circle: base seen (basal gravel or rock, which a curve seldom tells apart); grey diamond: base not "
         "distinct; white triangle: base deeper than the curve reached; square: well. White line: the valley’s axis; "
-        "A, B, C: the sections across it."
+        "dashed: the other sections, each marked where it begins."
     )
     scroll = {"class": "scroll", "tabindex": "0", "role": "region", "aria-label": "Map of bedrock elevation"}
     return joined(

@@ -12,7 +12,8 @@ from geoves.delivery.report_answers import write_answers
 from geoves.delivery.report_places import StripJob, draw_strip, gather_strips
 from geoves.delivery.report_trust import write_decisions, write_doubts, write_making, write_trust
 from geoves.delivery.report_wells import write_wells_and_template
-from geoves.delivery.sections import draw_section, section_lines
+from geoves.delivery.section_lines import lay_sections
+from geoves.delivery.sections import draw_section
 from geoves.delivery.svg import line, mark_path
 from geoves.delivery.unit_look import pattern_definitions, unit_key
 from geoves.domain.results import Results
@@ -97,7 +98,7 @@ def _contents() -> Markup:
 
 
 def _write_sections(results: Results) -> Markup:
-    drawn = [(title, draw_section(results, title, section)) for title, section in section_lines(results)]
+    drawn = [(one.title, draw_section(results, one.title, one.line)) for one in lay_sections(results)]
     figures = [
         element(
             "figure",
@@ -108,14 +109,14 @@ def _write_sections(results: Results) -> Markup:
         if svg
     ]
     if not figures:
-        return element("p", {}, "No valley axis was found, so that no section could be laid along it.")
+        return element("p", {}, "No section is named, and no valley axis was found along which one could be laid.")
     words = (
         "Ground in green, bedrock as a bold line within its 90 % band, gravel where it is likely (0.66 or more). "
         "Soundings near the section stand as broad columns of the unit that is most probable at each depth, paler the "
         "less probable it is. A column with an arrow at its foot ends at the depth that the base, gravel or rock, must "
         "exceed; a dashed one on a diamond does not show the base by itself. Wells stand as narrow columns with how "
         "far off the section they are: another depth there is no contradiction. An orange bar is an interpreter’s "
-        "pick. A, B and C are dashed on the map above, read from west to east."
+        "pick. Each section is dashed on the map above and marked where it begins."
     )
     return joined([element("p", {}, words), unit_key(results.region.template), *figures])
 

@@ -1,6 +1,6 @@
 """Figures of the region: the overview map and the sections along and across the valley, as SVG."""
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Sequence
 from typing import Any
 
 import attrs
@@ -10,6 +10,7 @@ from scipy.ndimage import map_coordinates
 
 from geoves.delivery.markup import Markup, element, joined, unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, embedded_image, faded_colours, ramp_colours, value_range
+from geoves.delivery.section_lines import lay_sections, lines_of
 from geoves.delivery.svg import (
     Frame,
     Scale,
@@ -53,52 +54,6 @@ def sample_smoothly(grid: Grid, values: FloatArray, points: FloatArray) -> Float
     row = np.where((row > -0.5) & (row < grid.n_rows - 0.5), np.clip(row, 0, grid.n_rows - 1), -9.0)
     column = np.where((column > -0.5) & (column < grid.n_columns - 0.5), np.clip(column, 0, grid.n_columns - 1), -9.0)
     return map_coordinates(values, [row, column], order=1, cval=np.nan)
-
-
-def lines_of(geometries: Iterable[Any]) -> Iterator[Any]:
-    """Every plain line among geometries, the outlines of polygons too."""
-    for geometry in geometries:
-        if geometry is None or geometry.is_empty:
-            continue
-        if geometry.geom_type in ("LineString", "LinearRing"):
-            yield geometry
-        elif geometry.geom_type == "Polygon":
-            yield from lines_of([geometry.exterior, *geometry.interiors])
-        elif hasattr(geometry, "geoms"):
-            yield from lines_of(geometry.geoms)
-
-
-def main_axis(results: Results) -> Any:
-    """The longest line of the valley's axis, None where there is none."""
-    axis = results.layers.get("valley_axis")
-    if axis is None or not len(axis):
-        return None
-    return max(lines_of(axis.geometry), key=lambda one: one.length, default=None)
-
-
-def section_lines(results: Results) -> list[tuple[str, Any]]:
-    """Titles and lines of the sections: along the axis, and three across it."""
-    axis = main_axis(results)
-    if axis is None or axis.length == 0:
-        return []
-    west, south, east, north = results.stack.grid.bounds
-    reach = 0.18 * float(np.hypot(east - west, north - south))
-    found = [("Along the valley", axis)]
-    # A wide step keeps a kink of one cell from turning the line across.
-    step = max(0.05 * axis.length, 2.0 * results.stack.grid.cell_size)
-    for share, name in ((0.2, "A"), (0.5, "B"), (0.8, "C")):
-        at = share * axis.length
-        before, here, after = (axis.interpolate(at + d) for d in (-step, 0.0, step))
-        along = np.array([after.x - before.x, after.y - before.y])
-        length = float(np.hypot(*along))
-        if length == 0:
-            continue
-        across = np.array([-along[1], along[0]]) / length * reach
-        if across[0] < 0 or (across[0] == 0 and across[1] < 0):
-            across = -across  # read from west to east
-        centre = np.array([here.x, here.y])
-        found.append((f"Across the valley at {name}", shapely.LineString([centre - across, centre + across])))
-    return found
 
 
 @attrs.frozen
@@ -311,10 +266,11 @@ def draw_overview(results: Results) -> Markup:
     axis = results.layers.get("valley_axis")
     for one in () if axis is None else lines_of(axis.geometry):
         parts += [_line(frame, one, "valley casing"), _line(frame, one, "valley")]
-    for title, section in section_lines(results)[1:]:
-        end = section.coords[0]
-        at = float(frame.x.pixel(end[0])), float(frame.y.pixel(end[1]))
-        parts += [_line(frame, section, "cut"), label(*at, title[-1], "halo", "middle")]
+    for section in lay_sections(results):
+        if section.kind != "along":
+            end = section.line.coords[0]
+            at = float(frame.x.pixel(end[0])), float(frame.y.pixel(end[1]))
+            parts += [_line(frame, section.line, "cut"), label(*at, section.mark, "halo", "middle")]
     parts += _overview_places(results, frame)
     parts.append(_scale_bar(frame, region.crs_unit_metres, region.length_unit != "m"))
     if surface is not None:

@@ -232,7 +232,14 @@ _RULES: dict[str, tuple[Rule, ...]] = {
     "gravel_extent": (
         Rule("Deep gravel likely", Area(LIKELY, 0.6, INK), (("likelihood", "=", "likely"),)),
         Rule("Deep gravel possible", Area(GREY, 0.4, GREY), (("likelihood", "=", "possible"),)),
+        Rule("Deep gravel not shown", Area(PAPER, 0.0, GREY), (("likelihood", "=", "not_shown"),)),
     ),
+    "valley_stations": (
+        Rule("Station on the main valley", Mark("circle", SURE, size=5.0), (("order", "=", "1"),), "distance"),
+        Rule("Station on a tributary", Mark("circle", GREY, size=4.0), (("order", ">=", "2"),), "distance"),
+    ),
+    "sections": (Rule("Line of a cross-section", Line(INK, 1.2), (), "section"),),
+    "doubts": (Rule("Doubt about the inputs", Mark("triangle", PAPER, INK, 9.0), (), "place"),),
     "permits": (
         Rule(
             "No surface of deep gravel",

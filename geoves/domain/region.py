@@ -16,13 +16,22 @@ METRES = MappingProxyType({"m": 1.0, "ft": 0.3048, "us-ft": 1200.0 / 3937.0})
 
 
 @attrs.frozen
+class Section:
+    """A line along which the report draws a section: its name and its corners, x and y in the CRS."""
+
+    name: str
+    points: tuple[tuple[float, float], ...]
+
+
+@attrs.frozen
 class Delivery:
-    """Who made it and who answers for it, and which extra columns stay at home."""
+    """Who made it and who answers for it, which extra columns stay at home, whether FGDC records are wanted too."""
 
     organisation: str = ""
     contact: str = ""
     use_limits: str = ""
     withhold: tuple[str, ...] = ()
+    fgdc: bool = False
 
 
 @attrs.frozen
@@ -45,6 +54,7 @@ class Region:
     template: Template
     method: Literal["each"] = "each"
     delivery: Delivery = Delivery()
+    sections: tuple[Section, ...] = ()
     settings: Mapping[str, Mapping[str, Any]] = attrs.field(factory=dict)
     files: Mapping[str, Path] = attrs.field(factory=dict)
     typed_inputs: Mapping[str, str] = attrs.field(factory=dict)

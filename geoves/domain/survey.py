@@ -157,8 +157,8 @@ class Permit:
     requested_depth: float | None = None
     use: str = ""
     location_accuracy: float | None = None
-    location_method: str = ""
     extra: Mapping[str, Any] = _extra()
+    location_method: str = ""
 
 
 @attrs.frozen

@@ -22,11 +22,8 @@ STRADDLES = 0.05  # a circle straddles where each answer holds in more than this
 _CHUNK = 400_000  # places sampled at once: some tens of MB
 
 FloatColumns = Mapping[str, FloatArray]
-VALUES = tuple(
-    f"{name}{band}"
-    for name in ("bedrock_depth", "gravel_top_depth", "gravel_thickness")
-    for band in ("", "_p05", "_p95")
-)
+_LENGTHS = ("bedrock_depth", "gravel_top_depth", "gravel_thickness")
+VALUES = tuple(f"{name}{band}" for name in _LENGTHS for band in ("", "_p05", "_p95"))
 
 
 @attrs.frozen

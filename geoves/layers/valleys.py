@@ -38,9 +38,15 @@ def draw_valleys(
     valleys: list[Valley] = []
     if bedrock is not None and np.isfinite(bedrock.estimate).any():
         valleys = _find_valleys(bedrock, options)
-    rows = [_measure_axis(valley, bedrock, region) for valley in valleys if bedrock is not None]
-    axis = geopandas.GeoDataFrame(_columns(AXIS_COLUMNS, rows), geometry=[v.line for v in valleys], crs=region.crs)
-    return axis, _place_stations(valleys, stack, region)
+    measured = [_measure_axis(valley, bedrock, region) for valley in valleys if bedrock is not None]
+    lines = [valley.line for valley in valleys]
+    told = [_place_stations(valley, stack, bedrock, region) for valley in valleys if bedrock is not None]
+    rows = [row for rows, _ in told for row in rows]
+    points = [point for _, points in told for point in points]
+    return (
+        geopandas.GeoDataFrame(_columns(AXIS_COLUMNS, measured), geometry=lines, crs=region.crs),
+        geopandas.GeoDataFrame(_columns(STATION_COLUMNS, rows), geometry=points, crs=region.crs),
+    )
 
 
 def _columns(names: tuple[str, ...], rows: list[tuple[float, ...]]) -> dict[str, FloatArray]:
@@ -74,27 +80,23 @@ def _measure_axis(valley: Valley, bedrock: Surface, region: Region) -> tuple[flo
     return valley.number, valley.order, valley.joins, along[-1], floor.min(), floor.max(), fall
 
 
-def _place_stations(valleys: list[Valley], stack: SurfaceStack, region: Region) -> geopandas.GeoDataFrame:
-    """A point each round distance along each line, with the floor there and its fall between the neighbours."""
-    bedrock, metres = stack.surfaces.get("bedrock_elevation"), region.crs_unit_metres
-    rows: list[tuple[float, ...]] = []
-    places: list[shapely.Point] = []
-    for valley in valleys if bedrock is not None else ():
-        length = valley.line.length * metres
-        step = max(choose_interval(0.0, length, region.length_unit, 40), stack.grid.cell_size * metres)
-        distance = np.append(np.arange(0.0, length - 0.25 * step, step), length)
-        points = shapely.line_interpolate_point(valley.line, distance / metres)
-        easting, northing = shapely.get_x(points), shapely.get_y(points)
-        floor = sample_bilinear(stack.grid, bedrock.estimate, easting, northing)
-        ground = sample_bilinear(stack.grid, stack.ground, easting, northing)
-        error = np.full(floor.shape, np.nan)
-        if bedrock.standard_error is not None:
-            error = sample_bilinear(stack.grid, bedrock.standard_error, easting, northing)
-        fall = -np.gradient(floor, distance)
-        told = np.column_stack([distance, floor, error, ground - floor, fall])
-        rows += [(valley.number, valley.order, *row) for row in told.tolist()]
-        places += list(points)
-    return geopandas.GeoDataFrame(_columns(STATION_COLUMNS, rows), geometry=places, crs=region.crs)
+def _place_stations(
+    valley: Valley, stack: SurfaceStack, bedrock: Surface, region: Region
+) -> tuple[list[tuple[float, ...]], list[shapely.Point]]:
+    """Rows and points at round distances along a line: the floor there, and its fall between the neighbours."""
+    metres = region.crs_unit_metres
+    length = valley.line.length * metres
+    step = max(choose_interval(0.0, length, region.length_unit, 40), stack.grid.cell_size * metres)
+    distance = np.append(np.arange(0.0, length - 0.25 * step, step), length)
+    points = shapely.line_interpolate_point(valley.line, distance / metres)
+    easting, northing = shapely.get_x(points), shapely.get_y(points)
+    floor = sample_bilinear(stack.grid, bedrock.estimate, easting, northing)
+    ground = sample_bilinear(stack.grid, stack.ground, easting, northing)
+    error = np.full(floor.shape, np.nan)
+    if bedrock.standard_error is not None:
+        error = sample_bilinear(stack.grid, bedrock.standard_error, easting, northing)
+    told = np.column_stack([distance, floor, error, ground - floor, -np.gradient(floor, distance)])
+    return [(valley.number, valley.order, *row) for row in told.tolist()], list(points)
 
 
 def _trace_on_thinned_grid(surface: Surface, options: LayerOptions) -> list[tuple[int, FloatArray, FloatArray]]:

@@ -14,6 +14,7 @@ from geoves.delivery.folder import publish, stage
 from geoves.delivery.geopackage import write_geopackage
 from geoves.delivery.map_page import write_map_page
 from geoves.delivery.metadata import write_metadata
+from geoves.delivery.permit_table import write_permit_table
 from geoves.delivery.rasters import write_rasters
 from geoves.delivery.report_page import write_report_page
 from geoves.delivery.styles import write_styles
@@ -112,6 +113,8 @@ def write_all(results: Results, record: Mapping[str, Any], staging: Path, progre
         files = [*write_rasters(results.stack, results.region, staging, tags)]
     with _step(progress, "Writing layers.gpkg"):
         files.append(write_geopackage(results, staging / "layers.gpkg", tags))
+        if results.survey.permits:
+            write_permit_table(results, staging)
     with _step(progress, "Writing metadata and styles"):
         write_metadata(results, staging, record, files)
         write_styles(results, staging)

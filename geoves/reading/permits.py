@@ -49,7 +49,7 @@ def find_square_radius(method: str) -> float | None:
     """The radius (m) within which a place lies that is given as the centre of a square; None for another method.
 
     >>> [round(find_square_radius(words), 1) for words in ("Quarter-quarter centre", "quarter", "section centroid")]
-    [284.5, 569.0, 1137.9]
+    [284.5, 569.0, 1138.0]
     >>> find_square_radius("hand-held GPS") is None
     True
     """

@@ -11,17 +11,19 @@ from pyproj import CRS
 from pyproj.exceptions import CRSError
 
 from geoves.domain.findings import Finding
-from geoves.domain.region import METRES, Delivery, LengthUnit, Region
+from geoves.domain.region import METRES, Delivery, LengthUnit, Region, Section
 from geoves.reading.faults import in_words, nearest, printable
-from geoves.reading.keys import Keys
+from geoves.reading.keys import Keys, is_number
 from geoves.reading.sources import INPUTS, REQUIRED_INPUTS, WITH_LENGTHS, split_part
 from geoves.reading.template import read_template
 
 # Tables whose keys are options of a step: project checks them against the step's own options.
 STEP_TABLES = ("curves", "inversion", "interpretation", "surfaces", "layers")
-_TABLES = ("region", "inputs", "input_length_unit", "unit", "delivery", *STEP_TABLES)
+_TABLES = ("region", "inputs", "input_length_unit", "unit", "section", "delivery", *STEP_TABLES)
+_REPEATED = ("unit", "section")  # written [[unit]], once for each
 _REGION_KEYS = ("name", "crs", "vertical_datum", "length_unit", "cell_size", "random_seed")
-_DELIVERY_KEYS = ("organisation", "contact", "use_limits", "withhold")
+_DELIVERY_KEYS = ("organisation", "contact", "use_limits", "withhold", "fgdc")
+_SECTION_KEYS = ("name", "points")
 _LARGEST_SEED = 2**32 - 1
 
 
@@ -74,7 +76,7 @@ def _parse_toml(file: str, text: str, findings: list[Finding]) -> dict[str, Any]
 
 
 def _take_tables(file: str, text: str, typed: Mapping[str, Any], findings: list[Finding]) -> dict[str, list[Keys]]:
-    """The known tables by name, each a list with one, save [[unit]]; unknown ones and what is no table are faults."""
+    """The known tables by name, each a list with one, save the repeated; what is unknown or no table is a fault."""
     tables: dict[str, list[Keys]] = {name: [] for name in _TABLES}
     for name, value in typed.items():
         keys = Keys(file, text, name, {}, findings)
@@ -82,8 +84,8 @@ def _take_tables(file: str, text: str, typed: Mapping[str, Any], findings: list[
         if name not in _TABLES:
             hint = nearest(name, _TABLES) or f"; expected {in_words(_TABLES)}"
             keys.complain("", f"region.toml has no such table or key{hint}", value=name)
-        elif (name == "unit") != isinstance(value, list) or not all(isinstance(one, dict) for one in many):
-            brackets = "[[unit]], once for each unit" if name == "unit" else f"[{name}]"
+        elif (name in _REPEATED) != isinstance(value, list) or not all(isinstance(one, dict) for one in many):
+            brackets = f"[[{name}]], once for each {name}" if name in _REPEATED else f"[{name}]"
             keys.complain("", f"expected a table that begins with {brackets}")
         else:
             tables[name] = [Keys(file, text, name, one, findings, index) for index, one in enumerate(many)]
@@ -93,7 +95,8 @@ def _take_tables(file: str, text: str, typed: Mapping[str, Any], findings: list[
             findings.append(Finding("fault", file, 0, name, "", f"missing; expected {brackets}"))
     blank = Keys(file, text, "", {}, findings)
     return {
-        name: found if name == "unit" or found else [attrs.evolve(blank, table=name)] for name, found in tables.items()
+        name: found if name in _REPEATED or found else [attrs.evolve(blank, table=name)]
+        for name, found in tables.items()
     }
 
 
@@ -111,6 +114,7 @@ def _read_tables(path: Path, tables: Mapping[str, list[Keys]]) -> Region | None:
     input_units = _read_input_units(units, inputs)
     template = read_template(tables["unit"], METRES[cast(LengthUnit, length_unit or "m")])
     delivery = _read_delivery(tables["delivery"][0])
+    sections = _read_sections(tables["section"])
     settings = _read_settings(tables)
     seed = _read_seed(region)
     if crs is None or not length_unit:
@@ -126,6 +130,7 @@ def _read_tables(path: Path, tables: Mapping[str, list[Keys]]) -> Region | None:
         random_seed=seed,
         template=template,
         delivery=delivery,
+        sections=sections,
         settings=settings,
         files=files,
         typed_inputs={key: inputs.values[key].strip() for key in files},
@@ -223,7 +228,37 @@ def _read_input_units(keys: Keys, inputs: Keys) -> dict[str, LengthUnit]:
 def _read_delivery(keys: Keys) -> Delivery:
     keys.refuse_unknown(_DELIVERY_KEYS)
     organisation, contact, limits = (keys.string(key) for key in _DELIVERY_KEYS[:3])
-    return Delivery(organisation, contact, limits, keys.strings("withhold"))
+    fgdc = keys.values.get("fgdc", False)
+    if not isinstance(fgdc, bool):
+        keys.complain("fgdc", "expected true or false")
+    return Delivery(organisation, contact, limits, keys.strings("withhold"), fgdc is True)
+
+
+def _read_sections(tables: list[Keys]) -> tuple[Section, ...]:
+    """The lines of the cross-sections: two corners or more, names unlike each other."""
+    found: list[Section] = []
+    for keys in tables:
+        keys.refuse_unknown(_SECTION_KEYS)
+        name = keys.string("name", required="the section's name")
+        if name and name in {one.name for one in found}:
+            keys.complain("name", "another section has this name")
+        points = _read_corners(keys.values.get("points"))
+        if points is None:
+            example = "[[502000, 4600500], [506000, 4601200]]"
+            keys.complain("points", f"expected two places or more, x and y in the CRS, such as {example}")
+        elif name:
+            found.append(Section(name, points))
+    return tuple(found)
+
+
+def _read_corners(typed: Any) -> tuple[tuple[float, float], ...] | None:
+    """Corners of a line, None where they are none or all lie on one spot."""
+    if not isinstance(typed, list) or not all(isinstance(one, list) and len(one) == 2 for one in typed):
+        return None
+    if not all(is_number(value) for one in typed for value in one):
+        return None
+    corners = tuple((float(x), float(y)) for x, y in typed)
+    return corners if len(set(corners)) > 1 else None
 
 
 def _read_settings(tables: Mapping[str, list[Keys]]) -> dict[str, dict[str, Any]]:

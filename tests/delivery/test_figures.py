@@ -12,6 +12,7 @@ from scipy.spatial.transform import Rotation
 from geoves.delivery.figures import draw_cross_validation, draw_variogram, largest_misfits, modelled_semivariance
 from geoves.delivery.markup import element, joined, text
 from geoves.delivery.ramps import GREY, faded_colours, ramp_colours, value_range
+from geoves.delivery.section_lines import lay_sections
 from geoves.delivery.sections import (
     column_stretches,
     draw_overview,
@@ -19,7 +20,6 @@ from geoves.delivery.sections import (
     places_near,
     sample_cells,
     sample_smoothly,
-    section_lines,
 )
 from geoves.delivery.sentences import tell_readings_aside
 from geoves.delivery.sounding_figures import (
@@ -34,6 +34,7 @@ from geoves.delivery.sounding_figures import (
 from geoves.delivery.svg import Scale, even_ticks, logarithmic_ticks, staircase
 from geoves.delivery.unit_look import ROLE_COLOURS, unit_colours
 from geoves.domain.earth import LayeredModel
+from geoves.domain.region import Section
 from geoves.domain.units import Role
 
 
@@ -227,15 +228,31 @@ def test_sections_sample_a_plane_exactly(small_results):
 
 
 def test_sections_and_overview_are_sound_xml(small_results, small_results_in_feet):
-    lines = section_lines(small_results)
-    assert lines[0][0] == "Along the valley"
+    lines = lay_sections(small_results)
+    assert lines[0].title == "Along the valley"
     assert len(lines) == 4
-    for title, line in lines:
-        words = "".join(parsed(draw_section(small_results, title, line)).itertext())
+    for one in lines:
+        words = "".join(parsed(draw_section(small_results, one.title, one.line)).itertext())
         assert "times larger than lengths" in words
-    assert "elevation (US ft)" in draw_section(small_results_in_feet, *lines[0])
+    assert "elevation (US ft)" in draw_section(small_results_in_feet, lines[0].title, lines[0].line)
     marks = [one for one in parsed(draw_overview(small_results)).iter("path") if "mark" in one.get("class", "").split()]
     assert len(marks) == len(small_results.survey.soundings) + len(small_results.survey.wells)
+
+
+def test_a_named_section_comes_first_with_the_places_near_it(small_results):
+    """Along the wells' own line: they stand on it, and the overview marks where it begins."""
+    first, second = ((one.easting, one.northing) for one in small_results.survey.wells[:2])
+    region = attrs.evolve(small_results.region, sections=(Section("Mill Road <1>", (first, second)),))
+    named = attrs.evolve(small_results, region=region)
+    lines = lay_sections(named)
+    assert [one.kind for one in lines] == ["named", "along", "across", "across", "across"]
+    drawing = parsed(draw_section(named, lines[0].title, lines[0].line))
+    said = [one.text for one in drawing.iter("text")]
+    assert any(words.startswith("Mill Road <1>; heights drawn") for words in said if words)
+    assert {one.name for one in places_near(named, lines[0].line, 1.0)} >= {w.name for w in named.survey.wells[:2]}
+    assert "Mill Road <1>" in [one.text for one in parsed(draw_overview(named)).iter("text")]
+    nowhere = attrs.evolve(named, layers={**named.layers, "valley_axis": named.layers["valley_axis"].iloc[:0]})
+    assert [one.kind for one in lay_sections(nowhere)] == ["named"]
 
 
 def test_columns_of_a_section_say_the_most_probable_unit_and_end_where_knowledge_does(small_results):
@@ -256,7 +273,8 @@ def test_columns_of_a_section_say_the_most_probable_unit_and_end_where_knowledge
 
 
 def test_section_marks_bounds_and_what_is_not_distinct(small_results):
-    title, line = section_lines(small_results)[0]
+    along = lay_sections(small_results)[0]
+    title, line = along.title, along.line
     feet = [one.get("class") for one in parsed(draw_section(small_results, title, line)).iter("path")]
     near = {place.status for place in places_near(small_results, line, 250.0)}
     assert "deeper_than" in near
@@ -278,9 +296,9 @@ def test_wells_beside_a_section_stand_on_it_with_their_distance(small_results):
 
 def test_sections_cross_the_axis_at_right_angles(small_results):
     """A quarter turn by scipy's rotations carries the axis's direction onto the section's."""
-    (_, axis), *across = section_lines(small_results)
+    axis, *across = (one.line for one in lay_sections(small_results))
     quarter = Rotation.from_euler("z", 90, degrees=True)
-    for share, (_, line) in zip((0.2, 0.5, 0.8), across, strict=True):
+    for share, line in zip((0.2, 0.5, 0.8), across, strict=True):
         at, step = share * axis.length, 0.05 * axis.length
         before, after = axis.interpolate(at - step), axis.interpolate(at + step)
         turned = quarter.apply([after.x - before.x, after.y - before.y, 0.0])[:2]

@@ -35,7 +35,10 @@ CONTRACT = {
     "bedrock_contours": ["elevation"],
     "thickness_contours": ["thickness"],
     "valley_axis": ["length"],
+    "valley_stations": ["line", "distance", "elevation", "slope"],
     "gravel_extent": ["likelihood"],
+    "sections": ["section", "kind", "length"],
+    "doubts": ["place", "file", "row", "column", "value", "expected"],
     "permits": [
         "permit", "covered", "bedrock_depth", "bedrock_depth_p05", "bedrock_depth_p95", "gravel_top_depth",
         "gravel_top_depth_p05", "gravel_top_depth_p95", "gravel_thickness", "gravel_thickness_p05",

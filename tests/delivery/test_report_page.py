@@ -194,7 +194,7 @@ def test_no_wells_no_axis_no_gravel_still_reads(small_results, tmp_path):
     layers = {name: frame.iloc[:0] for name, frame in small_results.layers.items()}
     bare = attrs.evolve(small_results, survey=survey, stack=stack, interpretation=found, layers=layers, doubts=())
     words = write_report_page(bare, tmp_path / "report.html", {}).read_text("utf-8")
-    assert "No valley axis was found" in words
+    assert "no valley axis was found" in words
     assert "No surface could be tested" in words
 
 

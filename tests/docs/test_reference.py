@@ -77,6 +77,7 @@ def test_required_columns_are_called_so(tables, name):
         ("[region]", region_file._REGION_KEYS),
         ("[inputs]", sources.INPUTS),
         ("[delivery]", region_file._DELIVERY_KEYS),
+        ("[[section]]", region_file._SECTION_KEYS),
         ("[[unit]]", template._KEYS),
     ],
 )

@@ -135,6 +135,34 @@ def test_length_counts_in_metres_where_the_crs_counts_in_feet(layers, small_resu
     )
 
 
+def test_stations_walk_down_the_axis_at_round_distances(layers, small_results):
+    """The floor of the mini region's main valley, by its own formula: 372 - 0.004 x - 48, and a term below 1 m."""
+    stations, axis = layers["valley_stations"], layers["valley_axis"]
+    for number, line in zip(axis.line, axis.geometry, strict=True):
+        mine = stations[stations.line == number]
+        assert mine["distance"].iloc[0] == 0.0
+        assert mine["distance"].iloc[-1] == pytest.approx(line.length)
+        step = 100.0 if line.length > 2000.0 else 50.0  # some 40 steps at a round interval, a cell at least
+        assert np.allclose(np.diff(mine["distance"])[:-1], step)
+        for distance, point in zip(mine["distance"], mine.geometry, strict=True):
+            assert line.project(point) == pytest.approx(distance, abs=1e-6)
+    main = stations[stations.line == 1]
+    x = main.geometry.x - 500_000.0
+    assert np.allclose(main.elevation[2:-2], (372.0 - 0.004 * x - 48.0)[2:-2], atol=1.5)
+    error = small_results.stack.surfaces["bedrock_elevation"].standard_error
+    assert main.standard_error.between(np.nanmin(error) - 1e-9, np.nanmax(error) + 1e-9).all()
+    assert main.depth.between(60.0, 90.0).all()
+    # What was lost between the ends is the slope, integrated by trapezes over the stations.
+    fallen = np.trapezoid(main.slope, main["distance"])
+    assert fallen == pytest.approx(main.elevation.iloc[0] - main.elevation.iloc[-1], abs=0.5)
+
+
+def test_a_tributary_names_the_line_it_joins(layers):
+    axis = layers["valley_axis"].set_index("line")
+    assert axis.joins.tolist() == [0, 1]
+    assert axis.geometry[1].distance(shapely.Point(axis.geometry[2].coords[-1])) < 100.0
+
+
 @pytest.mark.parametrize("shape", ["plane", "waves", "pit"])
 def test_no_valley_gives_an_empty_layer_with_its_columns(small_results, shape):
     grid = small_results.stack.grid
@@ -162,7 +190,7 @@ def test_extent_holds_the_cells_of_its_class(layers, small_results):
     x, y = np.meshgrid(grid.easting, grid.northing)
     probability = small_results.stack.surfaces["deep_gravel_probability"].estimate
     extent = layers["gravel_extent"]
-    for name, lower, upper in (("likely", 0.66, 1.1), ("possible", 0.33, 0.66)):
+    for name, lower, upper in (("likely", 0.66, 1.1), ("possible", 0.33, 0.66), ("not_shown", -0.1, 0.33)):
         outline = shapely.union_all(extent.geometry[extent.likelihood == name])
         inside = shapely.contains_xy(outline.buffer(1e-6), x, y)
         assert np.array_equal(inside, (probability >= lower) & (probability < upper))
@@ -248,3 +276,68 @@ def test_missing_quantiles_of_the_top_widen_rather_than_vanish(small_results):
     place = [Permit("deep", 500_900.0, 4_601_350.0)]
     row = permits_of(small_results, place, attrs.evolve(stack, surfaces={**stack.surfaces, top.name: bare})).iloc[0]
     assert row.gravel_top_depth_p05 < row.gravel_top_depth < row.gravel_top_depth_p95
+
+
+def split_county(results, probability, radius=300.0, depth=80.0):
+    """A permit on a line, west of which gravel has the first probability and east of it the second; rock at 70 m."""
+    stack, grid = results.stack, results.stack.grid
+    west = np.broadcast_to(grid.easting < 501_000.0, grid.shape)
+    chance = np.where(west, *probability)
+    flat = np.full(grid.shape, 1.0)
+    ground = 400.0 * flat
+    surfaces = dict(stack.surfaces)
+    parts = {
+        "bedrock_elevation": (330.0, 5.0),
+        "deep_gravel_thickness": (20.0 * chance, np.sqrt(400.0 * chance * (1.0 - chance))),
+        "deep_gravel_probability": (chance, None),
+        "deep_gravel_top_elevation": (330.0 + 20.0 * chance, None),
+    }
+    for name, (estimate, error) in parts.items():
+        spread = 0.0 if error is None else 1.6449 * error
+        surfaces[name] = attrs.evolve(
+            stack.surfaces[name],
+            estimate=estimate * flat,
+            standard_error=None if error is None else error * flat,
+            p05=(estimate - spread) * flat,
+            p95=(estimate + spread) * flat,
+        )
+    even = attrs.evolve(stack, surfaces=surfaces, ground=ground, covered=flat > 0)
+    place = Permit("P", 501_000.0, 4_601_000.0, requested_depth=depth, location_accuracy=radius)
+    return permits_of(results, [place], even).iloc[0]
+
+
+def test_a_circle_that_straddles_is_undetermined(small_results):
+    """On the line between sure gravel and none neither word is true; away from it each is."""
+    assert split_county(small_results, (0.98, 0.02)).over_gravel == "undetermined"
+    assert split_county(small_results, (0.98, 0.98)).over_gravel == "likely"
+    assert split_county(small_results, (0.02, 0.02)).over_gravel == "unlikely"
+    assert split_county(small_results, (0.5, 0.5)).over_gravel == "undetermined"
+    # Near enough to the line a small circle does not reach over it.
+    assert split_county(small_results, (0.98, 0.02), radius=None).over_gravel == "undetermined"
+
+
+@pytest.mark.parametrize("depth", [30.0, 45.0, 50.0, 55.0, 70.0, 200.0])
+def test_reaching_gravel_is_the_share_of_draws_that_do(small_results, depth):
+    """Monte Carlo: rock at 70 m with an error of 5 m, gravel of 20 m on it in seven of ten draws."""
+    row = split_county(small_results, (0.7, 0.7), depth=depth)
+    draws = np.random.default_rng(1)
+    rock = draws.normal(70.0, 5.0, 200_000)
+    there = draws.random(rock.size) < 0.7
+    share = np.mean(there & (rock - 20.0 < depth))
+    assert row.reach_probability == pytest.approx(share, abs=0.01)
+    expected = "likely" if share >= 0.66 else "unlikely" if share <= 0.34 else "undetermined"
+    assert row.reaches_gravel == expected
+
+
+def test_without_a_requested_depth_nothing_is_said_of_reaching(small_results):
+    row = split_county(small_results, (0.9, 0.9), depth=None)
+    assert row.reaches_gravel is None
+    assert np.isnan(row.reach_probability)
+    assert row.over_gravel == "likely"
+
+
+def test_a_permit_outside_has_no_answer(layers):
+    outside = layers["permits"][~layers["permits"].covered]
+    assert len(outside)
+    assert outside.over_gravel.isna().all()
+    assert outside.reaches_gravel.isna().all()

@@ -271,7 +271,7 @@ def test_soundings_alone_still_give_every_layer(bare):
     layers = {name for name, _ in pyogrio.list_layers(bare[1] / "layers.gpkg")}
     assert layers == {
         "soundings", "model_layers", "tops", "readings", "picks", "wells", "well_intervals", "bedrock_contours",
-        "thickness_contours", "valley_axis", "gravel_extent", "permits",
+        "thickness_contours", "valley_axis", "valley_stations", "gravel_extent", "permits", "sections", "doubts",
     }  # fmt: skip
     assert len(pyogrio.read_dataframe(bare[1] / "layers.gpkg", layer="permits")) == 0
     assert len(pyogrio.read_dataframe(bare[1] / "layers.gpkg", layer="soundings")) == 18

@@ -264,3 +264,38 @@ def test_extra_columns_are_carried_through(folder):
     ]
     assert dict(survey.picks[0].extra) == {"sheet": "7"}
     assert dict(survey.wells[0].intervals[1].extra) == {"rig": "9"}
+
+
+@pytest.mark.parametrize(
+    ("method", "radius"),
+    [
+        # Corners of squares of 1609.344 m and its halves from their centre: the side over the root of two, by hand.
+        ("section", 1138.0),
+        ("Quarter", 569.0),
+        ("quarter-quarter", 284.5),
+        ("QUARTER QUARTER centroid", 284.5),
+        ("10-acre", 142.2),
+        ("hand-held GPS", None),
+        ("", None),
+    ],
+)
+def test_a_permit_at_the_centre_of_a_square_lies_within_its_corners(folder, method, radius):
+    table = (
+        f"permit,x,y,location_method,location_accuracy\nP1,602500,4901200,{method},\nP2,602500,4901200,{method},40\n"
+    )
+    folder.write("permits.csv", table)
+    first, typed = folder.survey().permits
+    assert first.location_method == method
+    assert first.location_accuracy == (None if radius is None else pytest.approx(radius, abs=0.05))
+    assert typed.location_accuracy == 40.0
+
+
+def test_named_sections_come_out_in_their_order(folder):
+    folder.add_table(
+        '[[section]]\nname = "Mill Road"\npoints = [[601000, 4901000], [602000.5, 4901500]]\n'
+        '[[section]]\nname = "East"\npoints = [[601000, 4901000], [601500, 4901000], [602000, 4902000]]'
+    )
+    region, _, _ = folder.read()
+    assert [one.name for one in region.sections] == ["Mill Road", "East"]
+    assert region.sections[0].points == ((601000.0, 4901000.0), (602000.5, 4901500.0))
+    assert len(region.sections[1].points) == 3

@@ -332,3 +332,33 @@ def test_an_extra_column_nearly_named_as_an_optional_one_is_doubted(folder):
     (doubt,) = folder.doubts()
     assert (doubt.file, doubt.row, doubt.column) == ("readings.csv", 1, "error_per_cent")
     assert "did you mean 'error_percent'?" in doubt.expected
+
+
+@pytest.mark.parametrize(
+    ("section", "column", "says"),
+    [
+        ('name = "A"', "section.points", "two places or more"),
+        ('name = "A"\npoints = [[1, 2]]', "section.points", "two places or more"),
+        ('name = "A"\npoints = [[1, 2], [1, 2]]', "section.points", "two places or more"),
+        ('name = "A"\npoints = [[1, 2], [3]]', "section.points", "two places or more"),
+        ('name = "A"\npoints = [[1, 2], ["3", 4]]', "section.points", "two places or more"),
+        ('name = "A"\npoints = "1 2"', "section.points", "two places or more"),
+        ("points = [[1, 2], [3, 4]]", "section.name", "the section's name"),
+        ('nam = "A"\nname = "A"\npoints = [[1, 2], [3, 4]]', "section.nam", "did you mean 'name'?"),
+    ],
+)
+def test_a_section_that_is_no_line_is_a_fault(folder, section, column, says):
+    folder.add_table(f"[[section]]\n{section}")
+    (fault,) = folder.faults()
+    assert (fault.file, fault.column) == ("region.toml", column)
+    assert says in fault.expected
+
+
+def test_two_sections_of_one_name_and_a_single_bracket_are_faults(folder):
+    line = 'name = "A"\npoints = [[1, 2], [3, 4]]\n'
+    before = folder.region_file.read_text(encoding="utf-8")
+    folder.add_table(f"[[section]]\n{line}[[section]]\n{line}")
+    assert "another section has this name" in folder.faults()[0].expected
+    folder.write("region.toml", before)
+    folder.add_table(f"[section]\n{line}")
+    assert "[[section]]" in folder.faults()[0].expected
