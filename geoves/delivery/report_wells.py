@@ -6,7 +6,7 @@ import numpy as np
 
 from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table
 from geoves.domain.results import Results
-from geoves.domain.tops import UnitCalibration
+from geoves.domain.tops import PairedUnit, UnitCalibration
 
 
 def write_wells_and_template(results: Results) -> Markup:
@@ -31,7 +31,7 @@ def write_wells_and_template(results: Results) -> Markup:
     else:
         parts.insert(0, element("p", {}, "Every word of the logs was claimed by a unit."))
     remarks = [element("p", {}, remark) for remark in found.remarks]
-    tables = (_template_table(results), _wells_table(results), *_waters_tables(results))
+    tables = (_template_table(results), *_pair_tables(results), _wells_table(results), *_waters_tables(results))
     return joined([*parts, *remarks, *tables])
 
 
@@ -117,3 +117,49 @@ def _waters_tables(results: Results) -> list[Markup]:
         headed = ("sounding", "range of", "shifted by", "nearest well of it", "away")
         tables.append(table(headed, shifted, "Ranges shifted by the wells’ water"))
     return tables
+
+
+def _pair_tables(results: Results) -> list[Markup]:
+    """Soundings beside wells: which could serve, and what they would make of each range; nothing without pairs."""
+    found, names = (
+        results.interpretation.pair_calibration,
+        {one.code: one.name for one in results.region.template.units},
+    )
+    if found is None or not found.pairs:
+        return []
+    unit = results.region.length_unit
+    pairs = [
+        (
+            place_name(one.well),
+            place_name(one.sounding),
+            format_length(one.distance, unit),
+            "–" if np.isnan(one.misfit) else f"{one.misfit:.1f}",
+            one.miss or "serves",
+        )
+        for one in found.pairs
+    ]
+    headings = ("well", "sounding", "apart", "mean square of residuals over errors", "what of it")
+    units = [
+        (
+            place_name(names[one.unit]),
+            f"{one.before[0]:.3g} to {one.before[1]:.3g}",
+            one.pairs,
+            "–" if np.isnan(one.gain) else f"{one.after[0]:.3g} to {one.after[1]:.3g}",
+            "–" if np.isnan(one.gain) else f"{one.gain:+.2f}",
+            _paired_words(one, found.fewest),
+        )
+        for one in found.units
+    ]
+    headed = ("unit", "typed (Ω m)", "pairs that know it", "by the pairs (Ω m)", "gain at wells left out", "what of it")
+    return [
+        table(headings, pairs, "Soundings beside wells"),
+        table(headed, units, "The template by the soundings beside wells"),
+    ]
+
+
+def _paired_words(one: PairedUnit, fewest: int) -> str:
+    if one.used:
+        return "moved"
+    if np.isnan(one.gain):
+        return f"as typed: fewer than {fewest} pairs, or of too few wells"
+    return "as typed: moved, it would predict wells left out no better"

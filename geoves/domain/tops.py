@@ -178,6 +178,47 @@ class UnitCalibration:
 
 
 @attrs.frozen
+class WellPair:
+    """A sounding beside a well, `distance` m apart.
+
+    misfit  mean square of residuals over errors of its curve under the log's layers, NaN where that was not tried
+    miss    why the pair says nothing, empty where it does
+    """
+
+    well: str
+    sounding: str
+    distance: float
+    misfit: float
+    miss: str
+
+
+@attrs.frozen
+class PairedUnit:
+    """A unit's range in ohm m as typed, and as its `pairs` would have it.
+
+    gain  natural log of how much more probable left-out pairs are under it, NaN where there are too few
+    used  whether it took the typed range's place
+    """
+
+    unit: str
+    before: tuple[float, float]
+    after: tuple[float, float]
+    pairs: int
+    gain: float
+    used: bool
+
+
+@attrs.frozen
+class PairCalibration:
+    """What pairs of soundings and wells within `distance` m made of the template; `fewest` pairs are needed for it."""
+
+    distance: float
+    fewest: int
+    pairs: tuple[WellPair, ...]
+    units: tuple[PairedUnit, ...]
+
+
+@attrs.frozen
 class Interpretation:
     """Every place read through the template: what is handed to the surfaces."""
 
@@ -191,3 +232,4 @@ class Interpretation:
     remarks: tuple[str, ...] = ()
     well_waters: tuple[WellWater, ...] = ()
     water_shifts: tuple[WaterShift, ...] = ()
+    pair_calibration: PairCalibration | None = None

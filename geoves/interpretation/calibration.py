@@ -29,6 +29,8 @@ def calibrate_template(
     fewest : soundings' worth of presence that a unit needs to be calibrated at all
     """
     mean, deviation = template.log_resistivity_means, template.log_resistivity_deviations
+    if not log_resistivity:
+        return template, ()
     draws = np.array(log_resistivity)
     present = ~np.isnan(draws)
     values = np.where(present, draws, 0.0)
@@ -49,7 +51,7 @@ def calibrate_template(
             break
     told = count >= fewest
     new_mean, new_deviation = np.where(told, new_mean, mean), np.where(told, new_deviation, deviation)
-    units = tuple(_with_range(unit, m, s) for unit, m, s in zip(template.units, new_mean, new_deviation, strict=True))
+    units = tuple(with_range(unit, m, s) for unit, m, s in zip(template.units, new_mean, new_deviation, strict=True))
     return attrs.evolve(template, units=units), tuple(
         UnitCalibration(
             old.code, (old.resistivity_p05, old.resistivity_p95), (new.resistivity_p05, new.resistivity_p95),
@@ -64,6 +66,7 @@ def _log_normal(values: FloatArray, mean: FloatArray, deviation: FloatArray) -> 
     return np.asarray(-0.5 * ((values - mean) / deviation) ** 2 - np.log(deviation))
 
 
-def _with_range(unit: Unit, mean: float, deviation: float) -> Unit:
+def with_range(unit: Unit, mean: float, deviation: float) -> Unit:
+    """A unit whose log resistivity has this mean and deviation."""
     low, high = np.exp(mean - Z_95 * deviation), np.exp(mean + Z_95 * deviation)
     return attrs.evolve(unit, resistivity_p05=float(low), resistivity_p95=float(high))

@@ -13,6 +13,7 @@ from geoves.domain.earth import Inverted
 from geoves.domain.survey import Pick, Sounding, Survey, Well
 from geoves.domain.tops import (
     Interpretation,
+    PairCalibration,
     ShallowResistivity,
     Thickness,
     Top,
@@ -24,6 +25,7 @@ from geoves.domain.units import Role, Template
 from geoves.interpretation import sequences, soundings, wells
 from geoves.interpretation.calibration import calibrate_template
 from geoves.interpretation.options import InterpretationOptions
+from geoves.interpretation.pairs import estimate_pairs, learn_from_pairs, paired_soundings, tell_pairs
 from geoves.interpretation.surroundings import Surroundings, find_surroundings
 from geoves.kernels import damped_steps, layered_earth
 from geoves.kernels.blocks import cut_blocks, restore_order
@@ -76,6 +78,7 @@ def interpret(
         Place(by_name[one.sounding].measured, one, known.around[one.sounding], tuple(picks.get(one.sounding, ())))
         for one in inverted
     ]
+    template, paired = _learn_from_wells(survey, places, logged, template, options)
     if places:
         wavenumber = layered_earth.shared_wavenumbers(
             (place.sounding.curve.half_spacing, place.sounding.curve.potential_half_spacing) for place in places
@@ -92,8 +95,10 @@ def interpret(
                 wavenumber=wavenumber,
             )
             drawn = list(chain.from_iterable(map(sample, blocks)))
-            drawn = [drawn[place] for place in order]
-            template, calibration = calibrate_template(template, drawn, options.fewest_to_calibrate)
+            # What taught the template as a pair does not teach it again.
+            spoken = paired_soundings(paired)
+            heard = [drawn[place] for place, one in zip(order, inverted, strict=True) if one.sounding not in spoken]
+            template, calibration = calibrate_template(template, heard, options.fewest_to_calibrate)
         work = partial(
             _interpret_block,
             template=template,
@@ -113,10 +118,28 @@ def interpret(
         shallow_resistivities=tuple(chain.from_iterable(r.shallow_resistivities for r in readings)),
         calibration=calibration,
         unmapped_words=tuple(sorted({word.description for word in words if word.unit is None})),
-        remarks=known.remarks,
+        remarks=(*known.remarks, *tell_pairs(paired)),
+        pair_calibration=paired,
         well_waters=known.waters,
         water_shifts=known.shifts,
     )
+
+
+def _learn_from_wells(
+    survey: Survey,
+    places: Sequence[Place],
+    logged: Sequence[PlaceReading],
+    template: Template,
+    options: InterpretationOptions,
+) -> tuple[Template, PairCalibration | None]:
+    """The template as pairs of soundings and wells would have it, None for what they said where none was looked for."""
+    if not survey.wells or options.pair_distance <= 0:
+        return template, None
+    read = [(well, reading.well_readings) for well, reading in zip(survey.wells, logged, strict=True)]
+    pairs = [(place.sounding, place.inverted) for place in places]
+    around = {place.sounding.name: place.around for place in places}
+    estimates = estimate_pairs(pairs, read, around, template, options, survey.crs_unit_metres)
+    return learn_from_pairs(template, estimates, options)
 
 
 def _presence_at_wells(

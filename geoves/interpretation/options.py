@@ -4,6 +4,7 @@ from collections.abc import Mapping
 from types import MappingProxyType
 
 import attrs
+import numpy as np
 
 from geoves.domain.units import Role
 
@@ -23,6 +24,9 @@ class InterpretationOptions:
     """presence                 prior probability that a unit of the template is present at a place
     calibrate                   whether the survey's curves may move the template's ranges before they are used
     fewest_to_calibrate         soundings' worth of a unit's presence that this needs
+    pair_distance               a sounding within so many m of a well is its pair and may move the template; 0 for none
+    fewest_pairs                pairs that know a unit, which this needs
+    lateral_roughness           deviation of the natural log of a contact's depth over 1 km; grows with the root of it
     draws                       columns drawn for each sounding from the weighed sequences
     seen_log_bayes_factor       a basal contact is seen where sequences with it beat those without by this (nats) ...
     seen_log_depth_deviation    ... and where its log depth is known this well
@@ -40,6 +44,9 @@ class InterpretationOptions:
     presence: float = attrs.field(default=0.5, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
     calibrate: bool = True
     fewest_to_calibrate: int = attrs.field(default=10, validator=attrs.validators.ge(1))
+    pair_distance: float = attrs.field(default=250.0, validator=attrs.validators.ge(0))
+    fewest_pairs: int = attrs.field(default=4, validator=attrs.validators.ge(2))
+    lateral_roughness: float = attrs.field(default=0.25, validator=attrs.validators.ge(0))
     draws: int = attrs.field(default=400, validator=attrs.validators.ge(50))
     seen_log_bayes_factor: float = attrs.field(default=2.3, validator=attrs.validators.ge(0))
     seen_log_depth_deviation: float = attrs.field(default=0.2, validator=attrs.validators.gt(0))
@@ -54,3 +61,8 @@ class InterpretationOptions:
     least_match: float = attrs.field(default=80.0, validator=[attrs.validators.gt(0), attrs.validators.le(100)])
     block: int = attrs.field(default=16, validator=attrs.validators.ge(1))
     random_seed: int = 0
+
+
+def lateral_deviation(distance: float, options: InterpretationOptions) -> float:
+    """Deviation of the natural log of a contact's depth between places `distance` m apart: a random walk's."""
+    return float(options.lateral_roughness * np.sqrt(distance / 1000.0))

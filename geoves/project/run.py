@@ -90,7 +90,7 @@ def work_out(inputs: Inputs, progress: Progress, engine: Map) -> tuple[Results, 
         "remarks": [*interpretation.remarks, *stack.remarks],
         "bedrock_status": provenance.summarise(statuses),
         "noise": inverted[0].noise if inverted else None,
-        "template_calibration": [attrs.asdict(one) for one in interpretation.calibration],
+        "template_calibration": _record_calibration(interpretation),
         "covariances": [attrs.asdict(one, filter=_scalars) for one in stack.variograms],
         "figures_of_merit": merit,
         "doubts": len(doubts),
@@ -135,6 +135,15 @@ def _step(progress: Progress, title: str) -> Iterator[None]:
 def _count_blocks(shape: tuple[int, int], settings: Settings) -> int:
     """Blocks of cells at most: four quantities, and how far the first rests on soundings, kriged on each."""
     return 5 * ceil(shape[0] * shape[1] / settings.surfaces.block)
+
+
+def _record_calibration(interpretation: Interpretation) -> dict[str, Any]:
+    """What moved the template's ranges, in the order in which it did: soundings beside wells, then all curves."""
+    paired = interpretation.pair_calibration
+    return {
+        "pairs": None if paired is None else attrs.asdict(paired),
+        "curves": [attrs.asdict(one) for one in interpretation.calibration],
+    }
 
 
 def _scalars(_: Any, value: Any) -> bool:

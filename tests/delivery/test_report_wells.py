@@ -7,7 +7,7 @@ import numpy as np
 
 from geoves.delivery.report_wells import write_wells_and_template
 from geoves.delivery.sentences import tell_water_level
-from geoves.domain.tops import WaterShift, WellWater
+from geoves.domain.tops import PairCalibration, PairedUnit, WaterShift, WellPair, WellWater
 
 
 def chapter(results, **more):
@@ -33,3 +33,20 @@ def test_the_water_level_is_told_with_its_doubt_in_the_regions_unit(small_result
     column = attrs.evolve(small_results.interpretation.columns[0], water_level=np.array([3.048, 0.9144]))
     assert "10.0 ± 3.0 ft here" in tell_water_level(column, "ft")
     assert tell_water_level(small_results.interpretation.columns[0], "ft") == ""
+
+
+def test_pairs_stand_with_their_misses_and_what_they_made_of_the_template(small_results):
+    pairs = (WellPair("W-1", "Larch 2", 120.0, 1.04, ""), WellPair("W-3", "Larch 7", 90.0, np.nan, "the log has gaps"))
+    units = (
+        PairedUnit("blue_clay", (12.0, 26.0), (14.2, 27.9), 5, 1.234, True),
+        PairedUnit("till", (22.0, 45.0), (23.0, 44.0), 5, -0.2, False),
+        PairedUnit("shale", (50.0, 95.0), (50.0, 95.0), 2, np.nan, False),
+    )
+    _, rows = chapter(small_results, pair_calibration=PairCalibration(250.0, 4, pairs, units))
+    assert ["W-1", "Larch 2", "120 m", "1.0", "serves"] in rows
+    assert ["W-3", "Larch 7", "90 m", "–", "the log has gaps"] in rows
+    assert ["Blue clay", "12 to 26", "5", "14.2 to 27.9", "+1.23", "moved"] in rows
+    assert ["Weathered till", "22 to 45", "5", "23 to 44", "-0.20",
+            "as typed: moved, it would predict wells left out no better"] in rows  # fmt: skip
+    assert ["Shale &amp; siltstone", "50 to 95", "2", "–", "–",
+            "as typed: fewer than 4 pairs, or of too few wells"] in rows  # fmt: skip
