@@ -151,6 +151,7 @@ def _sounding_row(
             "gravel_probability": column.gravel_probability,
             "gravel_limit": column.gravel_limit,
             "base_contrast": np.nan if column.bedrock_status == "deeper_than" else float(np.exp(column.base_contrast)),
+            "conditioned_on": column.beside.well if column.beside is not None and column.beside.agrees else "",
             "water_level": column.water_level[0],
             "water_level_error": column.water_level[1],
             "sentence": tell_all(column, results.region.template, results.region.length_unit),

@@ -128,6 +128,11 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                         "ratio",
                     ),
                     Column(
+                        "conditioned_on",
+                        "Conditioned on",
+                        "The well beside it whose log conditions the depths and units told here; the tops are not.",
+                    ),
+                    Column(
                         "water_level",
                         "Water level",
                         "Depth to the water table, carried from wells; empty where none shows it.",

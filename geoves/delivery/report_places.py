@@ -9,6 +9,7 @@ from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import Markup, element, format_length, place_name, table, unit_label
 from geoves.delivery.sentences import (
     STATUS_WORDS,
+    tell_beside,
     tell_doubt,
     tell_opinion,
     tell_readings_aside,
@@ -156,7 +157,7 @@ def _strip_notes(job: StripJob, inverted: Inverted, column: UnitColumn) -> Marku
         notes.append(f"Later potential spacings were found shifted by a factor of {', '.join(factors)}.")
     notes += [f"Set aside: {words}." for words in tell_readings_aside(job.sounding.curve, inverted, job.unit)]
     notes += [f"{words[:1].upper()}{words[1:].rstrip('.')}." for words in inverted.remarks]
-    notes += [words for words in (tell_water_level(column, job.unit),) if words]
+    notes += [words for words in (tell_water_level(column, job.unit), tell_beside(column, job.unit)) if words]
     notes += [tell_opinion(opinion, job.unit) for opinion in column.pick_opinions]
     if job.sounding.note:
         notes.append(f"Field note: {job.sounding.note}")

@@ -118,6 +118,19 @@ def tell_water_level(column: UnitColumn, unit: LengthUnit) -> str:
     return f"{level}: coarse ground above it counts as drained, and does not speak for the aquifer's resistivity."
 
 
+def tell_beside(column: UnitColumn, unit: LengthUnit) -> str:
+    """What a log beside the sounding did to what is shown; empty where none is near enough."""
+    if column.beside is None:
+        return ""
+    away = f"{column.beside.well}, {format_length(column.beside.distance, unit)} away"
+    if not column.beside.agrees:
+        return f"Hardly any column that fits this curve meets the log of {away}: what is shown is the curve's own."
+    return (
+        f"Of the columns that fit this curve, those count for more that meet the log of {away}. The depth that is "
+        "kriged is the curve's own: the well is kriged beside it."
+    )
+
+
 def tell_trade_offs(inverted: Inverted) -> str:
     """Which combinations the curve knows although it does not know their parts; empty where there are none."""
     return " ".join(f"{_capital(words).rstrip('.')}." for words in inverted.trade_offs)

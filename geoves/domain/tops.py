@@ -80,6 +80,20 @@ class PickOpinion:
 
 
 @attrs.frozen
+class WellBeside:
+    """The log nearest to a sounding, `distance` m away, by which its columns were weighed.
+
+    worth   share of the columns that the weights amount to
+    agrees  False where they were too few, and the columns left as they were
+    """
+
+    well: str
+    distance: float
+    worth: float
+    agrees: bool
+
+
+@attrs.frozen
 class UnitColumn:
     """One sounding read through the template.
 
@@ -98,6 +112,7 @@ class UnitColumn:
     water_level       depth of the water table and its standard deviation, m (2,), NaN where none is known
     above_water       (d,) probability of coarse ground above the water level in each slice of the profile; empty where
                       none was looked for
+    beside            the log by which all this was conditioned; what is kriged is not, for the well is kriged itself
     picks             the interpreter's decisions here; `pick_opinions` what the curve says of each
     """
 
@@ -123,6 +138,7 @@ class UnitColumn:
     base_contrast: float = float("nan")
     water_level: FloatArray = attrs.field(factory=lambda: np.full(2, np.nan), converter=floats, eq=by_value, repr=shape)
     above_water: FloatArray = attrs.field(factory=lambda: np.empty(0), converter=floats, eq=by_value, repr=shape)
+    beside: WellBeside | None = None
 
 
 @attrs.frozen

@@ -23,6 +23,7 @@ from geoves.domain.tops import (
 )
 from geoves.domain.units import Role, Template
 from geoves.interpretation import sequences, soundings, wells
+from geoves.interpretation.beside_well import condition_draws
 from geoves.interpretation.calibration import calibrate_template
 from geoves.interpretation.options import InterpretationOptions
 from geoves.interpretation.pairs import estimate_pairs, learn_from_pairs, paired_soundings, tell_pairs
@@ -71,7 +72,8 @@ def interpret(
     picks = {pick.place: [p for p in survey.picks if p.place == pick.place] for pick in survey.picks}
     logged = [_interpret_well(well, picks.get(well.name, []), template, options) for well in survey.wells]
     presence = _presence_at_wells(logged, template, options)
-    known = find_surroundings(survey, [reading.well_readings for reading in logged], template, options)
+    log_readings, log_tops = [one.well_readings for one in logged], [one.tops for one in logged]
+    known = find_surroundings(survey, log_readings, log_tops, template, options)
     readings: list[PlaceReading] = []
     calibration: tuple[UnitCalibration, ...] = ()
     places = [
@@ -229,27 +231,31 @@ def _interpret_block(
     deep = soundings.role_mask(template, Role.DEEP_AQUIFER)
     gravel_prior = float(1.0 - np.prod(1.0 - presence[deep])) if np.any(deep) else np.nan
     results = []
-    for (sounding, inverted, _, decided), here, (draws, bound) in zip(places, local, weighed, strict=True):
-        contact = soundings.find_basal_contact(draws, bound, here, options)
-        reading = _read_sounding(sounding, inverted, draws, contact, decided, here, options)
+    for place, here, (draws, bound) in zip(places, local, weighed, strict=True):
+        reading = _read_sounding(place, draws, bound, here, options)
         column = None if reading.column is None else attrs.evolve(reading.column, gravel_prior=gravel_prior)
         results.append(attrs.evolve(reading, column=column))
     return results
 
 
 def _read_sounding(
-    sounding: Sounding,
-    inverted: Inverted,
-    draws: sequences.ColumnDraws,
-    inferred: soundings.BasalContact,
-    picks: Sequence[Pick],
-    template: Template,
-    options: InterpretationOptions,
+    place: Place, draws: sequences.ColumnDraws, bound: float, template: Template, options: InterpretationOptions
 ) -> PlaceReading:
-    """What a sounding adds, its inferred contact overruled by the interpreter's picks."""
-    generator = np.random.default_rng([options.random_seed, *sounding.name.encode(), len(picks)])
-    contact = soundings.apply_picks(inferred, picks, template, generator)
+    """What a sounding adds, its inferred contact overruled by the interpreter's picks.
+
+    What is kriged is the curve's own; the column that is shown is conditioned by the log beside it.
+    """
+    sounding, inverted, around, picks = place
+    inferred = soundings.find_basal_contact(draws, bound, template, options)
+    seed = [options.random_seed, *sounding.name.encode(), len(picks)]
+    contact = soundings.apply_picks(inferred, picks, template, np.random.default_rng(seed))
     opinions = soundings.weigh_picks(inferred, picks, template)
+    shown, beside = condition_draws(draws, bound, around.beside, template, options, np.random.default_rng(seed))
+    shown_contact = contact
+    if beside is not None and beside.agrees:
+        met = soundings.find_basal_contact(shown, bound, template, options)
+        met = attrs.evolve(met, status=inferred.status, bound=inferred.bound)
+        shown_contact = soundings.apply_picks(met, picks, template, np.random.default_rng(seed))
     decided = contact.picks[-1] if contact.picks else None
     source = f"pick by {decided.interpreter}: {decided.reason}" if decided else "curve"
     thicknesses: list[Thickness] = []
@@ -264,7 +270,7 @@ def _read_sounding(
     replaced = {row.role for row in decided_absent}
     tops = soundings.contact_tops(sounding, contact, template, options)
     return PlaceReading(
-        column=soundings.read_column(inverted, draws, contact, template, opinions),
+        column=attrs.evolve(soundings.read_column(inverted, shown, shown_contact, template, opinions), beside=beside),
         tops=(*tops, *soundings.other_picks(sounding, picks, template)),
         thicknesses=(*(row for row in thicknesses if row.role not in replaced), *decided_absent),
         shallow_resistivities=tuple(soundings.shallow_resistivity(sounding, draws, template)),

@@ -27,6 +27,7 @@ class InterpretationOptions:
     pair_distance               a sounding within so many m of a well is its pair and may move the template; 0 for none
     fewest_pairs                pairs that know a unit, which this needs
     lateral_roughness           deviation of the natural log of a contact's depth over 1 km; grows with the root of it
+    conditioning_distance       a well's log within so many m conditions what a sounding shows; 0 for none
     draws                       columns drawn for each sounding from the weighed sequences
     seen_log_bayes_factor       a basal contact is seen where sequences with it beat those without by this (nats) ...
     seen_log_depth_deviation    ... and where its log depth is known this well
@@ -47,6 +48,7 @@ class InterpretationOptions:
     pair_distance: float = attrs.field(default=250.0, validator=attrs.validators.ge(0))
     fewest_pairs: int = attrs.field(default=4, validator=attrs.validators.ge(2))
     lateral_roughness: float = attrs.field(default=0.25, validator=attrs.validators.ge(0))
+    conditioning_distance: float = attrs.field(default=1000.0, validator=attrs.validators.ge(0))
     draws: int = attrs.field(default=400, validator=attrs.validators.ge(50))
     seen_log_bayes_factor: float = attrs.field(default=2.3, validator=attrs.validators.ge(0))
     seen_log_depth_deviation: float = attrs.field(default=0.2, validator=attrs.validators.gt(0))

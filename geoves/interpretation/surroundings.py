@@ -6,8 +6,9 @@ import attrs
 import numpy as np
 
 from geoves.domain.survey import Survey
-from geoves.domain.tops import WaterShift, WellReading, WellWater
+from geoves.domain.tops import Top, WaterShift, WellReading, WellWater
 from geoves.domain.units import Role, Template, Unit
+from geoves.interpretation.beside_well import LogBeside, find_log_beside, read_contacts
 from geoves.interpretation.conductance import FEWEST_WATERS, find_well_waters, name_shifts, shift_by_water
 from geoves.interpretation.options import InterpretationOptions
 from geoves.interpretation.water import carry_water_level, find_water_wells
@@ -19,10 +20,12 @@ class Surroundings:
 
     water_level : depth of the water table and its deviation, m; None where it is not known
     log_shift : natural log of the factor that the wells' water puts on the resistivity of the units of a role
+    beside : the nearest log, None where none is near enough
     """
 
     water_level: tuple[float, float] | None = None
     log_shift: Mapping[Role, float] = attrs.field(factory=dict)
+    beside: LogBeside | None = None
 
     def localise(self, template: Template) -> Template:
         """The template as it stands here."""
@@ -47,9 +50,13 @@ class Wells:
 
 
 def find_surroundings(
-    survey: Survey, readings: Sequence[Sequence[WellReading]], template: Template, options: InterpretationOptions
+    survey: Survey,
+    readings: Sequence[Sequence[WellReading]],
+    tops: Sequence[Sequence[Top]],
+    template: Template,
+    options: InterpretationOptions,
 ) -> Wells:
-    """What each well's log (`readings`), water level and water say of the soundings around it."""
+    """What each well's log (`readings` and `tops`), water level and water say of the soundings around it."""
     metres, reach = survey.crs_unit_metres, options.water_level_reach
     water_wells, heads = find_water_wells(survey.wells, readings, template, metres) if reach else ([], [])
     levels = {one.name: carry_water_level(one, water_wells, metres, reach) for one in survey.soundings}
@@ -57,7 +64,10 @@ def find_surroundings(
     shifts = shift_by_water(survey.soundings, survey.wells, waters, options.conductance_range, metres)
     told = name_shifts(shifts, survey.soundings, survey.wells, waters, metres)
     remarks = (*_tell_water(levels, [well.name for well in water_wells], heads), *_tell_waters(waters, told, survey))
-    around = {name: Surroundings(levels[name], shifts[name]) for name in levels}
+    contacts = [read_contacts(read, top, template, options) for read, top in zip(readings, tops, strict=True)]
+    logs = list(zip(survey.wells, contacts, strict=True)) if options.conditioning_distance > 0 else []
+    beside = {one.name: find_log_beside(one, logs, options.conditioning_distance, metres) for one in survey.soundings}
+    around = {name: Surroundings(levels[name], shifts[name], beside[name]) for name in levels}
     return Wells(around, waters, told, remarks)
 
 

@@ -6,8 +6,8 @@ import attrs
 import numpy as np
 
 from geoves.delivery.report_wells import write_wells_and_template
-from geoves.delivery.sentences import tell_water_level
-from geoves.domain.tops import PairCalibration, PairedUnit, WaterShift, WellPair, WellWater
+from geoves.delivery.sentences import tell_beside, tell_water_level
+from geoves.domain.tops import PairCalibration, PairedUnit, WaterShift, WellBeside, WellPair, WellWater
 
 
 def chapter(results, **more):
@@ -50,3 +50,14 @@ def test_pairs_stand_with_their_misses_and_what_they_made_of_the_template(small_
             "as typed: moved, it would predict wells left out no better"] in rows  # fmt: skip
     assert ["Shale &amp; siltstone", "50 to 95", "2", "–", "–",
             "as typed: fewer than 4 pairs, or of too few wells"] in rows  # fmt: skip
+
+
+def test_a_log_beside_is_named_whether_it_agrees_or_not(small_results):
+    column = small_results.interpretation.columns[0]
+    agreeing = attrs.evolve(column, beside=WellBeside("W-1", 304.8, 0.6, agrees=True))
+    against = attrs.evolve(column, beside=WellBeside("W-1", 304.8, 0.001, agrees=False))
+    assert "meet the log of W-1, 1,000 ft away. The depth that is kriged is the curve's own" in tell_beside(
+        agreeing, "ft"
+    )
+    assert "Hardly any column that fits this curve meets the log of W-1" in tell_beside(against, "ft")
+    assert tell_beside(column, "ft") == ""

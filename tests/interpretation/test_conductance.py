@@ -56,7 +56,9 @@ def test_it_falls_by_e_over_the_range_and_never_reaches_other_units():
 def test_only_the_aquifer_that_the_wells_end_in_is_shifted():
     survey = Survey((sounding(),), tuple(SALT))
     readings = [read_places([], FULL, wells=[well]).well_readings for well in SALT]
-    here = find_surroundings(survey, readings, FULL, InterpretationOptions()).around["S"].localise(FULL)
+    here = (
+        find_surroundings(survey, readings, [()] * len(SALT), FULL, InterpretationOptions()).around["S"].localise(FULL)
+    )
     for unit, typed in zip(here.units, FULL.units, strict=True):
         ratio = unit.resistivity_p05 / typed.resistivity_p05
         assert unit.resistivity_p95 / typed.resistivity_p95 == pytest.approx(ratio)
