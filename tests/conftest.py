@@ -313,6 +313,22 @@ def small_stack():
             np.where(present < 0.05, np.nan, rock + thick),
             error,
         ),
+        _banded(
+            "deep_gravel_top_depth",
+            "Depth to the top of the deep gravel",
+            "depth",
+            np.where(present < 0.05, np.nan, land - rock - thick),
+            error,
+        ),
+        _banded("shallow_aquifer_thickness", "Thickness of the shallow aquifer", "thickness", 5.0 + blank, 0.2 * error),
+        _banded("cover_thickness", "Thickness of the cover", "thickness", 4.0 + blank, 0.1 * error),
+        _banded(
+            "confining_unit_thickness",
+            "Thickness of the confining unit",
+            "thickness",
+            land - rock - thick - 9.0,
+            error,
+        ),
         Surface("deep_gravel_probability", "Probability of deep gravel", "probability", GRID, present),
         _banded(
             "shallow_aquifer_resistivity",

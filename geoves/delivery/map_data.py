@@ -43,7 +43,13 @@ SHOWN_SURFACES = (
     "shallow_aquifer_resistivity",
 )
 # Read under the cursor or in a column, though not drawn as a surface of their own.
-READ_SURFACES = ("shallow_aquifer_probability",)
+READ_SURFACES = (
+    "shallow_aquifer_probability",
+    "shallow_aquifer_thickness",
+    "cover_thickness",
+    "confining_unit_thickness",
+    "deep_gravel_top_depth",
+)
 WEB_MERCATOR = "EPSG:3857"
 MOST_CELLS = 1_500_000  # beyond it the page would be heavy: every third, fifth, ... cell is shown, and it says so
 
@@ -302,11 +308,13 @@ def _describe_permits(results: Results, to_degrees: pyproj.Transformer) -> list[
     layer = results.layers.get("permits")
     said = {} if layer is None else {row["permit"]: row for row in layer.drop(columns="geometry").to_dict("records")}
     lengths = ("bedrock_depth", "gravel_top_depth", "gravel_thickness")
-    fields = [f"{name}{band}" for name in lengths for band in ("", "_p05", "_p95")] + ["gravel_probability"]
+    chances = ("gravel_probability", "reach_probability")
+    fields = [f"{name}{band}" for name in lengths for band in ("", "_p05", "_p95")] + list(chances)
     found = []
     for permit in results.survey.permits:
         row = said.get(permit.name, {})
-        values = {field: _rounded(row.get(field)) for field in fields}
+        values: dict[str, Any] = {field: _rounded(row.get(field)) for field in fields}
+        values |= {name: row[name] for name in ("over_gravel", "reaches_gravel") if isinstance(row.get(name), str)}
         more = {"requested": permit.requested_depth, "use": permit.use, "radius": permit.location_accuracy}
         found.append({**_position(permit, to_degrees), **more, "covered": bool(row.get("covered", False)), **values})
     return found

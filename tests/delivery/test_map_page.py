@@ -7,6 +7,7 @@ import geopandas
 import numpy as np
 import pyproj
 import pytest
+import rasterio
 import shapely
 import shapely.affinity
 from selenium.webdriver.common.action_chains import ActionChains
@@ -15,6 +16,7 @@ from selenium.webdriver.common.keys import Keys
 
 from geoves.delivery.map_data import control_points, describe_region, encode_grid, thin_stack
 from geoves.delivery.map_page import write_map_page
+from geoves.delivery.rasters import write_rasters
 from geoves.delivery.sentences import tell_opinion, tell_sounding
 from geoves.domain.grids import Grid
 from geoves.domain.survey import Pick
@@ -74,6 +76,105 @@ def test_readout_is_the_value_of_the_cell(opened, small_results, cell, within):
     container = opened.driver.find_element(By.ID, "map_geoves")
     ActionChains(opened.driver).move_to_element_with_offset(container, 1, 1).move_to_element(container).perform()
     assert opened.wait_for("document.getElementById('value')?.textContent") == f"{values[cell]:.1f} m"
+
+
+def test_readouts_at_300_places_are_the_rasters(opened, small_results, tmp_path):
+    """Every surface under the cursor against the GeoTIFFs, read by rasterio; pyproj says where a place lies."""
+    write_rasters(small_results.stack, small_results.region, tmp_path, {"software": "geoves", "date": "2026-06-01"})
+    grid = small_results.stack.grid
+    draws = np.random.default_rng(5)
+    # The page places a cell to a twentieth of its side: nearer to an edge than that, the neighbour may be read.
+    across, down = draws.uniform(0.06, 0.94, (2, 300))
+    x = grid.west + (draws.integers(0, grid.n_columns, 300) + across) * grid.cell_size
+    y = grid.north - (draws.integers(0, grid.n_rows, 300) + down) * grid.cell_size
+    to_degrees = pyproj.Transformer.from_crs(small_results.region.crs, "EPSG:4326", always_xy=True)
+    longitude, latitude = to_degrees.transform(x, y)
+    read = opened.run(
+        "return arguments[0].map(([lat, lng]) => { map_geoves.fire('mousemove', {latlng: L.latLng(lat, lng)});"
+        "const others = [...document.querySelectorAll('#readout li')].map(li => [li.dataset.surface,"
+        "li.querySelector('b').textContent]);"
+        "return {bedrock_elevation: document.getElementById('value').textContent, ...Object.fromEntries(others)}; })",
+        [list(place) for place in zip(latitude.tolist(), longitude.tolist(), strict=True)],
+    )
+    compared = 0
+    for path in sorted((tmp_path / "surfaces").iterdir()):
+        if path.stem not in small_results.stack.surfaces:
+            continue
+        with rasterio.open(path) as raster:
+            for found, (value,) in zip(read, raster.sample(zip(x, y, strict=True), masked=True), strict=True):
+                said = found.get(path.stem, "no value here")
+                if value is np.ma.masked:
+                    assert said == "no value here"
+                    continue
+                compared += 1
+                decimals = 0.005 if raster.units[0] == "1" else 0.5 if raster.units[0] == "ohm m" else 0.05
+                # half the last figure shown, half of the raster's 1/64 and half of the page's own step
+                assert float(said.split()[0].replace(",", "").replace("\u2212", "-")) == pytest.approx(
+                    float(value), abs=decimals + 1 / 128 + 0.003
+                ), path.stem
+    assert compared > 300 * 9
+
+
+def test_beds_that_the_surfaces_tell_apart_stand_in_the_column(opened, small_results):
+    """4 m of cover, 5 m of shallow aquifer, and the strip's colour at their middle is that of each."""
+    grid = small_results.stack.grid
+    opened.driver.find_element(By.ID, "wanted").send_keys(f"{grid.easting[10]} {grid.northing[30]}", Keys.ENTER)
+    answer = opened.run("return document.getElementById('answer').textContent")
+    names = {unit.role.value: unit.name for unit in small_results.region.template.units}
+    assert f"{names['cover']} 4 m (" in answer
+    assert f"{names['shallow_aquifer']} 5 m (" in answer
+    assert "not told apart" not in answer
+    labels = opened.run("return [...document.querySelectorAll('#answer .strip .halo')].map(t => t.textContent)")
+    assert labels[:3] == [names[role] for role in ("cover", "shallow_aquifer", "confining")]
+    colours = opened.run(
+        "return [...document.querySelectorAll('#answer .strip stop')].map(s => s.getAttribute('stop-color'))"
+    )
+    shown = {unit["role"]: unit["colour"] for unit in describe_region(small_results)["units"]}
+    cover = [int(shown["cover"][i : i + 2], 16) for i in (1, 3, 5)]
+    assert [int(c) for c in re.findall(r"\d+", colours[0])] == pytest.approx(cover, abs=6)
+
+
+def test_tab_reaches_a_permit_and_enter_opens_it(opened, small_results):
+    """From the map on, Tab alone; every permit in sight is a stop."""
+    names = {one.name for one in small_results.survey.permits}
+    opened.run("document.getElementById('map_geoves').focus()")
+    passed = []
+    for _ in range(80):
+        opened.driver.switch_to.active_element.send_keys(Keys.TAB)
+        name = opened.run("return document.activeElement.dataset.permit || ''")
+        passed.append(name)
+        if name == "P-104":
+            break
+    assert passed[-1] == "P-104"
+    assert set(passed) - {""} <= names
+    assert "P-104" in opened.run("return document.activeElement.getAttribute('aria-label')")
+    opened.driver.switch_to.active_element.send_keys(Keys.ENTER)
+    assert opened.run("return document.querySelector('#answer h2').textContent") == "Permit P-104"
+    opened.driver.switch_to.active_element.send_keys(Keys.ESCAPE)
+    assert opened.run("return document.activeElement.dataset.permit") == "P-104"
+
+
+def test_too_many_permits_in_sight_are_no_stops(browser, small_results, tmp_path):
+    """600 permits at one place and one far off: only the lone one is a stop once the others are out of sight."""
+    first = small_results.survey.permits[0]
+    crowd = tuple(attrs.evolve(first, name=f"C-{i}") for i in range(600))
+    lone = attrs.evolve(first, name="lone", easting=first.easting + 1500.0)
+    survey = attrs.evolve(small_results.survey, permits=(*crowd, lone))
+    layer = small_results.layers["permits"].iloc[[0] * 601].reset_index(drop=True)
+    layer = layer.assign(permit=[one.name for one in survey.permits])
+    results = attrs.evolve(small_results, survey=survey, layers={**small_results.layers, "permits": layer})
+    browser.open(write_map_page(results, tmp_path / "map.html"))
+    browser.wait_for(READY)
+    stops = "return [...document.querySelectorAll('.stop')].map(s => s.dataset.permit)"
+    assert browser.run(stops) == []
+    browser.driver.find_element(By.ID, "wanted").send_keys("lone", Keys.ENTER)
+    browser.run("map_geoves.setView(map_geoves.getCenter(), 17, {animate: false})")
+    assert browser.run(stops) == ["lone"]
+
+
+def test_strength_of_the_surface_can_be_turned_down(opened):
+    opened.run("const o = document.getElementById('opacity'); o.value = 40; o.dispatchEvent(new Event('input'))")
+    assert opened.run("return getComputedStyle(map_geoves.getPane('surface')).opacity") == "0.4"
 
 
 def test_blank_cells_say_so(opened, small_results):

@@ -20,10 +20,33 @@ function columnAt(easting, northing) {
     cell, rock,
     gravel: valueAt("deep_gravel_thickness", cell),
     gravelChance: valueAt("deep_gravel_probability", cell)?.estimate ?? 0,
+    beds: bedsAt(cell),
     shallow: valueAt("shallow_aquifer_resistivity", cell),
     shallowChance: valueAt("shallow_aquifer_probability", cell)?.estimate,
     ground: described.ground[cell],
   };
+}
+
+// The beds above gravel and rock from the top down, where surfaces tell them apart; null where none does.
+const BEDS = [["cover", "cover_thickness"], ["shallow_aquifer", "shallow_aquifer_thickness"],
+  ["confining", "confining_unit_thickness"]];
+
+function bedsAt(cell) {
+  const beds = BEDS.map(([role, surface]) => ({ role, thickness: valueAt(surface, cell) }));
+  return beds.some(({ thickness }) => thickness) ? beds.filter(({ thickness }) => thickness) : null;
+}
+
+// Bases of the beds, the last of which ends where gravel or rock begins; bands add as those of independent lengths do.
+function bedBases(column) {
+  let estimate = 0, low = 0, high = 0;
+  return column.beds.slice(0, -1).map(({ thickness }) => {
+    estimate += thickness.estimate;
+    if (known(thickness.p05)) {
+      low = Math.hypot(low, thickness.estimate - thickness.p05);
+      high = Math.hypot(high, thickness.p95 - thickness.estimate);
+    }
+    return { estimate, p05: estimate - low, p95: estimate + high };
+  });
 }
 
 function mixed(colours, shares) {
@@ -43,10 +66,22 @@ function columnShares(column, depth) {
   const thick = drawnThickness(column);
   const shift = { estimate: column.rock.estimate - thick, p05: column.rock.p05 - thick, p95: column.rock.p95 - thick };
   const gravel = thick > 0 ? Math.max(0, chanceAbove(depth, shift) - rock) * column.gravelChance : 0;
-  return [Math.max(0, 1 - rock - gravel), gravel, rock];
+  const above = Math.max(0, 1 - rock - gravel);
+  return [...splitAbove(column, depth).map((share) => share * above), gravel, rock];
+}
+
+// How what lies above gravel and rock divides among the beds at a depth; one share where they are not told apart.
+function splitAbove(column, depth) {
+  if (!column.beds) return [1];
+  const below = bedBases(column).map((base) => chanceAbove(depth, base));
+  const shares = [1, ...below].map((share, i) => Math.max(0, share - (below[i] ?? 0)));
+  const total = shares.reduce((sum, share) => sum + share, 0) || 1;
+  return shares.map((share) => share / total);
 }
 
 const ABOVE = "#e9e0bd";
+const coloursOf = (column) => [...(column.beds ? column.beds.map(({ role }) => colourOf(role)) : [ABOVE]),
+  colourOf("deep_aquifer"), colourOf("bedrock")];
 
 function drawStrip(column) {
   const deepest = Math.max(column.rock.p95 * 1.12, column.rock.estimate * 1.2, 5);
@@ -54,7 +89,7 @@ function drawStrip(column) {
   const y = (depth) => top + depth / deepest * height;
   const figure = draw("svg", { class: "figure strip", viewBox: "0 0 350 366", width: 350, height: 366, role: "img" });
   figure.append(draw("title", {}, "Predicted column, drawn to scale from the ground down"));
-  const colours = [ABOVE, colourOf("deep_aquifer"), colourOf("bedrock")];
+  const colours = coloursOf(column);
   const stops = Array.from({ length: 81 }, (_, i) => draw("stop",
     { offset: i / 80, "stop-color": mixed(colours, columnShares(column, deepest * i / 80)) }));
   figure.append(draw("defs", {}, draw("linearGradient", { id: "column-fill", x1: 0, y1: 0, x2: 0, y2: 1 }, stops)));
@@ -78,14 +113,28 @@ function stripScale(deepest, y, x, metres, unit) {
   return [...marks, words(11, unit)];
 }
 
-// What is where, beside the strip; the beds above are named together, for the surfaces do not part them.
+// Each bed that is there at the middle of its stretch.
+function bedLabels(column, y, gravelTop) {
+  const bases = [...bedBases(column).map((base) => base.estimate), gravelTop];
+  return column.beds.map(({ role, thickness }, i) => {
+    const top = Math.min(i ? bases[i - 1] : 0, gravelTop), base = Math.min(bases[i], gravelTop);
+    return { at: y((top + base) / 2), words: nameOf(role, role), thick: thickness.estimate };
+  }).filter(({ thick }) => thick >= 0.5);
+}
+
+// The beds above named together, where the surfaces do not part them.
+function looseLabels(middle) {
+  const above = described.units.filter((unit) => !["deep_aquifer", "bedrock"].includes(unit.role));
+  const lines = [...above.map((unit) => unit.name), above.length > 1 ? "(not told apart here)" : ""].filter(Boolean);
+  const first = Math.max(middle - 7 * lines.length, 26);
+  return lines.map((words, i) => ({ at: first + 14 * i, words }));
+}
+
+// What is where, beside the strip.
 function stripLabels(column, y, x, bottom) {
   const thick = drawnThickness(column), rock = y(column.rock.estimate);
   const gravelTop = Math.max(column.rock.estimate - thick, 0);
-  const above = described.units.filter((unit) => !["deep_aquifer", "bedrock"].includes(unit.role));
-  const lines = [...above.map((unit) => unit.name), above.length > 1 ? "(not told apart here)" : ""].filter(Boolean);
-  const first = Math.max(y(gravelTop / 2) - 7 * lines.length, 26);
-  const wanted = lines.map((words, i) => ({ at: first + 14 * i, words }));
+  const wanted = column.beds ? bedLabels(column, y, gravelTop) : looseLabels(y(gravelTop / 2));
   if (thick > 0) {
     const words = `${nameOf("deep_aquifer", "gravel")} (${column.gravelChance.toFixed(2)})`;
     wanted.push({ at: y(gravelTop + thick / 2), words });
@@ -121,7 +170,17 @@ function columnSentences(column) {
     said.push(`${nameOf("shallow_aquifer", "Shallow aquifer")} above: ${likelihoodWords(column.shallowChance)} `
       + `(${column.shallowChance.toFixed(2)})${present ? rho : ""}.`);
   }
+  if (column.beds) said.push(bedWords(column.beds));
   return said;
+}
+
+// The mean thickness of each bed, with its band where it has one.
+function bedWords(beds) {
+  const parts = beds.map(({ role, thickness }) => {
+    const band = known(thickness.p05) ? ` (${lengthNumber(thickness.p05)} to ${lengthNumber(thickness.p95)})` : "";
+    return `${nameOf(role, role)} ${lengthWords(thickness.estimate)}${band}`;
+  });
+  return `From the ground down, on average: ${parts.join(", ")}.`;
 }
 
 // The nearest soundings and wells with their distances in m.

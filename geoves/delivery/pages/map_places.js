@@ -57,6 +57,42 @@ function wellMarkers(open) {
     placeMarker(one, wellShape(one), `Well ${one.name}: ${wellSays(one)}`, open)));
 }
 
+const MOST_STOPS = 500;  // permits in sight that Tab goes through: with more, the keyboard has the search and the table
+
+function permitSays({ over_gravel: over, reaches_gravel: reaches, covered }) {
+  if (!covered) return "outside the surfaces";
+  return [over && `deep gravel ${over}`, reaches && `requested depth: reaching it ${reaches}`].filter(Boolean).join("; ");
+}
+
+// An unseen mark over each permit in sight, for Tab and Enter; dots on a canvas are none.
+function stopAtPermits(map, stops, open) {
+  const seen = map.getBounds();
+  const wanted = described.permits.filter(({ at }) => seen.contains(at));
+  const kept = document.activeElement?.dataset?.permit;
+  stops.clearLayers();
+  if (wanted.length > MOST_STOPS) return;
+  for (const permit of wanted) {
+    const icon = L.divIcon({ className: "stop", html: "", iconSize: [14, 14] });
+    const marker = L.marker(permit.at, { icon, pane: "permits", keyboard: true });
+    marker.on("click", () => open(permit));
+    marker.on("add", () => {
+      const element = marker.getElement();
+      element.dataset.permit = permit.name;
+      element.title = `Permit ${permit.name}`;
+      element.setAttribute("role", "button");
+      element.setAttribute("aria-label", `Permit ${permit.name}: ${permitSays(permit)}`);
+      element.addEventListener("keydown", (event) => {
+        if (event.key !== "Enter" && event.key !== " ") return;
+        event.preventDefault();
+        event.stopPropagation();
+        open(permit);
+      });
+      if (permit.name === kept) element.focus({ preventScroll: true });
+    });
+    stops.addLayer(marker);
+  }
+}
+
 // Small dots that grow with the zoom; near enough, they bear their names.
 function permitMarkers(map, open) {
   // SVG prints well, where a canvas that is drawn anew for paper covers what lies under it; a canvas bears more dots.
@@ -68,7 +104,9 @@ function permitMarkers(map, open) {
     return { permit, dot };
   });
   const group = L.layerGroup(dots.map(({ dot }) => dot));
+  const stops = L.layerGroup().addTo(group);
   const grow = () => {
+    stopAtPermits(map, stops, open);
     const zoom = map.getZoom(), seen = map.getBounds();
     for (const { permit, dot } of dots) {
       dot.setRadius(Math.min(7, Math.max(1.8, 1.8 + 0.9 * (zoom - 12))));
@@ -100,8 +138,18 @@ function lineLayers(map) {
         lines(one.paths, "#fff", 3.2, { opacity: 0.8 }),
         lines(one.paths, "#7a1fa2", 1.8, { dashArray: one.value === "likely" ? null : "5 5" }),
       ])),
+    sections: L.layerGroup(given.sections.flatMap(({ mark, paths }) => [
+      lines(paths, "#222", 1.6, { dashArray: "7 4" }), sectionLabel(mark, paths[0][0])])),
     labels: contourLabels(given.bedrock_contours),
   };
+}
+
+// A section's mark where it begins.
+function sectionLabel(mark, at) {
+  const words = draw("svg", { width: 110, height: 14, viewBox: "0 0 110 14", "aria-hidden": "true" },
+    draw("text", { x: 55, y: 11, "text-anchor": "middle", class: "halo" }, mark));
+  const icon = L.divIcon({ className: "contour", html: words, iconSize: [110, 14] });
+  return L.marker(at, { icon, interactive: false, keyboard: false, pane: "numbers" });
 }
 
 // A number on each contour's longest pieces; where two would touch, the later one waits for a closer look.
@@ -196,11 +244,27 @@ function requestWords({ requested, bedrock_depth_p05: low, bedrock_depth_p95: hi
   return requested < high ? `${asks}: may reach rock; ${rock}.` : `${asks}: very likely reaches rock; ${rock}.`;
 }
 
+// Whether gravel is there and the depth reaches it: in the delivery's own words.
+function gravelWords(permit) {
+  const odds = (chance) => `(${chance.toFixed(2)})`;
+  const said = [];
+  if (permit.over_gravel) said.push(`Deep gravel here: ${permit.over_gravel} ${odds(permit.gravel_probability)}.`);
+  if (permit.reaches_gravel) {
+    said.push(`Reached within the depth asked for: ${permit.reaches_gravel} ${odds(permit.reach_probability)}.`);
+  }
+  if ([permit.over_gravel, permit.reaches_gravel].includes("undetermined")) {
+    said.push("Undetermined: the odds are near even, or the place is not known well enough.");
+  }
+  return said.join(" ");
+}
+
 function permitFacts(permit) {
   const facts = [permit.use, known(permit.radius) ? `placed to within ${lengthWords(permit.radius)}`
     : "location accuracy: not stated"].filter(Boolean);
   const parts = [make("p", { class: "soft" }, facts.join("; "))];
   if (known(permit.requested)) parts.push(make("p", { class: "says" }, requestWords(permit)));
+  const gravel = gravelWords(permit);
+  if (gravel) parts.push(make("p", { class: "says" }, gravel));
   if (known(permit.radius) && permit.covered) {
     parts.push(make("p", {}, "Over the whole circle of its location: rock between "
       + `${lengthNumber(permit.bedrock_depth_p05)} and ${lengthWords(permit.bedrock_depth_p95)}, gravel `
@@ -234,6 +298,6 @@ function markKey() {
   return make("div", { class: "key" }, make("h3", {}, "Marks"), make("ul", {},
     ...Object.entries(statusWords).map(([status, words]) => item(status, `sounding: ${words}`)), item("rock", "well that reached rock"),
     item("ended", "well that ended above rock")),
-  make("p", { class: "soft" }, "Small dots: permits. Bold line: valley axis. Thin lines: bedrock contours. "
+  make("p", { class: "soft" }, "Small dots: permits; Tab goes from one to the next where few enough are in sight. Bold line: valley axis. Thin lines: bedrock contours. "
     + "Violet: extent of likely gravel, dashed where only possible."));
 }

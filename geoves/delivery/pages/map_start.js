@@ -27,6 +27,10 @@ function startSurface(map) {
   };
   choice.addEventListener("change", show);
   mode.addEventListener("change", show);
+  const opacity = document.getElementById("opacity");
+  const fade = () => { map.getPane("surface").style.opacity = opacity.value / 100; };
+  opacity.addEventListener("input", fade);
+  fade();
   show();
   map.fitBounds(bounds, { animate: false, padding: [6, 6] });
   return { bounds, current: () => surfaceNamed(choice.value) };
@@ -46,9 +50,15 @@ function startReadout(map, current) {
     const band = value && known(value.p05)
       ? ` (${valueWords(surface.quantity, value.p05)} to ${valueWords(surface.quantity, value.p95)})` : "";
     const words = value ? valueWords(surface.quantity, value.estimate) : "no value here";
+    const others = surfaces.filter((one) => one !== surface).map((one) => {
+      const here = valueAt(one.name, cell);
+      return here && make("li", { "data-surface": one.name },
+        `${one.title}: `, make("b", {}, valueWords(one.quantity, here.estimate)));
+    }).filter(Boolean);
     box.replaceChildren(make("b", { id: "value" }, words), band, make("br"),
-      `x ${grouped(place[0])}, y ${grouped(place[1])}`,
-      make("br"), `${event.latlng.lat.toFixed(5)}, ${event.latlng.lng.toFixed(5)}`);
+      `x ${grouped(place[0])}, y ${grouped(place[1])}; `,
+      make("span", {}, `${event.latlng.lat.toFixed(5)}, ${event.latlng.lng.toFixed(5)}`),
+      make("ul", {}, others));
   });
   map.on("mouseout", () => box.replaceChildren());
 }
@@ -127,6 +137,7 @@ function startLayers(map, openers) {
     ["Bedrock contours", L.layerGroup([lines.contours, ...lines.labels]), true],
     ["Thickness contours", lines.thickness, false],
     ["Extent of likely gravel", lines.extent, true],
+    ["Lines of the sections", lines.sections, false],
     ["Boundary", lines.boundary, true],
   ];
   document.getElementById("switches").append(...layers.map(([words, layer, on]) => {

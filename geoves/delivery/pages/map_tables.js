@@ -24,13 +24,14 @@ function writeTables(openers) {
     opener("permit", one), one.covered ? "yes" : "no", lengthCell(one.bedrock_depth),
     rangeCell(one.bedrock_depth_p05, one.bedrock_depth_p95), lengthCell(one.gravel_thickness),
     rangeCell(one.gravel_thickness_p05, one.gravel_thickness_p95),
-    known(one.gravel_probability) ? one.gravel_probability.toFixed(2) : dash, lengthCell(one.requested)]);
+    known(one.gravel_probability) ? one.gravel_probability.toFixed(2) : dash, lengthCell(one.requested),
+    one.reaches_gravel ? `${one.reaches_gravel} (${one.reach_probability.toFixed(2)})` : dash]);
   document.getElementById("tables").append(
     make("h2", {}, "Cautions"), make("ul", {}, described.cautions.map((caution) => make("li", {}, caution))),
     ...factTable("Soundings", ["sounding", "what the curve says", `rock (${unit})`, "standard error", "in words"], soundings),
     ...factTable("Wells", ["well", `total depth (${unit})`, `rock (${unit})`, "in words"], wells),
     ...factTable("Permits", ["permit", "predicted", `rock (${unit})`, "90 % band", `gravel, mean (${unit})`,
-      "90 % band", "gravel probability", `asked for (${unit})`], permits),
+      "90 % band", "gravel probability", `asked for (${unit})`, "reaches gravel"], permits),
     make("h2", {}, "How heights and places are given"),
     make("p", {}, `Coordinates in ${region.crsName} (${region.crs}). `
       + (described.everyCell > 1 ? `The rasters are finer: shown is one cell of ${described.everyCell} each way. ` : "")
