@@ -10,6 +10,7 @@ import numpy as np
 import pyproj
 
 from geoves.delivery.cautions import SHORT_CAUTION, list_cautions
+from geoves.delivery.dictionary import RASTERS
 from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_colours, value_range
@@ -42,14 +43,8 @@ SHOWN_SURFACES = (
     "deep_gravel_probability",
     "shallow_aquifer_resistivity",
 )
-# Read under the cursor or in a column, though not drawn as a surface of their own.
-READ_SURFACES = (
-    "shallow_aquifer_probability",
-    "shallow_aquifer_thickness",
-    "cover_thickness",
-    "confining_unit_thickness",
-    "deep_gravel_top_depth",
-)
+# All others are read under the cursor or in a column, though not drawn as a surface of their own.
+READ_SURFACES = tuple(name for name in RASTERS if name not in SHOWN_SURFACES)
 WEB_MERCATOR = "EPSG:3857"
 MOST_CELLS = 1_500_000  # beyond it the page would be heavy: every third, fifth, ... cell is shown, and it says so
 
