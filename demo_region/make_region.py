@@ -24,8 +24,11 @@ SOUNDINGS, PERMITS = 154, 480
 READING_COLUMNS = ["sounding", "ab2", "mn2", "apparent_resistivity", "voltage_mv", "current_ma", "error_percent"]
 
 
-def make_region(folder: Path, seed: int = DEFAULT_SEED) -> County:
-    """Write region.toml, the tables, the rasters and the truth into `folder`; returns the county."""
+def make_region(folder: Path, seed: int = DEFAULT_SEED, *, planted: bool = True) -> County:
+    """Write region.toml, the tables, the rasters and the truth into `folder`; returns the county.
+
+    Not `planted`: a twin whose readings, elevations, logs and permits hold none of the faults that crews make.
+    """
     folder = Path(folder)
     truth = folder / "truth"
     truth.mkdir(parents=True, exist_ok=True)
@@ -35,9 +38,9 @@ def make_region(folder: Path, seed: int = DEFAULT_SEED) -> County:
     boundary = files.draw_boundary(county)
     inside = files.inside_test(boundary)
     rng = np.random.default_rng([seed, 2])
-    soundings, readings, columns = draw_survey(county, inside, SOUNDINGS, rng)
-    wells, logs, well_columns = draw_wells(county, inside, rng)
-    permits = draw_permits(inside, PERMITS, rng)
+    soundings, readings, columns = draw_survey(county, inside, SOUNDINGS, rng, planted)
+    wells, logs, well_columns = draw_wells(county, inside, rng, planted)
+    permits = draw_permits(inside, PERMITS, rng, planted)
 
     true_soundings = files.true_soundings(soundings, readings, columns)
     true_wells = files.true_columns(wells[["well", "x", "y"]].itertuples(index=False), well_columns)
@@ -67,8 +70,9 @@ def main() -> None:
     parser = argparse.ArgumentParser(description="Build the demo region, or another county of its kind.")
     parser.add_argument("--seed", type=int, default=DEFAULT_SEED, help="which county (default: the committed one)")
     parser.add_argument("--out", type=Path, default=HERE, help="folder to write (default: beside this script)")
+    parser.add_argument("--clean", action="store_true", help="without the faults that crews make")
     arguments = parser.parse_args()
-    make_region(arguments.out, arguments.seed)
+    make_region(arguments.out, arguments.seed, planted=not arguments.clean)
     print(f"Larkmoor County, seed {arguments.seed}: {SOUNDINGS} soundings, {PERMITS} permits in {arguments.out}")
 
 

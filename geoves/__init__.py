@@ -1,6 +1,6 @@
 """geoves: from electrical soundings, wells and a resistivity template to GIS layers of a buried valley.
 
-The steps are functions: `prepare_curves`, `invert`, `interpret`, `build_surfaces`, `derive_layers`. `run` does them all
+The steps are functions: `examine_curves`, `invert`, `interpret`, `build_surfaces`, `derive_layers`. `run` does them all
 for a region folder; `make_sounding` and `draw_sounding` serve a single sounding in a notebook.
 """
 
@@ -8,7 +8,8 @@ from importlib import import_module, metadata
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from geoves.curves import CurveOptions, make_sounding, prepare_curves
+    from geoves.checking import CurveOptions, examine_curves
+    from geoves.curves import make_sounding
     from geoves.delivery.notebook import draw_sounding
     from geoves.domain.survey import Curve, Sounding, Survey
     from geoves.domain.units import Role, Template, Unit
@@ -41,10 +42,10 @@ __all__ = [
     "build_surfaces",
     "derive_layers",
     "draw_sounding",
+    "examine_curves",
     "interpret",
     "invert",
     "make_sounding",
-    "prepare_curves",
     "read_region",
     "read_survey",
     "run",
@@ -52,7 +53,8 @@ __all__ = [
 
 # Where each name lives. A name is fetched when it is first asked for, so that the command's help comes at once.
 _HOMES = {
-    "geoves.curves": ("CurveOptions", "make_sounding", "prepare_curves"),
+    "geoves.checking": ("CurveOptions", "examine_curves"),
+    "geoves.curves": ("make_sounding",),
     "geoves.delivery.notebook": ("draw_sounding",),
     "geoves.domain.survey": ("Curve", "Sounding", "Survey"),
     "geoves.domain.units": ("Role", "Template", "Unit"),

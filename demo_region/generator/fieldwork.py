@@ -92,16 +92,18 @@ def draw_largest_spacing(number: int, rng: np.random.Generator) -> np.ndarray:
 
 
 def measure(
-    column: Column, spread: tuple[np.ndarray, np.ndarray, np.ndarray], rng: np.random.Generator
+    column: Column, spread: tuple[np.ndarray, np.ndarray, np.ndarray], rng: np.random.Generator, planted: bool = True
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Apparent resistivities (n,) as read, and what went wrong with each ("" where nothing did).
 
-    Noise of 3 %, one factor for each MN segment after the first, and now and then a reading that is plainly wrong.
+    Noise of 3 %, one factor for each MN segment after the first, and now and then, where faults are planted, a reading
+    that is plainly wrong.
     """
     ab2, mn2, segment = spread
     true = apparent_resistivity(ab2, mn2, column.thickness, column.resistivity)
     shift = np.exp(np.concatenate([[0.0], np.cumsum(rng.normal(0.0, SHIFT, segment.max()))]))
-    read = true * shift[segment] * np.exp(rng.normal(0.0, NOISE, len(true)))
+    clean = true * shift[segment] * np.exp(rng.normal(0.0, NOISE, len(true)))
+    read = clean.copy()
     fault = np.full(len(true), "", dtype=object)
     spacings = np.unique(ab2)
     for i in np.flatnonzero(rng.random(len(true)) < 0.016):
@@ -115,6 +117,8 @@ def measure(
         else:
             continue
         fault[i] = kind
+    if not planted:
+        return clean, np.full(len(true), "", dtype=object), shift[segment]
     return read, fault, shift[segment]
 
 
@@ -126,7 +130,7 @@ def misplaced_electrode(planned: float, actual: float, mn2: float, column: Colum
 
 
 def draw_survey(
-    county: County, inside: Inside, number: int, rng: np.random.Generator
+    county: County, inside: Inside, number: int, rng: np.random.Generator, planted: bool = True
 ) -> tuple[pd.DataFrame, pd.DataFrame, list[Column]]:
     """The soundings and readings tables of the contract, and with them the columns and the faults as they were."""
     x, y = draw_places(county, inside, number, rng)
@@ -137,7 +141,7 @@ def draw_survey(
     layouts = [LAYOUTS[k] for k in rng.choice(2, number, p=[0.62, 0.38])]
     names = [f"S{i + 1:03d}" for i in range(number)]
     readings = [
-        read_sounding(name, column, layout.spread(reach), rng)
+        read_sounding(name, column, layout.spread(reach), rng, planted)
         for name, column, layout, reach in zip(names, columns, layouts, largest, strict=True)
     ]
     ground = np.array([column.ground for column in columns])
@@ -146,7 +150,7 @@ def draw_survey(
             "sounding": names,
             "x": np.round(ORIGIN[0] + x),
             "y": np.round(ORIGIN[1] + y),
-            "ground_elevation": level(ground, rng),
+            "ground_elevation": level(ground, rng, planted),
             "array": "schlumberger",
             "azimuth": rng.choice([0, 0, 90, 90, 45, 135, 20, 110], number),
             "date": dates(number, rng),
@@ -158,10 +162,14 @@ def draw_survey(
 
 
 def read_sounding(
-    name: str, column: Column, spread: tuple[np.ndarray, np.ndarray, np.ndarray], rng: np.random.Generator
+    name: str,
+    column: Column,
+    spread: tuple[np.ndarray, np.ndarray, np.ndarray],
+    rng: np.random.Generator,
+    planted: bool = True,
 ) -> pd.DataFrame:
     """One sounding's rows of the readings table, with `fault` and `segment_factor` beside them for the truth."""
-    read, fault, factor = measure(column, spread, rng)
+    read, fault, factor = measure(column, spread, rng, planted)
     ab2, mn2, _ = spread
     rows = pd.DataFrame({"sounding": name, "ab2": ab2, "mn2": mn2, "apparent_resistivity": significant(read, 4)})
     rows["voltage_mv"] = rows["current_ma"] = np.nan
@@ -178,7 +186,8 @@ def read_sounding(
         rows["apparent_resistivity"] = np.nan
     elif rng.random() < 0.03:
         dropped = rng.integers(len(ab2))
-        rows.loc[dropped, ["apparent_resistivity", "use", "note"]] = [0.0, 0, "current dropped out, not repeated"]
+        if planted:
+            rows.loc[dropped, ["apparent_resistivity", "use", "note"]] = [0.0, 0, "current dropped out, not repeated"]
     return rows.assign(fault=fault, segment_factor=factor)
 
 
@@ -189,11 +198,11 @@ REASONS = {
 }
 
 
-def level(ground: np.ndarray, rng: np.random.Generator) -> np.ndarray:
-    """Elevations as the crews wrote them: off the map to a metre or so, some not at all, one misread."""
+def level(ground: np.ndarray, rng: np.random.Generator, planted: bool = True) -> np.ndarray:
+    """Elevations as the crews wrote them: off the map to a metre or so, some not at all, one misread if planted."""
     written = np.round(ground + rng.normal(0.0, 0.8, len(ground)), 1)
     written[rng.random(len(ground)) < 0.1] = np.nan
-    written[rng.choice(np.flatnonzero(np.isfinite(written)))] += 11.0
+    written[rng.choice(np.flatnonzero(np.isfinite(written)))] += 11.0 if planted else 0.0
     return written
 
 

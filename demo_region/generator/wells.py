@@ -44,9 +44,9 @@ def draw_well_places(
 
 
 def draw_wells(
-    county: County, inside: Inside, rng: np.random.Generator
+    county: County, inside: Inside, rng: np.random.Generator, planted: bool = True
 ) -> tuple[pd.DataFrame, pd.DataFrame, list[Column]]:
-    """The wells and well_logs tables in feet, and the columns under the wells.
+    """The wells and well_logs tables in feet, and the columns under the wells; a gap in a log where it is planted.
 
     Of 6 valley wells 3 reach rock, of 10 on the plain 7; the others stop in gravel or in clay above it.
     """
@@ -63,7 +63,7 @@ def draw_wells(
         drilled.append(columns[i])
         wells.append(describe_well(name, (x[i], y[i]), columns[i], log, rng))
     logs = pd.DataFrame(logs, columns=["well", "top", "bottom", "description", "unit"])
-    return pd.DataFrame(wells), blur_log(logs, rng), drilled
+    return pd.DataFrame(wells), blur_log(logs, rng, planted), drilled
 
 
 def describe_well(
@@ -133,7 +133,7 @@ def told_in_stretches(top: int, bottom: int, unit: str, rng: np.random.Generator
     return list(pairwise(edges))
 
 
-def blur_log(logs: pd.DataFrame, rng: np.random.Generator) -> pd.DataFrame:
+def blur_log(logs: pd.DataFrame, rng: np.random.Generator, planted: bool = True) -> pd.DataFrame:
     """A few words that no template claims, one gap, and one log that the agency has coded itself."""
     logs = logs.fillna({"unit": ""})
     names = logs["well"].unique()
@@ -146,15 +146,15 @@ def blur_log(logs: pd.DataFrame, rng: np.random.Generator) -> pd.DataFrame:
         candidates = logs.index[logs["description"].isin(WORDS[unit]) & ~rows]
         logs.loc[rng.choice(candidates), "description"] = word if unit != "bedrock" else f"{word}, lime"
     inside = logs.index[(logs["well"] == gapped) & (logs["bottom"] - logs["top"] > 12)]
-    logs.loc[inside[0], "bottom"] -= 4
+    logs.loc[inside[0], "bottom"] -= 4 if planted else 0
     return logs
 
 
-def draw_permits(inside: Inside, number: int, rng: np.random.Generator) -> pd.DataFrame:
-    """The permits table: lon and lat in EPSG:4326, depths and radii in feet; a few lie outside the county."""
+def draw_permits(inside: Inside, number: int, rng: np.random.Generator, planted: bool = True) -> pd.DataFrame:
+    """The permits table: lon and lat in EPSG:4326, depths and radii in feet; a few lie outside, where planted."""
     x, y = rng.uniform(0.0, WIDTH, 3 * number), rng.uniform(0.0, HEIGHT, 3 * number)
     within = np.array([inside(*place) for place in zip(x, y, strict=True)])
-    astray = rng.random(3 * number) < 0.05
+    astray = (rng.random(3 * number) < 0.05) & planted
     x, y = ORIGIN[0] + x[within | astray][:number], ORIGIN[1] + y[within | astray][:number]
     accuracy = rng.choice([np.nan, 30.0, 100.0, 330.0, 933.0], number, p=[0.4, 0.1, 0.15, 0.15, 0.2])
     centred = accuracy == 933.0  # known to a quarter-quarter section alone, so written at its centre

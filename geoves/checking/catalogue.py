@@ -4,8 +4,11 @@ from collections.abc import Mapping
 from types import MappingProxyType
 
 from geoves.checking import arithmetic, curve_shape, meter, overlaps, places, spreads, template, wells
+from geoves.checking.options import CurveOptions
 from geoves.domain.findings import Check
 from geoves.domain.survey import FEWEST_READINGS, WIDEST_GAP
+
+_DEFAULTS = CurveOptions()
 
 _READINGS = (
     Check(
@@ -108,7 +111,7 @@ _CURVES = (
     Check(
         "jump",
         "Each reading against what all others of its curve let expect over flat layers",
-        f"{curve_shape.JUMP_LIMIT:g} standard deviations off or more",
+        f"{_DEFAULTS.jump_limit:g} standard deviations off or more",
         "Over flat layers neighbouring readings hang together; a single one off the rest is a matter of the stakes "
         "or the sheet. One current electrode left behind makes it too high, one too far out too low, by a factor "
         "that is told.",
@@ -125,14 +128,14 @@ _CURVES = (
     Check(
         "rough_curve",
         "The scatter of a whole curve about flat layers",
-        f"{curve_shape.ROUGH_LIMIT:g} times what the readings' errors allow, where no single reading explains it",
+        f"{_DEFAULTS.rough_limit:g} times what the readings' errors allow, where no single reading explains it",
         "A sawtooth comes from poor contact, leakage along the cable, or ground that changes along the spread.",
         "Raise error_percent for this sounding, or sound again with the spread turned.",
     ),
     Check(
         "steep_rise",
         "The rise of a segment on logarithmic axes",
-        f"More than flat layers allow, by {curve_shape.SLOPE_LIMIT:g} standard deviations of the noise",
+        f"More than flat layers allow, by {_DEFAULTS.slope_limit:g} standard deviations of the noise",
         "Over an insulator all current stays above it and apparent resistivity goes with AB/2: 45 degrees. Nothing "
         "flat rises faster (a wide MN a little, which is counted in). Steeper means a lateral change, leakage, or a "
         "slip.",
@@ -141,7 +144,7 @@ _CURVES = (
     Check(
         "steep_fall",
         "The fall of a segment on logarithmic axes",
-        f"Steeper than any of 120 000 drawn columns that came down as far, by {curve_shape.SLOPE_LIMIT:g} standard "
+        f"Steeper than any of 120 000 drawn columns that came down as far, by {_DEFAULTS.slope_limit:g} standard "
         "deviations of the noise",
         "A fall has no limit as sharp as 45 degrees, but a curve falls fast only after it has come down far, as over a "
         "good conductor. A fast fall at once is a lateral change, a shunt through a pipe, or a slip.",

@@ -8,19 +8,16 @@ import numpy as np
 
 from geoves.checking.curve_findings import doubt_curve, doubt_reading
 from geoves.checking.layered_ground import LayeredGround, Prediction, covariance_of, predict_each
+from geoves.checking.options import CurveOptions
 from geoves.checking.slips import explain_jump
 from geoves.domain.arrays import FloatArray
 from geoves.domain.findings import ExaminedCurve, Finding, Overlap
 from geoves.domain.survey import FEWEST_READINGS, Sounding
 
-# A reading is doubted from so many standard deviations off what all others let expect: one in 16 000 by chance.
-JUMP_LIMIT = 4.0
 # Two neighbours together: chi-square of two degrees of freedom of the same rarity, and each this far off by itself.
 CUSP_CHI_SQUARE, CUSP_LEAST = 22.0, 2.0
-# Root mean square of the readings' scores from which on a curve as a whole is rougher than layered ground and noise.
-ROUGH_LIMIT, FEWEST_FOR_ROUGH = 2.2, 8
-# Slopes: standard deviations of the noise beyond the steepest rise or fall that is told.
-SLOPE_LIMIT = 4.0
+# Readings that a curve needs to be called rough as a whole.
+FEWEST_FOR_ROUGH = 8
 # How many readings on a slope is looked for.
 LONGEST_SLOPE = 4
 # The steepest fall on log-log axes of 120 000 drawn columns (see steepest_fall).
@@ -46,7 +43,7 @@ class JudgedCurve:
     prediction: Prediction
 
 
-def judge_curve(sounding: Sounding, ground: LayeredGround, noise: float) -> JudgedCurve | None:
+def judge_curve(sounding: Sounding, ground: LayeredGround, noise: float, options: CurveOptions) -> JudgedCurve | None:
     """Each used reading held against all others, the worst set aside one by one; None where there are too few.
 
     noise : relative error of readings that have none typed
@@ -63,20 +60,20 @@ def judge_curve(sounding: Sounding, ground: LayeredGround, noise: float) -> Judg
         prediction = predict_each(log_apparent, error, segment, prior, silent)
         score = np.where(silent, 0.0, np.abs(prediction.score))
         worst = int(np.argmax(score))
-        if score[worst] < JUMP_LIMIT or silent.sum() >= a.size // 3:
+        if score[worst] < options.jump_limit or silent.sum() >= a.size // 3:
             break
         silent[worst] = True
-    silent &= np.abs(prediction.score) >= JUMP_LIMIT
+    silent &= np.abs(prediction.score) >= options.jump_limit
     reading = np.flatnonzero(curve.used)
     return JudgedCurve(sounding, reading, a, b, log_apparent, error, segment, silent, prediction)
 
 
-def check_shape(judged: JudgedCurve, ground: LayeredGround) -> list[Finding]:
+def check_shape(judged: JudgedCurve, ground: LayeredGround, options: CurveOptions) -> list[Finding]:
     """Doubts about single readings, pairs of them, slopes, and the curve as a whole."""
     jumps = list(_tell_jumps(judged, ground))
     cusps = list(_tell_cusps(judged))
-    slopes = list(_tell_slopes(judged))
-    rough = [] if jumps or cusps else list(_tell_rough(judged))
+    slopes = list(_tell_slopes(judged, options.slope_limit))
+    rough = [] if jumps or cusps else list(_tell_rough(judged, options.rough_limit))
     return [*jumps, *cusps, *slopes, *rough]
 
 
@@ -124,14 +121,14 @@ def _tell_cusps(judged: JudgedCurve) -> Iterator[Finding]:
             yield doubt_reading("cusp", judged.sounding, int(judged.reading[one]), words)
 
 
-def _tell_rough(judged: JudgedCurve) -> Iterator[Finding]:
+def _tell_rough(judged: JudgedCurve, rough_limit: float) -> Iterator[Finding]:
     score = judged.prediction.score[~judged.silent]
     rms = float(np.sqrt(np.mean(score**2)))
-    if score.size >= FEWEST_FOR_ROUGH and rms > ROUGH_LIMIT:
+    if score.size >= FEWEST_FOR_ROUGH and rms > rough_limit:
         noise = float(np.median(judged.error))
         words = (
             f"the readings scatter {rms:.1f} times as much about flat layers as errors of {noise:.0%} allow; "
-            f"expected {ROUGH_LIMIT} times at most"
+            f"expected {rough_limit:g} times at most"
         )
         yield doubt_curve("rough_curve", judged.sounding, words)
 
@@ -157,7 +154,7 @@ def steepest_fall(drop: float) -> float:
     return -(FALL_AT_TOP + FALL_PER_DROP * drop)
 
 
-def _tell_slopes(judged: JudgedCurve) -> Iterator[Finding]:
+def _tell_slopes(judged: JudgedCurve, slope_limit: float) -> Iterator[Finding]:
     """The worst rise and the worst fall of each segment that flat layers cannot make, beyond noise."""
     for segment in np.unique(judged.segment):
         rows = np.flatnonzero((judged.segment == segment) & ~judged.silent)
@@ -177,7 +174,7 @@ def _tell_slopes(judged: JudgedCurve) -> Iterator[Finding]:
                 steep.append((-float(fall) / noise, "steep_fall", i, j))
         for kind in ("steep_rise", "steep_fall"):
             worst = max((one for one in steep if one[1] == kind), default=(0.0, kind, 0, 0))
-            if worst[0] > SLOPE_LIMIT:
+            if worst[0] > slope_limit:
                 yield _tell_slope(judged, kind, int(rows[worst[2]]), int(rows[worst[3]]))
 
 

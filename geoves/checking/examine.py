@@ -9,6 +9,7 @@ from geoves.checking.arithmetic import assign_repeat_errors, check_arithmetic, c
 from geoves.checking.curve_shape import JudgedCurve, check_shape, examined, judge_curve
 from geoves.checking.layered_ground import LayeredGround, draw_layered_ground, layouts_of
 from geoves.checking.meter import check_meter
+from geoves.checking.options import CurveOptions
 from geoves.checking.overlaps import check_overlaps, check_season
 from geoves.checking.places import check_places
 from geoves.checking.spreads import check_spreads
@@ -24,12 +25,12 @@ DEFAULT_NOISE, NOISE_RANGE = 0.03, (0.5, 3.0)
 _FEWEST_FOR_NOISE = 60
 
 
-def examine_survey(survey: Survey, region: Region, unit_of: UnitOf) -> Examination:
+def examine_survey(survey: Survey, region: Region, unit_of: UnitOf, options: CurveOptions | None = None) -> Examination:
     """What every check finds beside the doubts that were met while reading, which come first.
 
     unit_of : the template's code for an interval of a log, None where nothing claims its words
     """
-    curves = examine_curves(survey.soundings)
+    curves = examine_curves(survey.soundings, options)
     findings = [
         *survey.doubts,
         *curves.findings,
@@ -41,17 +42,18 @@ def examine_survey(survey: Survey, region: Region, unit_of: UnitOf) -> Examinati
     return attrs.evolve(curves, findings=tuple(findings))
 
 
-def examine_curves(soundings: Sequence[Sounding]) -> Examination:
+def examine_curves(soundings: Sequence[Sounding], options: CurveOptions | None = None) -> Examination:
     """What the readings say of themselves: arithmetic, meter, repeats, shape and overlaps."""
+    options = options or CurveOptions()
     ground = draw_layered_ground(pair for sounding in soundings for pair in layouts_of(sounding.curve))
     noise = DEFAULT_NOISE if ground is None else find_noise(soundings, ground)
     findings: list[Finding] = check_arithmetic(soundings)
     judged_curves: list[JudgedCurve] = []
     for sounding in soundings:
         findings += [*check_meter(sounding), *check_repeats(sounding, noise)]
-        judged = None if ground is None else judge_curve(sounding, ground, noise)
+        judged = None if ground is None else judge_curve(sounding, ground, noise, options)
         if judged is not None and ground is not None:
-            findings += [*check_shape(judged, ground), *check_overlaps(judged)]
+            findings += [*check_shape(judged, ground, options), *check_overlaps(judged)]
             judged_curves.append(judged)
     findings += check_season(judged_curves)
     return Examination(tuple(findings), tuple(examined(judged) for judged in judged_curves), noise)
@@ -63,7 +65,7 @@ def find_noise(soundings: Sequence[Sounding], ground: LayeredGround) -> float:
     for _ in range(2):
         scores = []
         for sounding in soundings:
-            judged = judge_curve(sounding, ground, noise)
+            judged = judge_curve(sounding, ground, noise, CurveOptions())
             if judged is not None:
                 untyped = np.isnan(sounding.curve.relative_error[judged.reading])
                 scores.append(judged.prediction.score[untyped])

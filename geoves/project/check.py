@@ -18,7 +18,7 @@ from geoves.domain.survey import Curve, Survey
 from geoves.errors import DeliveryError
 from geoves.project.findings import name_inputs
 from geoves.project.progress import Progress, Summary
-from geoves.project.setting_faults import find_setting_faults
+from geoves.project.setting_faults import find_curve_options, find_setting_faults
 from geoves.project.units_of_logs import claim_unit
 from geoves.reading import FaultyInputError, look_at_inputs
 from geoves.reading.inputs import InputsSeen
@@ -59,8 +59,10 @@ def _examine(seen: InputsSeen, faults: Sequence[Finding]) -> Examination:
     sound = attrs.evolve(
         survey, soundings=tuple(attrs.evolve(one, curve=_leave_out_faulty(one.curve)) for one in survey.soundings)
     )
-    examination = examine_survey(_located(sound), seen.region, claim_unit(seen.region.template))
-    found = name_inputs([*faults, *seen.findings, *examination.findings], seen.region)
+    options = None if faults else find_curve_options(seen.region)
+    examination = examine_survey(_located(sound), seen.region, claim_unit(seen.region.template), options)
+    placed = [attrs.evolve(one, row=one.row or seen.rows.get((one.file, one.place), 0)) for one in examination.findings]
+    found = name_inputs([*faults, *seen.findings, *placed], seen.region)
     return attrs.evolve(examination, findings=tuple(sorted(found, key=lambda one: _ORDER[one.severity])))
 
 

@@ -9,7 +9,7 @@ from typing import Any
 import attrs
 import numpy as np
 
-from geoves.curves import prepare_curves
+from geoves.checking import assign_errors, examine_survey
 from geoves.delivery.folder import publish, stage
 from geoves.delivery.geopackage import write_geopackage
 from geoves.delivery.map_page import write_map_page
@@ -31,6 +31,7 @@ from geoves.project.findings import name_inputs
 from geoves.project.inputs import Inputs, read_inputs
 from geoves.project.progress import Progress, SilentProgress, Summary
 from geoves.project.settings import Settings
+from geoves.project.units_of_logs import claim_unit
 from geoves.reading import fingerprint_files
 from geoves.surfaces import build_surfaces
 
@@ -68,7 +69,8 @@ def _read(region_path: Path, progress: Progress) -> Inputs:
 def work_out(inputs: Inputs, progress: Progress, engine: Map) -> tuple[Results, dict[str, Any]]:
     """From the inputs to everything that the delivery is written from, and the record of how it came about."""
     region, settings, grid = inputs.region, inputs.settings, inputs.grid
-    survey = prepare_curves(inputs.survey, settings.curves)
+    survey = assign_errors(inputs.survey)
+    examination = examine_survey(survey, region, claim_unit(region.template), settings.curves)
     record = provenance.make_record(region, settings, fingerprint_files(region))
     template = region.template
     names = [sounding.name for sounding in survey.soundings if sounding.curve.is_enough]
@@ -81,7 +83,8 @@ def work_out(inputs: Inputs, progress: Progress, engine: Map) -> tuple[Results, 
         stack = build_surfaces(interpretation, survey, template, grid, settings.surfaces, map=watched(engine, step))
     with _step(progress, "Drawing contours, valley and permits"):
         layers = derive_layers(stack, survey, region, settings.layers)
-    doubts = name_inputs([*survey.doubts, *_doubt_words(interpretation)], region)
+    found = [one for one in examination.findings if one.severity == "doubt"]
+    doubts = name_inputs([*found, *_doubt_words(interpretation)], region)
     merit = provenance.judge_surfaces(stack)
     results = Results(region, survey, inverted, interpretation, stack, layers, doubts, merit)
     statuses = [column.bedrock_status for column in interpretation.columns]
@@ -169,7 +172,7 @@ def _tell(results: Results, folder: Path) -> Iterator[str]:
     yield (
         f"Basal contact seen at {status['seen']} soundings; not distinct at {status['not_distinct']}; "
         f"deeper than the curve reaches at {status['deeper_than']}"
-        + (f"; {silent} soundings had too few readings." if silent else ".")
+        + (f"; {silent} soundings had too few readings, or none in the middle." if silent else ".")
     )
     depth = stack.surfaces["bedrock_depth"].estimate
     unit = results.region.metres_per_length_unit

@@ -1,5 +1,6 @@
 """What is wrong in region.toml beyond its own keys: the steps' options, and a template without rock."""
 
+from geoves.checking import CurveOptions
 from geoves.domain.findings import Finding
 from geoves.domain.region import Region
 from geoves.domain.units import Role
@@ -26,3 +27,12 @@ def _find_option_faults(region: Region) -> tuple[Finding, ...]:
         file = region.path.name
         return tuple(Finding("fault", file, 0, "", "", line.removeprefix(f"{file}, ")) for line in error.lines)
     return ()
+
+
+def find_curve_options(region: Region) -> CurveOptions:
+    """The options of the table [curves], without bringing in the other steps where there is no such table."""
+    if "curves" not in region.settings:
+        return CurveOptions()
+    from geoves.project.settings import read_settings  # noqa: PLC0415 - as above
+
+    return read_settings(region).curves

@@ -4,7 +4,7 @@ from typing import Any, get_type_hints
 
 import attrs
 
-from geoves.curves import CurveOptions
+from geoves.checking import CurveOptions
 from geoves.domain.region import Region
 from geoves.errors import InputError
 from geoves.interpretation import InterpretationOptions

@@ -1,5 +1,6 @@
 """The door: a region and its survey, or all faults at once."""
 
+from collections.abc import Mapping
 from pathlib import Path
 
 import attrs
@@ -36,6 +37,7 @@ class InputsSeen:
     survey: Survey | None
     grid: Grid | None
     findings: tuple[Finding, ...]
+    rows: Mapping[tuple[str, str], int] = attrs.field(factory=dict)  # of each place, by its input and its name
 
 
 def look_at_inputs(path: Path) -> InputsSeen:
@@ -44,7 +46,7 @@ def look_at_inputs(path: Path) -> InputsSeen:
     if file.region is None:
         return InputsSeen(None, None, None, file.findings)
     files = collect_survey(file.region)
-    return InputsSeen(file.region, files.survey, files.grid, (*file.findings, *files.findings))
+    return InputsSeen(file.region, files.survey, files.grid, (*file.findings, *files.findings), files.rows)
 
 
 def read_survey(region: Region) -> tuple[Survey, Grid]:

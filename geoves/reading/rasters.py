@@ -19,6 +19,7 @@ from geoves.domain.arrays import FloatArray
 from geoves.domain.findings import Finding
 from geoves.domain.grids import Grid
 from geoves.domain.survey import Ground
+from geoves.reading.conversions import extent_of, note_missing_grid
 from geoves.reading.delimited import refuse_file
 from geoves.reading.soundings import ELEVATION
 from geoves.reading.sources import Source
@@ -55,6 +56,8 @@ def read_ground(
             if expected := _unfit(raster):
                 refuse_file(source, expected, findings)
                 return None
+            own = raster.crs.to_wkt()
+            note_missing_grid(source.typed, own, crs, extent_of(tuple(raster.bounds), own), findings)
             _doubt_units(raster, source, findings)
             at_places = _sample(raster, crs, places) * source.metres
             on_grid = None if grid is None else _resample(raster, crs, grid) * source.metres

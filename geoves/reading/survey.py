@@ -1,6 +1,6 @@
 """All inputs of a region together: the survey and the grid that its surfaces will stand on."""
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
 import attrs
@@ -46,6 +46,7 @@ class SurveyFiles:
     survey: Survey
     grid: Grid | None
     findings: tuple[Finding, ...]
+    rows: Mapping[tuple[str, str], int]  # of each place, by its input and its name
 
 
 def collect_survey(region: Region) -> SurveyFiles:
@@ -81,7 +82,9 @@ def collect_survey(region: Region) -> SurveyFiles:
         doubts=tuple(finding for finding in ordered if finding.severity == "doubt"),
         crs_unit_metres=region.crs_unit_metres,
     )
-    return SurveyFiles(survey, grid, ordered)
+    located = {name: table for name in ("permits", "wells", "soundings") if (table := tables.get(name)) is not None}
+    numbers = {(name, row.place): row.number for name, table in located.items() for row in table.rows}
+    return SurveyFiles(survey, grid, ordered, numbers)
 
 
 def _read_with(region: Region, name: str, read: Callable[[Source], Any]) -> Any:
@@ -189,7 +192,9 @@ def _doubt_region(region: Region, tables: dict[str, Table | None], stretch: floa
         doubts.append(Finding("doubt", region.path.name, 0, "region.crs", region.crs, words))
     if region.vertical_datum is None:
         words = "no vertical datum is declared: nobody can say from which zero the elevations count"
-        doubts.append(Finding("doubt", region.path.name, 0, "region.vertical_datum", "", words))
+        doubts.append(
+            Finding("doubt", region.path.name, 0, "region.vertical_datum", "", words, check="no_vertical_datum")
+        )
     wells = tables.get("wells")
     shared = _names(tables.get("soundings"), "sounding") & _names(wells, "well")
     for row in () if wells is None else wells.rows:

@@ -3,12 +3,14 @@
 import math
 import re
 from collections.abc import Callable, Iterable, Mapping, Sequence
+from itertools import pairwise
 
 import attrs
 
 from geoves.domain.findings import Finding, Severity
 from geoves.reading.faults import in_words, nearest
 
+_DECIMAL_COMMA = re.compile(r"[+-]?\d+,\d+", re.ASCII)
 _NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?", re.ASCII)
 
 
@@ -38,14 +40,16 @@ class Row:
     place: str = ""
     missing: frozenset[str] = frozenset()  # needed columns that the table lacks, of which its header was told
 
-    def complain(self, column: str, expected: str, *, severity: Severity = "fault", value: str | None = None) -> None:
+    def complain(
+        self, column: str, expected: str, *, severity: Severity = "fault", value: str | None = None, check: str = ""
+    ) -> None:
         """Note a fault, or a doubt, at the column's cell."""
         shown = self.text(column) if value is None else value
-        self.findings.append(Finding(severity, self.file, self.number, column, shown, expected, self.place))
+        self.findings.append(Finding(severity, self.file, self.number, column, shown, expected, self.place, check))
 
-    def doubt(self, column: str, words: str) -> None:
-        """Note a doubt at the column's cell."""
-        self.complain(column, words, severity="doubt")
+    def doubt(self, column: str, words: str, check: str = "") -> None:
+        """Note a doubt at the column's cell, of the check of that name."""
+        self.complain(column, words, severity="doubt", check=check)
 
     def text(self, column: str) -> str:
         """The cell's text, empty where there is no such column."""
@@ -64,11 +68,18 @@ class Row:
             return None
         value = parse_number(typed, decimal_comma=self.decimal_comma)
         if value is None:
-            self.complain(column, f"not a number; expected {allowed.words}")
+            self.complain(column, f"not a number; expected {allowed.words}{self._hint_at_comma(typed)}")
         elif not math.isfinite(value) or not allowed.holds(value):
             self.complain(column, f"expected {allowed.words}")
             return None
         return value
+
+    def _hint_at_comma(self, typed: str) -> str:
+        """What to do with a decimal comma in a table whose cells are separated by commas; empty where there is none."""
+        if self.decimal_comma or not _DECIMAL_COMMA.fullmatch(typed):
+            return ""
+        meant = typed.replace(",", ".")
+        return f"; {meant} is meant? A decimal comma is read where ; or a tab stands between cells, here write a point"
 
     def required_number(self, column: str, allowed: Range) -> float:
         """The cell's number; NaN, with a fault, where it is empty, no number or out of the range."""
@@ -169,9 +180,18 @@ def _refuse_cells_without_heading(row: Row, headings: Sequence[str], cells: Sequ
         row.complain(
             "",
             f"the row has {len(cells)} cells for {len(headings)} columns and this one has no heading; "
-            "put text that holds the separator in quotation marks",
+            f"put text that holds the separator in quotation marks{_hint_at_split_number(row, cells)}",
             value=stray[0],
         )
+
+
+def _hint_at_split_number(row: Row, cells: Sequence[str]) -> str:
+    """A hint where two neighbouring cells look like the two sides of a decimal comma."""
+    digits = [cell.strip() for cell in cells]
+    split = any(re.fullmatch(r"[+-]?\d+", left) and re.fullmatch(r"\d+", right) for left, right in pairwise(digits))
+    if row.decimal_comma or not split:
+        return ""
+    return "; a decimal comma splits a number in two: write a point, or put ; between the cells"
 
 
 def check_columns(table: Table, columns: Columns, findings: list[Finding]) -> frozenset[str]:

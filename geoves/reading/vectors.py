@@ -12,6 +12,7 @@ import pyogrio
 import shapely
 
 from geoves.domain.findings import Finding
+from geoves.reading.conversions import extent_of, note_missing_grid
 from geoves.reading.delimited import cell_text, refuse_file
 from geoves.reading.faults import in_words, printable
 from geoves.reading.sources import Source
@@ -88,6 +89,8 @@ def _read_features(source: Source, crs: str, findings: list[Finding]) -> gpd.Geo
             warnings.simplefilter("ignore")  # of a file's flaws and field types that matter not here
             features = gpd.read_file(source.path, layer=_find_layer(source), engine="pyogrio")
             if not (expected := _unfit(features)):
+                own = features.crs.to_wkt()
+                note_missing_grid(source.typed, own, crs, extent_of(tuple(features.total_bounds), own), findings)
                 return features.to_crs(crs)
     except _LayerError as error:
         expected = str(error)

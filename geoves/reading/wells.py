@@ -110,8 +110,9 @@ def _check_sequence(found: Sequence[tuple[Row, LogInterval]], total_depth: float
             row.complain("top", f"the interval overlaps that of row {reached_row}; correct top or bottom")
         elif interval.top > reached and not math.isclose(interval.top, reached):
             above = f"row {reached_row}" if reached_row else "the ground"
-            row.doubt("top", f"a gap in the log between this interval and {above}; the gap is read as not known")
+            words = f"a gap in the log between this interval and {above}; the gap is read as not known"
+            row.doubt("top", words, "log_gap")
         if interval.bottom > total_depth and not math.isclose(interval.bottom, total_depth):
-            row.doubt("bottom", "deeper than the well's total depth")
+            row.doubt("bottom", "deeper than the well's total depth", "log_below_depth")
         if interval.bottom > reached:
             reached, reached_row = interval.bottom, row.number
