@@ -120,7 +120,7 @@ _CURVES = (
     Check(
         "cusp",
         "Two neighbouring readings against what all others let expect",
-        f"Off together with a chi-square over {curve_shape.CUSP_CHI_SQUARE:g}",
+        f"Off together with a chi-square over {_DEFAULTS.jump_limit**2 + curve_shape.CUSP_COST:g}",
         "The potential at the surface is a smoothed image of the layers: no flat layers make a bend that sharp. A "
         "lateral contact crossed by an electrode does, as do a pipe or a fence.",
         "Look for what the electrodes crossed there; set use to 0 with the reason where it is known.",

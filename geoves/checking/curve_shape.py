@@ -14,8 +14,9 @@ from geoves.domain.arrays import FloatArray
 from geoves.domain.findings import ExaminedCurve, Finding, Overlap
 from geoves.domain.survey import FEWEST_READINGS, Sounding
 
-# Two neighbours together: chi-square of two degrees of freedom of the same rarity, and each this far off by itself.
-CUSP_CHI_SQUARE, CUSP_LEAST = 22.0, 2.0
+# Two neighbours are off together where this much chi-square more than one alone goes with them, and each is this many
+# of its errors off.
+CUSP_COST, CUSP_LEAST = 10.0, 2.0
 # Readings that a curve needs to be called rough as a whole.
 FEWEST_FOR_ROUGH = 8
 # How many readings on a slope is looked for.
@@ -30,6 +31,7 @@ class JudgedCurve:
 
     reading   their place in the curve    segment  counted from 0 without gaps
     silent    True for readings that were set aside: off by too much to speak of the others
+    cusps     pairs of those that were set aside together
     """
 
     sounding: Sounding
@@ -41,6 +43,7 @@ class JudgedCurve:
     segment: np.ndarray
     silent: np.ndarray
     prediction: Prediction
+    cusps: tuple[tuple[int, int], ...] = ()
 
 
 def judge_curve(sounding: Sounding, ground: LayeredGround, noise: float, options: CurveOptions) -> JudgedCurve | None:
@@ -55,17 +58,47 @@ def judge_curve(sounding: Sounding, ground: LayeredGround, noise: float, options
     error = np.maximum(error, 0.25 * noise)
     log_apparent = np.log(apparent)
     prior = covariance_of(ground, ground.find(a, b))
+    neighbours = _neighbours(a, segment)
     silent = np.zeros(a.size, dtype=bool)
+    cusps: list[tuple[int, int]] = []
     while True:
         prediction = predict_each(log_apparent, error, segment, prior, silent)
-        score = np.where(silent, 0.0, np.abs(prediction.score))
-        worst = int(np.argmax(score))
-        if score[worst] < options.jump_limit or silent.sum() >= a.size // 3:
+        worst, weight = _find_worst(prediction, neighbours, silent, error)
+        if weight < options.jump_limit**2 or silent.sum() >= a.size // 3:
             break
-        silent[worst] = True
-    silent &= np.abs(prediction.score) >= options.jump_limit
+        silent[list(worst)] = True
+        cusps += [(worst[0], worst[-1])] if len(worst) == 2 else []
+    in_cusp = np.isin(np.arange(a.size), [one for pair in cusps for one in pair])
+    silent &= in_cusp | (np.abs(prediction.score) >= options.jump_limit)
     reading = np.flatnonzero(curve.used)
-    return JudgedCurve(sounding, reading, a, b, log_apparent, error, segment, silent, prediction)
+    return JudgedCurve(sounding, reading, a, b, log_apparent, error, segment, silent, prediction, tuple(cusps))
+
+
+def _neighbours(half_spacing: FloatArray, segment: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Indices of readings one after the other in a segment, (p,) and (p,)."""
+    order = np.lexsort((half_spacing, segment))
+    same = segment[order[:-1]] == segment[order[1:]]
+    return order[:-1][same], order[1:][same]
+
+
+def _find_worst(
+    prediction: Prediction, neighbours: tuple[np.ndarray, np.ndarray], silent: np.ndarray, error: FloatArray
+) -> tuple[tuple[int, ...], float]:
+    """The reading, or two neighbours off alike, without which the curve fits best, and how far chi-square then falls.
+
+    Two are taken where they together do as much better than one as a second doubted reading would have to.
+    """
+    score = np.where(silent, 0.0, prediction.score**2)
+    one = int(np.argmax(score))
+    first, second = neighbours
+    off, other_off, both = prediction.pairs(first, second)
+    alike = (off * other_off > 0) & ~silent[first] & ~silent[second]
+    alike &= np.minimum(np.abs(off) / error[first], np.abs(other_off) / error[second]) > CUSP_LEAST
+    if alike.any():
+        k = int(np.argmax(np.where(alike, both, -1.0)))
+        if both[k] - CUSP_COST > score[one]:
+            return (int(first[k]), int(second[k])), float(both[k]) - CUSP_COST
+    return (one,), float(score[one])
 
 
 def check_shape(judged: JudgedCurve, ground: LayeredGround, options: CurveOptions) -> list[Finding]:
@@ -79,7 +112,8 @@ def check_shape(judged: JudgedCurve, ground: LayeredGround, options: CurveOption
 
 def _tell_jumps(judged: JudgedCurve, ground: LayeredGround) -> Iterator[Finding]:
     expected = np.exp(judged.log_apparent - judged.prediction.residual)
-    for i in np.flatnonzero(judged.silent):
+    paired = {one for pair in judged.cusps for one in pair}
+    for i in sorted(set(np.flatnonzero(judged.silent).tolist()) - paired):
         off, sure = float(judged.prediction.residual[i]), float(judged.prediction.deviation[i])
         slip = explain_jump(
             judged.half_spacing, judged.potential_half_spacing, judged.log_apparent, judged.prediction, int(i), ground
@@ -91,31 +125,15 @@ def _tell_jumps(judged: JudgedCurve, ground: LayeredGround) -> Iterator[Finding]
         yield doubt_reading("jump", judged.sounding, int(judged.reading[i]), words)
 
 
-def _neighbours(judged: JudgedCurve) -> tuple[np.ndarray, np.ndarray]:
-    """Indices of readings one after the other in a segment, (p,) and (p,)."""
-    pairs = []
-    for segment in np.unique(judged.segment):
-        rows = np.flatnonzero((judged.segment == segment) & ~judged.silent)
-        rows = rows[np.argsort(judged.half_spacing[rows], kind="stable")]
-        pairs.append((rows[:-1], rows[1:]))
-    return np.concatenate([one for one, _ in pairs]), np.concatenate([other for _, other in pairs])
-
-
 def _tell_cusps(judged: JudgedCurve) -> Iterator[Finding]:
     """Two neighbours that are off together: a bend sharper than the ground below can make."""
-    first, second = _neighbours(judged)
-    off, other_off, score = judged.prediction.pairs(first, second)
-    least = np.minimum(np.abs(off) / judged.error[first], np.abs(other_off) / judged.error[second])
-    told: set[int] = set()
-    for k in np.flatnonzero((score > CUSP_CHI_SQUARE) & (off * other_off > 0) & (least > CUSP_LEAST)):
-        i, j = int(first[k]), int(second[k])
-        if told & {i, j}:
-            continue
-        told |= {i, j}
+    expected = np.exp(judged.log_apparent - judged.prediction.residual)
+    for i, j in judged.cusps:
+        off, other_off = (judged.prediction.residual[k] for k in (i, j))
         words = (
             f"the readings at AB/2 {judged.half_spacing[i]:g} and {judged.half_spacing[j]:g} m lie "
-            f"{math.expm1(off[k]):+.0%} and {math.expm1(other_off[k]):+.0%} off what all others let expect: a cusp "
-            "sharper than flat layers can make"
+            f"{math.expm1(off):+.0%} and {math.expm1(other_off):+.0%} off the {expected[i]:.4g} and {expected[j]:.4g} "
+            "ohm m that all others let expect: a cusp sharper than flat layers can make"
         )
         for one in (i, j):
             yield doubt_reading("cusp", judged.sounding, int(judged.reading[one]), words)
@@ -154,11 +172,18 @@ def steepest_fall(drop: float) -> float:
     return -(FALL_AT_TOP + FALL_PER_DROP * drop)
 
 
+def _is_spike(silent: np.ndarray) -> np.ndarray:
+    """Whether a reading was set aside and neither neighbour was: a jump, and no part of a slope."""
+    padded = np.concatenate([[False], silent, [False]])
+    return np.asarray(silent & ~padded[:-2] & ~padded[2:])
+
+
 def _tell_slopes(judged: JudgedCurve, slope_limit: float) -> Iterator[Finding]:
     """The worst rise and the worst fall of each segment that flat layers cannot make, beyond noise."""
     for segment in np.unique(judged.segment):
-        rows = np.flatnonzero((judged.segment == segment) & ~judged.silent)
+        rows = np.flatnonzero(judged.segment == segment)
         rows = rows[np.argsort(judged.half_spacing[rows], kind="stable")]
+        rows = rows[~_is_spike(judged.silent[rows])]
         a, y, error = judged.half_spacing[rows], judged.log_apparent[rows], judged.error[rows]
         limit = steepest_rise(a, judged.potential_half_spacing[rows])
         steep: list[tuple[float, str, int, int]] = []

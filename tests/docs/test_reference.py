@@ -114,10 +114,11 @@ def test_the_record_of_a_run_is_described(root, small_results):
     assert [key for key in record if f"`{key}`" not in text] == []
 
 
-def test_delivery_page_is_written_from_the_dictionary(root):
-    path = root / "docs/reference/write_delivery.py"
-    spec = importlib.util.spec_from_file_location("write_delivery", path)
+@pytest.mark.parametrize("name", ["write_delivery", "write_checks"])
+def test_page_is_written_from_what_the_program_says(root, name):
+    path = root / f"docs/reference/{name}.py"
+    spec = importlib.util.spec_from_file_location(name, path)
     script = importlib.util.module_from_spec(spec)
     spec.loader.exec_module(script)
     page = script.PAGE.read_text("utf-8")
-    assert script.fill_page(page) == page, "run `python docs/reference/write_delivery.py`"
+    assert script.fill_page(page) == page, f"run `python docs/reference/{name}.py`"
