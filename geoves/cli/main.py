@@ -64,7 +64,9 @@ def _build_parser() -> argparse.ArgumentParser:
     run = commands.add_parser("run", help="do the whole job: from the tables to the delivery folder")
     run.add_argument("region", type=Path, metavar="REGION.toml")
     run.add_argument("--out", type=Path, metavar="FOLDER", help="default: delivery, beside REGION.toml")
-    check = commands.add_parser("check", help="only check the inputs, and write what was found to check/check.html and check.csv")
+    check = commands.add_parser(
+        "check", help="only check the inputs, and write what was found to check/check.html and check.csv"
+    )
     check.add_argument("region", type=Path, metavar="REGION.toml")
     for command in (run, check):
         command.add_argument("--quiet", action="store_true", help="say nothing but what is wrong")
