@@ -64,6 +64,12 @@ def _build_parser() -> argparse.ArgumentParser:
     run = commands.add_parser("run", help="do the whole job: from the tables to the delivery folder")
     run.add_argument("region", type=Path, metavar="REGION.toml")
     run.add_argument("--out", type=Path, metavar="FOLDER", help="default: delivery, beside REGION.toml")
+    where = run.add_mutually_exclusive_group()
+    where.add_argument(
+        "--workers", type=_count, metavar="N", help="processes on this machine; default: its cores, four at most"
+    )
+    where.add_argument("--scheduler", metavar="ADDRESS", help="work on the Dask cluster whose scheduler is there")
+    run.add_argument("--afresh", action="store_true", help="compute all anew, and remember nothing for a next run")
     check = commands.add_parser(
         "check", help="only check the inputs, and write what was found to check/check.html and check.csv"
     )
@@ -73,6 +79,13 @@ def _build_parser() -> argparse.ArgumentParser:
     new = commands.add_parser("new", help="write a region folder to begin with")
     new.add_argument("folder", type=Path, metavar="FOLDER")
     return parser
+
+
+def _count(text: str) -> int:
+    """A whole number above 0."""
+    if not text.isdecimal() or int(text) < 1:
+        raise argparse.ArgumentTypeError(f"{text!r}; expected a whole number above 0")
+    return int(text)
 
 
 def _version() -> str:
@@ -96,7 +109,8 @@ def _call(parsed: argparse.Namespace) -> None:
     if parsed.command == "run":
         from geoves.project.run import run  # noqa: PLC0415
 
-        summary = run(parsed.region, parsed.out, progress)
+        how = {"workers": parsed.workers, "scheduler": parsed.scheduler, "afresh": parsed.afresh}
+        summary = run(parsed.region, parsed.out, progress, **how)
     else:
         from geoves.project.check import check  # noqa: PLC0415
 

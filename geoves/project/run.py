@@ -1,7 +1,7 @@
 """The whole job, in the order in which data flow."""
 
 from collections.abc import Iterator, Mapping, Sequence
-from contextlib import contextmanager
+from contextlib import contextmanager, nullcontext
 from math import ceil
 from pathlib import Path
 from typing import Any
@@ -29,6 +29,7 @@ from geoves.project import provenance
 from geoves.project.engines import Map, open_engine, watched
 from geoves.project.findings import name_inputs
 from geoves.project.inputs import Inputs, read_inputs
+from geoves.project.memory import Memory, open_memory, remembered
 from geoves.project.progress import Progress, SilentProgress, Summary
 from geoves.project.settings import Settings
 from geoves.project.units_of_logs import claim_unit
@@ -36,9 +37,19 @@ from geoves.reading import fingerprint_files
 from geoves.surfaces import build_surfaces
 
 
-def run(region_path: Path | str, out: Path | str | None = None, progress: Progress | None = None) -> Summary:
+def run(
+    region_path: Path | str,
+    out: Path | str | None = None,
+    progress: Progress | None = None,
+    *,
+    workers: int | None = None,
+    scheduler: str | None = None,
+    afresh: bool = False,
+) -> Summary:
     """Do the whole job and say in a few lines what was found, what was not, and where the files are.
 
+    workers : processes on this machine, as many as it has cores and four at most unless given; scheduler : address of
+    a Dask cluster in their place; afresh : every block is computed, none is looked up or remembered
     Raises InputError where the inputs are wrong, EngineError where a step cannot be computed, DeliveryError where the
     delivery cannot be written; what stood in the folder before stands then still.
     """
@@ -46,19 +57,24 @@ def run(region_path: Path | str, out: Path | str | None = None, progress: Progre
     region_path = Path(region_path)
     folder = region_path.parent / "delivery" if out is None else Path(out)
     inputs = _read(region_path, progress)
-    with stage(folder) as staging, open_engine() as engine:  # a folder in use is said before the work, not after it
-        results, record = work_out(inputs, progress, engine)
+    with (
+        stage(folder) as staging,  # a folder in use is said before the work, not after it
+        open_engine(workers, scheduler) as engine,
+        nullcontext() if afresh else open_memory(folder) as memory,
+    ):
+        recalling = engine if memory is None else remembered(engine, memory)
+        results, record = work_out(inputs, progress, engine, recalling)
         write_all(results, record, staging, progress, engine)
         with _step(progress, "Moving the delivery into place"):
             publish(staging, folder, record)
-    return Summary(tuple(_tell(results, folder)))
+    return Summary((*_tell(results, folder), *_tell_recalled(memory)))
 
 
 def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, Any]]:
     """Everything that the delivery is written from, and the record of how it came about."""
     inputs = _read(region_path, progress)
     with open_engine() as engine:
-        return work_out(inputs, progress, engine)
+        return work_out(inputs, progress, engine, engine)
 
 
 def _read(region_path: Path, progress: Progress) -> Inputs:
@@ -66,8 +82,11 @@ def _read(region_path: Path, progress: Progress) -> Inputs:
         return read_inputs(region_path)
 
 
-def work_out(inputs: Inputs, progress: Progress, engine: Map) -> tuple[Results, dict[str, Any]]:
-    """From the inputs to everything that the delivery is written from, and the record of how it came about."""
+def work_out(inputs: Inputs, progress: Progress, engine: Map, recalling: Map) -> tuple[Results, dict[str, Any]]:
+    """From the inputs to everything that the delivery is written from, and the record of how it came about.
+
+    engine : the map that blocks of cells go through; recalling : that of blocks of curves, which may know some already
+    """
     region, settings, grid = inputs.region, inputs.settings, inputs.grid
     survey = assign_errors(inputs.survey)
     examination = examine_survey(survey, region, claim_unit(region.template), settings.curves)
@@ -76,9 +95,9 @@ def work_out(inputs: Inputs, progress: Progress, engine: Map) -> tuple[Results, 
     names = [sounding.name for sounding in survey.soundings if sounding.curve.is_enough]
     n_curves, n_places = (len(cut_blocks(names, one.block)) for one in (settings.inversion, settings.interpretation))
     with progress.step("Inverting the curves", 2 * n_curves) as step:
-        inverted = invert(survey, settings.inversion, map=watched(engine, step))
+        inverted = invert(survey, settings.inversion, map=watched(recalling, step))
     with progress.step("Reading columns from them", (1 + settings.interpretation.calibrate) * n_places) as step:
-        interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(engine, step))
+        interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(recalling, step))
     with progress.step("Kriging the surfaces", _count_blocks(grid.shape, settings)) as step:
         stack = build_surfaces(interpretation, survey, template, grid, settings.surfaces, map=watched(engine, step))
     with _step(progress, "Drawing contours, valley and permits"):
@@ -158,6 +177,11 @@ def _doubt_words(interpretation: Interpretation) -> Sequence[Finding]:
     """Drillers' words that no unit of the template claims."""
     expected = "no unit claims these words; add them to a unit's log_terms, or type the unit in the log"
     return [Finding("doubt", "well_logs", 0, "description", words, expected) for words in interpretation.unmapped_words]
+
+
+def _tell_recalled(memory: Memory | None) -> Iterator[str]:
+    if memory is not None and memory.recalled:
+        yield f"{memory.recalled} of {memory.asked} blocks of curves were known from earlier runs ({memory.folder})."
 
 
 def _tell(results: Results, folder: Path) -> Iterator[str]:

@@ -1,11 +1,19 @@
 """Engines give the same answers in the same order, whoever works."""
 
 import math
+import os
+import signal
+import subprocess
+import sys
+import time
+from functools import partial
+from pathlib import Path
 
 import numpy as np
 import pytest
 from threadpoolctl import threadpool_info
 
+from geoves.errors import EngineError
 from geoves.inversion import InversionOptions, invert
 from geoves.project.engines import open_engine, watched
 
@@ -54,3 +62,87 @@ def test_a_watched_map_tells_of_every_block_and_changes_nothing():
     assert told == []  # nothing is done before it is asked for
     assert list(results) == [1.0, 2.0, 3.0]
     assert told == [1, 1, 1]
+
+
+# A lost worker
+
+
+def work_once_killed(block, *, doomed, flag):
+    """Give the block back and say who did it; the process that is first to take the doomed one is killed."""
+    if block == doomed and not flag.exists():
+        flag.write_text("taken")
+        os.kill(os.getpid(), signal.SIGKILL)
+    return block, os.getpid()
+
+
+def die(_):
+    os.kill(os.getpid(), signal.SIGKILL)
+
+
+@pytest.mark.skipif(os.name == "nt", reason="SIGKILL is of POSIX")
+def test_a_lost_process_is_replaced_and_its_block_worked_again(tmp_path):
+    with open_engine(2) as engine:
+        found = list(engine(partial(work_once_killed, doomed=5, flag=tmp_path / "flag"), range(12)))
+        again = list(engine(math.factorial, range(3)))
+    assert (tmp_path / "flag").exists()
+    assert [block for block, _ in found] == list(range(12))
+    assert len({process for _, process in found}) > 2
+    assert again == [1, 1, 2]
+
+
+@pytest.mark.skipif(os.name == "nt", reason="SIGKILL is of POSIX")
+def test_a_block_that_kills_every_process_ends_in_words():
+    with open_engine(2) as engine:
+        assert list(engine(math.factorial, [3])) == [6]
+        with pytest.raises(EngineError, match="a worker process ended before its work was done"):
+            list(engine(die, [1]))
+
+
+ORPHANS = """
+import os, sys, time
+from geoves.project.engines import open_engine
+def tell(_):
+    return os.getpid()
+if __name__ == "__main__":
+    with open_engine(2) as engine:
+        print(*engine(tell, range(8)), flush=True)
+        time.sleep(60)
+"""
+
+
+@pytest.mark.skipif(not Path("/proc/self").exists(), reason="processes are looked up in /proc")
+def test_workers_end_with_a_run_that_is_killed(tmp_path):
+    script = tmp_path / "orphans.py"
+    script.write_text(ORPHANS, encoding="utf-8")
+    environment = os.environ | {"PYTHONPATH": str(Path(__file__).parents[2])}
+    with subprocess.Popen([sys.executable, str(script)], stdout=subprocess.PIPE, text=True, env=environment) as run:
+        workers = {int(word) for word in run.stdout.readline().split()}
+        run.kill()
+    assert workers
+    end = time.monotonic() + 30
+    while any(Path(f"/proc/{worker}/stat").exists() and not is_dead(worker) for worker in workers):
+        assert time.monotonic() < end, "workers outlive their run"
+        time.sleep(0.05)
+
+
+def is_dead(process):
+    """Whether only the entry of a process is left: its state is Z (proc(5))."""
+    try:
+        return Path(f"/proc/{process}/stat").read_text().rpartition(")")[2].split()[0] == "Z"
+    except OSError:
+        return True
+
+
+def test_no_more_blocks_are_taken_up_than_the_workers_need():
+    taken = []
+
+    def blocks():
+        for number in range(100):
+            taken.append(number)
+            yield number
+
+    with open_engine(2) as engine:
+        results = iter(engine(math.factorial, blocks()))
+        next(results)
+        assert len(taken) <= 5  # two for each worker
+        assert sum(1 for _ in results) == 99
