@@ -6,7 +6,7 @@ under broad priors), which charges a layer for the freedom that the readings do 
 """
 
 from collections.abc import Callable, Iterable, Sequence
-from functools import partial
+from functools import partial, reduce
 from itertools import chain
 from typing import Any
 
@@ -167,19 +167,46 @@ def _survey_noise(residual: FloatArray, options: InversionOptions) -> float:
 def _fit_all_counts(
     curves: Curves, soundings: Sequence[Sounding], options: InversionOptions
 ) -> dict[int, tuple[Fit, Prior]]:
-    """The best fit of each layer count, with its prior: from two schedules of depths and from one layer less, split."""
+    """The best fit of each layer count, with its prior.
+
+    Upward from two schedules of depths and from one layer less, split; then downward from one layer more, every pair
+    of neighbours merged: a search caught in a local minimum with few layers is seldom caught with more.
+    """
     fits: dict[int, tuple[Fit, Prior]] = {}
     for k in range(options.least_layers, options.most_layers + 1):
         prior, starts = _prior_and_starts(curves, soundings, k, options)
         if k - 1 in fits:
             starts.append(_split_thickest(fits[k - 1][0].unknowns, k - 1))
-        best: Fit | None = None
-        for start in starts:
-            fit = damped_steps.fit_layers(start, k, curves, prior)
-            best = fit if best is None else damped_steps.keep_better(best, fit)
-        if best is not None:
-            fits[k] = best, prior
+        fits[k] = _fit_best(starts, k, curves, prior), prior
+    for k in range(options.most_layers - 1, options.least_layers - 1, -1):
+        fit, prior = fits[k]
+        merged = [_merge_layers(fits[k + 1][0].unknowns, k + 1, upper) for upper in range(k)]
+        fits[k] = damped_steps.keep_better(fit, _fit_best(merged, k, curves, prior)), prior
     return fits
+
+
+def _fit_best(starts: Sequence[FloatArray], k: int, curves: Curves, prior: Prior) -> Fit:
+    """For each curve the best of the fits from several starts."""
+    return reduce(damped_steps.keep_better, (damped_steps.fit_from_afar(start, k, curves, prior) for start in starts))
+
+
+def _merge_layers(unknowns: FloatArray, k: int, upper: int) -> FloatArray:
+    """Unknowns with k - 1 layers: layer `upper` and the next become one, of their mean log resistivity by thickness.
+
+    The last layer before the half-space gives way to it.
+    """
+    thickness, resistivity, shifts = np.split(unknowns, [k - 1, 2 * k - 1], axis=1)
+    pair, mean = thickness[:, upper : upper + 2], resistivity[:, upper + 1 : upper + 2]
+    total = np.logaddexp.reduce(pair, axis=1, keepdims=True)[:, : pair.shape[1] - 1]
+    if pair.shape[1] == 2:
+        share = np.exp(pair - total)
+        mean = np.sum(share * resistivity[:, upper : upper + 2], axis=1, keepdims=True)
+    return np.hstack(
+        [
+            thickness[:, :upper], total, thickness[:, upper + 2 :],
+            resistivity[:, :upper], mean, resistivity[:, upper + 2 :], shifts,
+        ]
+    )  # fmt: skip
 
 
 def _prior_and_starts(

@@ -258,7 +258,7 @@ def fit_sequences(
         for factor in START_FACTORS if k > 1 else (1.0,):
             start = mean.copy()
             start[: k - 1] += np.log(factor)
-            fit = damped_steps.fit_layers(np.tile(start, (prior.mean.shape[0], 1)), k, curves, prior)
+            fit = damped_steps.fit_from_afar(np.tile(start, (prior.mean.shape[0], 1)), k, curves, prior)
             best = fit if best is None else damped_steps.keep_better(best, fit)
         if best is not None:
             fits.append(best)

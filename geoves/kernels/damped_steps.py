@@ -21,6 +21,7 @@ OUTLIER_SHARE = 0.02
 OUTLIER_DEVIATION = 0.6
 LONGEST_STEP = 1.0  # in natural logs: a factor of e
 FIRST_DAMPING, LEAST_DAMPING, MOST_DAMPING = 0.1, 1e-6, 1e7
+LOOSE_DEVIATION, LOOSE_ITERATIONS = 0.2, 10
 TOLERANCE = 3e-3  # of the objective, in nats
 LOG_TWO_PI = float(np.log(2.0 * np.pi))
 
@@ -220,6 +221,17 @@ def fit_layers(start: Floats, n_layers: int, curves: Curves, prior: Prior, *, it
         if not active.size:
             break
     return Fit(unknowns, state.objective, state.hessian, state.log_response, state.robust_weight)
+
+
+def fit_from_afar(start: Floats, n_layers: int, curves: Curves, prior: Prior) -> Fit:
+    """`fit_layers` from a start that may be far from the curve.
+
+    Its first steps take errors for no less than LOOSE_DEVIATION: else readings far off count as bad ones, lose their
+    weight, and the search ends where it began.
+    """
+    loose = curves._replace(deviation=np.maximum(curves.deviation, LOOSE_DEVIATION))
+    near = fit_layers(start, n_layers, loose, prior, iterations=LOOSE_ITERATIONS)
+    return fit_layers(near.unknowns, n_layers, curves, prior)
 
 
 def keep_better(first: Fit, second: Fit) -> Fit:

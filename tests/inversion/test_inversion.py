@@ -12,7 +12,8 @@ import pytest
 from scipy.stats import binom
 
 from geoves.domain.survey import Curve, Sounding, Survey
-from geoves.inversion import InversionOptions, invert, invert_block
+from geoves.inversion import InversionOptions, _fit_all_counts, _merge_layers, invert, invert_block
+from geoves.kernels.damped_steps import Readings, fit_layers, stack_curves
 from geoves.kernels.layered_earth import shared_wavenumbers
 from tests.published.curve_tables import ALL_CURVES
 from tests.reference.image_series import finite_response, ideal_response, layered_strengths, two_layer_strengths
@@ -100,9 +101,9 @@ def test_what_equivalence_leaves_known_is_known():
 def test_layers_are_counted_with_restraint(name):
     counts = np.array([one.n_layers for one in inverted(name)])
     true = len(MODELS[name].resistivity)
-    assert np.mean(counts > true + 1) <= 0.1
-    assert np.mean(counts < true) <= 0.3
-    assert abs(np.median(counts) - true) <= 1
+    assert np.mean(counts > true + 1) <= 0.05
+    assert np.mean(counts > true) <= 0.2
+    assert np.mean(counts < true) <= 0.2
     for one in inverted(name):
         assert min(one.criterion, key=one.criterion.get) == one.n_layers
 
@@ -124,8 +125,38 @@ def test_a_typed_error_is_believed():
         assert np.std(np.log(loose.ensemble.resistivity[:, 0])) > np.std(np.log(tight.ensemble.resistivity[:, 0]))
 
 
-@pytest.mark.parametrize("factor", [1.5, 1.3])
-@pytest.mark.parametrize("spoilt", [5, 14])
+@pytest.mark.parametrize("name", ["conductive base", "resistive base", "H", "K", "A", "Q", "HK, outwash"])
+def test_the_search_finds_what_a_start_at_the_truth_finds(name):
+    """The true model is a start that the search does not have: all but few of the curves need none of it."""
+    model, soundings = MODELS[name], noisy_survey(name, DRAWS).soundings
+    k = len(model.resistivity)
+    wavenumber = shared_wavenumbers((s.curve.half_spacing, s.curve.potential_half_spacing) for s in soundings)
+    curves = stack_curves([Readings(*s.curve.readings(NOISE)) for s in soundings], wavenumber)
+    fit, prior = _fit_all_counts(curves, soundings, QUICK)[k]
+    true = np.log([*model.thickness, *model.resistivity])
+    from_truth = fit_layers(np.tile(true, (DRAWS, 1)), k, curves, prior)
+    assert np.mean(fit.objective > from_truth.objective + 0.5) <= 0.05
+
+
+@pytest.mark.parametrize("upper", [0, 1, 2])
+def test_merged_layers_keep_what_lies_above_and_below(upper):
+    thickness, resistivity = np.array([2.0, 6.0, 20.0]), np.array([100.0, 10.0, 50.0, 300.0])
+    (merged,) = _merge_layers(np.log([[*thickness, *resistivity, 1.05]]), 4, upper)
+    h, rho = np.exp(merged[:2]), np.exp(merged[2:5])
+    expected = {
+        0: ([8.0, 20.0], [100.0**0.25 * 10.0**0.75, 50.0, 300.0]),
+        1: ([2.0, 26.0], [100.0, 10.0 ** (6 / 26) * 50.0 ** (20 / 26), 300.0]),
+        2: ([2.0, 6.0], [100.0, 10.0, 300.0]),
+    }[upper]
+    np.testing.assert_allclose(h, expected[0])
+    np.testing.assert_allclose(rho, expected[1])
+    assert np.exp(merged[5]) == pytest.approx(1.05)
+
+
+# The minimum of H is at AB/2 = 20 m, reading 9: about there a bad reading looks most like another layer.
+@pytest.mark.parametrize(
+    ("spoilt", "factor"), [(5, 1.5), (5, 1.3), (9, 1.5), (10, 1.5), (10, 1.3), (14, 1.5), (14, 1.3)]
+)
 def test_an_outlier_is_set_aside(spoilt, factor):
     survey = noisy_survey("H", 4, error=NOISE)
     bad = []
