@@ -57,12 +57,13 @@ class Grid:
 class Surface:
     """One quantity on the grid with what is known of its doubt; NaN where it is not supported.
 
-    Arrays are (rows, columns), in m for lengths, ohm m for resistivities and 0 to 1 for probabilities.
+    Arrays are (rows, columns), in m for lengths, ohm m for resistivities, 0 to 1 for probabilities and whole numbers
+    for codes.
     """
 
     name: str
     title: str
-    quantity: str  # "elevation", "depth", "thickness", "resistivity" or "probability"
+    quantity: str  # "elevation", "depth", "thickness", "resistivity", "probability" or "code"
     grid: Grid
     estimate: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
     standard_error: FloatArray | None = attrs.field(default=None, converter=optional_floats, eq=by_value, repr=shape)

@@ -25,7 +25,7 @@ from geoves.domain.units import Role, Template
 from geoves.interpretation import sequences, soundings, wells
 from geoves.interpretation.beside_well import condition_draws
 from geoves.interpretation.calibration import calibrate_template
-from geoves.interpretation.options import InterpretationOptions
+from geoves.interpretation.options import ABOVE_CONFINING, InterpretationOptions
 from geoves.interpretation.pairs import estimate_pairs, learn_from_pairs, paired_soundings, tell_pairs
 from geoves.interpretation.surroundings import Surroundings, find_surroundings
 from geoves.kernels import damped_steps, layered_earth
@@ -261,7 +261,7 @@ def _read_sounding(
     thicknesses: list[Thickness] = []
     for role, values in (
         (Role.DEEP_AQUIFER, contact.gravel if contact.status != "deeper_than" else np.empty(0)),
-        (Role.SHALLOW_AQUIFER, draws.thickness[:, soundings.role_mask(template, Role.SHALLOW_AQUIFER)].sum(axis=1)),
+        *((role, draws.thickness[:, soundings.role_mask(template, role)].sum(axis=1)) for role in ABOVE_CONFINING),
     ):
         known = values[~np.isnan(values)]
         if template.with_role(role) and known.size:

@@ -17,6 +17,8 @@ THICKNESS_BY_ROLE: Mapping[str, tuple[float, float]] = MappingProxyType(
         Role.DEEP_AQUIFER: (2.0, 30.0),
     }
 )
+# Roles whose thickness is asked for at every place beside the deep aquifer's: what lies on the confining unit.
+ABOVE_CONFINING = (Role.COVER, Role.SHALLOW_AQUIFER)
 
 
 @attrs.frozen

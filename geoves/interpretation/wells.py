@@ -9,7 +9,7 @@ from geoves.domain.arrays import FloatArray
 from geoves.domain.survey import Pick, Well
 from geoves.domain.tops import PlaceKind, Thickness, Top, TopStatus, WellReading
 from geoves.domain.units import Role, Template
-from geoves.interpretation.options import InterpretationOptions
+from geoves.interpretation.options import ABOVE_CONFINING, InterpretationOptions
 from geoves.interpretation.sequences import log_within
 from geoves.interpretation.soundings import absent_thickness, other_picks
 from geoves.interpretation.words import claim_words
@@ -119,10 +119,13 @@ def _top(well: Well, unit: str, contact: str, status: TopStatus, depth: float, e
 
 
 def _thicknesses(well: Well, known: list[WellReading], role: dict[str, Role]) -> list[Thickness]:
-    """Thickness of each aquifer where the log passes it or meets it, with what is not known beside it as its error."""
+    """Thickness of each aquifer and of the cover where the log passes it or meets it.
+
+    What is not known beside it is its error.
+    """
     order = list(Role)
     rows = []
-    for which in (Role.SHALLOW_AQUIFER, Role.DEEP_AQUIFER):
+    for which in (*ABOVE_CONFINING, Role.DEEP_AQUIFER):
         if which not in role.values():
             continue
         mine = [reading for reading in known if role[reading.unit or ""] is which]

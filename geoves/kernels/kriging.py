@@ -50,6 +50,9 @@ class KrigingEngine(Protocol):
     def predict(self, cells: FloatArray, drift: FloatArray | None = None) -> tuple[FloatArray, FloatArray]:
         """Estimate and variance (m,) at `cells` (m, 2), where the drift is `drift` (m, p) if the data have one."""
 
+    def estimate_many(self, values: FloatArray, cells: FloatArray, drift: FloatArray | None = None) -> FloatArray:
+        """Estimates (m, r) from other `values` (n, r) at the same points with the same errors."""
+
 
 def standardise_drift(drift: FloatArray, known: FloatArray) -> FloatArray:
     """`drift` (m, p) in deviations of the data's own, `known` (n, p), from its mean: what keeps the system solvable."""

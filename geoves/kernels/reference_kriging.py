@@ -78,3 +78,9 @@ class ReferenceKriging:
             estimate[part], variance[part] = found
         sill = self._covariance.sill
         return self._level + np.sqrt(sill) * estimate, sill * np.maximum(variance, 0.0)
+
+    def estimate_many(self, values: FloatArray, cells: FloatArray, drift: FloatArray | None = None) -> FloatArray:
+        """Estimates (m, r) from other `values` (n, r), one kriging each."""
+        data = [self._data._replace(values=column) for column in values.T]
+        found = [ReferenceKriging(one, self._covariance, block=self._block).predict(cells, drift)[0] for one in data]
+        return np.column_stack(found)

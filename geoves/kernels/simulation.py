@@ -9,6 +9,7 @@ from collections.abc import Iterator, Sequence
 from typing import NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy.fft import fft2, fftfreq, next_fast_len
 from scipy.sparse import csr_array
 
@@ -51,19 +52,24 @@ class Embedding(NamedTuple):
 _TAPS, _BEFORE = 4, 1
 
 
-def lay_lattice(points: FloatArray, spacing: float, margin: int = 2) -> Lattice:
-    """The lattice through the first of the south-western corner's coordinates that holds `points` (m, 2).
+def lay_lattice(points: FloatArray, spacing: float, through: FloatArray, margin: int = 2) -> Lattice:
+    """The lattice that holds `points` (m, 2) and has a node at the place `through` (2,), or would if it went so far.
 
     `margin` nodes more lie on each side, so that any point has the sixteen nodes that its interpolation needs.
     """
-    west, south = points.min(axis=0)
-    n_columns, n_rows = (int(np.ceil(extent / spacing - 1e-9)) + 1 + 2 * margin for extent in np.ptp(points, axis=0))
-    return Lattice(float(west) - margin * spacing, float(south) - margin * spacing, spacing, n_rows, n_columns)
+    first = np.floor((points.min(axis=0) - through) / spacing + 1e-6) - margin
+    last = np.ceil((points.max(axis=0) - through) / spacing - 1e-6) + margin
+    (n_columns, n_rows), (west, south) = (last - first + 1).astype(int), through + first * spacing
+    return Lattice(float(west), float(south), spacing, int(n_rows), int(n_columns))
 
 
-def choose_spacing(covariance: Covariance, cell_size: float, nodes_a_length: float = 16.0) -> float:
+# Nodes along the shorter length that a covariance needs: rough fields lose more between them.
+_NODES_A_LENGTH = {"matern32": 16.0, "gaussian": 12.0, "exponential": 48.0, "spherical": 48.0}
+
+
+def choose_spacing(covariance: Covariance, cell_size: float) -> float:
     """Spacing of a lattice that is fine enough for the covariance, and no finer than the cells."""
-    return max(cell_size, covariance.ratio * covariance.length / nodes_a_length)
+    return max(cell_size, covariance.ratio * covariance.length / _NODES_A_LENGTH[covariance.model])
 
 
 def interpolation_weights(lattice: Lattice, points: FloatArray, covariance: Covariance) -> csr_array:
@@ -133,6 +139,15 @@ def _eigenvalues(covariance: Covariance, spacing: float, size: IntArray) -> Floa
         first[i] = covariance_matrix(origin, east, covariance)[0]
     mirrored = np.roll(first[::-1, ::-1], (1, 1), (0, 1))
     return np.asarray(fft2(0.5 * (first + mirrored)).real)
+
+
+def draw_nodes(embedding: Embedding, seed: Sequence[int], count: int) -> NDArray[np.float32]:
+    """(rows, columns, count) realisations on the lattice in single precision: 7 digits of what is random anyhow."""
+    lattice = embedding.lattice
+    nodes = np.empty((lattice.n_rows, lattice.n_columns, count), dtype=np.float32)
+    for member, field in enumerate(draw_fields(embedding, seed, range(count))):
+        nodes[:, :, member] = field
+    return nodes
 
 
 def draw_fields(embedding: Embedding, seed: Sequence[int], members: range) -> Iterator[FloatArray]:

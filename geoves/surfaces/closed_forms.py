@@ -1,19 +1,16 @@
 """Surfaces whose moments and quantiles follow from kriging in closed form: exact, and without a draw's noise."""
 
-from collections.abc import Callable
-
 import numpy as np
 from scipy.special import ndtr, ndtri
 
 from geoves.domain.arrays import FloatArray
 from geoves.domain.grids import Surface
-from geoves.domain.tops import Interpretation
-from geoves.domain.units import Z_95, Role
+from geoves.domain.units import Z_95
 from geoves.kernels.inequality import rectified_normal_moments
 from geoves.surfaces.canvas import Canvas
-from geoves.surfaces.evidence import Evidence, read_resistivity, read_thickness, say_how_few
 from geoves.surfaces.interpolation import Kriged
 from geoves.surfaces.options import SurfaceOptions
+from geoves.surfaces.stack import CellValues, assemble_surfaces, name_threshold, raise_to_ground, show_where
 
 # Quantiles (mid-points of even shares) by which the sum of two independent quantities is summarised.
 CONTACT_QUANTILES, GRAVEL_QUANTILES = ((np.arange(n) + 0.5) / n for n in (60, 20))
@@ -26,31 +23,9 @@ def bedrock_surfaces(contact: Kriged, gravel: Kriged | None, canvas: Canvas) -> 
     if gravel is not None:
         thickness, deviation = rectified_normal_moments(gravel.mean, gravel.deviation)
         depth_mean, variance = depth_mean + thickness, variance + deviation**2
-    low, high = _depth_quantiles(contact, gravel)
-    error = np.sqrt(variance)
-    place, ground = canvas.place, canvas.ground
-    return [
-        Surface(
-            name="bedrock_elevation",
-            title="Bedrock elevation",
-            quantity="elevation",
-            grid=canvas.grid,
-            estimate=place(ground - depth_mean),
-            standard_error=place(error),
-            p05=place(ground - high),
-            p95=place(ground - low),
-        ),
-        Surface(
-            name="bedrock_depth",
-            title="Depth to bedrock",
-            quantity="depth",
-            grid=canvas.grid,
-            estimate=place(depth_mean),
-            standard_error=place(error),
-            p05=place(low),
-            p95=place(high),
-        ),
-    ]
+    depth = CellValues(depth_mean, np.sqrt(variance), *_depth_quantiles(contact, gravel))
+    found = {"bedrock_elevation": raise_to_ground(depth, canvas.ground), "bedrock_depth": depth}
+    return list(assemble_surfaces([found], canvas).values())
 
 
 def _depth_quantiles(contact: Kriged, gravel: Kriged | None, share: float = 0.05) -> tuple[FloatArray, FloatArray]:
@@ -69,73 +44,41 @@ def _depth_quantiles(contact: Kriged, gravel: Kriged | None, share: float = 0.05
 
 
 def gravel_surfaces(contact: Kriged, gravel: Kriged, canvas: Canvas, options: SurfaceOptions) -> list[Surface]:
+    """Thickness of the gravel, how probable it is, and its top: the basal contact, which bedrock plus thickness is."""
     mean, deviation = rectified_normal_moments(gravel.mean, gravel.deviation)
-    probability = _probability_present(gravel, options)
-    grid, place = canvas.grid, canvas.place
-    # Bedrock plus thickness, by the means of both: the basal contact itself.
-    top = canvas.ground - np.exp(contact.mean + 0.5 * contact.deviation**2)
-    low, high = (canvas.ground - np.exp(contact.mean + sign * Z_95 * contact.deviation) for sign in (1, -1))
-    shown = probability >= options.least_probability
-    return [
-        Surface(
-            name="deep_gravel_thickness",
-            title="Thickness of the deep gravel",
-            quantity="thickness",
-            grid=grid,
-            estimate=place(mean),
-            standard_error=place(deviation),
-            p05=place(np.maximum(gravel.mean - Z_95 * gravel.deviation, 0.0)),
-            p95=place(np.maximum(gravel.mean + Z_95 * gravel.deviation, 0.0)),
-        ),
-        Surface("deep_gravel_probability", "Probability of deep gravel", "probability", grid, place(probability)),
-        Surface(
-            name="deep_gravel_top_elevation",
-            title="Top of the deep gravel",
-            quantity="elevation",
-            grid=grid,
-            estimate=place(np.where(shown, top, np.nan)),
-            p05=place(np.where(shown, low, np.nan)),
-            p95=place(np.where(shown, high, np.nan)),
-        ),
-    ]
+    low, high = (np.maximum(gravel.mean + sign * Z_95 * gravel.deviation, 0.0) for sign in (-1, 1))
+    probability = _probability_thicker(gravel, options.present)
+    top = CellValues(
+        np.exp(contact.mean + 0.5 * contact.deviation**2),
+        None,
+        *(np.exp(contact.mean + sign * Z_95 * contact.deviation) for sign in (-1, 1)),
+    )
+    top = show_where(top, probability >= options.least_probability)
+    found = {
+        "deep_gravel_thickness": CellValues(mean, deviation, low, high),
+        "deep_gravel_probability": CellValues(probability),
+        "deep_gravel_top_elevation": raise_to_ground(top, canvas.ground),
+        "deep_gravel_top_depth": top,
+    }
+    found |= {
+        name_threshold(threshold): CellValues(_probability_thicker(gravel, threshold))
+        for threshold in options.thicker_than
+    }
+    return list(assemble_surfaces([found], canvas).values())
 
 
-def _probability_present(thickness: Kriged, options: SurfaceOptions) -> FloatArray:
-    return np.asarray(ndtr((thickness.mean - options.present) / thickness.deviation))
+def _probability_thicker(thickness: Kriged, limit: float) -> FloatArray:
+    return np.asarray(ndtr((thickness.mean - limit) / thickness.deviation))
 
 
 def shallow_surfaces(
-    interpretation: Interpretation,
-    interpolate: Callable[[Evidence], Kriged],
-    canvas: Canvas,
-    options: SurfaceOptions,
-) -> tuple[list[Surface], list[tuple[Evidence, Kriged]], list[str]]:
-    evidence = read_thickness(interpretation, Role.SHALLOW_AQUIFER, "Thickness of the shallow aquifer", options)
-    remarks = say_how_few(evidence, options)
-    if evidence.size < options.fewest:
-        return [], [], remarks
-    grid, place = canvas.grid, canvas.place
-    thickness = interpolate(evidence)
-    probability = _probability_present(thickness, options)
-    surfaces = [
-        Surface(
-            "shallow_aquifer_probability", "Probability of the shallow aquifer", "probability", grid,
-            place(probability),
-        )
-    ]  # fmt: skip
-    resistivity = read_resistivity(interpretation)
-    if len(resistivity.values) < options.fewest:
-        remarks.append(f"{resistivity.title}: {len(resistivity.values)} data are too few for a surface")
-        return surfaces, [(evidence, thickness)], remarks
-    log_resistivity = interpolate(resistivity)
-    shown = np.where(probability >= options.probable, 1.0, np.nan)
-    median, low, high = (
-        place(shown * np.exp(log_resistivity.mean + z * log_resistivity.deviation)) for z in (0.0, -Z_95, Z_95)
-    )
-    surfaces.append(
-        Surface(
-            "shallow_aquifer_resistivity", "Resistivity of the shallow aquifer", "resistivity", grid,
-            median, None, low, high,
-        )
-    )  # fmt: skip
-    return surfaces, [(evidence, thickness), (resistivity, log_resistivity)], remarks
+    thickness: Kriged, log_resistivity: Kriged | None, canvas: Canvas, options: SurfaceOptions
+) -> list[Surface]:
+    """The shallow aquifer's probability, and its median resistivity where it is probable."""
+    probability = _probability_thicker(thickness, options.present)
+    found = {"shallow_aquifer_probability": CellValues(probability)}
+    if log_resistivity is not None:
+        median, low, high = (np.exp(log_resistivity.mean + z * log_resistivity.deviation) for z in (0.0, -Z_95, Z_95))
+        shown = probability >= options.probable
+        found["shallow_aquifer_resistivity"] = show_where(CellValues(median, None, low, high), shown)
+    return list(assemble_surfaces([found], canvas).values())

@@ -10,7 +10,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from geoves.domain.arrays import FloatArray
+from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.grids import Surface
 from geoves.surfaces.canvas import Canvas
 from geoves.surfaces.options import SurfaceOptions
@@ -59,6 +59,7 @@ NAMES: Mapping[str, Named] = {
     "shallow_aquifer_thickness": Named("Thickness of the shallow aquifer", "thickness"),
     "cover_thickness": Named("Thickness of the cover", "thickness"),
     "confining_unit_thickness": Named("Thickness of the confining unit", "thickness"),
+    "support": Named("What a cell rests on", "code"),
 }
 THICKER_THAN = "deep_gravel_thicker_than_"
 
@@ -116,15 +117,21 @@ def summarise_columns(columns: Columns, ground: FloatArray, options: SurfaceOpti
     if columns.shallow is not None:
         probability = np.mean(columns.shallow >= options.present, axis=0)
         found["shallow_aquifer_probability"] = CellValues(probability)
-        found["shallow_aquifer_thickness"] = _summarise(columns.shallow)
         if columns.log_shallow_resistivity is not None:
             low, middle, high = np.exp(_quantiles(columns.log_shallow_resistivity, (0.05, 0.5, 0.95)))
             median = CellValues(middle, None, low, high)
             found["shallow_aquifer_resistivity"] = show_where(median, probability >= options.probable)
-    for name, thickness in (("cover_thickness", columns.cover), ("confining_unit_thickness", columns.confining)):
-        if thickness is not None:
-            found[name] = _summarise(thickness)
-    return found
+    return found | summarise_overburden(columns)
+
+
+def summarise_overburden(columns: Columns) -> dict[str, CellValues]:
+    """Thickness of what lies on the basal contact, as far as it is known."""
+    parts = {
+        "shallow_aquifer_thickness": columns.shallow,
+        "cover_thickness": columns.cover,
+        "confining_unit_thickness": columns.confining,
+    }
+    return {name: _summarise(part) for name, part in parts.items() if part is not None}
 
 
 def assemble_surfaces(blocks: Iterable[Mapping[str, CellValues]], canvas: Canvas) -> dict[str, Surface]:
@@ -161,7 +168,7 @@ def raise_to_ground(depth: CellValues, ground: FloatArray) -> CellValues:
     return CellValues(ground - depth.estimate, depth.standard_error, low, high)
 
 
-def show_where(values: CellValues, shown: FloatArray) -> CellValues:
+def show_where(values: CellValues, shown: BoolArray) -> CellValues:
     """The same, NaN where `shown` (cells,) is false."""
     doubt = (None if part is None else np.where(shown, part, np.nan) for part in values[1:])
     return CellValues(np.where(shown, values.estimate, np.nan), *doubt)
@@ -173,5 +180,13 @@ def _summarise(members: FloatArray) -> CellValues:
 
 
 def _quantiles(members: FloatArray, shares: tuple[float, ...]) -> FloatArray:
-    """Quantiles (shares, cells) over members, each member standing for the middle of an even share."""
-    return np.asarray(np.quantile(members, shares, axis=0, method="hazen"))
+    """Quantiles (shares, cells) over members, each member standing for the middle of an even share.
+
+    As numpy's method "hazen" has them; one sort along members that lie side by side is several times faster.
+    """
+    ordered = np.sort(np.ascontiguousarray(members.T), axis=1)
+    count = ordered.shape[1]
+    at = np.clip(np.array(shares) * count - 0.5, 0.0, count - 1.0)
+    below = np.floor(at).astype(np.int64)
+    above = np.minimum(below + 1, count - 1)
+    return np.asarray((ordered[:, below] + (at - below) * (ordered[:, above] - ordered[:, below])).T)

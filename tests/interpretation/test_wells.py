@@ -71,7 +71,11 @@ def test_gravel_is_shallow_above_clay_and_deep_under_it():
     assert rock.elevation == pytest.approx(350.0)
     assert rock.standard_error == pytest.approx((0.3**2 + 0.52**2) ** 0.5)
     thickness = {row.role: (row.thickness, row.at_least) for row in found.thicknesses}
-    assert thickness == {"shallow_aquifer": (6.0, False), "deep_aquifer": (12.0, False)}
+    assert thickness == {
+        "cover": (3.0, False),
+        "shallow_aquifer": (6.0, False),
+        "deep_aquifer": (12.0, False),
+    }
 
 
 def test_unmapped_words_are_listed_and_claimed_by_nothing():

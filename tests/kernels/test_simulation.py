@@ -114,8 +114,8 @@ def test_between_nodes_the_field_has_its_own_covariance(model):
     """Weights' own covariance at scattered points against the covariance itself: exact variance, near enough beside."""
     covariance = Covariance(model, 1.0, 40.0, 2400.0, 60.0, 0.5)
     points = np.random.default_rng(3).uniform(0.0, 2000.0, (60, 2)) + np.array((400_000.0, 4_900_000.0))
-    lattice = lay_lattice(points, choose_spacing(covariance, 10.0))
-    assert lattice.spacing == pytest.approx(75.0)
+    lattice = lay_lattice(points, choose_spacing(covariance, 10.0), points[0])
+    assert lattice.spacing == pytest.approx({"matern32": 75.0, "gaussian": 100.0}[model])
     weights = interpolation_weights(lattice, points, covariance)
     own = weights @ covariance_matrix(nodes_of(lattice), nodes_of(lattice), covariance) @ weights.T
     expected = covariance_matrix(points, points, covariance)
@@ -124,7 +124,7 @@ def test_between_nodes_the_field_has_its_own_covariance(model):
 
 
 def test_points_on_nodes_take_the_nodes_values():
-    lattice = lay_lattice(np.array([[0.0, 0.0], [900.0, 500.0]]), 100.0)
+    lattice = lay_lattice(np.array([[0.0, 0.0], [900.0, 500.0]]), 100.0, np.array([5000.0, -300.0]))
     assert (lattice.n_rows, lattice.n_columns) == (10, 14)
     weights = interpolation_weights(lattice, np.array([[0.0, 0.0], [300.0, 500.0], [900.0, 0.0]]), OBLIQUE).toarray()
     expected = np.zeros((3, lattice.size))
