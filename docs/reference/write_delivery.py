@@ -5,7 +5,7 @@ from collections.abc import Iterator
 from pathlib import Path
 from textwrap import wrap
 
-from geoves.delivery.dictionary import RASTERS, Column, LayerWords, RasterWords, name_part, name_unit
+from geoves.delivery.dictionary import MORE_RASTERS, RASTERS, Column, LayerWords, RasterWords, name_part, name_unit
 from geoves.delivery.layer_words import LAYERS
 
 WIDTH = 118
@@ -15,19 +15,24 @@ UNITS = {
     "length": "length", "area": "km² or mi²", "fraction": "0 to 1", "ratio": "ratio", "slope": "length/length",
     "flag": "yes or no", "count": "number",
 }  # fmt: skip
-RASTER_UNITS = {"length": "length", "resistivity": "ohm m", "fraction": "0 to 1"}
+RASTER_UNITS = {"length": "length", "resistivity": "ohm m", "fraction": "0 to 1", "code": "code"}
 
 
 def write_rasters() -> Iterator[str]:
     """The table of rasters, line by line."""
     yield "| files in `surfaces/` | unit | what it holds |"
     yield "|---|---|---|"
-    yield from (_raster_row(words) for words in RASTERS.values())
+    yield from (_raster_row(words) for words in (*RASTERS.values(), *MORE_RASTERS.values()))
+    yield (
+        "| `deep_gravel_thicker_than_T_m.tif`, one for each `thicker_than` of `[surfaces]` | 0 to 1 | "
+        "Probability that the deep gravel is thicker than T metres. |"
+    )
 
 
 def _raster_row(words: RasterWords) -> str:
     names = ", ".join(f"`{name_part(words.name, part)}.tif`" for part in words.parts)
-    return f"| {names} | {RASTER_UNITS[words.kind]} | {words.description} |"
+    codes = " ".join(f"{code}: {meaning}." for code, meaning in words.codes.items())
+    return f"| {names} | {RASTER_UNITS[words.kind]} | {f'{words.description} {codes}'.strip()} |"
 
 
 def write_layers() -> Iterator[str]:

@@ -1,6 +1,6 @@
 """What each raster is called and means, and how columns are described: with layer_words, all words of the delivery."""
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from types import MappingProxyType
 from typing import Any, Literal
 
@@ -23,6 +23,7 @@ Kind = Literal[
     "conductance",
     "layer_conductance",
     "layer_resistance",
+    "code",
 ]
 Part = Literal["estimate", "standard_error", "p05", "p95"]
 Geometry = Literal["Point", "LineString", "Polygon"]
@@ -63,15 +64,19 @@ class LayerWords:
 
 @attrs.frozen
 class RasterWords:
-    """One surface as rasters: which of its parts are delivered, what its values are, which kriged surface judges it."""
+    """One surface as rasters: which of its parts are delivered, what its values are, which kriged surface judges it.
+
+    codes : what each value of a raster of codes means
+    """
 
     name: str
     title: str
     description: str
-    kind: Literal["length", "resistivity", "fraction"]
+    kind: Literal["length", "resistivity", "fraction", "code"]
     parts: tuple[Part, ...] = ("estimate",)
     elevation: bool = False
     judged_by: str = ""
+    codes: Mapping[int, str] = attrs.field(factory=dict)
 
 
 _ALL_PARTS: tuple[Part, ...] = ("estimate", "standard_error", "p05", "p95")
@@ -163,6 +168,79 @@ RASTERS: Mapping[str, RasterWords] = MappingProxyType(
         )
     }
 )
+
+# Beside them, where the template and the evidence allow.
+MORE_RASTERS: Mapping[str, RasterWords] = MappingProxyType(
+    {
+        words.name: words
+        for words in (
+            RasterWords(
+                "deep_gravel_top_depth",
+                "Depth to the top of the deep gravel",
+                "Depth to the deep gravel, were it there; blank where its probability is below 0.05.",
+                "length",
+                ("estimate", "p05", "p95"),
+                judged_by="bedrock_elevation",
+            ),
+            RasterWords(
+                "cover_thickness",
+                "Thickness of the cover",
+                "Thickness of the cover at the surface, its absence counted as 0: the mean of what the data allow.",
+                "length",
+                _ALL_PARTS,
+            ),
+            RasterWords(
+                "shallow_aquifer_thickness",
+                "Thickness of the shallow aquifer",
+                "Thickness of the shallow aquifer, its absence counted as 0: the mean of what the data allow.",
+                "length",
+                _ALL_PARTS,
+            ),
+            RasterWords(
+                "confining_unit_thickness",
+                "Thickness of the confining unit",
+                "Thickness of the clay that protects the deep gravel: what cover and shallow aquifer leave above it. "
+                "It is inferred, not measured, and holes in it narrower than the soundings' spacing are not seen.",
+                "length",
+                _ALL_PARTS,
+                judged_by="bedrock_elevation",
+            ),
+            RasterWords(
+                "support",
+                "What a cell rests on",
+                "Which data of the basal contact lie within the reach of a cell; blank where no surface is drawn.",
+                "code",
+                codes={
+                    0: "none: it is carried in from farther away",
+                    1: "one datum",
+                    2: "soundings alone",
+                    3: "wells, or wells and soundings",
+                },
+            ),
+        )
+    }
+)
+_THICKER_THAN = "deep_gravel_thicker_than_"
+
+
+def find_raster(name: str) -> RasterWords | None:
+    """The words for a surface; None for one that is not delivered.
+
+    >>> find_raster("deep_gravel_thicker_than_5_m").title
+    'Probability that the deep gravel is thicker than 5 m'
+    """
+    if name.startswith(_THICKER_THAN):
+        limit = name.removeprefix(_THICKER_THAN).replace("_", " ")
+        title = f"Probability that the deep gravel is thicker than {limit}"
+        return RasterWords(name, title, f"{title}.", "fraction", judged_by="deep_gravel_thickness")
+    return RASTERS.get(name) or MORE_RASTERS.get(name)
+
+
+def list_rasters(names: Iterable[str]) -> tuple[RasterWords, ...]:
+    """The words for those surfaces among `names` that are delivered, the contract's own first."""
+    order = [*RASTERS, *MORE_RASTERS]
+    found = {words.name: words for words in map(find_raster, names) if words is not None}
+    return tuple(sorted(found.values(), key=lambda words: order.index(words.name) if words.name in order else 99))
 
 
 def name_unit(kind: Kind, length_unit: LengthUnit) -> str:

@@ -12,7 +12,7 @@ import pyproj
 from pygeometa.schemas.iso19139 import ISO19139OutputSchema
 
 from geoves.delivery.cautions import list_cautions
-from geoves.delivery.dictionary import LENGTH_UNITS, PART_TITLES, RASTERS, Part, name_part, name_unit
+from geoves.delivery.dictionary import LENGTH_UNITS, PART_TITLES, Part, list_rasters, name_part, name_unit
 from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.rasters import describe_vertical
 from geoves.domain.region import Region
@@ -43,7 +43,8 @@ def write_metadata(
     Raises DeliveryError.
     """
     target = folder / "metadata"
-    by_name = {name_part(words.name, part): (words.name, part) for words in RASTERS.values() for part in words.parts}
+    rasters = list_rasters(results.stack.surfaces)
+    by_name = {name_part(words.name, part): (words.name, part) for words in rasters for part in words.parts}
     written = []
     for file in files:
         if file.suffix == ".gpkg":
@@ -64,10 +65,12 @@ def write_metadata(
 
 def render_raster_record(results: Results, record: Mapping[str, Any], name: str, part: Part) -> str:
     """The XML record of one raster."""
-    words = RASTERS[name]
+    words = list_rasters([name])[0]
     title = ", ".join(filter(None, (words.title, PART_TITLES[part])))
     unit = name_unit(words.kind, results.region.length_unit) or "0 to 1"
-    abstract = f"{words.description} Values in {unit}, on a grid of {results.region.cell_size:g} units of the CRS."
+    codes = "; ".join(f"{code}, {meaning}" for code, meaning in words.codes.items())
+    values = f"Codes: {codes}; on" if codes else f"Values in {unit}, on"
+    abstract = f"{words.description} {values} a grid of {results.region.cell_size:g} units of the CRS."
     if words.kind == "length":
         abstract += f" Rounded to 1/64 {results.region.length_unit}."
     resource = (f"surfaces/{name_part(name, part)}.tif", "GeoTIFF, cloud-optimised", "grid")

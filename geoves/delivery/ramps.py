@@ -23,6 +23,7 @@ QUANTITY_RAMPS: Mapping[str, str] = MappingProxyType(
         "thickness": "viridis",
         "resistivity": "viridis",
         "probability": "viridis",
+        "code": "viridis",
     }
 )
 

@@ -16,10 +16,10 @@ from rio_cogeo import cog_validate
 from geoves.delivery.dictionary import (
     LENGTH_UNITS,
     PART_TITLES,
-    RASTERS,
     Part,
     RasterWords,
     convert_to_delivery,
+    list_rasters,
     name_part,
     name_unit,
 )
@@ -29,6 +29,7 @@ from geoves.errors import DeliveryError
 
 NODATA = -9999.0
 BLOCK = 512
+_STAMPED_APART = ("wkt", "unit", "band", "overviews")
 LENGTH_STEP = 1.0 / 64.0  # of the length unit: far below any error here, and files four times smaller
 
 
@@ -46,10 +47,8 @@ def write_rasters(stack: SurfaceStack, region: Region, folder: Path, tags: Mappi
     except OSError as error:
         raise DeliveryError(f"the folder {surfaces} cannot be made: {error.strerror}") from error
     written = []
-    for words in RASTERS.values():
-        surface = stack.surfaces.get(words.name)
-        if surface is None:
-            continue
+    for words in list_rasters(stack.surfaces):
+        surface = stack.surfaces[words.name]
         for part in words.parts:
             values = getattr(surface, part)
             if values is None:
@@ -101,6 +100,9 @@ def _describe(words: RasterWords, part: Part, region: Region) -> dict[str, str]:
         described["height_datum"] = remark
         if vertical is not None and part != "standard_error":
             crs = CompoundCRS(f"{crs.name} + {vertical.name}", [crs, vertical])
+    if words.codes:
+        described["codes"] = "; ".join(f"{code}: {meaning}" for code, meaning in words.codes.items())
+    described["overviews"] = "MODE" if words.kind == "code" else "AVERAGE"
     described["wkt"] = crs.to_wkt()
     described["unit"] = name_unit(words.kind, region.length_unit) or "1"
     described["band"] = ", ".join(filter(None, (words.title, PART_TITLES[part])))
@@ -122,7 +124,7 @@ def _write_verified(
                 COMPRESS="DEFLATE",
                 PREDICTOR="YES",
                 BLOCKSIZE=str(BLOCK),
-                OVERVIEW_RESAMPLING="AVERAGE",
+                OVERVIEW_RESAMPLING=described["overviews"],
                 STATISTICS="YES" if np.any(cells != NODATA) else "NO",
                 BIGTIFF="IF_SAFER",
             )
@@ -162,7 +164,7 @@ def _write_plain(
             target.write(strip, 1, window=Window(0, row, grid.n_columns, strip.shape[0]))
         target.set_band_description(1, described["band"])
         target.set_band_unit(1, described["unit"])
-        stamped = {key: described[key] for key in described if key not in ("wkt", "unit", "band")}
+        stamped = {key: described[key] for key in described if key not in _STAMPED_APART}
         target.update_tags(AREA_OR_POINT="Area", **{**tags, **stamped})
 
 

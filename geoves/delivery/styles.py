@@ -13,11 +13,11 @@ from matplotlib.colors import to_hex, to_rgb
 
 from geoves.delivery.dictionary import (
     PART_TITLES,
-    RASTERS,
     LayerWords,
     Part,
     RasterWords,
     convert_to_delivery,
+    list_rasters,
     name_part,
     name_unit,
 )
@@ -85,10 +85,8 @@ def write_styles(results: Results, folder: Path) -> tuple[Path, ...]:
     """
     target = folder / "styles"
     written = []
-    for words in RASTERS.values():
-        surface = results.stack.surfaces.get(words.name)
-        if surface is None:
-            continue
+    for words in list_rasters(results.stack.surfaces):
+        surface = results.stack.surfaces[words.name]
         for part in words.parts:
             name = name_part(words.name, part)
             written.append(_write(target / f"{name}.sld", _style_raster(words, part, surface, results)))
@@ -126,7 +124,9 @@ def _style_raster(words: RasterWords, part: Part, surface: Surface, results: Res
     """Colours at round numbers; estimate and quantiles share theirs, so that they can be compared by eye."""
     unit = name_unit(words.kind, results.region.length_unit)
     colours: Callable[[FloatArray], list[str]]
-    if words.kind == "fraction":
+    if words.kind == "code":
+        breaks, colours = np.array(list(words.codes), dtype=float), _choose_ramp(words, surface)
+    elif words.kind == "fraction":
         breaks, colours = np.array([0.0, 0.2, 0.33, 0.66, 0.8, 1.0]), _colour_probabilities
     elif part == "standard_error":
         breaks, colours = _span([surface.standard_error], words, results), _colour_errors
@@ -138,9 +138,15 @@ def _style_raster(words: RasterWords, part: Part, surface: Surface, results: Res
     symbolizer = _add(_add(_add(style, "FeatureTypeStyle"), "Rule"), "RasterSymbolizer")
     _add(symbolizer, "Opacity", "1")
     ramp = _add(symbolizer, "ColorMap")
+    if words.kind == "code":
+        ramp.set("type", "values")
+
+    def label(value: float) -> str:
+        return words.codes.get(int(value)) or f"{value:g} {unit}".strip()
+
     for value, colour in zip(breaks, colours(breaks), strict=True):
         entry = _add(ramp, "ColorMapEntry")
-        entry.attrib |= {"color": colour, "quantity": f"{value:g}", "label": f"{value:g} {unit}".strip()}
+        entry.attrib |= {"color": colour, "quantity": f"{value:g}", "label": label(value)}
     return root
 
 

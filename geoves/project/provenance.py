@@ -75,9 +75,11 @@ def judge_surfaces(stack: SurfaceStack) -> dict[str, Any]:
         "deep_gravel_thickness",
         "shallow_aquifer_thickness",
         "shallow_aquifer_resistivity",
+        "cover_thickness",
     )
     titles = ("Log depth of the basal contact", "Thickness of the deep gravel",
-              "Thickness of the shallow aquifer", "Log resistivity of the shallow aquifer")  # fmt: skip
+              "Thickness of the shallow aquifer", "Log resistivity of the shallow aquifer",
+              "Thickness of the cover")  # fmt: skip
     by_title = {crossed.title: crossed for crossed in stack.cross_validations}
     return {name: _judge(by_title[title]) for name, title in zip(surfaces, titles, strict=True) if title in by_title}
 

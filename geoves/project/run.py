@@ -155,8 +155,8 @@ def _step(progress: Progress, title: str) -> Iterator[None]:
 
 
 def _count_blocks(shape: tuple[int, int], settings: Settings) -> int:
-    """Blocks of cells at most: four quantities, and how far the first rests on soundings, kriged on each."""
-    return 5 * ceil(shape[0] * shape[1] / settings.surfaces.block)
+    """Blocks of cells at most: five quantities, how far the first rests on soundings, and the column's realisations."""
+    return 7 * ceil(shape[0] * shape[1] / settings.surfaces.block)
 
 
 def _record_calibration(interpretation: Interpretation) -> dict[str, Any]:
