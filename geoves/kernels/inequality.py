@@ -14,8 +14,10 @@ from threadpoolctl import threadpool_limits
 from geoves.kernels.covariances import (
     ERROR_CEILING,
     ERROR_FLOOR,
+    NOTHING_STATED,
     Covariance,
     FloatArray,
+    Stated,
     bounded_error_variance,
     covariance_matrix,
     fit_covariance,
@@ -185,7 +187,12 @@ def bounds_as_values(
 
 
 def fit_covariance_with_bounds(
-    points: FloatArray, values: FloatArray, error_variance: FloatArray, bounds: Bounds, model: str = "matern32"
+    points: FloatArray,
+    values: FloatArray,
+    error_variance: FloatArray,
+    bounds: Bounds,
+    model: str = "matern32",
+    stated: Stated = NOTHING_STATED,
 ) -> tuple[Covariance, FloatArray, FloatArray]:
     """Covariance fitted to data and bounds together, with the pseudo-values and pseudo-variances (m,) that go with it.
 
@@ -194,7 +201,7 @@ def fit_covariance_with_bounds(
     2006, sect. 5.5.2, from memory), so that what is settled on is the evidence of the bounds too, no draws needed.
     Without bounds it is `fit_covariance`. Needs three data proper.
     """
-    covariance = fit_covariance(points, values, error_variance, model)
+    covariance = fit_covariance(points, values, error_variance, model, stated)
     for _ in range(_ROUNDS if len(bounds.bound) else 0):
         pseudo_value, pseudo_variance = bounds_as_values(points, values, error_variance, bounds, covariance)
         telling = pseudo_variance < _TELLING * covariance.sill
@@ -204,6 +211,7 @@ def fit_covariance_with_bounds(
             np.concatenate((values, pseudo_value[telling])),
             np.concatenate((error_variance, pseudo_variance[telling])),
             model,
+            stated,
         )
         change = np.log([covariance.sill / before.sill, covariance.length / before.length])
         if np.max(np.abs(change)) < _SETTLED:

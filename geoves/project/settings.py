@@ -1,5 +1,6 @@
 """Tables of region.toml for the steps, read into the option classes that own their keys."""
 
+from collections.abc import Mapping
 from typing import Any, get_type_hints
 
 import attrs
@@ -32,7 +33,13 @@ def read_settings(region: Region) -> Settings:
     faults: list[str] = []
     seed = {"random_seed": region.random_seed}
     values = {
-        field.name: _read_options(region, field.name, get_type_hints(Settings)[field.name], seed, faults)
+        field.name: _read_options(
+            (region.path.name, field.name),
+            region.settings.get(field.name, {}),
+            get_type_hints(Settings)[field.name],
+            seed,
+            faults,
+        )
         for field in attrs.fields(Settings)
     }
     if faults:
@@ -40,30 +47,36 @@ def read_settings(region: Region) -> Settings:
     return Settings(**values)
 
 
-def _read_options(region: Region, table: str, kind: type, seed: dict[str, int], faults: list[str]) -> Any:
+def _read_options(
+    place: tuple[str, str], given: Mapping[str, Any], kind: type, seed: Mapping[str, int], faults: list[str]
+) -> Any:
+    """Options of one class from what a table of a file, the `place`, gave; a class of options inside is a table too."""
+    file, table = place
     fields = {field.name: field for field in attrs.fields(kind)}
-    given = dict(region.settings.get(table, {}))
     options = {key: value for key, value in seed.items() if key in fields}
     for key, value in given.items():
-        where = f"{region.path.name}, [{table}], {key}: {value!r}"
+        where = f"{file}, [{table}], {key}: {value!r}"
         if key not in fields or key in seed:
             known = ", ".join(sorted(set(fields) - set(seed)))
             faults.append(f"{where} is not a setting of this table; expected one of {known}")
             continue
         wanted = type(fields[key].default)
+        if attrs.has(wanted) and isinstance(value, Mapping):
+            value = _read_options((file, f"{table}.{key}"), value, wanted, {}, faults)  # noqa: PLW2901 - as its class
+            where = f"{file}, [{table}.{key}]"
         if not _fits(value, wanted):
-            faults.append(f"{where}; expected {_KINDS[wanted]}, such as {_show(fields[key].default)}")
+            faults.append(f"{where}; expected {_KINDS.get(wanted, 'a table')}, such as {_show(fields[key].default)}")
             continue
         try:
-            kind(**{key: wanted(value)})
+            options[key] = value if attrs.has(wanted) else wanted(value)
+            kind(**{key: options[key]})
         except ValueError as error:
             faults.append(f"{where}; {_say_limit(error, key)}")
-            continue
-        options[key] = wanted(value)
+            del options[key]
     try:
         return kind(**options)
     except ValueError as error:
-        faults.append(f"{region.path.name}, [{table}]: {error}")
+        faults.append(f"{file}, [{table}]: {error}")
         return kind()
 
 
@@ -77,6 +90,8 @@ def _fits(value: Any, wanted: type) -> bool:
 
 def _show(default: Any) -> str:
     """A default as region.toml would have it, or nearly so."""
+    if attrs.has(type(default)):
+        return ", ".join(field.name for field in attrs.fields(type(default)))
     return repr(list(default) or [5.0]) if isinstance(default, tuple) else repr(default)
 
 

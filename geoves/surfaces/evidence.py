@@ -13,12 +13,14 @@ from geoves.kernels.inequality import Bounds, latent_moments
 from geoves.kernels.kriging import estimate_offset
 from geoves.surfaces.options import SurfaceOptions
 
+# What options call the thickness of a role.
+_QUANTITIES = {Role.DEEP_AQUIFER: "deep_gravel", Role.SHALLOW_AQUIFER: "shallow_aquifer", Role.COVER: "cover"}
 # Thickness (m) that is expected of a unit, were it there, when no place shows it.
 THIN = 5.0
 
 
 class Evidence(NamedTuple):
-    """What is known of one quantity: values with error variances, and bounds."""
+    """What is known of one quantity: values with error variances, and bounds; `quantity` as options name it."""
 
     title: str
     unit: str
@@ -29,6 +31,7 @@ class Evidence(NamedTuple):
     error_variance: FloatArray
     bounds: Bounds
     bound_kind: tuple[str, ...] = ()
+    quantity: str = "basal_depth"
 
     @property
     def size(self) -> int:
@@ -76,7 +79,10 @@ def tie_to_wells(evidence: Evidence, options: SurfaceOptions) -> tuple[Evidence,
     by_curve = np.array([kind == "sounding" for kind in evidence.kind], dtype=bool)
     if options.tie_deviation == 0 or np.sum(~by_curve) < options.fewest_wells or np.sum(by_curve) < options.fewest:
         return evidence, 0.0, []
-    covariance = fit_covariance(evidence.points, evidence.values, evidence.error_variance, options.model)
+    own = options.variogram.basal_depth
+    covariance = fit_covariance(
+        evidence.points, evidence.values, evidence.error_variance, own.model or options.model, own.stated
+    )
     offset, deviation = estimate_offset(
         evidence.points, evidence.values, evidence.error_variance, by_curve, options.tie_deviation, covariance
     )
@@ -111,6 +117,7 @@ def read_thickness(interpretation: Interpretation, role: Role, title: str, optio
             np.array([-1.0] * len(absent) + [1.0] * len(open_ended)),
             np.full(len(absent) + len(open_ended), options.absence_deviation),
         ),
+        quantity=_QUANTITIES[role],
     )
 
 
@@ -125,6 +132,7 @@ def read_resistivity(interpretation: Interpretation) -> Evidence:
         np.array([row.log_resistivity for row in rows]),
         np.array([row.standard_error**2 for row in rows]),
         Bounds(np.empty((0, 2)), np.empty(0), np.empty(0), np.empty(0)),
+        quantity="shallow_resistivity",
     )
 
 

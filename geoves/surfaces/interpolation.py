@@ -15,6 +15,7 @@ from geoves.surfaces.canvas import Canvas
 from geoves.surfaces.engines import choose_engine
 from geoves.surfaces.evidence import Evidence, latent_prior
 from geoves.surfaces.options import SurfaceOptions
+from geoves.surfaces.stated import StatedVariogram
 
 Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
 
@@ -41,16 +42,18 @@ def interpolate(evidence: Evidence, *, canvas: Canvas, options: SurfaceOptions, 
     With fewer data proper than a fit needs, each bound first becomes a pseudo-datum by itself.
     """
     points = np.vstack([evidence.points, evidence.bounds.points])
+    own: StatedVariogram = getattr(options.variogram, evidence.quantity)
+    model = own.model or options.model
     if len(evidence.values) >= options.fewest:
         covariance, pseudo_value, pseudo_variance = fit_covariance_with_bounds(
-            evidence.points, evidence.values, evidence.error_variance, evidence.bounds, options.model
+            evidence.points, evidence.values, evidence.error_variance, evidence.bounds, model, own.stated
         )
     else:
         pseudo_value, pseudo_variance = bounds_alone_as_values(evidence.bounds, *latent_prior(evidence))
     values = np.concatenate([evidence.values, pseudo_value])
     variance = np.concatenate([evidence.error_variance, pseudo_variance])
     if len(evidence.values) < options.fewest:
-        covariance = fit_covariance(points, values, variance, options.model)
+        covariance = fit_covariance(points, values, variance, model, own.stated)
     kriged = Kriged(np.empty(0), np.empty(0), covariance, points, values, variance)
     mean, spread = krige_cells(kriged, canvas, options, map)
     return kriged._replace(mean=mean, deviation=np.sqrt(spread))

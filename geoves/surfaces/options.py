@@ -2,7 +2,8 @@
 
 import attrs
 
-MODELS = ("matern32", "exponential", "spherical", "gaussian")
+from geoves.surfaces.stated import MODELS, StatedVariograms
+
 ENGINES = ("auto", "cholesky", "tiles", "pykrige")
 
 
@@ -23,6 +24,7 @@ class SurfaceOptions:
     engine               what kriges: cholesky (one factor of all data), tiles (neighbourhoods), pykrige, or auto
     all_at_once          auto: one factor up to so many data, tiles beyond
     thicker_than         m: thicknesses of the deep gravel whose exceedance gets a surface of its own
+    variogram            what is stated of the variograms; the rest is estimated
     members              realisations of the column that surfaces without a closed form are summarised from
     """
 
@@ -44,4 +46,5 @@ class SurfaceOptions:
         default=(), validator=attrs.validators.deep_iterable(attrs.validators.gt(0))
     )
     members: int = attrs.field(default=100, validator=attrs.validators.ge(20))
+    variogram: StatedVariograms = StatedVariograms()
     random_seed: int = attrs.field(default=0, validator=attrs.validators.ge(0))

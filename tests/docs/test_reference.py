@@ -13,6 +13,7 @@ from geoves.domain.units import Role
 from geoves.project.provenance import make_record
 from geoves.project.settings import Settings, read_settings
 from geoves.reading import region_file, sources, survey, template
+from geoves.surfaces.stated import StatedVariogram, StatedVariograms
 
 
 def section(text, heading, level="##"):
@@ -98,13 +99,25 @@ def test_choices_are_those_of_the_program(tables):
 @pytest.mark.parametrize("table", [field.name for field in attrs.fields(Settings)])
 def test_settings_and_defaults_are_those_of_the_options(command, table):
     options = typing.get_type_hints(Settings)[table]
-    expected = {f.name: shown(f.default) for f in attrs.fields(options) if f.name != "random_seed"}
-    described = {}
-    for line in section(command, f"[{table}]", "###").splitlines():
-        if line.startswith("| `"):
-            _, key, default, *_ = (cell.strip() for cell in line.split("|"))
-            described[key.strip("`")] = default
-    assert described == expected
+    assert described_defaults(section(command, f"[{table}]", "###")) == defaults(options)
+
+
+def test_what_can_be_stated_of_a_variogram_is_described(command):
+    text = section(command, "[surfaces.variogram.NAME]", "###")
+    assert described_defaults(text) == defaults(StatedVariogram)
+    assert [f.name for f in attrs.fields(StatedVariograms) if f"`{f.name}`" not in text] == []
+
+
+def defaults(options):
+    """Defaults as the page has them, without the seed and what has a table of its own."""
+    fields = [f for f in attrs.fields(options) if f.name != "random_seed" and not attrs.has(type(f.default))]
+    return {f.name: shown(f.default) for f in fields}
+
+
+def described_defaults(text):
+    """Key -> default of the rows of a table."""
+    rows = [[cell.strip() for cell in line.split("|")] for line in text.splitlines() if line.startswith("| `")]
+    return {row[1].strip("`"): row[2] for row in rows}
 
 
 def test_the_record_of_a_run_is_described(root, small_results):

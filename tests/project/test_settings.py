@@ -117,3 +117,29 @@ def test_a_value_out_of_its_limits_is_a_fault_in_words(small_region_settings, ta
     (line,) = caught.value.lines
     assert table in line
     assert expected in line
+
+
+def test_a_variogram_can_be_stated_in_part(small_region_settings):
+    stated = {"basal_depth": {"length": 4000, "ratio": 0.5, "azimuth": 30.0}, "cover": {"model": "spherical"}}
+    read = read_settings(small_region_settings({"surfaces": {"variogram": stated}})).surfaces.variogram
+    assert read.basal_depth.stated == (None, None, 4000.0, 30.0, 0.5)
+    assert read.cover.model == "spherical"
+    assert read.cover.stated == read.deep_gravel.stated == (None,) * 5
+
+
+@pytest.mark.parametrize(
+    ("stated", "words"),
+    [
+        ({"rock": {}}, r"\[surfaces.variogram\], rock: .* expected one of basal_depth, cover, deep_gravel"),
+        ({"cover": 3.0}, r"\[surfaces.variogram\], cover: 3.0; expected a table, such as model, length"),
+        ({"cover": {"lenght": 3.0}}, r"\[surfaces.variogram.cover\], lenght: .* expected one of azimuth, length"),
+        ({"cover": {"length": 0}}, r"\[surfaces.variogram.cover\], length: 0; expected > 0"),
+        ({"cover": {"ratio": 1.5, "azimuth": 3.0}}, r"ratio: 1.5; expected > 0 and <= 1"),
+        ({"cover": {"azimuth": 40.0}}, r"\[surfaces.variogram.cover\]; expected stated with a ratio beside"),
+        ({"cover": {"ratio": 0.4}}, r"expected stated with an azimuth beside its ratio"),
+        ({"cover": {"model": "cubic"}}, r"\[surfaces.variogram.cover\], model: 'cubic'; expected one of"),
+    ],
+)
+def test_what_cannot_be_stated_is_a_fault(small_region_settings, stated, words):
+    with pytest.raises(InputError, match=words):
+        read_settings(small_region_settings({"surfaces": {"variogram": stated}}))
