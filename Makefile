@@ -3,13 +3,24 @@ PYTHON ?= $(shell command -v python3.11 || echo python3)
 BIN := .venv/bin
 PIP := $(BIN)/python -m pip --quiet --disable-pip-version-check
 
-.PHONY: demo test check benchmark docs-figures clean
+.PHONY: demo test test-oldest check benchmark docs-figures clean
 
 demo: .venv/installed
 	$(BIN)/geoves run demo_region/region.toml
 
 test: .venv/installed-test check
 	$(BIN)/python -m pytest
+
+# The lower bounds of pyproject.toml, in an environment of their own; not part of `make test`.
+test-oldest: .venv-oldest/installed
+	.venv-oldest/bin/python -m pytest
+
+.venv-oldest/installed: pyproject.toml tests/lower_bounds.py
+	test -x .venv-oldest/bin/python || $(PYTHON) -m venv .venv-oldest
+	.venv-oldest/bin/python tests/lower_bounds.py > .venv-oldest/lower-bounds.txt
+	.venv-oldest/bin/python -m pip --quiet --disable-pip-version-check install \
+		--constraint .venv-oldest/lower-bounds.txt --editable '.[test]'
+	touch $@
 
 check: .venv/installed-test
 	$(BIN)/ruff check .
@@ -35,4 +46,4 @@ docs-figures: .venv/installed-test
 	$(BIN)/python docs/figures/draw_figures.py
 
 clean:
-	rm -rf .venv demo_region/delivery build *.egg-info
+	rm -rf .venv .venv-oldest demo_region/delivery build *.egg-info
