@@ -153,7 +153,20 @@ def _name_decision(pick: Pick, template: Template, unit: LengthUnit) -> str:
 
 
 def tell_opinion(opinion: PickOpinion, unit: LengthUnit) -> str:
-    """What the curve by itself says of a pick, which stands whatever the curve says."""
+    """What the curve by itself says of a pick, which stands whatever the curve says, and what it pays for it."""
+    return f"{_say_opinion(opinion, unit)}{_say_payment(opinion)}"
+
+
+def _say_payment(opinion: PickOpinion) -> str:
+    if np.isnan(opinion.rms_percent):
+        return ""
+    held, free = f"{opinion.rms_percent:.1f}", f"{opinion.free_rms_percent:.1f}"
+    if held == free:
+        return f" With the pick the curve is fitted as well as without: within {free} %."
+    return f" With the pick the curve is fitted within {held} %, without within {free} %."
+
+
+def _say_opinion(opinion: PickOpinion, unit: LengthUnit) -> str:
     bound = f"; it excludes any above {_depth(opinion.bound, unit)}" if opinion.bound > 0 else ""
     if opinion.against:
         own = "" if np.isnan(opinion.inferred_depth) else f": by itself it says {_depth(opinion.inferred_depth, unit)}"

@@ -70,6 +70,8 @@ class PickOpinion:
                  from `inferred_depth` (m, median) would be decided by chance; NaN where the curve has no say
     bound        m: the curve excludes a contact above it; 0 where it excludes nothing
     against      whether the curve speaks against the pick; it is never overruled
+    rms_percent  misfit of the best model that honours the pick, and free_rms_percent of the best of all, its readings
+                 weighed alike; NaN where no sequence of units can honour it
     """
 
     pick: Pick
@@ -77,6 +79,8 @@ class PickOpinion:
     inferred_depth: float
     bound: float
     against: bool
+    rms_percent: float = float("nan")
+    free_rms_percent: float = float("nan")
 
 
 @attrs.frozen

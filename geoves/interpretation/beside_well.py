@@ -102,14 +102,7 @@ def condition_draws(
     worth = float(1.0 / np.sum(share**2) / share.size)
     if worth < LEAST_SHARE:
         return draws, WellBeside(beside.well, beside.distance, worth, agrees=False)
-    rows = resample(log_weight, share.size, generator)
-    kept = attrs.evolve(
-        draws,
-        thickness=draws.thickness[rows],
-        log_resistivity=draws.log_resistivity[rows],
-        reaches=draws.reaches[rows],
-        dry=draws.dry[rows] if draws.dry.size else draws.dry,
-    )
+    kept = draws.take(resample(log_weight, share.size, generator))
     return kept, WellBeside(beside.well, beside.distance, worth, agrees=True)
 
 

@@ -27,6 +27,7 @@ from geoves.interpretation.beside_well import condition_draws
 from geoves.interpretation.calibration import calibrate_template
 from geoves.interpretation.options import ABOVE_CONFINING, InterpretationOptions
 from geoves.interpretation.pairs import estimate_pairs, learn_from_pairs, paired_soundings, tell_pairs
+from geoves.interpretation.picks import Choice, hold_to_picks, weigh_picks
 from geoves.interpretation.surroundings import Surroundings, find_surroundings
 from geoves.kernels import damped_steps, layered_earth
 from geoves.kernels.blocks import cut_blocks, restore_order
@@ -170,7 +171,7 @@ def _sample_block(
     local = [place.around.localise(template) for place in places]
     weighed = _weigh_block(places, local, presence, options, wavenumber)
     shifts = [one.log_resistivity_means - template.log_resistivity_means for one in local]
-    return [draws.log_resistivity - shift for shift, (draws, _) in zip(shifts, weighed, strict=True)]
+    return [draws.log_resistivity - shift for shift, (draws, *_) in zip(shifts, weighed, strict=True)]
 
 
 def _weigh_block(
@@ -179,8 +180,8 @@ def _weigh_block(
     presence: FloatArray,
     options: InterpretationOptions,
     wavenumber: FloatArray,
-) -> Iterator[tuple[sequences.ColumnDraws, float]]:
-    """Columns drawn for each sounding of a block, and the depth above which basal material is excluded.
+) -> Iterator[tuple[sequences.ColumnDraws, float, Choice]]:
+    """Columns drawn for each sounding of a block, the depth above which basal material is excluded, and the choice.
 
     local : the template as it stands at each sounding
     """
@@ -199,7 +200,8 @@ def _weigh_block(
         own_curve = curves.take(np.array([i]))
         draws = sequences.draw_columns(admissible, own_fits, own_weight, own_curve, local[i], options, generator)
         half_space = sequences.best_half_space(admissible, own_fits, own_weight)
-        yield draws, soundings.excluded_depth(half_space, own_curve, local[i], options)
+        bound = soundings.excluded_depth(half_space, own_curve, local[i], options)
+        yield draws, bound, Choice(admissible, own_fits, own_weight, own_curve)
 
 
 def _weigh_alike(
@@ -231,15 +233,20 @@ def _interpret_block(
     deep = soundings.role_mask(template, Role.DEEP_AQUIFER)
     gravel_prior = float(1.0 - np.prod(1.0 - presence[deep])) if np.any(deep) else np.nan
     results = []
-    for place, here, (draws, bound) in zip(places, local, weighed, strict=True):
-        reading = _read_sounding(place, draws, bound, here, options)
+    for place, here, (draws, bound, choice) in zip(places, local, weighed, strict=True):
+        reading = _read_sounding(place, draws, bound, choice, here, options)
         column = None if reading.column is None else attrs.evolve(reading.column, gravel_prior=gravel_prior)
         results.append(attrs.evolve(reading, column=column))
     return results
 
 
 def _read_sounding(
-    place: Place, draws: sequences.ColumnDraws, bound: float, template: Template, options: InterpretationOptions
+    place: Place,
+    draws: sequences.ColumnDraws,
+    bound: float,
+    choice: Choice,
+    template: Template,
+    options: InterpretationOptions,
 ) -> PlaceReading:
     """What a sounding adds, its inferred contact overruled by the interpreter's picks.
 
@@ -247,9 +254,13 @@ def _read_sounding(
     """
     sounding, inverted, around, picks = place
     inferred = soundings.find_basal_contact(draws, bound, template, options)
+    opinions = weigh_picks(inferred, picks, choice, template, options)
     seed = [options.random_seed, *sounding.name.encode(), len(picks)]
-    contact = soundings.apply_picks(inferred, picks, template, np.random.default_rng(seed))
-    opinions = soundings.weigh_picks(inferred, picks, template)
+    draws = hold_to_picks(draws, picks, template, np.random.default_rng(seed))
+    held = attrs.evolve(
+        soundings.find_basal_contact(draws, bound, template, options), status=inferred.status, bound=inferred.bound
+    )
+    contact = soundings.apply_picks(held, picks, template, np.random.default_rng(seed))
     shown, beside = condition_draws(draws, bound, around.beside, template, options, np.random.default_rng(seed))
     shown_contact = contact
     if beside is not None and beside.agrees:

@@ -6,7 +6,7 @@ from itertools import combinations
 import attrs
 import numpy as np
 
-from geoves.domain.arrays import BoolArray, FloatArray
+from geoves.domain.arrays import BoolArray, FloatArray, IntArray
 from geoves.domain.units import Z_95, Role, Template
 from geoves.interpretation.options import THICKNESS_BY_ROLE, InterpretationOptions
 from geoves.interpretation.water import (
@@ -81,6 +81,13 @@ class ColumnDraws:
     reaches: BoolArray
     log_bayes_factor: float
     dry: FloatArray = attrs.field(factory=lambda: np.empty((0, 0)))
+
+    def take(self, rows: IntArray) -> "ColumnDraws":
+        """Some of the columns, or the same more than once."""
+        dry = self.dry[rows] if self.dry.size else self.dry
+        return ColumnDraws(
+            self.thickness[rows], self.log_resistivity[rows], self.reaches[rows], self.log_bayes_factor, dry
+        )
 
 
 @attrs.frozen

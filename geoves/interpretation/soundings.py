@@ -5,7 +5,6 @@ from itertools import pairwise
 
 import attrs
 import numpy as np
-from scipy.special import ndtr
 
 from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.earth import Inverted
@@ -34,6 +33,8 @@ UNDECIDED = "basal"
 DECIDED, LEAST_THICKNESS_ERROR = 0.9, 0.5
 # A bound lies no deeper than this quantile of the contact's depth where at least this share of draws still reach it.
 LOWEST_ALLOWED, LEAST_ALLOWED = 0.05, 0.02
+# Slices of depth of a column's profile, and how far below the contact it goes.
+PROFILE_SLICES, PROFILE_MARGIN = 60, 1.3
 # Present means at least this thick, m.
 PRESENT = 1.0
 
@@ -402,33 +403,3 @@ def _unit_share(thickness: FloatArray, top: float, bottom: float) -> FloatArray:
     base = np.cumsum(h, axis=1)
     inside = np.clip(np.minimum(base, bottom) - np.maximum(base - h, top), 0.0, None)
     return np.asarray(np.mean(inside, axis=0) / (bottom - top))
-
-
-def weigh_picks(contact: BasalContact, picks: Sequence[Pick], template: Template) -> tuple[PickOpinion, ...]:
-    """What the curve, before the picks were applied, says of each pick that speaks of the basal contact or the rock."""
-    roles = {unit.code: unit.role for unit in template.units}
-    basal = (Role.DEEP_AQUIFER, Role.BEDROCK)
-    return tuple(_weigh_pick(contact, pick, roles[pick.unit]) for pick in picks if roles[pick.unit] in basal)
-
-
-def _weigh_pick(contact: BasalContact, pick: Pick, role: Role) -> PickOpinion:
-    depth = contact.rock if role is Role.BEDROCK else contact.depth
-    if contact.status == "deeper_than" or not depth.size:
-        excluded = pick.status == "at" and pick.depth is not None and pick.depth < contact.bound
-        return PickOpinion(pick, np.nan, np.nan, contact.bound, excluded)
-    probability = np.nan
-    if pick.status == "absent":
-        probability = float(np.mean(contact.gravel < PRESENT))
-    elif pick.status == "below" and pick.depth is not None:
-        probability = float(np.mean(depth > pick.depth))
-    elif pick.depth is not None:
-        spread = np.hypot(np.std(np.log(depth)), (pick.depth_error or 0.05 * pick.depth) / pick.depth)
-        away = abs(np.log(pick.depth) - np.mean(np.log(depth))) / spread
-        probability = float(2.0 * ndtr(-away))
-    return PickOpinion(pick, probability, float(np.median(depth)), contact.bound, probability < CONTRADICTED)
-
-
-# A pick that the curve holds to be less probable than this is flagged; it is never overruled.
-CONTRADICTED = 0.01
-# Slices of depth of a column's profile, and how far below the contact it goes.
-PROFILE_SLICES, PROFILE_MARGIN = 60, 1.3

@@ -105,6 +105,10 @@ def test_picks_are_told_with_what_the_curve_says(column, small_results):
     assert tell_opinion(against, "ft") == (
         "The curve speaks against this pick: by itself it says 60 ft; it excludes any above 40 ft. The pick stands."
     )
+    paid = attrs.evolve(against, rms_percent=6.24, free_rms_percent=2.81)
+    assert tell_opinion(paid, "ft").endswith("With the pick the curve is fitted within 6.2 %, without within 2.8 %.")
+    free = attrs.evolve(agrees, rms_percent=2.81, free_rms_percent=2.81)
+    assert tell_opinion(free, "ft").endswith("With the pick the curve is fitted as well as without: within 2.8 %.")
     silent = PickOpinion(pick, np.nan, np.nan, 0.0, against=False)
     assert tell_opinion(silent, "ft") == "The curve neither confirms nor contradicts this pick."
     gone = attrs.evolve(pick, status="absent", depth=None, depth_error=None)

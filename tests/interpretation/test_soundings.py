@@ -4,11 +4,13 @@ from functools import lru_cache
 
 import numpy as np
 import pytest
+from scipy.optimize import least_squares
 from scipy.stats import binom
 
 from geoves.domain.survey import Pick
 from geoves.domain.units import Z_95, Template
 from geoves.interpretation import InterpretationOptions
+from geoves.kernels.layered_earth import apparent_resistivity
 from tests.interpretation.columns import (
     CLAY,
     CLAYLIKE_ROCK,
@@ -109,6 +111,66 @@ def test_a_pick_of_absent_gravel_leaves_none():
     (basal,), (rock,) = (tops_by(found, "Picked", contact) for contact in ("basal", "bedrock"))
     assert basal.depth == pytest.approx(rock.depth, rel=0.01)
     assert basal.unit == "lime"
+
+
+def opinion_on(pick, template=PLAIN):
+    (column,) = read_places([sounding_over("Picked", [3, 32], [40, 17, 70])], template, picks=[pick]).columns
+    return column.pick_opinions[0]
+
+
+def least_misfit():
+    """Root mean square log misfit in percent of the best till, clay and rock, by scipy's search from four starts."""
+    curve = sounding_over("Picked", [3, 32], [40, 17, 70]).curve
+
+    def residual(logs):
+        layers = np.exp(logs[None, :2]), np.exp(logs[None, 2:])
+        fitted = apparent_resistivity(curve.half_spacing, curve.potential_half_spacing, *layers)[0]
+        return np.log(curve.apparent_resistivity / fitted)
+
+    starts = [np.log([till, 30.0, 40.0, clay, 70.0]) for till in (2.0, 4.0) for clay in (12.0, 20.0)]
+    return 100.0 * min(np.sqrt(np.mean(least_squares(residual, start).fun ** 2)) for start in starts)
+
+
+def test_the_opinion_says_how_much_worse_the_curve_fits():
+    """Rock at 35 m, no gravel in the template: a pick there costs nothing; the farther away, the more is paid, and at
+    twice the depth it is flagged. Free, the misfit is that of the best layers of all.
+    """
+    near, away, far = (opinion_on(pick_of("at", depth, error=0.5)) for depth in (35.0, 50.0, 70.0))
+    assert near.rms_percent == pytest.approx(near.free_rms_percent, rel=0.05)
+    assert not near.against
+    assert near.rms_percent < away.rms_percent < far.rms_percent
+    assert far.rms_percent > 1.5 * far.free_rms_percent
+    assert far.against
+    assert far.free_rms_percent == pytest.approx(least_misfit(), rel=0.25)
+
+
+def test_gravel_lets_rock_lie_deeper_at_no_cost():
+    """20 m of gravel at 35 m on rock at 55 m makes the curve of rock at 35 m: the pick is paid for by no misfit."""
+    opinion = opinion_on(pick_of("at", 55.0, error=0.5), FULL)
+    assert opinion.rms_percent == pytest.approx(opinion.free_rms_percent, rel=0.1)
+
+
+def test_picks_below_and_absent_cost_nothing_where_the_curve_allows_them():
+    for pick in (pick_of("below", 20.0), pick_of("absent", None, "deep", error=None)):
+        opinion = opinion_on(pick, FULL)
+        assert opinion.rms_percent == pytest.approx(opinion.free_rms_percent, rel=0.05)
+        assert not opinion.against
+    excluded = opinion_on(pick_of("below", 70.0))
+    assert excluded.rms_percent > 1.5 * excluded.free_rms_percent
+    assert excluded.against
+
+
+def test_a_pick_conditions_the_models_above_it():
+    """Clay of 17 on rock at 35 m, picked at 30 m within what the curve allows: the columns' clay ends there too, and
+    the profile with it; a pick of the clay's own top conditions the till.
+    """
+    free, held = picked().columns[0], picked(pick_of("at", 32.0, error=0.7)).columns[0]
+    assert held.basal_depth[1] < free.basal_depth[1]
+    assert abs(held.basal_depth[1] - 32.0) < 2.0
+    tops = [picked(*picks).columns[0] for picks in ((), (pick_of("at", 2.6, "clay", error=0.1),))]
+    depth = 0.5 * (tops[0].profile_depth[1:] + tops[0].profile_depth[:-1])
+    clay = [np.interp(3.0, depth, column.profile[:, 2]) for column in tops]
+    assert clay[1] > clay[0]
 
 
 def test_a_pick_of_another_place_changes_nothing():
