@@ -3,7 +3,7 @@
 import numpy as np
 from numpy.typing import ArrayLike
 
-from geoves.domain.survey import Curve, Sounding
+from geoves.domain.survey import Array, Curve, Sounding
 from geoves.errors import InputError
 
 
@@ -15,8 +15,11 @@ def make_sounding(
     *,
     relative_error: ArrayLike = np.nan,
     place: tuple[float, float, float] = (0.0, 0.0, 0.0),
+    array: Array = "schlumberger",
 ) -> Sounding:
-    """A Schlumberger sounding from arrays, for a notebook: a new segment begins where MN grows.
+    """A sounding from arrays, for a notebook: a new segment begins where MN grows.
+
+    Of a Wenner array AB/2 is 1.5 a and MN/2 0.5 a; all its electrodes move at every reading, so that it is one segment.
 
     half_spacing AB/2 and potential_half_spacing MN/2 : (n,) m    apparent_resistivity : (n,) ohm m
     relative_error : (n,) or one number, one standard deviation as a fraction; NaN to let the inversion find it
@@ -36,7 +39,7 @@ def make_sounding(
     ]
     if faults:
         raise InputError(faults)
-    _, segment = np.unique(b, return_inverse=True)
+    _, segment = np.unique(np.zeros_like(b) if array == "wenner" else b, return_inverse=True)
     order = np.lexsort((a, segment))
     error = np.broadcast_to(np.asarray(relative_error, dtype=float), a.shape)
     curve = Curve(
@@ -49,4 +52,4 @@ def make_sounding(
         reason=("",) * a.size,
         row=np.arange(a.size)[order] + 1,
     )
-    return Sounding(name, *place, curve)
+    return Sounding(name, *place, curve, array)

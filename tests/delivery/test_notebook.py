@@ -52,3 +52,26 @@ def test_faults_in_arrays_are_told_all_at_once():
     assert len(caught.value.lines) == 2
     with pytest.raises(geoves.InputError, match="as many of each"):
         geoves.make_sounding("A1", [1.0, 2.0], [0.5], [10.0, 10.0])
+
+
+def test_wenner_arrays_go_the_same_way():
+    """Till on rock at 12 m by Wenner's own image series (textbooks, from memory): one segment, no shifts, its depth."""
+    a = np.geomspace(1.0, 120.0, 16)
+    order, k = np.arange(1, 4001)[:, None], (300.0 - 30.0) / (300.0 + 30.0)
+    depth = 2.0 * 12.0 * order / a
+    sums = np.sum(k**order * (1.0 / np.sqrt(1.0 + depth**2) - 1.0 / np.sqrt(4.0 + depth**2)), axis=0)
+    apparent = 30.0 * (1.0 + 4.0 * sums)
+    sounding = geoves.make_sounding("A2", 1.5 * a, 0.5 * a, apparent, relative_error=0.02, array="wenner")
+    assert sounding.array == "wenner"
+    assert np.all(sounding.curve.segment == 0)
+    template = geoves.Template(
+        (
+            geoves.Unit("till", "Till", geoves.Role.COVER, 20.0, 45.0),
+            geoves.Unit("rock", "Limestone", geoves.Role.BEDROCK, 150.0, 600.0),
+        )
+    )
+    inverted = geoves.invert(geoves.Survey((sounding,)), geoves.InversionOptions(draws=50))
+    assert inverted[0].segment_factor.tolist() == [1.0]
+    column = geoves.interpret(geoves.Survey((sounding,)), inverted, template).columns[0]
+    assert column.bedrock_status == "seen"
+    assert column.basal_depth[0] < 12.0 < column.basal_depth[2]
