@@ -116,14 +116,6 @@ RASTERS: Mapping[str, RasterWords] = MappingProxyType(
                 judged_by="deep_gravel_thickness",
             ),
             RasterWords(
-                "deep_gravel_top_depth",
-                "Depth to the top of the deep gravel",
-                "Depth from the land surface to the deep aquifer; blank where its probability is below 0.05.",
-                "length",
-                ("estimate", "p05", "p95"),
-                judged_by="bedrock_elevation",
-            ),
-            RasterWords(
                 "deep_gravel_probability",
                 "Probability of deep gravel",
                 "Probability that at least 1 m of the deep aquifer is there.",
@@ -143,27 +135,6 @@ RASTERS: Mapping[str, RasterWords] = MappingProxyType(
                 "Probability that at least 1 m of the shallow aquifer is there.",
                 "fraction",
                 judged_by="shallow_aquifer_thickness",
-            ),
-            RasterWords(
-                "shallow_aquifer_thickness",
-                "Thickness of the shallow aquifer",
-                "Thickness of the shallow aquifer, its absence counted as 0: the mean of what the data allow.",
-                "length",
-                _ALL_PARTS,
-            ),
-            RasterWords(
-                "cover_thickness",
-                "Thickness of the cover",
-                "Thickness of what lies on the shallow aquifer: the mean of what the data allow.",
-                "length",
-                _ALL_PARTS,
-            ),
-            RasterWords(
-                "confining_unit_thickness",
-                "Thickness of the confining unit",
-                "Thickness of what lies between the shallow and the deep aquifer: the mean of what the data allow.",
-                "length",
-                _ALL_PARTS,
             ),
         )
     }

@@ -10,7 +10,7 @@ import numpy as np
 import pyproj
 
 from geoves.delivery.cautions import SHORT_CAUTION, list_cautions
-from geoves.delivery.dictionary import RASTERS
+from geoves.delivery.dictionary import find_raster, list_rasters
 from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_colours, value_range
@@ -43,8 +43,6 @@ SHOWN_SURFACES = (
     "deep_gravel_probability",
     "shallow_aquifer_resistivity",
 )
-# All others are read under the cursor or in a column, though not drawn as a surface of their own.
-READ_SURFACES = tuple(name for name in RASTERS if name not in SHOWN_SURFACES)
 WEB_MERCATOR = "EPSG:3857"
 MOST_CELLS = 1_500_000  # beyond it the page would be heavy: every third, fifth, ... cell is shown, and it says so
 
@@ -54,7 +52,9 @@ def describe_region(results: Results) -> dict[str, Any]:
     region = results.region
     colours = unit_colours(region.template)
     stack = thin_stack(results.stack)
-    shown = [name for name in (*SHOWN_SURFACES, *READ_SURFACES) if name in stack.surfaces]
+    # All others are read under the cursor or in a column, though not drawn as a surface of their own.
+    delivered = [words.name for words in list_rasters(stack.surfaces)]
+    shown = sorted(delivered, key=lambda name: SHOWN_SURFACES.index(name) if name in SHOWN_SURFACES else 99)
     to_degrees = pyproj.Transformer.from_crs(region.crs, "EPSG:4326", always_xy=True)
     return {
         "region": {
@@ -137,7 +137,9 @@ def _describe_surface(surface: Surface) -> dict[str, Any]:
     values = np.log(surface.estimate) if surface.quantity == "resistivity" else surface.estimate
     width = band_width(surface)
     ends = (0.0, 1.0) if surface.quantity == "probability" else value_range(values)
+    words = find_raster(surface.name)
     return {
+        "codes": {} if words is None else {str(code): meaning for code, meaning in words.codes.items()},
         "name": surface.name,
         "title": surface.title,
         "quantity": surface.quantity,

@@ -12,7 +12,7 @@ import pyproj
 from pygeometa.schemas.iso19139 import ISO19139OutputSchema
 
 from geoves.delivery.cautions import list_cautions
-from geoves.delivery.dictionary import LENGTH_UNITS, PART_TITLES, Part, list_rasters, name_part, name_unit
+from geoves.delivery.dictionary import LENGTH_UNITS, PART_TITLES, Part, RasterWords, list_rasters, name_part, name_unit
 from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.rasters import describe_vertical
 from geoves.domain.region import Region
@@ -20,7 +20,7 @@ from geoves.domain.results import Results
 from geoves.errors import DeliveryError
 
 GEOPACKAGE = "layers.gpkg"
-_KEYWORDS = ("hydrogeology", "buried valley", "vertical electrical sounding", "resistivity", "aquifer", "bedrock")
+KEYWORDS = ("hydrogeology", "buried valley", "vertical electrical sounding", "resistivity", "aquifer", "bedrock")
 _NAMESPACES = {
     "gmd": "http://www.isotc211.org/2005/gmd",
     "gco": "http://www.isotc211.org/2005/gco",
@@ -74,11 +74,16 @@ def render_raster_record(results: Results, record: Mapping[str, Any], name: str,
     if words.kind == "length":
         abstract += f" Rounded to 1/64 {results.region.length_unit}."
     resource = (f"surfaces/{name_part(name, part)}.tif", "GeoTIFF, cloud-optimised", "grid")
-    merit = results.figures_of_merit
-    judge = words.judged_by or name
-    judged = attrs.evolve(results, figures_of_merit={judge: merit[judge]} if judge in merit else {})
+    judged = select_merit(results, words)
     text = _render(judged, record, (title, abstract), resource)
     return _complete(text, judged, with_heights=words.elevation)
+
+
+def select_merit(results: Results, words: RasterWords) -> Results:
+    """The job with those figures of merit alone that judge this surface."""
+    merit = results.figures_of_merit
+    judge = words.judged_by or words.name
+    return attrs.evolve(results, figures_of_merit={judge: merit[judge]} if judge in merit else {})
 
 
 def render_geopackage_record(results: Results, record: Mapping[str, Any]) -> str:
@@ -116,13 +121,13 @@ def _render(results: Results, record: Mapping[str, Any], words: tuple[str, str],
                 "url": file,
                 "type": "FILE",
                 "name": file,
-                "description": _clean(f"{title} ({file_format})"),
+                "description": clean(f"{title} ({file_format})"),
                 "function": "download",
             },
         },
         "dataquality": {
             "scope": {"level": "dataset"},
-            "lineage": {"statement": _clean(_tell_lineage(results, record))},
+            "lineage": {"statement": clean(tell_lineage(results, record))},
         },
     }
     return str(ISO19139OutputSchema().write(mcf))
@@ -133,29 +138,30 @@ def _identify(results: Results, words: tuple[str, str], date: str) -> dict[str, 
     region = results.region
     title, abstract = words
     limits = region.delivery.use_limits
+    box = [f"{value:.6f}" for value in measure_extent(results)]
     return {
         "language": "eng",
         "charset": "utf8",
-        "title": _clean(f"{title}, {region.name}"),
-        "abstract": _clean(abstract),
+        "title": clean(f"{title}, {region.name}"),
+        "abstract": clean(abstract),
         "dates": {"creation": date},
-        "keywords": {"default": {"keywords": list(_KEYWORDS), "keywords_type": "theme"}},
+        "keywords": {"default": {"keywords": list(KEYWORDS), "keywords_type": "theme"}},
         "topiccategory": ["geoscientificInformation"],
-        "extents": {"spatial": _measure_extent(results), "temporal": []},
-        "rights": _clean(" ".join(filter(None, (limits, *list_cautions())))),
+        "extents": {"spatial": [{"bbox": box, "crs": 4326}], "temporal": []},
+        "rights": clean(" ".join(filter(None, (limits, *list_cautions())))),
         "accessconstraints": "otherRestrictions",
-        "license": {"name": _clean(f"Use limits: {limits or 'not stated'}")},
+        "license": {"name": clean(f"Use limits: {limits or 'not stated'}")},
         "status": "completed",
         "maintenancefrequency": "asNeeded",
-        "url": _clean(" ".join(_tell_accuracy(results))),
+        "url": clean(" ".join(tell_accuracy(results))),
     }
 
 
-def _measure_extent(results: Results) -> list[dict[str, Any]]:
-    """The grid's bounds in longitude and latitude, as every catalogue wants them."""
+def measure_extent(results: Results) -> tuple[float, float, float, float]:
+    """The grid's west, south, east and north in longitude and latitude, as every catalogue wants them."""
     to_degrees = pyproj.Transformer.from_crs(results.region.crs, "EPSG:4326", always_xy=True)
-    bounds = to_degrees.transform_bounds(*results.stack.grid.bounds)
-    return [{"bbox": [f"{value:.6f}" for value in bounds], "crs": 4326}]
+    west, south, east, north = to_degrees.transform_bounds(*results.stack.grid.bounds)
+    return west, south, east, north
 
 
 def _describe_contact(region: Region) -> dict[str, Any]:
@@ -163,20 +169,20 @@ def _describe_contact(region: Region) -> dict[str, Any]:
     empty = ("positionname", "address", "city", "administrativearea", "country", "hoursofservice", "phone", "fax")
     return {
         **dict.fromkeys((*empty, "contactinstructions")),
-        "organization": _clean(region.delivery.organisation or "not stated"),
-        "individualname": _clean(contact or "not stated"),
-        "email": _clean(contact) if "@" in contact else None,
+        "organization": clean(region.delivery.organisation or "not stated"),
+        "individualname": clean(contact or "not stated"),
+        "email": clean(contact) if "@" in contact else None,
         "postalcode": "",
         "url": "",
     }
 
 
-def _clean(text: str) -> str:
+def clean(text: str) -> str:
     """Text without the characters that XML cannot hold."""
     return _NOT_XML.sub("\ufffd", text)
 
 
-def _tell_lineage(results: Results, record: Mapping[str, Any]) -> str:
+def tell_lineage(results: Results, record: Mapping[str, Any]) -> str:
     """How the values came about, in one paragraph."""
     survey, region = results.survey, results.region
     places = (
@@ -203,19 +209,19 @@ def _tell_lineage(results: Results, record: Mapping[str, Any]) -> str:
     return " ".join(parts)
 
 
-def _tell_accuracy(results: Results) -> Iterator[str]:
+def tell_accuracy(results: Results) -> Iterator[str]:
     yield "Accuracy as found by the job itself:"
-    merit = [f"{key}: {value}" for key, value in _flatten(results.figures_of_merit)]
+    merit = [f"{key}: {value}" for key, value in flatten(results.figures_of_merit)]
     yield "; ".join(merit) + "." if merit else "no figures were computed."
     yield describe_vertical(results.region)[1] + "."
 
 
-def _flatten(tree: Mapping[str, Any], above: str = "") -> Iterator[tuple[str, str]]:
+def flatten(tree: Mapping[str, Any], above: str = "") -> Iterator[tuple[str, str]]:
     """Leaves of a nested mapping: what each is called in words, and its value, numbers to four figures."""
     for key, value in tree.items():
         name = f"{above}, {key}" if above else str(key)
         if isinstance(value, Mapping):
-            yield from _flatten(value, name)
+            yield from flatten(value, name)
         else:
             yield name.replace("_", " "), f"{value:.4g}" if isinstance(value, float) else str(value)
 
@@ -236,7 +242,7 @@ def _complete(text: str, results: Results, *, with_heights: bool) -> str:
     quality = root.find("gmd:dataQualityInfo/gmd:DQ_DataQuality", _NAMESPACES)
     if quality is None:
         raise DeliveryError("the metadata record has no statement of quality")
-    for index, (name, value) in enumerate(_flatten(results.figures_of_merit)):
+    for index, (name, value) in enumerate(flatten(results.figures_of_merit)):
         quality.insert(1 + index, _quality_report(name, value))
     return _DECLARATION + ET.tostring(root, encoding="unicode") + "\n"
 
@@ -270,10 +276,10 @@ def _quality_report(name: str, value: str) -> ET.Element:
     """A figure of merit as DQ_QuantitativeAttributeAccuracy (ISO 19115:2003, B.2.4)."""
     outer, report = _nest("gmd:report", "gmd:DQ_QuantitativeAttributeAccuracy")
     measure = ET.SubElement(report, _qualify("gmd:nameOfMeasure"))
-    ET.SubElement(measure, _qualify("gco:CharacterString")).text = _clean(name)
+    ET.SubElement(measure, _qualify("gco:CharacterString")).text = clean(name)
     result = ET.SubElement(report, _qualify("gmd:result"))
     quantitative = ET.SubElement(result, _qualify("gmd:DQ_QuantitativeResult"))
     ET.SubElement(quantitative, _qualify("gmd:valueUnit")).set(_qualify("gco:nilReason"), "inapplicable")
     held = ET.SubElement(quantitative, _qualify("gmd:value"))
-    ET.SubElement(held, _qualify("gco:Record")).text = _clean(value)
+    ET.SubElement(held, _qualify("gco:Record")).text = clean(value)
     return outer

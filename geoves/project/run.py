@@ -10,6 +10,7 @@ import attrs
 import numpy as np
 
 from geoves.checking import assign_errors, examine_survey
+from geoves.delivery.fgdc import write_fgdc_records
 from geoves.delivery.folder import publish, stage
 from geoves.delivery.geopackage import write_geopackage
 from geoves.delivery.map_page import write_map_page
@@ -139,6 +140,8 @@ def write_all(results: Results, record: Mapping[str, Any], staging: Path, progre
             write_permit_table(results, staging)
     with _step(progress, "Writing metadata and styles"):
         write_metadata(results, staging, record, files)
+        if results.region.delivery.fgdc:
+            write_fgdc_records(results, staging, record, files)
         write_styles(results, staging)
     with _step(progress, "Writing map.html"):
         write_map_page(results, staging / "map.html")

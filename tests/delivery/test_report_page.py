@@ -1,11 +1,15 @@
 """report.html as a reader meets it: in Chromium, from disk, with no network and no script."""
 
+import base64
+import io
 import time
+import unicodedata
 from concurrent.futures import ThreadPoolExecutor
 
 import attrs
 import numpy as np
 import pytest
+from pypdf import PdfReader
 
 from geoves.delivery.cautions import list_cautions
 from geoves.delivery.report_answers import confidence_in_words, tell_limits, write_answers
@@ -184,6 +188,52 @@ def test_logarithms_are_told_as_percentages_and_drawn_as_lengths(small_results):
     assert (plain.title, plain.unit) == ("Depth of the basal contact", "m")
     np.testing.assert_allclose(plain.measured, depth)
     np.testing.assert_allclose(plain.standard_error, 0.11 * depth)
+
+
+# Paper inside the page's margins of 14 mm at the sides, 15 above and 16 below, in CSS pixels of 1/96 inch.
+PAPER = {"A4": (210.0, 297.0), "Letter": (215.9, 279.4)}
+
+
+def inside(paper):
+    wide, high = PAPER[paper]
+    return (wide - 28.0) / 25.4 * 96.0, (high - 31.0) / 25.4 * 96.0
+
+
+@pytest.mark.parametrize("paper", PAPER)
+def test_it_prints_with_numbered_pages(browser, page, paper):
+    """Chromium's PDF, its text read by pypdf: every page bears its number and the caution."""
+    browser.open(page)
+    wide, high = (side / 25.4 for side in PAPER[paper])
+    sheet = {"paperWidth": wide, "paperHeight": high, "printBackground": True, "preferCSSPageSize": False}
+    printed = browser.driver.execute_cdp_cmd("Page.printToPDF", sheet)
+    pages = PdfReader(io.BytesIO(base64.b64decode(printed["data"]))).pages
+    assert len(pages) > 3
+    for number, one in enumerate(pages, start=1):
+        words = " ".join(unicodedata.normalize("NFKC", one.extract_text()).split())
+        assert f"{number} of {len(pages)}" in words
+        assert "Reconnaissance only: test drilling first." in words
+
+
+@pytest.mark.parametrize("paper", PAPER)
+def test_no_figure_is_cut_in_print(browser, page, paper):
+    """On paper each figure fits a page, may not break across two, and nothing runs beyond the right margin."""
+    wide, high = inside(paper)
+    browser.open(page, width=round(wide))
+    browser.driver.execute_cdp_cmd("Emulation.setEmulatedMedia", {"media": "print"})
+    try:
+        boxes = browser.run(
+            "return [...document.querySelectorAll('figure, .strip, .pair, .drawings svg, figure svg')].map(e => {"
+            "const r = e.getBoundingClientRect(), s = getComputedStyle(e);"
+            "return [e.tagName + '.' + e.getAttribute('class'), r.height, r.right, s.breakInside]; })"
+        )
+        assert len(boxes) > 20
+        for name, height, right, breaks in boxes:
+            assert height < high, name
+            assert right <= wide + 1.0, name
+            assert "svg" in name.lower() or breaks == "avoid", name
+        assert browser.run("return document.documentElement.scrollWidth") <= round(wide) + 1
+    finally:
+        browser.driver.execute_cdp_cmd("Emulation.setEmulatedMedia", {"media": ""})
 
 
 def test_no_wells_no_axis_no_gravel_still_reads(small_results, tmp_path):

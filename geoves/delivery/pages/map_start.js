@@ -53,7 +53,8 @@ function startReadout(map, current) {
     const others = surfaces.filter((one) => one !== surface).map((one) => {
       const here = valueAt(one.name, cell);
       return here && make("li", { "data-surface": one.name },
-        `${one.title}: `, make("b", {}, valueWords(one.quantity, here.estimate)));
+        `${one.title}: `, make("b", {}, one.quantity === "code" ? one.codes[Math.round(here.estimate)] ?? "not known"
+          : valueWords(one.quantity, here.estimate)));
     }).filter(Boolean);
     box.replaceChildren(make("b", { id: "value" }, words), band, make("br"),
       `x ${grouped(place[0])}, y ${grouped(place[1])}; `,
