@@ -5,7 +5,7 @@ import numpy as np
 import pytest
 from lxml import etree
 
-from geoves.delivery.dictionary import RASTERS, name_part
+from geoves.delivery.dictionary import RASTERS, list_rasters, name_part
 from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.styles import choose_breaks, write_styles
 from geoves.errors import DeliveryError
@@ -40,8 +40,9 @@ def quantities(root):
     return [float(entry.get("quantity")) for entry in root.iter(f"{SLD}ColorMapEntry")]
 
 
-def test_a_style_for_each_raster_and_each_layer(styles):
-    rasters = {name_part(words.name, part) for words in RASTERS.values() for part in words.parts}
+def test_a_style_for_each_raster_and_each_layer(styles, small_results):
+    words = list_rasters(small_results.stack.surfaces)
+    rasters = {name_part(one.name, part) for one in words for part in one.parts}
     assert set(styles) == rasters | set(LAYERS)
     for name, root in styles.items():
         assert root.tag == f"{SLD}StyledLayerDescriptor"
