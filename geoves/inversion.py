@@ -20,6 +20,7 @@ from geoves.kernels import damped_steps, ensembles, layered_earth
 from geoves.kernels.blocks import cut_blocks, restore_order
 from geoves.kernels.damped_steps import Curves, Fit, Prior, Readings
 from geoves.kernels.ensembles import Density, Effort
+from geoves.kernels.error_correlation import Moments, find_correlation, lag_moments
 from geoves.kernels.smooth_model import fit_smooth, smooth_thickness
 
 Blocks = Iterable[Any]
@@ -65,6 +66,8 @@ FELT_CHI_SQUARE = 4.0
 # The survey's noise is not believed outside of these factors of the default.
 LEAST_NOISE_FACTOR, MOST_NOISE_FACTOR = 0.5, 4.0
 DEFAULT_STRENGTH = 20.0
+# Readings of a robust weight above this are no outliers.
+TRUSTED = 0.5
 # Its natural log is rounded to this: finer than some hundred readings know it, and coarse enough that one sounding more
 # seldom changes what all others were inverted with.
 NOISE_STEP = 0.05
@@ -73,8 +76,8 @@ NOISE_STEP = 0.05
 def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map = map) -> tuple[Inverted, ...]:  # noqa: A002 - the seam is named for what it replaces
     """The blocky model of each sounding, in the order of the survey; soundings with too few readings are left out.
 
-    Two passes: the first finds the survey's noise from the residuals of the readings without a typed error, the
-    second inverts with it.
+    Two passes: the first finds the survey's noise from the residuals of the readings without a typed error, and whether
+    neighbouring errors are alike; the second inverts with it, widened where they are.
     """
     options = options or InversionOptions()
     fitting = [s.measured for s in survey.soundings if s.curve.is_enough]
@@ -87,9 +90,14 @@ def invert(survey: Survey, options: InversionOptions | None = None, *, map: Map 
     blocks = [[fitting[row] for row in block] for block in rows]
     first = partial(_pooled_residuals, options=options, wavenumber=wavenumber)
     untyped = [block for block in blocks if any(np.isnan(s.curve.relative_error[s.curve.used]).any() for s in block)]
-    noise = _survey_noise(np.concatenate([np.empty(0), *map(first, untyped)]), options)
+    pooled = list(chain.from_iterable(map(first, untyped)))
+    correlation = find_correlation([moments for _, moments in pooled if moments is not None])
+    noise = _survey_noise(np.concatenate([np.empty(0), *(one for one, _ in pooled)]), options)
+    noise = min(noise * correlation.widening, MOST_NOISE_FACTOR * options.default_error)
     second = partial(invert_block, options=options, wavenumber=wavenumber, noise=noise)
     results = list(chain.from_iterable(map(second, blocks)))
+    if correlation.lag_one:
+        results = [attrs.evolve(one, error_correlation=correlation.lag_one) for one in results]
     return tuple(results[place] for place in restore_order(rows))
 
 
@@ -133,8 +141,11 @@ def _fit_smooth(
 
 def _pooled_residuals(
     soundings: Sequence[Sounding], *, options: InversionOptions, wavenumber: FloatArray
-) -> FloatArray:
-    """Log residuals of the readings without a typed error, widened for the degrees of freedom that the fit took."""
+) -> list[tuple[FloatArray, Moments | None]]:
+    """Of each curve the log residuals without a typed error, widened for the degrees of freedom that the fit took.
+
+    With them the moments that tell whether neighbours' errors are alike, where no error is typed, none an outlier.
+    """
     noise = options.default_error
     curves = damped_steps.stack_curves([Readings(*s.curve.readings(noise)) for s in soundings], wavenumber)
     fits = _fit_all_counts(curves, soundings, options)
@@ -145,8 +156,21 @@ def _pooled_residuals(
         shifts = curves.segments[i] @ fit.unknowns[i, 2 * k - 1 :]
         residual = (curves.log_apparent_resistivity[i] - fit.log_response[i] - shifts)[: untyped.size]
         taken = 2 * k - 1 + int(np.count_nonzero(curves.segments[i].any(axis=0)))
-        pooled.append(residual[untyped] * np.sqrt(untyped.size / max(untyped.size - taken, 1)))
-    return np.concatenate(pooled)
+        moments = None
+        if untyped.all() and np.all(fit.robust_weight[i, : untyped.size] > TRUSTED):
+            moments = _lag_moments(sounding, curves.take(np.array([i])), fit.take(i), residual, k)
+        pooled.append((residual[untyped] * np.sqrt(untyped.size / max(untyped.size - taken, 1)), moments))
+    return pooled
+
+
+def _lag_moments(sounding: Sounding, curves: Curves, fit: Fit, residual: FloatArray, k: int) -> Moments:
+    """Moments of one curve's residuals (n,) in the order of its spacings, `curves` and `fit` batches of one."""
+    curve = sounding.curve
+    order = np.lexsort((curve.half_spacing[curve.used], curve.segment[curve.used]))
+    deviation = curves.deviation[0, : residual.size]
+    jacobian = damped_steps.log_sensitivity(fit.unknowns, k, curves)[0, : residual.size] / deviation[:, None]
+    covariance = np.linalg.inv(fit.hessian[0])
+    return lag_moments((residual / deviation)[order], jacobian[order], covariance, curve.segment[curve.used][order])
 
 
 def _survey_noise(residual: FloatArray, options: InversionOptions) -> float:

@@ -58,7 +58,8 @@ class Inverted:
     predicted        apparent resistivity of the model at each reading, without factors, ohm m (n,)
     robust_weight    0 to 1 for each reading: near 0 for what the robust misfit set aside (n,)
     rms_percent      root mean square relative misfit of the used readings, outliers down-weighted
-    noise            relative error found from the residuals
+    noise            relative error found from the residuals, widened where neighbouring errors are alike
+    error_correlation  of neighbouring readings' errors over the survey, 0 where none is plain
     criterion        value of the choosing criterion for each layer count tried; the least is best
     investigated_depth  m: below it a change of resistivity alters the curve by less than its error
     remarks          what a person should know, in words
@@ -78,6 +79,7 @@ class Inverted:
     remarks: tuple[str, ...] = ()
     smooth: LayeredModel | None = None
     trade_offs: tuple[str, ...] = ()
+    error_correlation: float = 0.0
 
     @property
     def n_layers(self) -> int:

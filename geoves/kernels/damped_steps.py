@@ -180,6 +180,13 @@ def local_hessian(unknowns: Floats, n_layers: int, curves: Curves, prior: Prior)
     return _evaluate(unknowns, n_layers, curves, prior).hessian
 
 
+def log_sensitivity(unknowns: Floats, n_layers: int, curves: Curves) -> Floats:
+    """Derivative (b, n, p) of the log readings with respect to the unknowns (b, p), segments' factors included."""
+    k, model = n_layers, np.exp(unknowns[:, : 2 * n_layers - 1])
+    _, sensitivity = response_and_sensitivity(curves.weights, curves.wavenumber, model[:, : k - 1], model[:, k - 1 :])
+    return np.concatenate([sensitivity, curves.segments], axis=2)
+
+
 def _step(unknowns: Floats, state: _State, damping: Floats, prior: Prior) -> Floats:
     """A damped Gauss-Newton step (b, p), with unknowns held that push against a bound."""
     held = ((unknowns <= prior.lowest) & (state.gradient < 0)) | ((unknowns >= prior.highest) & (state.gradient > 0))

@@ -113,6 +113,7 @@ def work_out(inputs: Inputs, progress: Progress, engine: Map, recalling: Map) ->
         "remarks": [*interpretation.remarks, *stack.remarks],
         "bedrock_status": provenance.summarise(statuses),
         "noise": inverted[0].noise if inverted else None,
+        "error_correlation": inverted[0].error_correlation if inverted else None,
         "template_calibration": _record_calibration(interpretation),
         "covariances": [attrs.asdict(one, filter=_scalars) for one in stack.variograms],
         "figures_of_merit": merit,
