@@ -128,7 +128,8 @@ _CURVES = (
     Check(
         "rough_curve",
         "The scatter of a whole curve about flat layers",
-        f"{_DEFAULTS.rough_limit:g} times what the readings' errors allow, where no single reading explains it",
+        f"{_DEFAULTS.rough_limit:g} times what the readings' errors allow, or {curve_shape.FEWEST_ASIDE} readings and "
+        f"{curve_shape.SHARE_ASIDE:.0%} of them off",
         "A sawtooth comes from poor contact, leakage along the cable, or ground that changes along the spread.",
         "Raise error_percent for this sounding, or sound again with the spread turned.",
     ),

@@ -17,8 +17,8 @@ from geoves.domain.survey import FEWEST_READINGS, Sounding
 # Two neighbours are off together where this much chi-square more than one alone goes with them, and each is this many
 # of its errors off.
 CUSP_COST, CUSP_LEAST = 10.0, 2.0
-# Readings that a curve needs to be called rough as a whole.
-FEWEST_FOR_ROUGH = 8
+# Readings that a curve needs to be called rough as a whole; so many set aside, and such a share, make it so too.
+FEWEST_FOR_ROUGH, FEWEST_ASIDE, SHARE_ASIDE = 8, 4, 0.15
 # How many readings on a slope is looked for.
 LONGEST_SLOPE = 4
 # The steepest fall on log-log axes of 120 000 drawn columns (see steepest_fall).
@@ -106,8 +106,7 @@ def check_shape(judged: JudgedCurve, ground: LayeredGround, options: CurveOption
     jumps = list(_tell_jumps(judged, ground))
     cusps = list(_tell_cusps(judged))
     slopes = list(_tell_slopes(judged, options.slope_limit))
-    rough = [] if jumps or cusps else list(_tell_rough(judged, options.rough_limit))
-    return [*jumps, *cusps, *slopes, *rough]
+    return [*jumps, *cusps, *slopes, *_tell_rough(judged, options.rough_limit)]
 
 
 def _tell_jumps(judged: JudgedCurve, ground: LayeredGround) -> Iterator[Finding]:
@@ -140,14 +139,18 @@ def _tell_cusps(judged: JudgedCurve) -> Iterator[Finding]:
 
 
 def _tell_rough(judged: JudgedCurve, rough_limit: float) -> Iterator[Finding]:
+    """A curve as a whole: rough although no reading stands out, or because so many do."""
+    aside, count = int(judged.silent.sum()), judged.silent.size
     score = judged.prediction.score[~judged.silent]
     rms = float(np.sqrt(np.mean(score**2)))
     if score.size >= FEWEST_FOR_ROUGH and rms > rough_limit:
-        noise = float(np.median(judged.error))
         words = (
-            f"the readings scatter {rms:.1f} times as much about flat layers as errors of {noise:.0%} allow; "
-            f"expected {rough_limit:g} times at most"
+            f"the readings scatter {rms:.1f} times as much about flat layers as errors of "
+            f"{np.median(judged.error):.0%} allow; expected {rough_limit:g} times at most"
         )
+        yield doubt_curve("rough_curve", judged.sounding, words)
+    elif aside >= max(FEWEST_ASIDE, SHARE_ASIDE * count):
+        words = f"{aside} of {count} readings are off what the others let expect: more than single slips would make"
         yield doubt_curve("rough_curve", judged.sounding, words)
 
 

@@ -39,7 +39,7 @@ def check(region_path: Path, progress: Progress) -> Summary:
         faults = () if seen.region is None else find_setting_faults(seen.region)
         step.advance()
     with progress.step("Checking what they say", 1) as step:
-        examination = _examine(seen, faults)
+        examination = examine_inputs(seen, faults)
         step.advance()
     folder = region_path.parent / "check"
     if region_path.is_file():
@@ -51,8 +51,8 @@ def check(region_path: Path, progress: Progress) -> Summary:
     return Summary(tuple(_tell(seen, examination, folder)))
 
 
-def _examine(seen: InputsSeen, faults: Sequence[Finding]) -> Examination:
-    """All findings in the files' own names: faults first, then doubts, then notes."""
+def examine_inputs(seen: InputsSeen, faults: Sequence[Finding] = ()) -> Examination:
+    """All findings in the files' own names: faults first, then doubts, then notes; `faults` are those of settings."""
     if seen.region is None or seen.survey is None:
         return Examination((*faults, *seen.findings))
     survey = attrs.evolve(seen.survey, doubts=())
