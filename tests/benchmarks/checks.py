@@ -1,7 +1,8 @@
 """How often planted faults are found, and how often a clean county is doubted: `python -m tests.benchmarks.checks`.
 
-For each seed a county without faults is drawn (tests/checking/planted.py), looked at, and then each fault is planted in
-it by itself. Printed are the share of seeds in which a fault was told where it stands, and all doubts of clean counties.
+For each seed a county without faults is drawn (tests/checking/planted.py), looked at, and then each fault is planted
+in it by itself. Printed are the share of seeds in which a fault was told where it stands, and all doubts of clean
+counties.
 """
 
 import argparse

@@ -1,7 +1,7 @@
 """Faults that field sheets have, planted one at a time in a county whose tables hold none.
 
-The county is the demo's generator's, drawn anew for each seed without the faults of its crews: curves by a quadrature of
-its own, 3 % noise, shifts where MN changes. A plant changes the tables as a person would have mistyped them.
+The county is the demo's generator's, drawn anew for each seed without the faults of its crews: curves by a quadrature
+of its own, 3 % noise, shifts where MN changes. A plant changes the tables as a person would have mistyped them.
 """
 
 from collections.abc import Callable
