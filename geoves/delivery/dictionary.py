@@ -23,6 +23,9 @@ Kind = Literal[
     "conductance",
     "layer_conductance",
     "layer_resistance",
+    "voltage",
+    "current",
+    "resistance",
     "code",
 ]
 Part = Literal["estimate", "standard_error", "p05", "p95"]
@@ -228,6 +231,9 @@ def name_unit(kind: Kind, length_unit: LengthUnit) -> str:
         "angle": "degrees",
         "conductance": "µS/cm",
         "layer_conductance": "S",
+        "voltage": "mV",
+        "current": "mA",
+        "resistance": "ohm",
         "layer_resistance": "ohm m²",
     }
     return units.get(kind, "")

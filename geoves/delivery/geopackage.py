@@ -26,7 +26,7 @@ from geoves.delivery.sounding_figures import segment_factors
 from geoves.domain.earth import Inverted
 from geoves.domain.region import LengthUnit
 from geoves.domain.results import Results
-from geoves.domain.survey import Permit, Sounding, Well
+from geoves.domain.survey import Measured, Permit, Sounding, Well
 from geoves.domain.tops import UnitColumn
 from geoves.domain.units import Role
 from geoves.errors import DeliveryError
@@ -207,6 +207,7 @@ def _build_tops(results: Results) -> Rows:
 
 def _build_readings(results: Results) -> Rows:
     inverted = {found.sounding: found for found in results.inverted}
+    doubts = _doubts_by_row(results)
     rows: list[dict[str, Any]] = []
     extras: list[Mapping[str, Any]] = []
     for sounding in results.survey.soundings:
@@ -218,9 +219,11 @@ def _build_readings(results: Results) -> Rows:
                 "sounding": sounding.name,
                 "ab2": curve.half_spacing[i],
                 "mn2": curve.potential_half_spacing[i],
-                "apparent_resistivity": curve.apparent_resistivity[i],
                 "error_percent": 100.0 * curve.relative_error[i],
                 "segment": int(curve.segment[i]) + 1,
+                **attrs.asdict(curve.measured[i] if curve.measured else Measured()),
+                "apparent_resistivity": curve.apparent_resistivity[i],
+                "doubt": doubts.get((sounding.name, int(curve.row[i])), "") if curve.row.size else "",
                 "used": bool(curve.used[i]),
                 "reason": curve.reason[i] if curve.reason else "",
             }
@@ -229,6 +232,16 @@ def _build_readings(results: Results) -> Rows:
             rows.append(row)
             extras.append(curve.extra[i] if curve.extra else {})
     return _point_rows(rows, extras)
+
+
+def _doubts_by_row(results: Results) -> dict[tuple[str, int], str]:
+    """The checks that doubt a reading, by its sounding and its row, in words."""
+    readings = results.region.typed_inputs.get("readings", "readings")
+    found: dict[tuple[str, int], list[str]] = {}
+    for doubt in results.doubts:
+        if doubt.file == readings and doubt.row and doubt.check:
+            found.setdefault((doubt.place, doubt.row), []).append(doubt.check.replace("_", " "))
+    return {key: ", ".join(dict.fromkeys(checks)) for key, checks in found.items()}
 
 
 def _build_picks(results: Results) -> Rows:

@@ -235,8 +235,12 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     Column("apparent_resistivity", "Apparent resistivity", "As measured.", "resistivity"),
                     Column("error_percent", "Error", "One standard deviation, where one was typed.", "percent"),
                     Column("segment", "Segment", "1 for the first MN, 2 after its first change, and so on.", "count"),
+                    Column("voltage_mv", "Voltage", "As typed, where it was.", "voltage"),
+                    Column("current_ma", "Current", "As typed, where it was.", "current"),
+                    Column("resistance_ohm", "Resistance", "As typed, where it was.", "resistance"),
                     Column("used", "Used", "Whether the reading was fitted.", "flag"),
                     Column("reason", "Reason", "Why it was not."),
+                    Column("doubt", "Doubt", "Checks that doubt the reading; it was fitted all the same, robustly."),
                     Column("predicted", "Predicted", "Apparent resistivity of the model, shifted.", "resistivity"),
                     Column(
                         "trust",
