@@ -21,7 +21,7 @@ from geoves.delivery.layer_ranges import LayerRanges, find_layer_ranges
 from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.metadata import render_geopackage_record
 from geoves.delivery.section_lines import lay_sections
-from geoves.delivery.sentences import readings_aside, tell_all, tell_readings_aside, tell_trade_offs
+from geoves.delivery.sentences import doubted_rows, readings_aside, tell_all, tell_readings_aside, tell_trade_offs
 from geoves.delivery.sounding_figures import segment_factors
 from geoves.domain.earth import Inverted
 from geoves.domain.region import LengthUnit
@@ -207,7 +207,7 @@ def _build_tops(results: Results) -> Rows:
 
 def _build_readings(results: Results) -> Rows:
     inverted = {found.sounding: found for found in results.inverted}
-    doubts = _doubts_by_row(results)
+    doubts = doubted_rows(results)
     rows: list[dict[str, Any]] = []
     extras: list[Mapping[str, Any]] = []
     for sounding in results.survey.soundings:
@@ -232,16 +232,6 @@ def _build_readings(results: Results) -> Rows:
             rows.append(row)
             extras.append(curve.extra[i] if curve.extra else {})
     return _point_rows(rows, extras)
-
-
-def _doubts_by_row(results: Results) -> dict[tuple[str, int], str]:
-    """The checks that doubt a reading, by its sounding and its row, in words."""
-    readings = results.region.typed_inputs.get("readings", "readings")
-    found: dict[tuple[str, int], list[str]] = {}
-    for doubt in results.doubts:
-        if doubt.file == readings and doubt.row and doubt.check:
-            found.setdefault((doubt.place, doubt.row), []).append(doubt.check.replace("_", " "))
-    return {key: ", ".join(dict.fromkeys(checks)) for key, checks in found.items()}
 
 
 def _build_picks(results: Results) -> Rows:

@@ -147,7 +147,7 @@ def _line_key() -> Markup:
         (line(0, 8, 30, 8, "smooth"), "smoothest model that fits"),
         (joined(line(0, y, 30, y, "fan") for y in (4, 8, 12)), "some of the models that fit as well"),
         (line(0, 8, 30, 8, "fit"), "curve of the chosen model"),
-        (element("path", {"d": mark_path(0, 15, 8), "class": "reading aside"}), "reading set aside"),
+        (element("path", {"d": mark_path(0, 15, 8), "class": "reading aside"}), "reading set aside, or doubted"),
         (line(0, 8, 30, 8, "pick"), "interpreter’s pick"),
     )
     size = {"width": 30, "height": 16, "viewBox": "0 0 30 16", "aria-hidden": "true"}

@@ -1,6 +1,6 @@
 """The report's strips, one for each sounding."""
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 
 import attrs
 import numpy as np
@@ -9,6 +9,7 @@ from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import Markup, element, format_length, place_name, table, unit_label
 from geoves.delivery.sentences import (
     STATUS_WORDS,
+    doubted_rows,
     tell_beside,
     tell_doubt,
     tell_opinion,
@@ -39,14 +40,18 @@ class StripJob:
     column: UnitColumn | None
     near_well: NearWell | None
     unit: LengthUnit
+    doubted: Mapping[int, str] = attrs.field(factory=dict)  # checks that doubt a reading, by its row
 
 
 def gather_strips(results: Results) -> Iterator[StripJob]:
     models = {one.sounding: one for one in results.inverted}
     columns = {one.sounding: one for one in results.interpretation.columns}
+    doubted: dict[str, dict[int, str]] = {}
+    for (place, row), checks in doubted_rows(results).items():
+        doubted.setdefault(place, {})[row] = checks
     for number, sounding in enumerate(results.survey.soundings):
-        near, unit = nearest_logged_well(results, sounding), results.region.length_unit
-        yield StripJob(number, sounding, models.get(sounding.name), columns.get(sounding.name), near, unit)
+        near, unit, name = nearest_logged_well(results, sounding), results.region.length_unit, sounding.name
+        yield StripJob(number, sounding, models.get(name), columns.get(name), near, unit, doubted.get(name, {}))
 
 
 def nearest_logged_well(results: Results, sounding: Sounding) -> NearWell | None:
@@ -73,7 +78,7 @@ def draw_strip(job: StripJob, *, template: Template) -> str:
     drawings = element(
         "div",
         {"class": "drawings"},
-        draw_curve(sounding, job.inverted, unit),
+        draw_curve(sounding, job.inverted, unit, job.doubted),
         draw_models(sounding, job.inverted, template, unit, deepest),
         draw_columns(job.column, job.inverted, template, unit, job.near_well, deepest),
     )

@@ -123,7 +123,7 @@ def write_doubts(results: Results) -> Markup:
     ]
     words = (
         "The inputs showed no fault, or there would be no page. What was unlikely is listed here; the run went on. "
-        "A doubted reading that was set aside is hollow in its curve above."
+        "A reading that is doubted or was set aside is hollow in its curve above."
     )
     headings = ("file", "row", "column", "place", "value", "what was expected")
     return joined([element("p", {}, words), table(headings, rows, f"Doubts: {len(rows)}")])

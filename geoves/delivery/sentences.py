@@ -9,6 +9,7 @@ from geoves.delivery.markup import format_length, unit_label
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
 from geoves.domain.region import METRES, LengthUnit
+from geoves.domain.results import Results
 from geoves.domain.survey import Curve, Pick
 from geoves.domain.tops import PickOpinion, UnitColumn
 from geoves.domain.units import Role, Template
@@ -224,3 +225,13 @@ def _capital(words: str) -> str:
 def _small(name: str) -> str:
     """A name within a sentence: its capital goes unless more of the word is in capitals."""
     return name[:1].lower() + name[1:] if name[1:2].islower() else name
+
+
+def doubted_rows(results: Results) -> dict[tuple[str, int], str]:
+    """The checks that doubt a reading, by its sounding and its row, in words."""
+    readings = results.region.typed_inputs.get("readings", "readings")
+    found: dict[tuple[str, int], list[str]] = {}
+    for doubt in results.doubts:
+        if doubt.file == readings and doubt.row and doubt.check:
+            found.setdefault((doubt.place, doubt.row), []).append(doubt.check.replace("_", " "))
+    return {key: ", ".join(dict.fromkeys(checks)) for key, checks in found.items()}

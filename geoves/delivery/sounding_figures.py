@@ -1,5 +1,7 @@
 """The three drawings of a sounding's strip, as SVG: its curve, its models, and what the ground may be."""
 
+from collections.abc import Mapping
+
 import attrs
 import numpy as np
 
@@ -77,8 +79,14 @@ def respond(curve: Curve, inverted: Inverted, members: np.ndarray) -> FloatArray
     return responses * segment_factors(curve, inverted)
 
 
-def draw_curve(sounding: Sounding, inverted: Inverted, unit: LengthUnit) -> Markup:
-    """AB/2 against apparent resistivity: readings by segment with error bars, the fit, curves that fit as well."""
+def draw_curve(
+    sounding: Sounding, inverted: Inverted, unit: LengthUnit, doubted: Mapping[int, str] | None = None
+) -> Markup:
+    """AB/2 against apparent resistivity: readings by segment with error bars, the fit, curves that fit as well.
+
+    doubted : the checks that doubt a reading, by its row in the table; such a reading is hollow as those set aside are
+    """
+    doubted = doubted or {}
     curve, metres = sounding.curve, METRES[unit]
     spacing, rho = curve.half_spacing / metres, curve.apparent_resistivity
     with np.errstate(invalid="ignore"):
@@ -94,7 +102,10 @@ def draw_curve(sounding: Sounding, inverted: Inverted, unit: LengthUnit) -> Mark
         of_segment = curve.segment == segment
         parts.append(frame.line(spacing[of_segment], fitted[of_segment], "fit"))
     aside = readings_aside(curve, inverted)
-    parts += [_reading(frame, curve, int(i), metres, aside=bool(aside[i])) for i in np.flatnonzero(drawable)]
+    doubts = [doubted.get(int(row), "") for row in curve.row] or [""] * aside.size
+    parts += [
+        _reading(frame, curve, int(i), metres, aside=bool(aside[i]), doubt=doubts[i]) for i in np.flatnonzero(drawable)
+    ]
     title = (
         f"Sounding curve of {sounding.name}: apparent resistivity against AB/2, {int(curve.used.sum())} readings used"
     )
@@ -111,11 +122,11 @@ def _curve_fan(frame: Frame, sounding: Sounding, inverted: Inverted, metres: flo
     return element("path", {"d": data, "class": "fan"})
 
 
-def _reading(frame: Frame, curve: Curve, i: int, metres: float, *, aside: bool) -> Markup:
+def _reading(frame: Frame, curve: Curve, i: int, metres: float, *, aside: bool, doubt: str) -> Markup:
     x = float(frame.x.pixel(curve.half_spacing[i] / metres))
     rho, error = curve.apparent_resistivity[i], curve.relative_error[i]
     y = float(frame.y.pixel(rho))
-    style = f"reading segment-{int(curve.segment[i]) % 4}{' aside' if aside else ''}"
+    style = f"reading segment-{int(curve.segment[i]) % 4}{' aside' if aside or doubt else ''}"
     bar = ""
     if np.isfinite(error):
         low, high = frame.y.pixel([rho * np.exp(-error), rho * np.exp(error)])
@@ -125,6 +136,8 @@ def _reading(frame: Frame, curve: Curve, i: int, metres: float, *, aside: bool) 
         words += f"; not used: {curve.reason[i] if i < len(curve.reason) else ''}"
     elif aside:
         words += "; set aside by the robust fit"
+    if doubt:
+        words += f"; doubted: {doubt}"
     mark = {"d": mark_path(int(curve.segment[i]), x, y), "class": style}
     return joined([bar, element("path", mark, element("title", {}, words))])
 
