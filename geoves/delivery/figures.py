@@ -1,5 +1,6 @@
 """The report's figures of the statistics, as SVG: variograms, and places left out in turn."""
 
+import attrs
 import numpy as np
 
 from geoves.delivery.markup import Markup, element
@@ -18,7 +19,10 @@ HEIGHT, TOP, BOTTOM = 300, 12, 262
 
 
 def draw_variogram(variogram: Variogram, crs_unit: str) -> Markup:
-    """Experimental semivariance with the number of pairs at each lag, and the fitted model along and across."""
+    """Experimental semivariance with the number of pairs at each lag, and the fitted model along and across.
+
+    Small marks are the same by direction, along and across; the thin line is the fit to the marks by least squares.
+    """
     lag, semivariance = variogram.lag, variogram.semivariance
     known = np.isfinite(lag) & np.isfinite(semivariance)
     sill = variogram.nugget + variogram.partial_sill
@@ -31,6 +35,15 @@ def draw_variogram(variogram: Variogram, crs_unit: str) -> Markup:
     for ratio, style in ((1.0, "fit"), (variogram.ratio, "fit across")):
         length = max(variogram.length * ratio, 1e-9)
         parts.append(frame.line(distances, modelled_semivariance(variogram, distances / length), style))
+    if variogram.least_squares is not None:
+        nugget, partial_sill, length = variogram.least_squares
+        by_pairs = attrs.evolve(variogram, nugget=nugget, partial_sill=partial_sill)
+        parts.append(frame.line(distances, modelled_semivariance(by_pairs, distances / length), "by-pairs"))
+    for i, direction in enumerate(variogram.directions):
+        for at, value in zip(direction.lag, direction.semivariance, strict=True):
+            if np.isfinite(value) and value <= highest:
+                x, y = float(frame.x.pixel(at)), float(frame.y.pixel(value))
+                parts.append(element("path", {"d": mark_path(1 + i, x, y), "class": f"direction-{i}"}))
     for at, value, pairs in zip(lag[known], semivariance[known], variogram.pairs[known], strict=True):
         x, y = float(frame.x.pixel(at)), float(frame.y.pixel(value))
         parts += [

@@ -46,7 +46,13 @@ def _variogram_in_unit(results: Results, variogram: Variogram) -> Variogram:
         nugget=variogram.nugget / square,
         partial_sill=variogram.partial_sill / square,
         semivariance=variogram.semivariance / square,
+        least_squares=_per_square(variogram.least_squares, square),
+        directions=tuple(attrs.evolve(one, semivariance=one.semivariance / square) for one in variogram.directions),
     )
+
+
+def _per_square(fit: tuple[float, float, float] | None, square: float) -> tuple[float, float, float] | None:
+    return None if fit is None else (fit[0] / square, fit[1] / square, fit[2])
 
 
 def _cross_validation_in_unit(results: Results, crossed: CrossValidation) -> CrossValidation:
@@ -87,7 +93,17 @@ def _variogram_words(variogram: Variogram, crs_unit: str) -> str:
     if variogram.ratio != 1.0:
         said += f" (line) and {variogram.ratio:.2f} times that across (dashed)"
     remark = f"; {variogram.remark}" if variogram.remark else ""
-    return f"{said}; {variogram.n_data} data{remark}. Over each mark stands its number of pairs."
+    marks = "Over each mark stands its number of pairs."
+    if variogram.directions:
+        along, across = (one.azimuth_deg for one in variogram.directions)
+        marks += f" Small marks: pairs towards {along:.0f}° (squares) and {across:.0f}° (triangles)."
+    if variogram.least_squares is not None:
+        nugget, partial_sill, length = variogram.least_squares
+        marks += (
+            f" Thin line: the same model fitted to the marks by least squares, errors of the data in it: nugget "
+            f"{nugget:.4g}, partial sill {partial_sill:.4g}, length {length:,.0f} {crs_unit}."
+        )
+    return f"{said}; {variogram.n_data} data{remark}. {marks}"
 
 
 def _misfit_table(crossed: CrossValidation) -> Markup:

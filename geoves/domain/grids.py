@@ -72,11 +72,23 @@ class Surface:
 
 
 @attrs.frozen
+class DirectionalVariogram:
+    """An experimental variogram of the pairs within 45° of an azimuth (clockwise from north); (bins,) each."""
+
+    azimuth_deg: float
+    lag: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    semivariance: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
+    pairs: IntArray = attrs.field(converter=integers, eq=by_value, repr=shape)
+
+
+@attrs.frozen
 class Variogram:
     """A variogram as estimated and as fitted, of the kriged quantity `title` (in `unit` squared).
 
     lag, semivariance and pairs (bins,) are experimental. The fitted model is `model` with `nugget`, `partial_sill`
     and practical `length` along `azimuth_deg` (clockwise from north), `ratio` times that across it.
+    least_squares : nugget, partial sill and length of the same model fitted to the experimental one, errors of the data
+    in it; None where that cannot be done      directions : along the fitted azimuth and across it
     """
 
     title: str
@@ -92,6 +104,8 @@ class Variogram:
     semivariance: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
     pairs: IntArray = attrs.field(converter=integers, eq=by_value, repr=shape)
     remark: str = ""
+    least_squares: tuple[float, float, float] | None = None
+    directions: tuple[DirectionalVariogram, ...] = ()
 
 
 @attrs.frozen

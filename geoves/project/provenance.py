@@ -94,6 +94,13 @@ def _judge(crossed: CrossValidation) -> dict[str, Any]:
     suffix = "m" if crossed.unit == "m" else "ln"
     figures[f"leave_one_out_rmse_{suffix}"] = float(np.sqrt(np.mean(residual**2)))
     figures["leave_one_out_share_within_90_percent_band"] = float(np.mean(inside))
+    wells = np.array([kind != "sounding" for kind in crossed.kind], dtype=bool)
+    for name, rows in (("soundings", ~wells), ("wells_and_picks", wells)):
+        if rows.any():
+            standardised = residual[rows] / crossed.standard_error[rows]
+            figures[f"{name}_places"] = int(rows.sum())
+            figures[f"{name}_standardised_rms"] = float(np.sqrt(np.mean(standardised**2)))
+            figures[f"{name}_share_within_90_percent_band"] = float(np.mean(inside[rows]))
     return figures
 
 

@@ -12,7 +12,7 @@ from geoves.domain.tops import Interpretation
 from geoves.domain.units import Role, Template
 from geoves.errors import EngineError
 from geoves.surfaces.canvas import Canvas, choose_reach, find_covered, find_ground
-from geoves.surfaces.checks import cross_validate, describe_variogram
+from geoves.surfaces.checks import calibrate_on_wells, cross_validate, describe_variogram
 from geoves.surfaces.closed_forms import bedrock_surfaces, gravel_surfaces, shallow_surfaces
 from geoves.surfaces.evidence import (
     Evidence,
@@ -76,7 +76,7 @@ def build_surfaces(
         ground=ground,
         covered=covered,
         surfaces={surface.name: surface for surface in [*surfaces, *overburden]},
-        variograms=tuple(describe_variogram(evidence, result) for evidence, result in found.kriged),
+        variograms=tuple(describe_variogram(evidence, result, options) for evidence, result in found.kriged),
         cross_validations=tuple(cross_validate(evidence, result, options) for evidence, result in found.kriged),
         reach=reach,
         remarks=(*remarks, *found.remarks, *said),
@@ -96,6 +96,9 @@ def _krige_county(
     basal, shared_deviation, tied = tie_to_wells(basal, options)
     remarks = [*tied]
     contact = krige_quantity(basal)
+    calibration = calibrate_on_wells(basal, contact, options)
+    remarks.append(calibration.words)
+    contact = contact._replace(deviation=calibration.factor * contact.deviation)
     if shared_deviation:
         # The doubt about the tie does not average out over soundings: a cell has it as far as it rests on them.
         by_curve = np.array([kind == "sounding" for kind in (*basal.kind, *basal.bound_kind)], dtype=float)

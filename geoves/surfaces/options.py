@@ -17,6 +17,7 @@ class SurfaceOptions:
     probable             the shallow aquifer's resistivity is drawn where its presence is at least this probable
     bound_deviation      softness of a bound on log depth
     tie_deviation        by how much (natural log) all soundings together may differ from the wells; 0 not to tie them
+    calibrate_bands      whether bands that wells left out prove too narrow are widened
     fewest_wells         wells and picks with a depth that the tie needs
     absence_deviation    softness (m) of an absence
     fewest               data that a fitted covariance needs
@@ -36,6 +37,7 @@ class SurfaceOptions:
     probable: float = attrs.field(default=0.5, validator=[attrs.validators.gt(0), attrs.validators.lt(1)])
     bound_deviation: float = attrs.field(default=0.05, validator=attrs.validators.gt(0))
     tie_deviation: float = attrs.field(default=0.1, validator=attrs.validators.ge(0))
+    calibrate_bands: bool = True
     fewest_wells: int = attrs.field(default=4, validator=attrs.validators.ge(2))
     absence_deviation: float = attrs.field(default=0.5, validator=attrs.validators.gt(0))
     fewest: int = attrs.field(default=5, validator=attrs.validators.ge(3))
