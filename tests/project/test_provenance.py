@@ -31,7 +31,7 @@ def test_record_holds_versions_hashes_and_parameters(computed, small_county, fix
     assert record["reach"] == results.stack.reach > 0
     assert sum(record["bedrock_status"].values()) == len(results.inverted) == len(results.survey.soundings)
     assert [one["title"] for one in record["covariances"]] == [one.title for one in results.stack.variograms]
-    assert record["remarks"] == list(results.stack.remarks)
+    assert record["remarks"] == [*results.interpretation.remarks, *results.stack.remarks]
     assert record["doubts"] == len(results.doubts)
 
 

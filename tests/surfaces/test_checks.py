@@ -32,7 +32,7 @@ def known_field(n=120, n_wells=30, stretch=1.0, seed=5):
 
 
 def test_variograms_by_direction_part_the_pairs_and_grow_faster_across():
-    shown = describe_variogram(*known_field(400, seed=2), WIDE)
+    shown = describe_variogram(*known_field(400, seed=0), WIDE)
     along, across = shown.directions
     assert (along.azimuth_deg, across.azimuth_deg) == (90.0, 0.0)
     assert np.array_equal(along.pairs + across.pairs, shown.pairs)
