@@ -92,7 +92,7 @@ def _gaussian(h: FloatArray) -> tuple[FloatArray, FloatArray]:
 
 
 # Each gives the correlation at h = distance / length, and -h times its slope.
-_CORRELATIONS: dict[str, Callable[[FloatArray], tuple[FloatArray, FloatArray]]] = {
+CORRELATIONS: dict[str, Callable[[FloatArray], tuple[FloatArray, FloatArray]]] = {
     "matern32": _matern32,
     "exponential": _exponential,
     "spherical": _spherical,
@@ -240,17 +240,6 @@ def variance_between_places(values: FloatArray, error_variance: FloatArray) -> f
     return float(brentq(excess, floor, 2.0 * seen * len(values) + floor, rtol=1e-6))
 
 
-class _Restricted(NamedTuple):
-    """A restricted-likelihood problem, centred and scaled to unit variance and unit extent."""
-
-    model: str
-    north2_plus: FloatArray  # dn² + de²
-    north2_minus: FloatArray  # dn² - de²
-    cross: FloatArray  # 2 dn de
-    values: FloatArray
-    error_variance: FloatArray
-
-
 # Widths of the weak priors, in natural logs: a factor 4.5 for the sill about the variance between places, a factor e
 # for the length about a third of the extent, a factor 2.2 for the ratio about 1.
 _SILL_WIDTH = 1.5
@@ -266,8 +255,27 @@ _SCOUTS = 150
 FEWEST_FOR_DIRECTION = 20
 
 
-def _squared_distances(
-    problem: _Restricted, log_length: float, p: float, q: float
+class SquaredDistances(NamedTuple):
+    """Over pairs (n, n), in units of the extent: dn² + de², dn² - de² and 2 dn de of northing and easting."""
+
+    plus: FloatArray
+    minus: FloatArray
+    cross: FloatArray
+
+    def take(self, count: int) -> "SquaredDistances":
+        """Those of the first `count` places."""
+        square = (slice(count), slice(count))
+        return SquaredDistances(*(values[square] for values in self))
+
+
+def square_distances(points: FloatArray, extent: float) -> SquaredDistances:
+    """Of `points` (n, 2) over `extent`."""
+    east, north = (np.subtract.outer(axis, axis) for axis in (points - points.mean(axis=0)).T / extent)
+    return SquaredDistances(north**2 + east**2, north**2 - east**2, 2.0 * north * east)
+
+
+def stretch_distances(
+    squares: SquaredDistances, log_length: float, p: float, q: float
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Squared distances in lengths d' exp(-S) d / length², S = ((p, q), (q, -p)) over north and east; with its
     derivatives by p and q. The length is the geometric mean, exp(-|S|) the ratio, so that isotropy is smooth.
@@ -275,12 +283,28 @@ def _squared_distances(
     a = float(np.hypot(p, q))
     g = float(np.sinh(a) / a) if a > 1e-4 else 1.0 + a * a / 6.0
     k = float((np.cosh(a) - g) / (a * a)) if a > 1e-2 else 1.0 / 3.0 + a * a / 30.0
-    turned = p * problem.north2_minus + q * problem.cross
+    turned = p * squares.minus + q * squares.cross
     scale = np.exp(-2.0 * log_length)
-    squared = scale * (np.cosh(a) * problem.north2_plus - g * turned)
-    by_p = scale * (g * p * problem.north2_plus - k * p * turned - g * problem.north2_minus)
-    by_q = scale * (g * q * problem.north2_plus - k * q * turned - g * problem.cross)
+    squared = scale * (np.cosh(a) * squares.plus - g * turned)
+    by_p = scale * (g * p * squares.plus - k * p * turned - g * squares.minus)
+    by_q = scale * (g * q * squares.plus - k * q * turned - g * squares.cross)
     return np.maximum(squared, 0.0), by_p, by_q
+
+
+def unpack_direction(log_length: float, p: float, q: float) -> tuple[float, float, float]:
+    """Length along the longest continuity (in extents), its azimuth in degrees and the ratio, from log_length, p, q."""
+    elongation = float(np.hypot(p, q))
+    azimuth = float(np.rad2deg(0.5 * np.arctan2(q, p)) % 180.0)
+    return float(np.exp(log_length + 0.5 * elongation)), azimuth, float(np.exp(-elongation))
+
+
+class _Restricted(NamedTuple):
+    """A restricted-likelihood problem, centred and scaled to unit variance and unit extent."""
+
+    model: str
+    squares: SquaredDistances
+    values: FloatArray
+    error_variance: FloatArray
 
 
 def _negative_restricted(parameters: FloatArray, problem: _Restricted) -> tuple[float, FloatArray]:
@@ -290,8 +314,8 @@ def _negative_restricted(parameters: FloatArray, problem: _Restricted) -> tuple[
     geostatistics Kitanidis 1983, Water Resources Research 19, 909-921 (both from memory).
     """
     partial_sill, nugget = np.exp(parameters[:2])
-    squared, by_p, by_q = _squared_distances(problem, *parameters[2:])
-    rho, fall = _CORRELATIONS[problem.model](np.sqrt(squared))
+    squared, by_p, by_q = stretch_distances(problem.squares, *parameters[2:])
+    rho, fall = CORRELATIONS[problem.model](np.sqrt(squared))
     n = len(problem.values)
     noise = nugget + np.maximum(problem.error_variance, ERROR_FLOOR * (partial_sill + nugget))
     factor = cholesky(partial_sill * rho + np.diag(noise), lower=True, check_finite=False)
@@ -341,14 +365,8 @@ def _chosen_rows(points: FloatArray, values: FloatArray) -> IntArray:
 
 def _first(problem: _Restricted, count: int) -> _Restricted:
     """The same problem for its first `count` data alone."""
-    square, row = (slice(count), slice(count)), slice(count)
     return _Restricted(
-        problem.model,
-        problem.north2_plus[square],
-        problem.north2_minus[square],
-        problem.cross[square],
-        problem.values[row],
-        problem.error_variance[row],
+        problem.model, problem.squares.take(count), problem.values[:count], problem.error_variance[:count]
     )
 
 
@@ -375,7 +393,7 @@ def _search(problem: _Restricted, pinned: FloatArray, *, anisotropic: bool) -> F
 
     pinned : (5,), NaN where a parameter is free
     """
-    nearest = np.sqrt(np.median(np.min(np.where(problem.north2_plus > 0.0, problem.north2_plus, 4.0), axis=1)))
+    nearest = np.sqrt(np.median(np.min(np.where(problem.squares.plus > 0.0, problem.squares.plus, 4.0), axis=1)))
     shortest, longest = np.log(0.5 * nearest), np.log(3.0)
     limit = _RATIO_LIMIT if anisotropic else 0.0
     bounds = [(-7.0, 5.0), (-14.0, 3.0), (min(shortest, -2.0), longest), (-limit, limit), (-limit, limit)]
@@ -414,29 +432,18 @@ def fit_by_restricted_likelihood(
     """
     rows = _chosen_rows(points, values)
     points, values, error_variance = points[rows], values[rows], error_variance[rows]
-    centred = points - points.mean(axis=0)
-    extent = float(np.hypot(*np.ptp(centred, axis=0)))
+    extent = float(np.hypot(*np.ptp(points, axis=0)))
     variance = variance_between_places(values, error_variance)
-    east, north = (np.subtract.outer(axis, axis) for axis in centred.T / extent)
     problem = _Restricted(
         model,
-        north**2 + east**2,
-        north**2 - east**2,
-        2.0 * north * east,
+        square_distances(points, extent),
         (values - np.median(values)) / np.sqrt(variance),
         error_variance / variance,
     )
     best = _search(problem, _pin(stated, variance, extent), anisotropic=anisotropic)
-    p, q = best[3:]
-    elongation = float(np.hypot(p, q))
-    covariance = Covariance(
-        model,
-        nugget=float(np.exp(best[1]) * variance),
-        partial_sill=float(np.exp(best[0]) * variance),
-        length=float(np.exp(best[2] + 0.5 * elongation) * extent),
-        azimuth_deg=float(np.rad2deg(0.5 * np.arctan2(q, p)) % 180.0),
-        ratio=float(np.exp(-elongation)),
-    )
+    length, azimuth_deg, ratio = unpack_direction(*best[2:])
+    sill, nugget = (float(one) * variance for one in np.exp(best[:2]))
+    covariance = Covariance(model, nugget, sill, length * extent, azimuth_deg, ratio)
     constant = 0.5 * (len(values) - 1) * np.log(2.0 * np.pi * variance)
     return stated.state(covariance), -_negative_restricted(best, problem)[0] - float(constant)
 

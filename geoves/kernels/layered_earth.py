@@ -108,13 +108,8 @@ def _weights(half_spacing: bytes, potential_half_spacing: bytes, wavenumber_byte
     return np.asarray(weights)
 
 
-def response(weights: Floats, wavenumber: Floats, thickness: Floats, resistivity: Floats) -> Floats:
-    """Apparent resistivity (ohm m), (b, n), of b models at b (or one) sets of n layouts.
-
-    weights : (b or 1, n, l) from `response_weights`    wavenumber : (l,) 1/m
-    thickness : (b, k-1) m    resistivity : (b, k) ohm m, top first
-    Inputs are trusted: positive and finite, k >= 1. Checked in tests/published and tests/reference.
-    """
+def _excess_transform(wavenumber: Floats, thickness: Floats, resistivity: Floats) -> Floats:
+    """The resistivity transform less the first layer's resistivity, (b, l), from the base upward."""
     transform = np.broadcast_to(resistivity[:, -1:], (resistivity.shape[0], wavenumber.size))
     excess = np.zeros_like(transform)
     for i in range(resistivity.shape[1] - 2, -1, -1):
@@ -122,9 +117,30 @@ def response(weights: Floats, wavenumber: Floats, thickness: Floats, resistivity
         echo = (transform - rho) / (transform + rho) * np.exp(-2.0 * wavenumber * thickness[:, i, None])
         excess = 2.0 * rho * echo / (1.0 - echo)
         transform = rho + excess
+    return excess
+
+
+def response(weights: Floats, wavenumber: Floats, thickness: Floats, resistivity: Floats) -> Floats:
+    """Apparent resistivity (ohm m), (b, n), of b models at b (or one) sets of n layouts.
+
+    weights : (b or 1, n, l) from `response_weights`    wavenumber : (l,) 1/m
+    thickness : (b, k-1) m    resistivity : (b, k) ohm m, top first
+    Inputs are trusted: positive and finite, k >= 1. Checked in tests/published and tests/reference.
+    """
+    excess = _excess_transform(wavenumber, thickness, resistivity)
     if len(weights) == 1:  # one layout for all: a plain product of matrices
         return np.asarray(resistivity[:, :1] + excess @ weights[0].T)
     return np.asarray(resistivity[:, :1] + np.matmul(weights, excess[..., None])[..., 0])
+
+
+def response_of_many(weights: Floats, wavenumber: Floats, thickness: Floats, resistivity: Floats) -> Floats:
+    """Apparent resistivity (ohm m), (b, m, n), of m models at each of b sets of n layouts.
+
+    weights : (b, n, l)    wavenumber : (l,) 1/m    thickness : (b, m, k-1) m    resistivity : (b, m, k) ohm m
+    """
+    b, m, k = resistivity.shape
+    excess = _excess_transform(wavenumber, thickness.reshape(b * m, k - 1), resistivity.reshape(b * m, k))
+    return np.asarray(resistivity[:, :, :1] + np.matmul(excess.reshape(b, m, -1), weights.transpose(0, 2, 1)))
 
 
 def response_and_sensitivity(

@@ -1,0 +1,200 @@
+"""What each place says by itself, as a cloud of weighed unknowns: found by damped Gauss-Newton, sampled by an
+incremental mixture.
+
+A cloud is drawn once about the most probable unknowns under some normal prior, with its likelihoods and the density
+that it was drawn from. Under another prior, as long as that is not too different, it needs only new weights: the
+costly responses are not computed again.
+"""
+
+from collections.abc import Sequence
+from typing import NamedTuple
+
+import numpy as np
+from scipy.special import gammaln
+
+from geoves.kernels.joint_state import ColumnOrder, Floats, Integers, LocalState, Places, evaluate, log_likelihood
+
+# Degrees of freedom of the first and of later parts of the mixture, and how much wider the first is than the curvature.
+FREEDOM, WIDENING = 6.0, 1.1
+LONGEST_STEP = 1.0  # in prior deviations and natural logs alike
+TOLERANCE = 1e-3  # of the objective, nats
+# Models whose responses are computed at a time: their arrays stay in the processor's cache.
+BLOCK = 512
+
+
+class Normal(NamedTuple):
+    """Normal distributions of b places: mean (b, p), precision (b, p, p)."""
+
+    mean: Floats
+    precision: Floats
+
+    def take(self, rows: Integers) -> "Normal":
+        return Normal(self.mean[rows], self.precision[rows])
+
+    def log_density(self, unknowns: Floats) -> Floats:
+        """(b, m) at unknowns (b, m, p)."""
+        away = unknowns - self.mean[:, None]
+        _, log_determinant = np.linalg.slogdet(self.precision)
+        square = np.einsum("bmp,bmp->bm", np.matmul(away, self.precision), away)
+        return np.asarray(0.5 * (log_determinant - self.mean.shape[1] * np.log(2.0 * np.pi))[:, None] - 0.5 * square)
+
+
+class LocalFit(NamedTuple):
+    """The most probable unknowns (b, p), minus their log posterior (b,), and its curvature (b, p, p)."""
+
+    unknowns: Floats
+    objective: Floats
+    curvature: Floats
+    robust_weight: Floats
+
+
+class Cloud(NamedTuple):
+    """Unknowns (b, m, p) with their log likelihood and the log density they were drawn from (b, m)."""
+
+    unknowns: Floats
+    log_likelihood: Floats
+    log_proposal: Floats
+
+
+def _objective(state: LocalState, unknowns: Floats, prior: Normal) -> tuple[Floats, Floats, Floats]:
+    away = unknowns - prior.mean
+    pull = np.matmul(prior.precision, away[..., None])[..., 0]
+    value = -state.log_likelihood + 0.5 * np.sum(away * pull, axis=1)
+    return value, state.gradient - pull, state.curvature + prior.precision
+
+
+def fit_places(start: Floats, prior: Normal, places: Places, order: ColumnOrder, iterations: int = 40) -> LocalFit:
+    """The most probable unknowns near `start` (b, p), by damped Gauss-Newton with a step limited in length."""
+    unknowns = np.clip(start, places.lowest, places.highest)
+    state = evaluate(unknowns, places, order)
+    value, gradient, curvature = _objective(state, unknowns, prior)
+    robust = state.robust_weight.copy()
+    damping = np.full(len(unknowns), 0.1)
+    active = np.arange(len(unknowns))
+    reach = LONGEST_STEP * np.maximum(1.0, np.linalg.inv(prior.precision).diagonal(axis1=1, axis2=2) ** 0.5)
+    for _ in range(iterations):
+        those = places.take(active)
+        damped = curvature[active].copy()
+        diagonal = np.arange(damped.shape[1])
+        damped[:, diagonal, diagonal] *= 1.0 + damping[active, None]
+        step = np.linalg.solve(damped, gradient[active][..., None])[..., 0]
+        longest = np.max(np.abs(step) / reach[active], axis=1, keepdims=True)
+        trial = np.clip(unknowns[active] + step / np.maximum(1.0, longest), places.lowest, places.highest)
+        then = evaluate(trial, those, order)
+        new_value, new_gradient, new_curvature = _objective(then, trial, prior.take(active))
+        gain = value[active] - new_value
+        better = gain > 0
+        rows = active[better]
+        unknowns[rows], value[rows] = trial[better], new_value[better]
+        gradient[rows], curvature[rows], robust[rows] = (
+            new_gradient[better], new_curvature[better], then.robust_weight[better],
+        )  # fmt: skip
+        damping[active] = np.clip(damping[active] * np.where(better, 0.3, 5.0), 1e-6, 1e7)
+        active = active[~((better & (gain < TOLERANCE)) | (damping[active] >= 1e7))]
+        if not active.size:
+            break
+    return LocalFit(unknowns, value, curvature, robust)
+
+
+def keep_better(first: LocalFit, second: LocalFit) -> LocalFit:
+    """For each place the fit of the lower objective."""
+    better = second.objective < first.objective
+    return LocalFit(
+        *(np.where(better.reshape(-1, *[1] * (a.ndim - 1)), b, a) for a, b in zip(first, second, strict=True))
+    )
+
+
+class _Part(NamedTuple):
+    """One multivariate t of each place's mixture: centre (b, p), Cholesky factor of its precision (b, p, p)."""
+
+    centre: Floats
+    factor: Floats
+
+    def draw(self, normal: Floats, mixing: Floats) -> Floats:
+        """(b, m, p) from standard normal numbers (b, m, p) and the roots of inverse chi squares (b, m)."""
+        standard = (normal * mixing[..., None]).transpose(0, 2, 1)
+        return np.asarray(
+            self.centre[:, None] + np.linalg.solve(self.factor.transpose(0, 2, 1), standard).transpose(0, 2, 1)
+        )
+
+    def log_density(self, unknowns: Floats) -> Floats:
+        """(b, m) at unknowns (b, m, p)."""
+        p = unknowns.shape[2]
+        square = np.sum(np.matmul(unknowns - self.centre[:, None], self.factor) ** 2, axis=2)
+        log_determinant = np.sum(np.log(np.diagonal(self.factor, axis1=1, axis2=2)), axis=1)
+        constant = gammaln(0.5 * (FREEDOM + p)) - gammaln(0.5 * FREEDOM) - 0.5 * p * np.log(FREEDOM * np.pi)
+        return np.asarray(constant + log_determinant[:, None] - 0.5 * (FREEDOM + p) * np.log1p(square / FREEDOM))
+
+
+def draw_clouds(
+    fits: Sequence[LocalFit],
+    prior: Normal,
+    places: Places,
+    order: ColumnOrder,
+    generators: Sequence[np.random.Generator],
+    size: tuple[int, int, int],
+) -> Cloud:
+    """Clouds of b places; `size`: draws at each fit, rounds after it, draws of each round.
+
+    Each round adds a multivariate t at the draw that is heaviest under the mixture so far, with the curvature found
+    there: incremental mixture importance sampling (Raftery and Bao 2010, Biometrics 66, 1162-1173, from memory).
+    """
+    first, rounds, more = size
+    p = fits[0].unknowns.shape[1]
+    parts = [_Part(fit.unknowns, np.asarray(np.linalg.cholesky(fit.curvature) / WIDENING)) for fit in fits]
+    counts = [first] * len(fits)
+    unknowns = np.concatenate([part.draw(*_normal_numbers(generators, first, p)) for part in parts], axis=1)
+    log_l = _log_likelihoods(unknowns, places, order)
+    log_prior = prior.log_density(unknowns)
+    log_mixture = np.logaddexp.reduce([np.log(first) + part.log_density(unknowns) for part in parts])
+    for _ in range(rounds):
+        weight = log_l + log_prior - log_mixture
+        heaviest = np.take_along_axis(unknowns, np.argmax(weight, axis=1)[:, None, None], axis=1)[:, 0]
+        curvature = evaluate(heaviest, places, order).curvature + prior.precision
+        part = _Part(heaviest, np.asarray(np.linalg.cholesky(curvature)))
+        drawn = part.draw(*_normal_numbers(generators, more, p))
+        old = np.logaddexp(log_mixture, np.log(more) + part.log_density(unknowns))
+        parts.append(part)
+        counts.append(more)
+        densities = [np.log(n) + one.log_density(drawn) for n, one in zip(counts, parts, strict=True)]
+        log_mixture = np.concatenate([old, np.logaddexp.reduce(densities)], axis=1)
+        unknowns = np.concatenate([unknowns, drawn], axis=1)
+        log_l = np.concatenate([log_l, _log_likelihoods(drawn, places, order)], axis=1)
+        log_prior = np.concatenate([log_prior, prior.log_density(drawn)], axis=1)
+    return Cloud(unknowns, log_l, log_mixture - np.log(sum(counts)))
+
+
+def _normal_numbers(generators: Sequence[np.random.Generator], count: int, p: int) -> tuple[Floats, Floats]:
+    normal = np.array([one.standard_normal((count, p)) for one in generators])
+    mixing = np.array([np.sqrt(FREEDOM / one.chisquare(FREEDOM, count)) for one in generators])
+    return normal, mixing
+
+
+def _log_likelihoods(unknowns: Floats, places: Places, order: ColumnOrder) -> Floats:
+    """(b, m) at unknowns (b, m, p), a few places at a time."""
+    step = max(1, BLOCK // unknowns.shape[1])
+    parts = [np.arange(i, min(i + step, len(unknowns))) for i in range(0, len(unknowns), step)]
+    return np.concatenate([log_likelihood(unknowns[rows], places.take(rows), order) for rows in parts])
+
+
+class Weighed(NamedTuple):
+    """A cloud under a prior: normalised weights (b, m), log evidence (b,), effective size (b,)."""
+
+    weight: Floats
+    log_evidence: Floats
+    effective_size: Floats
+
+
+def weigh(cloud: Cloud, prior: Normal) -> Weighed:
+    """Weights of a cloud under a normal prior of its unknowns (Kish's effective size)."""
+    log_weight = cloud.log_likelihood + prior.log_density(cloud.unknowns) - cloud.log_proposal
+    total = np.logaddexp.reduce(log_weight, axis=1)
+    weight = np.exp(log_weight - total[:, None])
+    return Weighed(weight, total - np.log(weight.shape[1]), 1.0 / np.sum(weight**2, axis=1))
+
+
+def moments(unknowns: Floats, weight: Floats) -> tuple[Floats, Floats]:
+    """Mean (b, p) and covariance (b, p, p) of weighed unknowns (b, m, p)."""
+    mean = np.einsum("bm,bmp->bp", weight, unknowns)
+    away = unknowns - mean[:, None]
+    return mean, np.matmul((away * weight[..., None]).transpose(0, 2, 1), away)
