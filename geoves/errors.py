@@ -6,6 +6,7 @@
     ├── InputError(ValueError)    the tables, rasters or region.toml are wrong: one line a fault, all at once
     ├── FormatError(ValueError)   a file is not what its name says
     ├── EngineError(RuntimeError) a step could not be computed from inputs that are right
+    │   └── NotInferredError      the places together say too little; each still speaks for itself
     └── DeliveryError(OSError)    the delivery could not be written
 """
 
@@ -30,6 +31,10 @@ class FormatError(GeovesError, ValueError):
 
 class EngineError(GeovesError, RuntimeError):
     """A step could not be computed although its inputs are right."""
+
+
+class NotInferredError(EngineError):
+    """No one geology could be inferred from all places; what each says by itself is not touched by that."""
 
 
 class DeliveryError(GeovesError, OSError):

@@ -10,6 +10,8 @@ import attrs
 from geoves.domain.units import Template
 
 LengthUnit = Literal["m", "ft", "us-ft"]
+# Of inference: one geology from all places, or each place by itself.
+Method = Literal["together", "each"]
 
 # Metres in one unit. The international foot is exact; the US survey foot is 1200/3937 m (NIST SP 811, appendix B.6).
 METRES = MappingProxyType({"m": 1.0, "ft": 0.3048, "us-ft": 1200.0 / 3937.0})
@@ -52,7 +54,7 @@ class Region:
     cell_size: float
     random_seed: int
     template: Template
-    method: Literal["each"] = "each"
+    method: Method = "together"
     delivery: Delivery = Delivery()
     sections: tuple[Section, ...] = ()
     settings: Mapping[str, Mapping[str, Any]] = attrs.field(factory=dict)

@@ -1,0 +1,113 @@
+"""Clouds and cavities as what a person reads of a place: itself, the others, both together."""
+
+from collections.abc import Sequence
+
+import numpy as np
+from scipy.special import ndtri
+from scipy.stats import qmc
+
+from geoves.domain.arrays import FloatArray
+from geoves.domain.fields import JointColumn
+from geoves.geology.evidence import PlaceList
+from geoves.geology.inference import Heard, State, Task
+from geoves.kernels.joint_state import Columns, make_columns, standard_residuals
+
+# Present means at least this thick, m.
+PRESENT = 1.0
+QUANTILES = (0.05, 0.5, 0.95)
+# Normal numbers by which the others' say is turned into columns: a power of two of a Sobol sequence.
+OTHERS_POWER = 8
+
+
+def read_columns(
+    task: Task, listed: PlaceList, state: State, heard: Heard, before: Sequence[JointColumn] | None = None
+) -> tuple[JointColumn, ...]:
+    """A column for every place; `before` are those without picks, if they were heard since."""
+    q = task.order.n_fields
+    cavity_mean, cavity_covariance = (
+        heard.cavity.mean[:, :q],
+        np.asarray(np.linalg.inv(heard.cavity.precision[:, :q, :q])),
+    )
+    n, m = heard.weighed.weight.shape
+    own = make_columns(
+        state.cloud.unknowns[:, :, :q].reshape(n * m, q), np.repeat(task.places.ceiling_depth, m), task.order
+    )
+    others = _columns_of_others(cavity_mean, cavity_covariance, task)
+    misfit = _misfits(task, state, heard)
+    mean, covariance = state.posterior.at_places()
+    resistivity = slice(task.order.first_resistivity, task.order.grading)
+    columns = []
+    for i, (name, kind) in enumerate(zip(listed.names, listed.kinds, strict=True)):
+        trusted = heard.trust[i] >= 0.5
+        rows = slice(i * m, (i + 1) * m)
+        weight = heard.weighed.weight[i]
+        others_here = _take(others, slice(i * 2**OTHERS_POWER, (i + 1) * 2**OTHERS_POWER))
+        here = _take(own, rows) if trusted else others_here
+        share = weight if trusted else np.full(2**OTHERS_POWER, 2.0**-OTHERS_POWER)
+        gravel, others_gravel = here.deep.sum(axis=1), others_here.deep.sum(axis=1)
+        basal = weighted_quantiles(here.basal_depth, share)
+        deviation = np.sqrt(cavity_covariance[i, 0, 0])
+        moved = (mean[i, 0] - cavity_mean[i, 0]) / deviation
+        columns.append(
+            JointColumn(
+                place=name,
+                kind=kind,
+                basal_depth=basal,
+                rock_depth=weighted_quantiles(here.rock_depth, share),
+                gravel_thickness=weighted_quantiles(gravel, share),
+                others_basal_depth=np.quantile(others_here.basal_depth, QUANTILES),
+                gravel_probability=float(share @ (gravel >= PRESENT)),
+                others_gravel_probability=float(np.mean(others_gravel >= PRESENT)),
+                log_resistivity=mean[i, resistivity],
+                log_resistivity_deviation=np.sqrt(np.diagonal(covariance[i])[resistivity]),
+                shift=float(moved),
+                misfit=float(misfit[i]),
+                trust=float(heard.trust[i]),
+                moved_by_picks=0.0 if before is None else _moved(before[i], basal),
+            )
+        )
+    return tuple(columns)
+
+
+def _take(columns: Columns, rows: slice) -> Columns:
+    return Columns(*(values[rows] for values in columns))
+
+
+def _columns_of_others(mean: FloatArray, covariance: FloatArray, task: Task) -> Columns:
+    """Columns (n 2^k) that the others expect at each place, from one even set of normal numbers."""
+    n, q = mean.shape
+    normal = even_normals(q, OTHERS_POWER)
+    factor = np.linalg.cholesky(covariance)
+    fields = mean[:, None] + np.matmul(normal, factor.transpose(0, 2, 1))
+    fields = np.clip(fields, task.places.lowest[:q], task.places.highest[:q])
+    count = len(normal)
+    return make_columns(fields.reshape(n * count, q), np.repeat(task.places.ceiling_depth, count), task.order)
+
+
+def even_normals(dimension: int, power: int) -> FloatArray:
+    """2^power standard normal vectors that fill space evenly: a scrambled Sobol sequence, always the same."""
+    uniform = qmc.Sobol(dimension, scramble=True, rng=np.random.default_rng(0)).random_base2(power)
+    return np.asarray(ndtri(np.clip(uniform, 1e-9, 1.0 - 1e-9)))
+
+
+def weighted_quantiles(values: FloatArray, weight: FloatArray) -> FloatArray:
+    """The 5, 50 and 95 % quantiles (3,) of weighed values (m,)."""
+    order = np.argsort(values)
+    share = np.cumsum(weight[order]) - 0.5 * weight[order]
+    return np.interp(QUANTILES, share, values[order])
+
+
+def _misfits(task: Task, state: State, heard: Heard) -> FloatArray:
+    """Root mean square (n,) of the residuals over their errors at the heaviest unknowns; NaN without a curve."""
+    rows = np.arange(len(task.names))
+    heaviest = state.cloud.unknowns[rows, np.argmax(heard.weighed.weight, axis=1)]
+    residual, weight = standard_residuals(heaviest, task.places, task.order)
+    total = weight.sum(axis=1)
+    return np.where(total > 0, np.sqrt(np.sum(weight * residual**2, axis=1) / np.maximum(total, 1e-12)), np.nan)
+
+
+def _moved(before: JointColumn, basal: FloatArray) -> float:
+    """By how many of its deviations (in logs) the median of the basal contact moved."""
+    low, middle, high = np.log(np.maximum(before.basal_depth, 0.1))
+    deviation = max((high - low) / 3.29, 1e-3)
+    return float((np.log(max(basal[1], 0.1)) - middle) / deviation)

@@ -1,0 +1,279 @@
+"""The joint inference: places and fields hear each other until both agree.
+
+Each place's likelihood is a cloud of weighed unknowns; fields hear it as a normal site (expectation propagation), and
+the fields' covariances are refitted to their posterior moments (expectation maximisation) on the way.
+"""
+
+import zlib
+from collections.abc import Callable, Iterable, Sequence
+from functools import partial
+from typing import Any, NamedTuple
+
+import numpy as np
+
+from geoves.domain.arrays import BoolArray, FloatArray, IntArray
+from geoves.geology.options import GeologyOptions
+from geoves.kernels import latent_fields, local_clouds
+from geoves.kernels.field_priors import FieldPrior, fit_prior, own_covariance
+from geoves.kernels.joint_state import ColumnOrder, Places
+from geoves.kernels.latent_fields import Posterior, Sites
+from geoves.kernels.local_clouds import Cloud, Normal, Weighed
+
+Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
+
+# Deviation, in natural logs, of the factor that a change of MN brings.
+SEGMENT_DEVIATION = 0.05
+# Starts of the search at a place: how far the basal contact (ln m) lies from what is expected, and gravel's presence.
+STARTS = ((-0.5, -1.0), (0.0, 1.0), (0.6, -1.0), (0.6, 1.0))
+# A place that is drawn anew starts with gravel this much there, and this much not.
+PRESENT_AGAIN = 0.7
+# How far a site moves toward what it should be, a round.
+DAMPING = 0.5
+# Rounds before covariances are refitted, from one refit to the next, and at the end without.
+FIRST_REFIT, REFIT_EVERY, ROUNDS_WITHOUT = 3, 3, 5
+# Places are drawn anew every so manieth round.
+REDRAW_EVERY = 2
+
+
+class Task(NamedTuple):
+    """What is to be inferred: n places and the order of their columns; `steadfast` (n,) are never set aside."""
+
+    names: tuple[str, ...]
+    points: FloatArray
+    places: Places
+    order: ColumnOrder
+    margin: float
+    steadfast: BoolArray
+
+
+class State(NamedTuple):
+    """Where an inference stands.
+
+    priors : of the fields    sites : what the places say    relief : (n,) m    posterior : of the fields at all places
+    cloud : of each place    base : (n,) log evidence of each place under the priors alone
+    moved : root mean square movement of the basal contacts in the last rounds, in deviations, the latest last
+    """
+
+    priors: tuple[FieldPrior, ...]
+    sites: Sites
+    relief: FloatArray
+    posterior: Posterior
+    cloud: Cloud
+    base: FloatArray
+    moved: tuple[float, ...] = ()
+
+
+class Heard(NamedTuple):
+    """Each place at the end: what others say of it, its cloud weighed by that, and the trust it has (n,)."""
+
+    cavity: Normal
+    weighed: Weighed
+    trust: FloatArray
+
+
+def infer(
+    task: Task,
+    priors: Sequence[FieldPrior],
+    options: GeologyOptions,
+    map: Map = map,  # noqa: A002 - the seam is named for what it replaces
+) -> State:
+    """Fields and covariances from nothing but the priors."""
+    n, q = len(task.names), task.order.n_fields
+    sites = Sites(np.zeros((n, q, q)), np.zeros((n, q)))
+    relief = np.zeros(n)
+    posterior = _condition(task, priors, sites, relief)
+    cavity = _complete(*latent_fields.cavities(*posterior.at_places(), sites), task)
+    starts = [cavity.mean.copy() for _ in STARTS]
+    for start, (deeper, there) in zip(starts, STARTS, strict=True):
+        start[:, 0] += deeper
+        start[:, task.order.first_presence : task.order.first_deep] = there
+    cloud = _draw(task, np.arange(n), cavity, starts, options, 0, map)
+    base = local_clouds.weigh(cloud, cavity).log_evidence
+    state = State(tuple(priors), sites, relief, posterior, cloud, base)
+    for sweep in range(options.sweeps):
+        state = _hear(task, state, sweep, options, map, refit=sweep < options.sweeps - ROUNDS_WITHOUT)
+        if sweep >= options.sweeps // 2 and _has_settled(state, options):
+            break
+    return state
+
+
+def infer_again(
+    task: Task,
+    state: State,
+    changed: BoolArray,
+    options: GeologyOptions,
+    map: Map = map,  # noqa: A002
+) -> State:
+    """The same after places in `changed` (n,) say something else: their clouds anew, all sites heard, priors kept."""
+    cavity = find_cavity(task, state)
+    rows = np.flatnonzero(changed)
+    cloud = _redraw(task, state.cloud, rows, cavity, options, options.sweeps, map)
+    alone = _complete(*_marginal_priors(task, state.priors, state.relief), task)
+    base = np.where(changed, local_clouds.weigh(cloud, alone).log_evidence, state.base)
+    state = state._replace(cloud=cloud, base=base, moved=())
+    for sweep in range(options.pick_sweeps):
+        state = _hear(task, state, options.sweeps + 1 + sweep, options, map, refit=False)
+    return state
+
+
+def listen(task: Task, state: State, options: GeologyOptions) -> Heard:
+    """How each place stands to the others at the end."""
+    cavity = find_cavity(task, state)
+    weighed = local_clouds.weigh(state.cloud, cavity)
+    return Heard(cavity, weighed, _trust(task, state, weighed, options))
+
+
+def find_cavity(task: Task, state: State) -> Normal:
+    """What all others say of each place, with the prior of its own segments' factors."""
+    return _complete(*latent_fields.cavities(*state.posterior.at_places(), state.sites), task)
+
+
+def has_converged(state: State, options: GeologyOptions) -> bool:
+    """Whether the last rounds left the basal contacts where they were."""
+    return bool(np.mean(state.moved[-2:]) < 2.0 * options.settled)
+
+
+def _has_settled(state: State, options: GeologyOptions) -> bool:
+    return len(state.moved) > ROUNDS_WITHOUT and max(state.moved[-ROUNDS_WITHOUT:]) < options.settled
+
+
+def _hear(task: Task, state: State, sweep: int, options: GeologyOptions, map: Map, *, refit: bool) -> State:  # noqa: A002
+    """One round: cavities, clouds weighed or drawn anew, sites, covariances."""
+    q = task.order.n_fields
+    cavity_mean, cavity_precision = latent_fields.cavities(*state.posterior.at_places(), state.sites)
+    cavity = _complete(cavity_mean, cavity_precision, task)
+    cloud = state.cloud
+    weighed = local_clouds.weigh(cloud, cavity)
+    poor = np.flatnonzero(weighed.effective_size < options.least_effective_size)
+    if poor.size and sweep and sweep % REDRAW_EVERY == 0:
+        cloud = _redraw(task, cloud, poor, cavity, options, sweep, map)
+        weighed = local_clouds.weigh(cloud, cavity)
+    mean, covariance = local_clouds.moments(cloud.unknowns[:, :, :q], weighed.weight)
+    # A covariance from few effective draws is inverted too large.
+    size = weighed.effective_size[:, None, None]
+    covariance = covariance * size / np.maximum(size - 1.0 - q, 0.2 * size)
+    trust = _trust(task, state._replace(cloud=cloud), weighed, options)[:, None]
+    away = mean - cavity_mean
+    spread = (trust * (1.0 - trust) * away)[:, :, None] * away[:, None, :]
+    covariance = trust[..., None] * covariance + (1.0 - trust[..., None]) * np.linalg.inv(cavity_precision) + spread
+    wanted = latent_fields.match(cavity_mean, cavity_precision, cavity_mean + trust * away, covariance)
+    sites = Sites(*(old + DAMPING * (new - old) for old, new in zip(state.sites, wanted, strict=True)))
+    priors = state.priors
+    if refit and sweep >= FIRST_REFIT and sweep % REFIT_EVERY == 0:
+        priors = _refit(task, state)
+    relief = _relief(state.posterior, task.margin) if sweep >= FIRST_REFIT - 1 else state.relief
+    posterior = _condition(task, priors, sites, relief)
+    shift = (posterior.mean[0] - state.posterior.mean[0]) / posterior.deviation(0)
+    moved = (*state.moved, float(np.sqrt(np.mean(shift**2))))
+    return state._replace(priors=priors, sites=sites, relief=relief, posterior=posterior, cloud=cloud, moved=moved)
+
+
+def _trust(task: Task, state: State, weighed: Weighed, options: GeologyOptions) -> FloatArray:
+    """Probability (n,) that each place's evidence is of this ground, not of some other that the priors allow."""
+    against = np.log(options.contradiction / (1.0 - options.contradiction)) + state.base - weighed.log_evidence
+    return np.where(task.steadfast, 1.0, 1.0 / (1.0 + np.exp(np.clip(against, -50.0, 50.0))))
+
+
+def _condition(task: Task, priors: Sequence[FieldPrior], sites: Sites, relief: FloatArray) -> Posterior:
+    mean = np.array([prior.mean for prior in priors])
+    return latent_fields.condition(
+        mean, np.array([own_covariance(prior, task.points, relief) for prior in priors]), sites
+    )
+
+
+def _marginal_priors(task: Task, priors: Sequence[FieldPrior], relief: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Mean (n, q) and precision (n, q, q) of each place's fields before anything is heard."""
+    variance = np.array([own_covariance(prior, task.points, relief).diagonal() for prior in priors]).T
+    mean = np.tile([prior.mean for prior in priors], (len(task.names), 1))
+    return mean, np.eye(len(priors)) / variance[:, None, :]
+
+
+def _refit(task: Task, state: State) -> tuple[FieldPrior, ...]:
+    """Every field's covariance from its posterior moments."""
+    fitted = []
+    for f, prior in enumerate(state.priors):
+        away = state.posterior.mean[f] - prior.mean
+        moment = state.posterior.block(f) + np.outer(away, away)
+        fitted.append(fit_prior(prior, task.points, state.relief, moment))
+    return tuple(fitted)
+
+
+def _relief(posterior: Posterior, margin: float) -> FloatArray:
+    """How far (n,) m the basal contact is expected below the plain."""
+    return np.asarray(np.exp(posterior.mean[0] + 0.5 * posterior.deviation(0) ** 2) - margin)
+
+
+def _complete(mean: FloatArray, precision: FloatArray, task: Task) -> Normal:
+    """Normals of the fields, completed by the prior of the segments' factors."""
+    n, q = mean.shape
+    p = q + task.places.n_factors
+    full_mean, full = np.zeros((n, p)), np.zeros((n, p, p))
+    full_mean[:, :q], full[:, :q, :q] = mean, precision
+    factors = np.arange(q, p)
+    full[:, factors, factors] = SEGMENT_DEVIATION**-2
+    return Normal(full_mean, full)
+
+
+def _redraw(
+    task: Task,
+    cloud: Cloud,
+    rows: IntArray,
+    cavity: Normal,
+    options: GeologyOptions,
+    sweep: int,
+    map: Map,  # noqa: A002
+) -> Cloud:
+    """The clouds with those of some rows drawn anew, from what they had found and from what the others expect."""
+    if not rows.size:
+        return cloud
+    old = Cloud(*(values[rows] for values in cloud))
+    found = np.einsum("bm,bmp->bp", local_clouds.weigh(old, cavity.take(rows)).weight, old.unknowns)
+    presence = slice(task.order.first_presence, task.order.first_deep)
+    there, gone = found.copy(), found.copy()
+    there[:, presence] = np.maximum(found[:, presence], PRESENT_AGAIN)
+    gone[:, presence] = np.minimum(found[:, presence], -PRESENT_AGAIN)
+    starts = [found, cavity.mean[rows], there, gone]
+    fresh = _draw(task, rows, cavity.take(rows), starts, options, sweep, map)
+    renewed = Cloud(*(values.copy() for values in cloud))
+    for values, new in zip(renewed, fresh, strict=True):
+        values[rows] = new
+    return renewed
+
+
+def _draw(
+    task: Task,
+    rows: IntArray,
+    cavity: Normal,
+    starts: Sequence[FloatArray],
+    options: GeologyOptions,
+    sweep: int,
+    map: Map,  # noqa: A002
+) -> Cloud:
+    """Clouds of some places, block by block through the map; every place has a stream of chance of its own."""
+    seeds = [(options.random_seed, zlib.crc32(task.names[row].encode()), sweep) for row in rows]
+    parts = []
+    for i in range(0, len(rows), options.block):
+        part = np.arange(i, min(i + options.block, len(rows)))
+        places = task.places.take(rows[part])
+        parts.append((places, cavity.take(part), [start[part] for start in starts], [seeds[j] for j in part]))
+    size = (options.draws_at_fit, options.rounds, options.draws_a_round)
+    clouds = list(map(partial(_draw_block, order=task.order, size=size), parts))
+    return Cloud(*(np.concatenate(values) for values in zip(*clouds, strict=True)))
+
+
+def _draw_block(
+    part: tuple[Places, Normal, list[FloatArray], list[tuple[int, int, int]]],
+    *,
+    order: ColumnOrder,
+    size: tuple[int, int, int],
+) -> Cloud:
+    places, prior, starts, seeds = part
+    fits = [local_clouds.fit_places(start, prior, places, order) for start in starts]
+    generators = [np.random.default_rng(seed) for seed in seeds]
+    return local_clouds.draw_clouds(fits, prior, places, order, generators, size)
+
+
+def all_priors(priors: Sequence[FieldPrior]) -> tuple[FloatArray, FloatArray]:
+    """Mean and deviation (q,) of each field before anything is heard, drifts included."""
+    total = [prior.covariance.sill + prior.drift_variance + prior.relief_variance for prior in priors]
+    return np.array([prior.mean for prior in priors]), np.sqrt(total)

@@ -1,0 +1,32 @@
+"""What the joint inference may be told, and its defaults."""
+
+import attrs
+
+
+@attrs.frozen
+class GeologyOptions:
+    """sweeps           most rounds in which every place hears all others; covariances are refitted in the first part
+    pick_sweeps         rounds after the interpreter's picks are added
+    settled             the inference has converged when no round moves the basal contacts by more than this, root mean
+                        square in deviations
+    draws_at_fit        unknowns drawn about each most probable model of a place, one of each start
+    rounds              times that the heaviest of them is drawn about
+    draws_a_round       unknowns drawn each time
+    least_effective_size  fewer effective draws than this, and a place is drawn anew
+    contradiction       probability, beforehand, that a place's evidence is not of this ground
+    bound_error         m: softness of a bound from a log
+    members             realisations of all fields that are kept
+    """
+
+    sweeps: int = attrs.field(default=24, validator=attrs.validators.ge(8))
+    pick_sweeps: int = attrs.field(default=8, validator=attrs.validators.ge(2))
+    settled: float = attrs.field(default=0.1, validator=attrs.validators.gt(0))
+    draws_at_fit: int = attrs.field(default=100, validator=attrs.validators.ge(20))
+    rounds: int = attrs.field(default=10, validator=attrs.validators.ge(1))
+    draws_a_round: int = attrs.field(default=60, validator=attrs.validators.ge(10))
+    least_effective_size: float = attrs.field(default=120.0, validator=attrs.validators.gt(20))
+    contradiction: float = attrs.field(default=0.02, validator=[attrs.validators.gt(0), attrs.validators.lt(0.5)])
+    bound_error: float = attrs.field(default=0.5, validator=attrs.validators.gt(0))
+    members: int = attrs.field(default=200, validator=attrs.validators.ge(20))
+    block: int = attrs.field(default=16, validator=attrs.validators.ge(1))
+    random_seed: int = 0
