@@ -167,6 +167,19 @@ def remembered(engine: Map, memory: Memory) -> Map:
     return mapped
 
 
+def remembering(engine: Map, memory: Memory | None) -> Callable[[Callable[..., Any], Any], Any]:
+    """Calls of a function of one argument, with the engine as its map, whose results are remembered as blocks are."""
+
+    def call(function: Callable[..., Any], argument: Any) -> Any:
+        def work_here(work: Callable[..., Any], blocks: Iterable[Any]) -> Iterator[Any]:
+            return (work(block, map=engine) for block in blocks)
+
+        mapped = work_here if memory is None else remembered(work_here, memory)
+        return next(iter(mapped(function, [argument])))
+
+    return call
+
+
 def _recall(memory: Memory, name: str) -> tuple[Any] | None:
     """The remembered result, in a tuple, None where there is none that can be read."""
     content = memory.recall(name)

@@ -4,7 +4,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager, nullcontext
 from math import ceil
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
 import attrs
 import numpy as np
@@ -19,9 +19,15 @@ from geoves.delivery.permit_table import write_permit_table
 from geoves.delivery.rasters import write_rasters
 from geoves.delivery.report_page import write_report_page
 from geoves.delivery.styles import write_styles
+from geoves.domain.earth import Inverted
+from geoves.domain.fields import FieldEnsemble
 from geoves.domain.findings import Finding
+from geoves.domain.grids import SurfaceStack
 from geoves.domain.results import Results
+from geoves.domain.survey import Survey
 from geoves.domain.tops import Interpretation
+from geoves.errors import NotInferredError
+from geoves.geology import infer_geology
 from geoves.interpretation import interpret
 from geoves.inversion import invert
 from geoves.kernels.blocks import cut_blocks
@@ -30,12 +36,12 @@ from geoves.project import provenance
 from geoves.project.engines import Map, open_engine, watched
 from geoves.project.findings import name_inputs
 from geoves.project.inputs import Inputs, read_inputs
-from geoves.project.memory import Memory, open_memory, remembered
+from geoves.project.memory import Memory, open_memory, remembered, remembering
 from geoves.project.progress import Progress, SilentProgress, Summary
 from geoves.project.settings import Settings
 from geoves.project.units_of_logs import claim_unit
 from geoves.reading import fingerprint_files
-from geoves.surfaces import build_surfaces
+from geoves.surfaces import build_surfaces, build_surfaces_together
 
 
 def run(
@@ -63,8 +69,7 @@ def run(
         open_engine(workers, scheduler) as engine,
         nullcontext() if afresh else open_memory(folder) as memory,
     ):
-        recalling = engine if memory is None else remembered(engine, memory)
-        results, record = work_out(inputs, progress, engine, recalling)
+        results, record = work_out(inputs, progress, engine, memory)
         write_all(results, record, staging, progress, engine)
         with _step(progress, "Moving the delivery into place"):
             publish(staging, folder, record)
@@ -75,7 +80,7 @@ def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, A
     """Everything that the delivery is written from, and the record of how it came about."""
     inputs = _read(region_path, progress)
     with open_engine() as engine:
-        return work_out(inputs, progress, engine, engine)
+        return work_out(inputs, progress, engine)
 
 
 def _read(region_path: Path, progress: Progress) -> Inputs:
@@ -83,12 +88,15 @@ def _read(region_path: Path, progress: Progress) -> Inputs:
         return read_inputs(region_path)
 
 
-def work_out(inputs: Inputs, progress: Progress, engine: Map, recalling: Map) -> tuple[Results, dict[str, Any]]:
+def work_out(
+    inputs: Inputs, progress: Progress, engine: Map, memory: Memory | None = None
+) -> tuple[Results, dict[str, Any]]:
     """From the inputs to everything that the delivery is written from, and the record of how it came about.
 
-    engine : the map that blocks of cells go through; recalling : that of blocks of curves, which may know some already
+    engine : the map that blocks go through; memory : of blocks of curves, and of the geology without picks
     """
-    region, settings, grid = inputs.region, inputs.settings, inputs.grid
+    recalling = engine if memory is None else remembered(engine, memory)
+    region, settings = inputs.region, inputs.settings
     survey = assign_errors(inputs.survey)
     examination = examine_survey(survey, region, claim_unit(region.template), settings.curves)
     record = provenance.make_record(region, settings, fingerprint_files(region))
@@ -99,18 +107,19 @@ def work_out(inputs: Inputs, progress: Progress, engine: Map, recalling: Map) ->
         inverted = invert(survey, settings.inversion, map=watched(recalling, step))
     with progress.step("Reading columns from them", (1 + settings.interpretation.calibrate) * n_places) as step:
         interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(recalling, step))
-    with progress.step("Kriging the surfaces", _count_blocks(grid.shape, settings)) as step:
-        stack = build_surfaces(interpretation, survey, template, grid, settings.surfaces, map=watched(engine, step))
+    work = Worked(inputs, survey, inverted, interpretation)
+    geology, stack = _map_surfaces(work, progress, engine, memory)
     with _step(progress, "Drawing contours, valley and permits"):
         layers = derive_layers(stack, survey, region, settings.layers)
     found = [one for one in examination.findings if one.severity == "doubt"]
     doubts = name_inputs([*found, *_doubt_words(interpretation)], region)
     merit = provenance.judge_surfaces(stack)
-    results = Results(region, survey, inverted, interpretation, stack, layers, doubts, merit)
+    results = Results(region, survey, inverted, interpretation, stack, layers, doubts, merit, geology)
     statuses = [column.bedrock_status for column in interpretation.columns]
     record |= {
         "reach": stack.reach,
         "remarks": [*interpretation.remarks, *stack.remarks],
+        "geology": None if geology is None else dict(geology.diagnostics),
         "bedrock_status": provenance.summarise(statuses),
         "noise": inverted[0].noise if inverted else None,
         "error_correlation": inverted[0].error_correlation if inverted else None,
@@ -120,6 +129,46 @@ def work_out(inputs: Inputs, progress: Progress, engine: Map, recalling: Map) ->
         "doubts": len(doubts),
     }
     return results, record
+
+
+class Worked(NamedTuple):
+    """How far a job has come when every place has spoken for itself."""
+
+    inputs: Inputs
+    survey: Survey
+    inverted: tuple[Inverted, ...]
+    interpretation: Interpretation
+
+
+def _map_surfaces(
+    work: Worked, progress: Progress, engine: Map, memory: Memory | None
+) -> tuple[FieldEnsemble | None, SurfaceStack]:
+    """The surfaces by the region's method; where one geology cannot be inferred, each place's own, and it is said."""
+    region, settings, grid = work.inputs.region, work.inputs.settings, work.inputs.grid
+    _, survey, inverted, interpretation = work
+    geology, reason = None, ""
+    if region.method == "together":
+        with _step(progress, "Inferring one geology"):
+            try:
+                geology = infer_geology(
+                    survey, inverted, interpretation, region.template, settings.geology,
+                    map=engine, remember=remembering(engine, memory),
+                )  # fmt: skip
+            except NotInferredError as error:
+                reason = str(error)
+    title, n_blocks = "Drawing the surfaces", _count_blocks(grid.shape, settings)
+    with progress.step(title, n_blocks) as step:
+        if geology is not None:
+            return geology, build_surfaces_together(
+                geology, interpretation, survey, region.template, grid, settings.surfaces, map=watched(engine, step)
+            )
+        stack = build_surfaces(
+            interpretation, survey, region.template, grid, settings.surfaces, map=watched(engine, step)
+        )
+    if reason:
+        said = f"the method is 'each', not 'together': {reason}"
+        stack = attrs.evolve(stack, remarks=(said, *stack.remarks))
+    return None, stack
 
 
 def deliver(results: Results, record: Mapping[str, Any], folder: Path, progress: Progress, engine: Map) -> None:

@@ -8,6 +8,7 @@ import attrs
 from geoves.checking import CurveOptions
 from geoves.domain.region import Region
 from geoves.errors import InputError
+from geoves.geology import GeologyOptions
 from geoves.interpretation import InterpretationOptions
 from geoves.inversion import InversionOptions
 from geoves.layers import LayerOptions
@@ -21,12 +22,13 @@ class Settings:
     curves: CurveOptions
     inversion: InversionOptions
     interpretation: InterpretationOptions
+    geology: GeologyOptions
     surfaces: SurfaceOptions
     layers: LayerOptions
 
 
 def read_settings(region: Region) -> Settings:
-    """Options from the tables [curves], [inversion], [interpretation], [surfaces] and [layers].
+    """Options from the tables [curves], [inversion], [interpretation], [geology], [surfaces] and [layers].
 
     Raises InputError with every unknown key and every value of the wrong kind.
     """

@@ -11,14 +11,15 @@ from pyproj import CRS
 from pyproj.exceptions import CRSError
 
 from geoves.domain.findings import Finding
-from geoves.domain.region import METRES, Delivery, LengthUnit, Region, Section
+from geoves.domain.region import METRES, Delivery, LengthUnit, Method, Region, Section
 from geoves.reading.faults import in_words, nearest, printable
 from geoves.reading.keys import Keys, is_number
 from geoves.reading.sources import INPUTS, REQUIRED_INPUTS, WITH_LENGTHS, split_part
 from geoves.reading.template import read_template
 
 # Tables whose keys are options of a step: project checks them against the step's own options.
-STEP_TABLES = ("curves", "inversion", "interpretation", "surfaces", "layers")
+METHODS = ("together", "each")
+STEP_TABLES = ("curves", "inversion", "interpretation", "geology", "surfaces", "layers")
 _TABLES = ("region", "inputs", "input_length_unit", "unit", "section", "delivery", *STEP_TABLES)
 _REPEATED = ("unit", "section")  # written [[unit]], once for each
 _REGION_KEYS = ("name", "crs", "vertical_datum", "length_unit", "cell_size", "random_seed")
@@ -115,6 +116,7 @@ def _read_tables(path: Path, tables: Mapping[str, list[Keys]]) -> Region | None:
     template = read_template(tables["unit"], METRES[cast(LengthUnit, length_unit or "m")])
     delivery = _read_delivery(tables["delivery"][0])
     sections = _read_sections(tables["section"])
+    method = tables["interpretation"][0].choice("method", METHODS, required=False) or METHODS[0]
     settings = _read_settings(tables)
     seed = _read_seed(region)
     if crs is None or not length_unit:
@@ -129,6 +131,7 @@ def _read_tables(path: Path, tables: Mapping[str, list[Keys]]) -> Region | None:
         cell_size=cell_size or float("nan"),
         random_seed=seed,
         template=template,
+        method=cast(Method, method),
         delivery=delivery,
         sections=sections,
         settings=settings,
@@ -263,12 +266,6 @@ def _read_corners(typed: Any) -> tuple[tuple[float, float], ...] | None:
 
 def _read_settings(tables: Mapping[str, list[Keys]]) -> dict[str, dict[str, Any]]:
     """The options of the steps as typed, without the method of interpretation."""
-    interpretation = tables["interpretation"][0]
-    method = interpretation.choice("method", ("each", "together"), required=False)
-    if method == "together":
-        interpretation.complain(
-            "method", "`together` (one geology inferred from all places) is not in this version; use 'each'"
-        )
     settings = {name: dict(tables[name][0].values) for name in STEP_TABLES if tables[name][0].values}
     settings.get("interpretation", {}).pop("method", None)
     return {name: options for name, options in settings.items() if options}

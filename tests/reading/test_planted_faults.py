@@ -184,12 +184,6 @@ def test_fault_of_region_file_is_told_where_it_stands(folder, plant):
     assert plant.says in told[0].expected
 
 
-def test_method_together_is_refused_in_words(folder):
-    folder.add_table('[interpretation]\nmethod = "together"')
-    (fault,) = folder.faults()
-    assert "not in this version; use 'each'" in fault.expected
-
-
 def test_all_faults_come_at_once_region_file_first(folder):
     folder.replace("region.toml", "[38, 55]", "[55, 38]")
     folder.replace("region.toml", "cell_size", "cellsize")
