@@ -23,11 +23,14 @@ from geoves.kernels.covariances import (
     covariance_matrix,
     scale_coordinates,
 )
+from geoves.kernels.far_field import Expansion, choose_witnesses, expand_correlations, group_cells
 
 # Numbers in a block of covariances between cells and data: wide enough for products of matrices, 4 MB with its room.
 _BLOCK = 2**18
 # Rows of the triangular factor that are multiplied at once: what lies right of them is 0 and left out.
 _STRIPE = 128
+# An expansion counts where it is this near, in sills or their root.
+_AGREED = 2e-9
 # Lengths within which cells lie together.
 _TOGETHER = 0.5
 
@@ -87,17 +90,51 @@ class CholeskyKriging:
     def predict(self, cells: FloatArray, drift: FloatArray | None = None) -> tuple[FloatArray, FloatArray]:
         """Estimate and variance (m,) at `cells` (m, 2), each taken as a new place.
 
-        The variance is that of the field about the estimate, nugget included, errors of the data not.
+        The variance is that of the field about the estimate, nugget included, errors of the data not. Cells that lie
+        together share an expansion of their covariances with far data, where that agrees to 1e-9 at some of them.
         """
+        estimate, variance = np.empty(len(cells)), np.empty(len(cells))
+        for rows in group_cells(cells):
+            here = None if drift is None else drift[rows]
+            estimate[rows], variance[rows] = self._predict_together(cells[rows], here)
+        variance *= self.covariance.sill
+        return self._level + estimate, np.maximum(variance, 0.0)
+
+    def _predict_together(self, cells: FloatArray, drift: FloatArray | None) -> tuple[FloatArray, FloatArray]:
+        """Estimate from the level, and variance in sills, of cells that lie together."""
+        expansion = self._expand(cells)
+        if expansion is None:
+            return self._predict_exactly(cells, drift)
+        basis = expansion.basis()
+        here = self._drift_at(drift, len(cells))
+        estimate = basis @ expansion.apply(self._share * self._dual[:, 0:1]) + here @ self._coefficients[:, 0:1]
+        missing = here - basis @ expansion.apply(self._share * self._drift_weights)
+        white = self._share * expansion.apply(self._whitening)
+        explained = np.einsum("ij,ij->i", basis @ (white @ white.T), basis)
+        found = estimate[:, 0], 1.0 - explained + self._drift_variance(missing)
+        return found if self._agrees(cells, drift, found) else self._predict_exactly(cells, drift)
+
+    def _expand(self, cells: FloatArray) -> Expansion | None:
+        return expand_correlations(cells, self._points, self.covariance, self._origin)
+
+    def _agrees(self, cells: FloatArray, drift: FloatArray | None, found: tuple[FloatArray, FloatArray]) -> bool:
+        """Whether an expansion's estimate and variance are right at the cells where they are most likely not."""
+        witnesses = choose_witnesses(cells)
+        exact = self._predict_exactly(cells[witnesses], None if drift is None else drift[witnesses])
+        off = [np.max(np.abs(one[witnesses] - other)) for one, other in zip(found, exact, strict=True)]
+        return bool(off[0] <= _AGREED * np.sqrt(self.covariance.sill) and off[1] <= _AGREED)
+
+    def _predict_exactly(self, cells: FloatArray, drift: FloatArray | None) -> tuple[FloatArray, FloatArray]:
         estimate, variance = np.empty(len(cells)), np.empty(len(cells))
         for part, between in self._blocks(cells):
             here = self._drift_at(None if drift is None else drift[part], len(between))
             estimate[part] = between @ self._dual[:, 0] + here @ self._coefficients[:, 0]
             missing = here - between @ self._drift_weights
-            drift_variance = np.sum(missing * cho_solve(self._information, missing.T).T, axis=1)
-            variance[part] = 1.0 - self._explained(between) + drift_variance
-        variance *= self.covariance.sill
-        return self._level + estimate, np.maximum(variance, 0.0)
+            variance[part] = 1.0 - self._explained(between) + self._drift_variance(missing)
+        return estimate, variance
+
+    def _drift_variance(self, missing: FloatArray) -> FloatArray:
+        return np.asarray(np.sum(missing * cho_solve(self._information, missing.T).T, axis=1))
 
     def estimate(self, cells: FloatArray, drift: FloatArray | None = None) -> FloatArray:
         """The estimate (m,) alone, at a small part of the cost."""
@@ -111,10 +148,27 @@ class CholeskyKriging:
         self, cells: FloatArray, drift: FloatArray | None, dual: FloatArray, coefficients: FloatArray
     ) -> FloatArray:
         estimate = np.empty((len(cells), dual.shape[1]))
-        for part, between in self._blocks(cells):
-            here = self._drift_at(None if drift is None else drift[part], len(between))
-            estimate[part] = between @ dual + here @ coefficients
+        for rows in group_cells(cells):
+            here = self._drift_at(None if drift is None else drift[rows], len(rows))
+            estimate[rows] = self._weigh_together(cells[rows], dual) + here @ coefficients
         return estimate
+
+    def _weigh_together(self, cells: FloatArray, dual: FloatArray) -> FloatArray:
+        """Covariances of cells that lie together with the data, times `dual` (n, r)."""
+        expansion = self._expand(cells)
+        if expansion is not None:
+            found = expansion.weigh(self._share * dual)
+            witnesses = choose_witnesses(cells)
+            off = np.abs(found[witnesses] - self._weigh_exactly(cells[witnesses], dual))
+            if np.max(off) <= _AGREED * max(np.sqrt(self.covariance.sill), float(np.abs(found).max())):
+                return found
+        return self._weigh_exactly(cells, dual)
+
+    def _weigh_exactly(self, cells: FloatArray, dual: FloatArray) -> FloatArray:
+        found = np.empty((len(cells), dual.shape[1]))
+        for part, between in self._blocks(cells):
+            found[part] = between @ dual
+        return found
 
     def _weigh(self, values: FloatArray) -> tuple[FloatArray, FloatArray]:
         """What `values` (n, r) give every covariance with them (n, r), and every drift (1 + p, r)."""
