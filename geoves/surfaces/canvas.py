@@ -6,12 +6,12 @@ import numpy as np
 import shapely
 from scipy.spatial import cKDTree
 
-from geoves.domain.arrays import BoolArray, FloatArray
+from geoves.domain.arrays import BoolArray, FloatArray, IntArray
 from geoves.domain.grids import Grid
 from geoves.domain.survey import Sounding, Survey, Well
 from geoves.kernels.covariances import fit_covariance
 from geoves.kernels.kriging import FieldData
-from geoves.surfaces.engines import choose_engine
+from geoves.surfaces.engines import TILE_CELLS, choose_engine
 from geoves.surfaces.evidence import locate
 from geoves.surfaces.options import SurfaceOptions
 
@@ -28,6 +28,12 @@ class Canvas(NamedTuple):
         """Centres of the covered cells (c, 2), in the unit of the CRS, row by row from the north."""
         rows, columns = np.nonzero(self.covered)
         return np.column_stack([self.grid.easting[columns], self.grid.northing[rows]])
+
+    @property
+    def by_tile(self) -> IntArray:
+        """The order (c,) in which the covered cells of one tile follow each other: blocks then lie together."""
+        rows, columns = np.nonzero(self.covered)
+        return np.lexsort((columns, rows, columns // TILE_CELLS, rows // TILE_CELLS))
 
     def place(self, values: FloatArray) -> FloatArray:
         """Values of the covered cells (c,) on the grid, NaN elsewhere."""

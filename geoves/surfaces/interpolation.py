@@ -62,10 +62,12 @@ def interpolate(evidence: Evidence, *, canvas: Canvas, options: SurfaceOptions, 
 def krige_cells(kriged: Kriged, canvas: Canvas, options: SurfaceOptions, map: Map) -> tuple[FloatArray, FloatArray]:  # noqa: A002
     """Estimate and variance (c,) from a quantity's data, block by block through the map."""
     work = partial(_krige_block, kriged.data, kriged.covariance, options, canvas.grid.cell_size)
-    cells = canvas.cells
+    order = canvas.by_tile
+    cells = canvas.cells[order]
     parts = list(map(work, [cells[i : i + options.block] for i in range(0, len(cells), options.block)]))
-    mean, spread = (np.concatenate([part[i] for part in parts]) for i in (0, 1))
-    return mean, spread
+    found = np.empty((2, len(cells)))
+    found[:, order] = np.concatenate(parts, axis=1)
+    return found[0], found[1]
 
 
 @threadpool_limits.wrap(limits=1)  # blocks are small: threads cost more than they bring

@@ -11,10 +11,15 @@ import numpy as np
 from pykrige.ok import OrdinaryKriging
 from threadpoolctl import threadpool_limits
 
+from geoves.domain.grids import Grid
 from geoves.kernels.covariances import Covariance
 from geoves.kernels.kriging import CholeskyKriging, FieldData
 from geoves.kernels.reference_kriging import ReferenceKriging
 from geoves.kernels.tiled_kriging import TiledKriging
+from geoves.surfaces import SurfaceOptions
+from geoves.surfaces.canvas import Canvas
+from geoves.surfaces.interpolation import Kriged
+from geoves.surfaces.realisations import draw_members, simulate_quantity
 
 COVARIANCE = Covariance("matern32", 0.05, 1.0, 15_000.0, 30.0, 0.5)
 EXTENT, CELL = 100_000.0, 100.0
@@ -100,6 +105,28 @@ def moving_window(data):
     return lambda cells: engine.execute("points", *cells.T, backend="C", n_closest_points=128)
 
 
+def compare_realisations(side, n_data=300, members=100):
+    """Conditional realisations on side² cells from tables to members, beside five krigings by PyKrige of as many."""
+    data = county(n_data)
+    canvas = Canvas(Grid(20_000.0, 20_000.0 + side * 50.0, 50.0, side, side), np.ones((side, side), bool), np.zeros(0))
+    kriged = Kriged(np.empty(0), np.empty(0), COVARIANCE, *data[:3])
+    options = SurfaceOptions(members=members)
+    cells, number = canvas.cells, np.arange(side * side)
+
+    def realise():
+        quantity = simulate_quantity(kriged, 0, canvas, options)
+        for start in range(0, len(cells), options.block):
+            part = slice(start, start + options.block)
+            draw_members(quantity, cells[part], number[part], canvas.grid, options)
+
+    few = cells[:: max(1, len(cells) // 60_000)]
+    theirs = timed(partial(ReferenceKriging(data, COVARIANCE, block=len(few)).predict, few), 1) * len(cells) / len(few)
+    ours = timed(realise, 1)
+    print(f"\n{members} conditional realisations on {len(cells):.0e} cells from {n_data} data")
+    print(f"  {ours:.0f} s; five krigings by PyKrige {5 * theirs:.0f} s ({len(few)} cells, extrapolated): ", end="")
+    print(f"{5 * theirs / ours:.1f} times as long")
+
+
 def print_growth(quick):
     """Exponents of time with cells and with data, by least squares on logarithms."""
     data = county(1000)
@@ -125,6 +152,7 @@ def main():
     with threadpool_limits(limits=1):
         compare_engines([300, 1000] if arguments.quick else [300, 1000, 3000])
         compare_tiles()
+        compare_realisations(300 if arguments.quick else 1000)
         print_growth(arguments.quick)
 
 
