@@ -6,9 +6,7 @@ from collections.abc import Sequence
 from typing import Any
 
 import attrs
-import geopandas as gpd
 import numpy as np
-import pyogrio
 import shapely
 
 from geoves.domain.findings import Finding
@@ -80,10 +78,13 @@ def _polygons(shape: Any) -> Sequence[Any]:
     return [part for part in nested if part.geom_type == "Polygon"]
 
 
-def _read_features(source: Source, crs: str, findings: list[Finding]) -> gpd.GeoDataFrame | None:
+def _read_features(source: Source, crs: str, findings: list[Finding]) -> Any:
+    """The features as a GeoDataFrame in the CRS, None with a fault where there are none that can be read."""
     if source.suffix not in VECTOR_SUFFIXES:
         refuse_file(source, f"expected a file that ends in {in_words(VECTOR_SUFFIXES)}", findings)
         return None
+    import geopandas as gpd  # noqa: PLC0415 - heavy, and a job of plain tables does without
+
     try:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")  # of a file's flaws and field types that matter not here
@@ -107,7 +108,7 @@ class _LayerError(Exception):
 
 def _unfit(features: Any) -> str:
     """Why the features cannot be placed, in words; empty where they can."""
-    if not isinstance(features, gpd.GeoDataFrame) or features.empty:
+    if not hasattr(features, "geometry") or features.empty:
         return "no features with a geometry; expected at least one"
     if features.crs is None:
         return "does not say its CRS; add it (a shapefile needs its .prj)"
@@ -115,6 +116,8 @@ def _unfit(features: Any) -> str:
 
 
 def _find_layer(source: Source) -> str:
+    import pyogrio  # noqa: PLC0415 - as above
+
     names = [str(name) for name, _ in pyogrio.list_layers(source.path)]
     if source.part is None and len(names) == 1:
         return names[0]

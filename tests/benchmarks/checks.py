@@ -27,8 +27,11 @@ def main() -> None:
     false: Counter[str] = Counter()
     readings, started = 0, time.perf_counter()
     for seed in range(1, arguments.seeds + 1):
+        before = sum(found.values()), sum(false.values())
         with tempfile.TemporaryDirectory() as name:
             readings += judge_county(Path(name), seed, arguments.soundings, found, false)
+        told, alarms = sum(found.values()) - before[0], sum(false.values()) - before[1]
+        print(f"county {seed}: {told} of {len(PLANTS)} planted faults found, {alarms} false alarms", flush=True)
     print(f"{arguments.seeds} counties of {arguments.soundings} soundings, {time.perf_counter() - started:.0f} s\n")
     for plant in PLANTS:
         print(f"  {plant.__name__.replace('_', ' '):42s} {found[plant.__name__] / arguments.seeds:6.0%}")

@@ -210,3 +210,17 @@ def test_broken_files_leave_one_line_each_and_nothing_of_libraries(county):
         "ground.tif",
         "boundary.gpkg",
     ]
+
+
+def test_check_of_plain_tables_brings_in_nothing_that_it_does_not_need(county):
+    heavy = (
+        "{'geopandas', 'folium', 'matplotlib', 'pykrige', 'gstools', 'contourpy', 'geoves.inversion', 'geoves.layers'}"
+    )
+    code = (
+        "import sys; from pathlib import Path; from geoves.project.check import check; "
+        "from geoves.project.progress import SilentProgress; "
+        f"check(Path(sys.argv[1]), SilentProgress()); print(*({heavy} & set(sys.modules)))"
+    )
+    call = [sys.executable, "-c", code, str(county / "region.toml")]
+    done = subprocess.run(call, capture_output=True, text=True, check=True)
+    assert done.stdout.strip() == ""
