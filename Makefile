@@ -31,6 +31,7 @@ check: .venv/installed-test
 benchmark: .venv/installed-test
 	$(BIN)/python -m tests.benchmarks.truth
 	$(BIN)/python -m tests.benchmarks.speed
+	$(BIN)/python -m tests.benchmarks.delivery
 
 .venv/installed: pyproject.toml constraints.txt
 	test -x $(BIN)/python || $(PYTHON) -m venv .venv

@@ -1,6 +1,7 @@
 """Surfaces as cloud-optimised GeoTIFFs, each read back before it counts."""
 
-from collections.abc import Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
+from functools import partial
 from pathlib import Path
 
 import numpy as np
@@ -29,6 +30,8 @@ from geoves.errors import DeliveryError
 
 NODATA = -9999.0
 BLOCK = 512
+CACHE = 64  # MB of blocks that GDAL may keep; by itself it takes a share of the machine
+Strips = Callable[[], Iterable[NDArray[np.float32]]]  # called anew for each pass over a raster's rows
 _STAMPED_APART = ("wkt", "unit", "band", "overviews")
 LENGTH_STEP = 1.0 / 64.0  # of the length unit: far below any error here, and files four times smaller
 
@@ -53,9 +56,9 @@ def write_rasters(stack: SurfaceStack, region: Region, folder: Path, tags: Mappi
             values = getattr(surface, part)
             if values is None:
                 raise DeliveryError(f"{words.name}: the surface has no {part}, which the delivery holds")
-            cells = _encode_cells(values, words, region)
             path = surfaces / f"{name_part(words.name, part)}.tif"
-            _write_verified(path, cells, stack.grid, _describe(words, part, region), tags)
+            strips = partial(_encode_strips, values, words, region)
+            _write_verified(path, strips, stack.grid, _describe(words, part, region), tags)
             written.append(path)
     return tuple(written)
 
@@ -79,12 +82,16 @@ def describe_vertical(region: Region) -> tuple[pyproj.CRS | None, str]:
     return vertical, named
 
 
-def _encode_cells(values: NDArray[np.float64], words: RasterWords, region: Region) -> NDArray[np.float32]:
-    """Values in the delivery's unit as Float32, lengths rounded, blanks set to nodata."""
-    converted = convert_to_delivery(values, words.kind, region.metres_per_length_unit)
-    if words.kind == "length":
-        converted = np.round(converted / LENGTH_STEP) * LENGTH_STEP
-    return np.where(np.isfinite(converted), converted, NODATA).astype(np.float32)
+def _encode_strips(values: NDArray[np.float64], words: RasterWords, region: Region) -> Iterator[NDArray[np.float32]]:
+    """Values in the delivery's unit as Float32, lengths rounded, blanks set to nodata: BLOCK rows at a time.
+
+    No second copy of the whole surface is ever held.
+    """
+    for row in range(0, values.shape[0], BLOCK):
+        converted = convert_to_delivery(values[row : row + BLOCK], words.kind, region.metres_per_length_unit)
+        if words.kind == "length":
+            converted = np.round(converted / LENGTH_STEP) * LENGTH_STEP
+        yield np.where(np.isfinite(converted), converted, NODATA).astype(np.float32)
 
 
 def _describe(words: RasterWords, part: Part, region: Region) -> dict[str, str]:
@@ -110,13 +117,13 @@ def _describe(words: RasterWords, part: Part, region: Region) -> dict[str, str]:
 
 
 def _write_verified(
-    path: Path, cells: NDArray[np.float32], grid: Grid, described: Mapping[str, str], tags: Mapping[str, str]
+    path: Path, strips: Strips, grid: Grid, described: Mapping[str, str], tags: Mapping[str, str]
 ) -> None:
     plain, optimised = path.with_suffix(".plain.tmp"), path.with_suffix(".cog.tmp")
     try:
         # Statistics in a side file would be a second file to keep; without a valid cell there are none to take.
-        with rasterio.Env(GDAL_PAM_ENABLED="NO", GDAL_NUM_THREADS="1"):
-            _write_plain(plain, cells, grid, described, tags)
+        with rasterio.Env(GDAL_PAM_ENABLED="NO", GDAL_NUM_THREADS="1", GDAL_CACHEMAX=CACHE):
+            filled = _write_plain(plain, strips(), grid, described, tags)
             copy_raster(
                 plain,
                 optimised,
@@ -125,10 +132,10 @@ def _write_verified(
                 PREDICTOR="YES",
                 BLOCKSIZE=str(BLOCK),
                 OVERVIEW_RESAMPLING=described["overviews"],
-                STATISTICS="YES" if np.any(cells != NODATA) else "NO",
+                STATISTICS="YES" if filled else "NO",
                 BIGTIFF="IF_SAFER",
             )
-            _verify(optimised, cells, grid)
+            _verify(optimised, strips(), grid)
         optimised.replace(path)
     except DeliveryError:
         raise
@@ -140,9 +147,17 @@ def _write_verified(
 
 
 def _write_plain(
-    path: Path, cells: NDArray[np.float32], grid: Grid, described: Mapping[str, str], tags: Mapping[str, str]
-) -> None:
-    """An ordinary tiled GeoTIFF: everything is stamped here, since a tag edited later would break the COG's order."""
+    path: Path,
+    strips: Iterable[NDArray[np.float32]],
+    grid: Grid,
+    described: Mapping[str, str],
+    tags: Mapping[str, str],
+) -> bool:
+    """An ordinary tiled GeoTIFF: everything is stamped here, since a tag edited later would break the COG's order.
+
+    Whether any cell holds a value.
+    """
+    filled = False
     with rasterio.open(
         path,
         "w",
@@ -159,20 +174,21 @@ def _write_plain(
         blockysize=BLOCK,
         bigtiff="IF_SAFER",
     ) as target:
-        for row in range(0, grid.n_rows, BLOCK):
-            strip = cells[row : row + BLOCK]
-            target.write(strip, 1, window=Window(0, row, grid.n_columns, strip.shape[0]))
+        for index, strip in enumerate(strips):
+            target.write(strip, 1, window=Window(0, index * BLOCK, grid.n_columns, strip.shape[0]))
+            filled = filled or bool(np.any(strip != NODATA))
         target.set_band_description(1, described["band"])
         target.set_band_unit(1, described["unit"])
         stamped = {key: described[key] for key in described if key not in _STAMPED_APART}
         target.update_tags(AREA_OR_POINT="Area", **{**tags, **stamped})
+    return filled
 
 
 def _place_cells(grid: Grid) -> rasterio.Affine:
     return rasterio.Affine(grid.cell_size, 0.0, grid.west, 0.0, -grid.cell_size, grid.north)
 
 
-def _verify(path: Path, cells: NDArray[np.float32], grid: Grid) -> None:
+def _verify(path: Path, strips: Iterable[NDArray[np.float32]], grid: Grid) -> None:
     valid, errors, warnings = cog_validate(path, strict=True, quiet=True)
     if not valid:
         raise DeliveryError(f"{path.name} is not a valid cloud-optimised GeoTIFF: {'; '.join((*errors, *warnings))}")
@@ -180,7 +196,6 @@ def _verify(path: Path, cells: NDArray[np.float32], grid: Grid) -> None:
         expected = (NODATA, grid.shape, _place_cells(grid))
         if (source.nodata, source.shape, source.transform) != expected or source.dtypes != ("float32",):
             raise DeliveryError(f"{path.name} did not keep its nodata value, place or type")
-        for row in range(0, grid.n_rows, BLOCK):
-            strip = cells[row : row + BLOCK]
-            if not np.array_equal(source.read(1, window=Window(0, row, grid.n_columns, strip.shape[0])), strip):
+        for index, strip in enumerate(strips):
+            if not np.array_equal(source.read(1, window=Window(0, index * BLOCK, grid.n_columns, len(strip))), strip):
                 raise DeliveryError(f"{path.name} reads back with other values than were written")

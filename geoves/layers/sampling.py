@@ -26,9 +26,21 @@ def average_neighbours(
     values: FloatArray, cells: Sequence[NDArray[np.intp]], weights: Sequence[FloatArray]
 ) -> FloatArray:
     """The weighted mean of the known ones among the neighbours that `weigh_neighbours` found, NaN where none is."""
-    flat, total, weight = values.ravel(), np.zeros(cells[0].shape), np.zeros(cells[0].shape)
+    flat = values.ravel()
+    total = np.zeros(cells[0].shape)
     for cell, share in zip(cells, weights, strict=True):
-        found = flat[cell]
+        total += share * flat.take(cell)
+    lacking = ~np.isfinite(total)  # few: beside blank cells and outside
+    if lacking.any():
+        total[lacking] = _average_known(flat, [one[lacking] for one in cells], [one[lacking] for one in weights])
+    return total
+
+
+def _average_known(flat: FloatArray, cells: Sequence[NDArray[np.intp]], weights: Sequence[FloatArray]) -> FloatArray:
+    """The same where a neighbour is blank: the rest weighted anew."""
+    total, weight = np.zeros(cells[0].shape), np.zeros(cells[0].shape)
+    for cell, share in zip(cells, weights, strict=True):
+        found = flat.take(cell)
         known = np.isfinite(found)
         total += np.where(known, share * found, 0.0)
         weight += np.where(known, share, 0.0)

@@ -7,7 +7,7 @@ import pytest
 import rasterio
 from rio_cogeo import cog_validate
 
-from geoves.delivery.rasters import NODATA, _verify, write_rasters
+from geoves.delivery.rasters import BLOCK, NODATA, _verify, write_rasters
 from geoves.errors import DeliveryError
 
 TAGS = {"software": "geoves", "date": "2026-06-01"}
@@ -129,11 +129,12 @@ def test_a_raster_that_reads_back_otherwise_is_refused(small_results, tmp_path):
     grid = small_results.stack.grid
     with rasterio.open(path) as source:
         cells = source.read(1)
-    _verify(path, cells, grid)
+    strips = [cells[row : row + BLOCK] for row in range(0, len(cells), BLOCK)]
+    _verify(path, strips, grid)
     with pytest.raises(DeliveryError, match="other values"):
-        _verify(path, cells + 1, grid)
+        _verify(path, [strip + 1 for strip in strips], grid)
     with pytest.raises(DeliveryError, match="place"):
-        _verify(path, cells, attrs.evolve(grid, west=grid.west + 1.0))
+        _verify(path, strips, attrs.evolve(grid, west=grid.west + 1.0))
 
 
 def test_a_folder_that_cannot_be_written_is_said_in_words(small_results, tmp_path):

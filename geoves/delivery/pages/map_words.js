@@ -26,9 +26,12 @@ function draw(tag, attributes = {}, ...children) {
 
 const known = (value) => value !== null && value !== undefined && Number.isFinite(value);
 
+const formats = {};
+
 function grouped(value, decimals = 0) {
-  return value.toLocaleString("en-US", { minimumFractionDigits: decimals, maximumFractionDigits: decimals })
-    .replace("-", "\u2212");
+  formats[decimals] ??= new Intl.NumberFormat("en-US",
+    { minimumFractionDigits: decimals, maximumFractionDigits: decimals });
+  return formats[decimals].format(value).replace("-", "\u2212");
 }
 
 const lengthNumber = (metres, decimals = 0) => grouped(metres / region.unit.metres, decimals);
