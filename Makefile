@@ -13,7 +13,7 @@ test: .venv/installed-test check
 
 # The lower bounds of pyproject.toml, in an environment of their own; not part of `make test`.
 test-oldest: .venv-oldest/installed
-	.venv-oldest/bin/python -m pytest
+	.venv-oldest/bin/python -m pytest -W default  # old libraries deprecate one another
 
 .venv-oldest/installed: pyproject.toml tests/lower_bounds.py
 	test -x .venv-oldest/bin/python || $(PYTHON) -m venv .venv-oldest

@@ -13,6 +13,7 @@ import attrs
 import openpyxl
 
 from geoves.domain.findings import Finding
+from geoves.reading.bounds import find_archive_excess, find_excess
 from geoves.reading.faults import in_words, printable
 from geoves.reading.sources import Source
 from geoves.reading.tables import Columns, Table, build_table
@@ -27,6 +28,9 @@ _ZIP_START = b"PK\x03\x04"
 
 def read_delimited(source: Source, columns: Columns, findings: list[Finding]) -> Table | None:
     """The table, None with a fault where the file is not one."""
+    if source.suffix in TEXT_SUFFIXES and (excess := find_excess(source.path)):
+        refuse_file(source, excess, findings)
+        return None
     if source.suffix in TEXT_SUFFIXES:
         return _read_text(source, columns, findings)
     if source.suffix in SHEET_SUFFIXES:
@@ -76,6 +80,9 @@ def _find_separator(text: str) -> str:
 
 
 def _read_sheet(source: Source, columns: Columns, findings: list[Finding]) -> Table | None:
+    if excess := find_archive_excess(source.path):
+        refuse_file(source, excess, findings)
+        return None
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")  # of styles and validations that geoves does not need
         try:

@@ -33,6 +33,10 @@ _METRES_OF_WORDS |= {
 }
 
 
+# What reads a file of which name, a GeoTIFF where none is told. Others are not asked: a virtual raster, whatever its
+# name, would lead to other files and addresses.
+_DRIVERS = {".asc": "AAIGrid", ".img": "HFA", ".bil": "EHdr", ".flt": "EHdr", ".hgt": "SRTMHGT", ".dem": "USGSDEM"}
+
 _log = logging.getLogger(__name__)
 
 
@@ -52,7 +56,7 @@ def read_ground(
 ) -> GroundReading | None:
     """The land surface in m, resampled bilinearly; None with a fault where the file is no raster of elevations."""
     try:
-        with _unwarned(), rasterio.open(source.path) as raster:
+        with _unwarned(), rasterio.open(source.path, driver=_DRIVERS.get(source.suffix, "GTiff")) as raster:
             if expected := _unfit(raster):
                 refuse_file(source, expected, findings)
                 return None

@@ -12,6 +12,7 @@ from pyproj.exceptions import CRSError
 
 from geoves.domain.findings import Finding
 from geoves.domain.region import METRES, Delivery, LengthUnit, Method, Region, Section
+from geoves.reading.bounds import MOST_REGION_FILE
 from geoves.reading.faults import in_words, nearest, printable
 from geoves.reading.keys import Keys, is_number
 from geoves.reading.sources import INPUTS, REQUIRED_INPUTS, WITH_LENGTHS, split_part
@@ -52,6 +53,10 @@ def _read_text(path: Path, findings: list[Finding]) -> str | None:
         expected = "this is a folder; expected the region.toml file in it"
     elif not path.exists():
         expected = "no such file; give the path of a region.toml (`geoves new FOLDER` writes one to begin with)"
+    elif not path.is_file():
+        expected = "not a file but a device; give the path of a region.toml"
+    elif path.stat().st_size > MOST_REGION_FILE:
+        expected = "too large for a region.toml; give the path of one"
     else:
         try:
             return path.read_bytes().decode("utf-8-sig")

@@ -10,6 +10,7 @@ import numpy as np
 import shapely
 
 from geoves.domain.findings import Finding
+from geoves.reading.bounds import list_views, starts_as
 from geoves.reading.conversions import extent_of, note_missing_grid
 from geoves.reading.delimited import cell_text, refuse_file
 from geoves.reading.faults import in_words, printable
@@ -86,6 +87,8 @@ def _read_features(source: Source, crs: str, findings: list[Finding]) -> Any:
     import geopandas as gpd  # noqa: PLC0415 - heavy, and a job of plain tables does without
 
     try:
+        if not starts_as(source.path, source.suffix):
+            raise ValueError("it begins as a file of another kind")  # noqa: TRY301 - said below as of any other
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")  # of a file's flaws and field types that matter not here
             features = gpd.read_file(source.path, layer=_find_layer(source), engine="pyogrio")
@@ -118,11 +121,15 @@ def _unfit(features: Any) -> str:
 def _find_layer(source: Source) -> str:
     import pyogrio  # noqa: PLC0415 - as above
 
+    views = list_views(source.path) if source.suffix == ".gpkg" else set()
+    if any(name.lower().startswith(("gpkg_", "rtree_")) for name in views):
+        raise _LayerError("its catalogue is a view; expected a GeoPackage that a GIS wrote")
     names = [str(name) for name, _ in pyogrio.list_layers(source.path)]
-    if source.part is None and len(names) == 1:
-        return names[0]
-    if source.part in names:
-        return str(source.part)
+    chosen = names[0] if source.part is None and len(names) == 1 else source.part
+    if chosen in views:
+        raise _LayerError(f"the layer {chosen} is a view, which may have no end; export it as a layer of its own")
+    if chosen in names:
+        return str(chosen)
     if source.part is None and names:
         raise _LayerError(f"several layers ({', '.join(names)}); name one after #, as in {source.typed}#{names[0]}")
     raise _LayerError(f"no layer {source.part!r}; expected one of {', '.join(names)}" if names else "no layers in it")
