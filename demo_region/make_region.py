@@ -24,17 +24,20 @@ SOUNDINGS, PERMITS = 154, 480
 READING_COLUMNS = ["sounding", "ab2", "mn2", "apparent_resistivity", "voltage_mv", "current_ma", "error_percent"]
 
 
-def make_region(folder: Path, seed: int = DEFAULT_SEED, *, planted: bool = True) -> County:
+def make_region(
+    folder: Path, seed: int = DEFAULT_SEED, *, planted: bool = True, county: County | None = None
+) -> County:
     """Write region.toml, the tables, the rasters and the truth into `folder`; returns the county.
 
-    Not `planted`: a twin whose readings, elevations, logs and permits hold none of the faults that crews make.
+    The county is the seed's own unless one is given. Not `planted`: a twin whose readings, elevations, logs and permits
+    hold none of the faults that crews make.
     """
     folder = Path(folder)
     truth = folder / "truth"
     truth.mkdir(parents=True, exist_ok=True)
     if folder.resolve() != HERE:
         shutil.copy(HERE / "region.toml", folder / "region.toml")
-    county = draw_county(seed)
+    county = county or draw_county(seed)
     boundary = files.draw_boundary(county)
     inside = files.inside_test(boundary)
     rng = np.random.default_rng([seed, 2])

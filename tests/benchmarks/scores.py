@@ -79,31 +79,13 @@ def score_band(estimate, bedrock, valley):
 def score_gravel(estimate, thickness, valley):
     """Thickness errors and, where a probability is given, the Brier score beside that of the county's own frequency."""
     error = estimate.gravel - thickness
-    figures = {"gravel": root_mean_square(error), "gravel_valley": root_mean_square(error[valley])}
+    figures = {
+        "gravel": root_mean_square(error),
+        "gravel_valley": root_mean_square(error[valley]),
+        "zeros_valley": root_mean_square(thickness[valley]),
+    }
     if estimate.gravel_probability is not None:
         present = (thickness >= PRESENT).astype(float)
         figures["brier"] = mean((estimate.gravel_probability - present) ** 2)
         figures["climatology"] = float(present.mean() * (1.0 - present.mean()))
     return figures
-
-
-def score_soundings(soundings, tops, truth):
-    """Counts of bedrock_status, the depth error (m) of the rock called seen, and how often it could not be seen.
-
-    soundings, tops : those layers of layers.gpkg      truth : truth/soundings.csv
-    """
-    truth = truth.set_index("sounding")
-    status = soundings.set_index("sounding")["bedrock_status"]
-    seen = status.index[status == "seen"]
-    rock = tops[(tops["kind"] == "sounding") & (tops["unit"] == "bedrock") & (tops["status"] == "at")]
-    depth = rock.drop_duplicates("place").set_index("place")["depth"].reindex(seen)
-    error = (depth - truth.loc[seen, "bedrock_top_depth"]).to_numpy(dtype=float)
-    counts = {name: float((status == name).sum()) for name in ("seen", "not_distinct", "deeper_than")}
-    return counts | {
-        "soundings": float(len(status)),
-        "missing": float(len(truth) - len(status)),
-        "seen_error": root_mean_square(error),
-        "seen_median": float(np.nanmedian(np.abs(error))) if np.isfinite(error).any() else np.nan,
-        "seen_wrongly": mean((truth.loc[seen, "bedrock_seen"] == 0).to_numpy(dtype=float)),
-        "could_be_seen": float(truth["bedrock_seen"].sum()),
-    }

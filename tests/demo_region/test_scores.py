@@ -6,7 +6,6 @@ from pathlib import Path
 
 import attrs
 import numpy as np
-import pandas as pd
 import pytest
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -66,24 +65,3 @@ def test_shift_and_blanks_are_found(scores, county, exact):
     assert figures["bias_valley"] == pytest.approx(-3.0)
     assert figures["held"] == 0.0
     assert figures["blank"] == pytest.approx(0.25, abs=0.001)
-
-
-def test_sounding_figures_count_status_and_error(scores):
-    soundings = pd.DataFrame({"sounding": ["a", "b", "c"], "bedrock_status": ["seen", "deeper_than", "seen"]})
-    tops = pd.DataFrame(
-        {
-            "place": ["a", "b", "c"],
-            "kind": "sounding",
-            "unit": "bedrock",
-            "status": ["at", "below", "at"],
-            "depth": [33.0, 20.0, 36.0],
-        }
-    )
-    truth = pd.DataFrame(
-        {"sounding": ["a", "b", "c", "d"], "bedrock_top_depth": [30.0, 90.0, 40.0, 35.0], "bedrock_seen": [1, 0, 0, 1]}
-    )
-    figures = scores.score_soundings(soundings, tops, truth)
-    assert (figures["seen"], figures["deeper_than"], figures["not_distinct"], figures["missing"]) == (2, 1, 0, 1)
-    assert figures["seen_error"] == pytest.approx(np.sqrt((3.0**2 + 4.0**2) / 2.0))
-    assert figures["seen_wrongly"] == 0.5
-    assert figures["could_be_seen"] == 2.0
