@@ -17,6 +17,7 @@ import shapely
 from pyogrio.errors import DataLayerError, DataSourceError
 
 from geoves.delivery.dictionary import Column, LayerWords, convert_to_delivery, name_unit
+from geoves.delivery.joint_words import gather_joint
 from geoves.delivery.layer_ranges import LayerRanges, find_layer_ranges
 from geoves.delivery.layer_words import LAYERS
 from geoves.delivery.metadata import render_geopackage_record
@@ -24,6 +25,7 @@ from geoves.delivery.section_lines import lay_sections
 from geoves.delivery.sentences import doubted_rows, readings_aside, tell_all, tell_readings_aside, tell_trade_offs
 from geoves.delivery.sounding_figures import segment_factors
 from geoves.domain.earth import Inverted
+from geoves.domain.fields import JointColumn
 from geoves.domain.region import LengthUnit
 from geoves.domain.results import Results
 from geoves.domain.survey import Measured, Permit, Sounding, Well
@@ -110,7 +112,11 @@ def _point_rows(rows: list[dict[str, Any]], extras: Sequence[Mapping[str, Any]] 
 def _build_soundings(results: Results) -> Rows:
     inverted = {found.sounding: found for found in results.inverted}
     columns = {column.sounding: column for column in results.interpretation.columns}
-    rows = [_sounding_row(s, inverted.get(s.name), columns.get(s.name), results) for s in results.survey.soundings]
+    joint = gather_joint(results)
+    rows = [
+        _sounding_row(s, inverted.get(s.name), columns.get(s.name), results) | _joint_row(joint.get(s.name))
+        for s in results.survey.soundings
+    ]
     return _point_rows(rows, [s.extra for s in results.survey.soundings])
 
 
@@ -158,6 +164,28 @@ def _sounding_row(
             "interpreter": "; ".join(dict.fromkeys(pick.interpreter for pick in column.picks)),
         }
     return row
+
+
+def _joint_row(column: JointColumn | None) -> dict[str, Any]:
+    """What one geology says of a place; nothing where it was not inferred, or the place had nothing to say."""
+    if column is None:
+        return {}
+    row: dict[str, Any] = {}
+    banded = {
+        "together_basal_depth": column.basal_depth,
+        "together_bedrock_depth": column.rock_depth,
+        "others_basal_depth": column.others_basal_depth,
+    }
+    for name, quantiles in banded.items():
+        row[f"{name}_p05"], row[name], row[f"{name}_p95"] = (float(depth) for depth in quantiles)
+    return row | {
+        "together_gravel_probability": column.gravel_probability,
+        "others_gravel_probability": column.others_gravel_probability,
+        "together_state": column.state,
+        "together_misfit": column.misfit,
+        "together_shift": column.shift,
+        "moved_by_picks": column.moved_by_picks,
+    }
 
 
 def _remarks(sounding: Sounding, found: Inverted, unit: LengthUnit) -> str:
@@ -251,6 +279,7 @@ def _build_picks(results: Results) -> Rows:
 def _build_wells(results: Results) -> Rows:
     rock = {unit.code for unit in results.region.template.with_role(Role.BEDROCK)}
     reached = {reading.well for reading in results.interpretation.well_readings if reading.unit in rock}
+    joint = gather_joint(results)
     rows = [
         {
             "place_at": (well.easting, well.northing),
@@ -262,6 +291,7 @@ def _build_wells(results: Results) -> Rows:
             "specific_conductance": well.specific_conductance,
             "location_accuracy": well.location_accuracy,
         }
+        | _joint_row(joint.get(well.name))
         for well in results.survey.wells
     ]
     return _point_rows(rows, [well.extra for well in results.survey.wells])

@@ -49,6 +49,13 @@ _SEVERITY = MappingProxyType(
         "note": "nothing suspicious, but good to know",
     }
 )
+_JOINT_STATE = MappingProxyType(
+    {
+        "heard": "heard, and fitted as well as its errors ask",
+        "set_aside": "set aside: it contradicts its neighbours and the template, and what stands here rests on them",
+        "poor_fit": "heard, but the one geology fits its curve worse than its errors allow",
+    }
+)
 _LINE = Column("line", "Line", "Number of the line of valley_axis.", "count")
 _ORDER = Column("order", "Order", "1 for a main valley, 2 for its tributaries, and so on.", "count")
 
@@ -74,6 +81,59 @@ def _quantiles(name: str, title: str, kind: Kind) -> tuple[Column, ...]:
     )
 
 
+def _probability(name: str, title: str, description: str) -> Column:
+    return Column(name, title, description, "fraction", span=(0.0, 1.0))
+
+
+# What one geology says of a sounding or a well, by the method together; empty by the method each.
+_TOGETHER = (
+    *_banded(
+        "together_basal_depth",
+        "Basal contact depth, together",
+        "Depth at which basal gravel or rock begins by the one geology of all places.",
+    ),
+    *_banded(
+        "together_bedrock_depth",
+        "Bedrock depth, together",
+        "Depth to bedrock by the one geology of all places.",
+    ),
+    _probability(
+        "together_gravel_probability",
+        "Probability of basal gravel, together",
+        "Probability that at least 1 m of the deep aquifer lies on the rock, by the one geology of all places.",
+    ),
+    *_banded(
+        "others_basal_depth",
+        "Basal contact depth by all others",
+        "Depth at which basal gravel or rock begins by all other places and the template, this place's own "
+        "curve, log and picks taken out.",
+    ),
+    _probability(
+        "others_gravel_probability",
+        "Probability of basal gravel by all others",
+        "The same probability by all other places and the template, this place's own evidence taken out.",
+    ),
+    Column(
+        "together_shift",
+        "Shift by its own evidence",
+        "How far this place's own evidence moved the basal contact from what all others say, in their deviations.",
+        "ratio",
+    ),
+    Column(
+        "moved_by_picks",
+        "Moved by the picks",
+        "How far the interpreter's picks moved the basal contact here, in deviations before they were heard.",
+        "ratio",
+    ),
+    Column("together_state", "State in the one geology", "Whether the place was heard.", codes=_JOINT_STATE),
+)
+_TOGETHER_MISFIT = Column(
+    "together_misfit",
+    "Misfit of the one geology",
+    "Root mean square of the curve's residuals over their errors under the one geology; about 1 is as it should be.",
+    "ratio",
+)
+
 _SOUNDING = Column("sounding", "Sounding", "Name of the sounding.")
 _WELL = Column("well", "Well", "Name of the well.")
 _UNIT = Column("unit", "Unit", "Code of the unit in the resistivity template.")
@@ -92,7 +152,8 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
             LayerWords(
                 "soundings",
                 "Soundings",
-                "Vertical electrical soundings with what each curve says by itself.",
+                "Vertical electrical soundings with what each curve says by itself, and beside it what one geology of "
+                "all places says there (together_), and what it would say without this place (others_).",
                 "Point",
                 (
                     _SOUNDING,
@@ -139,6 +200,8 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                         "length",
                     ),
                     Column("water_level_error", "Water level error", "Standard error of that depth.", "length"),
+                    *_TOGETHER,
+                    _TOGETHER_MISFIT,
                     _GROUND,
                     Column(
                         "investigated_depth",
@@ -204,8 +267,10 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
             ),
             LayerWords(
                 "tops",
-                "Tops that were kriged",
-                "Where a unit begins under a place, or the bound that is known: what the surfaces were made from.",
+                "Tops",
+                "Where a unit begins under a place, or the bound that is known: what each place says by itself. By "
+                "the method each these rows are what was kriged; by the method together those of wells and picks are "
+                "heard as they stand, and of a sounding its readings are heard in place of its row.",
                 "Point",
                 (
                     Column("place", "Place", "Name of the sounding or the well."),
@@ -279,6 +344,7 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     Column("water_level", "Water level", "Depth to water.", "length"),
                     Column("specific_conductance", "Specific conductance", "Of the water, at 25 °C.", "conductance"),
                     _RADIUS,
+                    *_TOGETHER,
                 ),
             ),
             LayerWords(

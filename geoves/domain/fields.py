@@ -1,13 +1,20 @@
 """One geology inferred from all places: latent fields with what is known of them, and what that means at each place."""
 
 from collections.abc import Mapping
-from typing import Any
+from typing import Any, Literal
 
 import attrs
 import numpy as np
 
 from geoves.domain.arrays import FloatArray, by_value, floats, shape
 from geoves.domain.tops import PlaceKind
+
+# Residuals this many times their errors: the inference fits a curve worse than its errors allow.
+POOR_FIT = 1.6
+# A place counts as moved by the picks beyond so many deviations.
+MOVED = 1.0
+
+JointState = Literal["heard", "set_aside", "poor_fit"]
 
 
 @attrs.frozen
@@ -101,6 +108,13 @@ class JointColumn:
     @property
     def set_aside(self) -> bool:
         return self.trust < 0.5
+
+    @property
+    def state(self) -> JointState:
+        """Whether the place was heard, and if so, whether the one geology fits its curve as well as its errors ask."""
+        if self.set_aside:
+            return "set_aside"
+        return "poor_fit" if self.misfit > POOR_FIT else "heard"
 
 
 @attrs.frozen

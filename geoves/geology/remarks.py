@@ -4,17 +4,15 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from geoves.domain.fields import JointColumn
+from geoves.domain.fields import MOVED, JointColumn
 from geoves.domain.survey import Pick
 from geoves.domain.tops import Interpretation
 from geoves.domain.units import Role, Template
 from geoves.geology.inference import State, has_converged
 from geoves.geology.options import GeologyOptions
 
-# Residuals this many times their errors: the inference fits the curve worse than its errors allow.
-POOR_FIT = 1.6
-# A pick this many deviations from what all others say is contradicted by them; a neighbour is moved beyond one.
-CONTRADICTED, MOVED = 3.0, 1.0
+# A pick this many deviations from what all others say is contradicted by them.
+CONTRADICTED = 3.0
 # A unit is off the template where the middle of what curves know of it lies so many deviations from its range's middle.
 OFF_TEMPLATE, FEWEST_KNOWN, KNOWN_SHARE = 1.3, 5, 0.8
 # Names that a sentence lists before it counts the rest.
@@ -42,7 +40,7 @@ def make_remarks(
             f"set aside, for their curves contradict their neighbours and the template: {list_names(aside)}; "
             "the surfaces there rest on the others"
         )
-    poor = [column.place for column in columns if column.misfit > POOR_FIT and not column.set_aside]
+    poor = [column.place for column in columns if column.state == "poor_fit"]
     if poor:
         remarks.append(
             f"fitted worse than their errors allow by the one geology: {list_names(poor)}; look at their curves"

@@ -17,6 +17,7 @@ from owslib.iso import MD_Metadata
 from geoves.delivery.geopackage import write_geopackage
 from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.errors import DeliveryError
+from tests.delivery.joint_county import MOVED, POOR, join
 
 TAGS = {"software": "geoves", "date": "2026-06-01T09:30:00Z"}
 
@@ -279,3 +280,37 @@ def test_extra_columns_of_readings_and_picks_are_carried_through(small_results, 
     assert len(readings) == sum(one.curve.half_spacing.size for one in soundings)
     assert readings["operator"].str.startswith("crew ").all()
     assert set(geopandas.read_file(path, layer="picks")["meeting"]) == {"in May"}
+
+
+@pytest.mark.parametrize("unit", [1.0, 1200 / 3937])
+def test_one_geology_stands_beside_what_each_place_says(small_results, small_results_in_feet, tmp_path, unit):
+    """Metres and US survey feet of 1200/3937 m (NIST SP 811, appendix B.6), with the state's value domain."""
+    job = join(small_results if unit == 1.0 else small_results_in_feet)
+    path = write_geopackage(job, tmp_path / "layers.gpkg", TAGS)
+    soundings = geopandas.read_file(path, layer="soundings").set_index("sounding")
+    row = soundings.loc["Larch 1"]
+    for name, metres in (
+        ("together_basal_depth", (66.0, 59.0, 72.0)),
+        ("together_bedrock_depth", (73.0, 66.0, 79.0)),
+        ("others_basal_depth", (71.0, 60.0, 83.0)),
+    ):
+        np.testing.assert_allclose(
+            [row[name], row[f"{name}_p05"], row[f"{name}_p95"]], np.array(metres) / unit, atol=1e-3
+        )
+    assert (row["together_gravel_probability"], row["others_gravel_probability"]) == (0.58, 0.66)
+    assert soundings["together_state"].value_counts().to_dict() == {"heard": 6, "set_aside": 1, "poor_fit": 1}
+    assert soundings.loc[POOR, "together_misfit"] == 2.34
+    assert soundings.loc[MOVED, "moved_by_picks"] == 1.43
+    well = geopandas.read_file(path, layer="wells").iloc[0]
+    assert well["others_basal_depth"] == pytest.approx(68.0 / unit, abs=1e-3)
+    domain = query(
+        path, "SELECT value FROM gpkg_data_column_constraints WHERE constraint_name = 'wells_together_state'"
+    )
+    assert {code for (code,) in domain} == {"heard", "set_aside", "poor_fit"}
+
+
+def test_without_one_geology_its_columns_are_empty(package):
+    soundings = geopandas.read_file(package, layer="soundings")
+    columns = [name for name in soundings if name.startswith(("together_", "others_", "moved_"))]
+    assert len(columns) == 15
+    assert soundings[columns].isna().all().all()
