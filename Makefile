@@ -32,6 +32,7 @@ benchmark: .venv/installed-test
 	$(BIN)/python -m tests.benchmarks.truth
 	$(BIN)/python -m tests.benchmarks.speed
 	$(BIN)/python -m tests.benchmarks.delivery
+	$(BIN)/python -m tests.benchmarks.checks
 
 .venv/installed: pyproject.toml constraints.txt
 	test -x $(BIN)/python || $(PYTHON) -m venv .venv

@@ -72,7 +72,9 @@ def find_noise(soundings: Sequence[Sounding], ground: LayeredGround) -> float:
         pooled = np.abs(np.concatenate(scores)) if scores else np.empty(0)
         if pooled.size < _FEWEST_FOR_NOISE:
             return DEFAULT_NOISE
-        noise *= float(np.clip(1.4826 * np.median(pooled), 0.5, 2.0))
+        # The broader of middle and shoulder: a noise put too low makes jumps of what is none.
+        middle, shoulder = np.median(pooled) / 0.6745, np.quantile(pooled, 0.9) / 1.6449
+        noise *= float(np.clip(max(middle, shoulder), 0.5, 2.0))
         noise = float(np.clip(noise, NOISE_RANGE[0] * DEFAULT_NOISE, NOISE_RANGE[1] * DEFAULT_NOISE))
     return noise
 
