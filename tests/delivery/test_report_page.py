@@ -190,13 +190,13 @@ def test_logarithms_are_told_as_percentages_and_drawn_as_lengths(small_results):
     np.testing.assert_allclose(plain.standard_error, 0.11 * depth)
 
 
-# Paper inside the page's margins of 14 mm at the sides, 15 above and 16 below, in CSS pixels of 1/96 inch.
+# Paper inside the page's margins of 12 mm at the sides, 11 above and 14 below, in CSS pixels of 1/96 inch.
 PAPER = {"A4": (210.0, 297.0), "Letter": (215.9, 279.4)}
 
 
 def inside(paper):
     wide, high = PAPER[paper]
-    return (wide - 28.0) / 25.4 * 96.0, (high - 31.0) / 25.4 * 96.0
+    return (wide - 24.0) / 25.4 * 96.0, (high - 25.0) / 25.4 * 96.0
 
 
 @pytest.mark.parametrize("paper", PAPER)

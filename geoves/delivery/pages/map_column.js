@@ -170,7 +170,6 @@ function columnSentences(column) {
     said.push(`${nameOf("shallow_aquifer", "Shallow aquifer")} above: ${likelihoodWords(column.shallowChance)} `
       + `(${column.shallowChance.toFixed(2)})${present ? rho : ""}.`);
   }
-  if (column.beds) said.push(bedWords(column.beds));
   return said;
 }
 

@@ -227,6 +227,7 @@ function columnParts(easting, northing) {
   return [
     ...columnSentences(column).map((words) => make("p", { class: "says" }, words)),
     drawStrip(column),
+    column.beds && make("p", {}, bedWords(column.beds)),
     make("p", { class: "soft" }, `Depths below the ground${ground}. The bracket is the 90 % band of the depth to rock; `
       + "colours run into each other as far as a contact may lie. Ranges hold 90 % of the chances."),
   ];

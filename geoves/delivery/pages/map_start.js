@@ -96,7 +96,7 @@ function startPanel(map) {
     ring = L.circleMarker(at, { radius: 13, color: "#d55e00", weight: 3, fill: false, interactive: false }).addTo(map);
     if (!map.getBounds().pad(-0.05).contains(at)) map.setView(at, Math.max(map.getZoom(), 12), { animate: false });
     answer.replaceChildren(make("button", { class: "close", "aria-label": "Close", click: close }, "Close"),
-      make("h2", {}, title), ...parts);
+      make("h2", {}, title), ...parts.filter((part) => part));
     panel.scrollTop = 0;
     panel.focus({ preventScroll: true });
     // On a phone the panel lies under the map: both are brought into sight.
