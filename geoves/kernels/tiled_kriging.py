@@ -6,6 +6,7 @@ import numpy as np
 from scipy.spatial import cKDTree
 
 from geoves.kernels.covariances import Covariance, FloatArray, IntArray, scale_coordinates
+from geoves.kernels.inequality import Bounds, bounds_as_values
 from geoves.kernels.kriging import CholeskyKriging, FieldData, leave_one_out
 
 # Data of a tile's neighbourhood, and how many of those nearest to a datum's tile speak when it is left out.
@@ -105,3 +106,20 @@ def _halve(rows: IntArray, points: FloatArray) -> Iterator[IntArray]:
     ordered = rows[np.argsort(points[rows, axis], kind="stable")]
     for half in np.array_split(ordered, 2):
         yield from _halve(half, points)
+
+
+def bounds_as_values_nearby(data: FieldData, bounds: Bounds, covariance: Covariance) -> tuple[FloatArray, FloatArray]:
+    """`bounds_as_values` for many data: some 32 bounds at a time, with data and bounds nearest to them."""
+    origin = data.points.mean(axis=0)
+    own, others = (scale_coordinates(points, covariance, origin) for points in (data.points, bounds.points))
+    data_tree, bound_tree = cKDTree(own), cKDTree(others)
+    value, variance = np.empty(len(others)), np.empty(len(others))
+    for group in _halve(np.arange(len(others)), others) if len(others) else ():
+        middle = others[group].mean(axis=0)
+        _, near = data_tree.query(middle, min(2 * NEIGHBOURS, len(own)))
+        _, beside = bound_tree.query(middle, min(NEIGHBOURS, len(others)))
+        chosen, heard = select_data(data, np.atleast_1d(near)), np.union1d(group, beside)
+        found = bounds_as_values(*chosen[:3], Bounds(*(part[heard] for part in bounds)), covariance)
+        at = np.searchsorted(heard, group)
+        value[group], variance[group] = found[0][at], found[1][at]
+    return value, variance

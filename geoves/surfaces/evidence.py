@@ -13,6 +13,8 @@ from geoves.kernels.inequality import Bounds, latent_moments
 from geoves.kernels.kriging import estimate_offset
 from geoves.surfaces.options import SurfaceOptions
 
+# Soundings that are held against all wells, at most.
+MOST_TIED = 3000
 # What options call the thickness of a role.
 _QUANTITIES = {Role.DEEP_AQUIFER: "deep_gravel", Role.SHALLOW_AQUIFER: "shallow_aquifer", Role.COVER: "cover"}
 # Thickness (m) that is expected of a unit, were it there, when no place shows it.
@@ -83,9 +85,11 @@ def tie_to_wells(evidence: Evidence, options: SurfaceOptions) -> tuple[Evidence,
     covariance = fit_covariance(
         evidence.points, evidence.values, evidence.error_variance, own.model or options.model, own.stated
     )
-    offset, deviation = estimate_offset(
-        evidence.points, evidence.values, evidence.error_variance, by_curve, options.tie_deviation, covariance
-    )
+    # All wells, and of the soundings a fixed choice where they are many.
+    drawn = np.random.default_rng(0).permutation(np.flatnonzero(by_curve))[:MOST_TIED]
+    rows = np.sort(np.concatenate([np.flatnonzero(~by_curve), drawn]))
+    data = evidence.points[rows], evidence.values[rows], evidence.error_variance[rows]
+    offset, deviation = estimate_offset(*data, by_curve[rows], options.tie_deviation, covariance)
     bounded_by_curve = np.array([kind == "sounding" for kind in evidence.bound_kind], dtype=bool)
     shifted = evidence.bounds.bound - np.where(bounded_by_curve, offset, 0.0)
     tied = evidence._replace(

@@ -8,14 +8,18 @@ import numpy as np
 from threadpoolctl import threadpool_limits
 
 from geoves.domain.arrays import FloatArray
-from geoves.kernels.covariances import Covariance, fit_covariance
-from geoves.kernels.inequality import bounds_alone_as_values, fit_covariance_with_bounds
+from geoves.kernels.covariances import Covariance, Stated, fit_covariance
+from geoves.kernels.inequality import Bounds, bounds_alone_as_values, fit_covariance_with_bounds
 from geoves.kernels.kriging import FieldData
+from geoves.kernels.tiled_kriging import bounds_as_values_nearby
 from geoves.surfaces.canvas import Canvas
 from geoves.surfaces.engines import choose_engine
 from geoves.surfaces.evidence import Evidence, latent_prior
 from geoves.surfaces.options import SurfaceOptions
 from geoves.surfaces.stated import StatedVariogram
+
+# Data and bounds that a covariance is fitted to, beyond what one factor holds.
+MOST_FITTED = 800
 
 Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
 
@@ -44,7 +48,9 @@ def interpolate(evidence: Evidence, *, canvas: Canvas, options: SurfaceOptions, 
     points = np.vstack([evidence.points, evidence.bounds.points])
     own: StatedVariogram = getattr(options.variogram, evidence.quantity)
     model = own.model or options.model
-    if len(evidence.values) >= options.fewest:
+    if len(evidence.values) >= options.fewest and len(points) > options.all_at_once:
+        covariance, pseudo_value, pseudo_variance = _fit_to_many(evidence, model, own.stated)
+    elif len(evidence.values) >= options.fewest:
         covariance, pseudo_value, pseudo_variance = fit_covariance_with_bounds(
             evidence.points, evidence.values, evidence.error_variance, evidence.bounds, model, own.stated
         )
@@ -57,6 +63,27 @@ def interpolate(evidence: Evidence, *, canvas: Canvas, options: SurfaceOptions, 
     kriged = Kriged(np.empty(0), np.empty(0), covariance, points, values, variance)
     mean, spread = krige_cells(kriged, canvas, options, map)
     return kriged._replace(mean=mean, deviation=np.sqrt(spread))
+
+
+def _fit_to_many(evidence: Evidence, model: str, stated: Stated) -> tuple[Covariance, FloatArray, FloatArray]:
+    """The covariance fitted to a fixed choice of data and bounds, and every bound as a value by what lies near it."""
+    share = MOST_FITTED / evidence.size
+    bounds = evidence.bounds
+    random = np.random.default_rng(0)
+    data, some = (
+        np.sort(random.permutation(count)[: max(3, round(share * count))])
+        for count in (len(evidence.values), len(bounds.bound))
+    )
+    covariance, _, _ = fit_covariance_with_bounds(
+        evidence.points[data],
+        evidence.values[data],
+        evidence.error_variance[data],
+        Bounds(*(part[some] for part in bounds)),
+        model,
+        stated,
+    )
+    known = FieldData(evidence.points, evidence.values, evidence.error_variance)
+    return covariance, *bounds_as_values_nearby(known, bounds, covariance)
 
 
 def krige_cells(kriged: Kriged, canvas: Canvas, options: SurfaceOptions, map: Map) -> tuple[FloatArray, FloatArray]:  # noqa: A002

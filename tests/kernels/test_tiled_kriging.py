@@ -4,8 +4,9 @@ import numpy as np
 import pytest
 
 from geoves.kernels.covariances import Covariance
+from geoves.kernels.inequality import Bounds, bounds_as_values
 from geoves.kernels.kriging import CholeskyKriging, FieldData, leave_one_out
-from geoves.kernels.tiled_kriging import TiledKriging, group_by_tile, leave_one_out_nearby
+from geoves.kernels.tiled_kriging import TiledKriging, bounds_as_values_nearby, group_by_tile, leave_one_out_nearby
 
 COVARIANCE = Covariance("matern32", 0.05, 1.0, 5000.0, 30.0, 0.5)
 
@@ -72,3 +73,31 @@ def test_leaving_out_nearby_is_leaving_out():
     np.testing.assert_allclose(
         leave_one_out_nearby(few, COVARIANCE), leave_one_out(*few[:3], COVARIANCE), rtol=1e-8, atol=1e-9
     )
+
+
+def test_bounds_heard_nearby_are_bounds_heard():
+    """Pseudo-data by groups against all at once: they lead kriging to the same surface."""
+    data, places = county(300), cells_of(60)
+    truth, _ = CholeskyKriging(data, COVARIANCE).predict(places)
+    bounds = Bounds(places, truth + 0.3, np.ones(60), np.full(60, 0.05))
+    found = bounds_as_values_nearby(data, bounds, COVARIANCE)
+    expected = bounds_as_values(*data[:3], bounds, COVARIANCE)
+    cells = cells_of(200, 9)
+
+    def krige_with(value, variance):
+        known = FieldData(
+            np.vstack([data.points, places]),
+            np.concatenate([data.values, value]),
+            np.concatenate([data.error_variance, variance]),
+        )
+        return CholeskyKriging(known, COVARIANCE).predict(cells)
+
+    (near, _), (whole, spread), (without, _) = (
+        krige_with(*found),
+        krige_with(*expected),
+        (CholeskyKriging(data, COVARIANCE).predict(cells)),
+    )
+    off = np.abs(near - whole) / np.sqrt(spread)
+    assert off.max() < 0.1
+    assert off.max() < 0.1 * np.max(np.abs(without - whole) / np.sqrt(spread))
+    assert all(part.size == 0 for part in bounds_as_values_nearby(data, Bounds(*(b[:0] for b in bounds)), COVARIANCE))
