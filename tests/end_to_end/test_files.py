@@ -35,7 +35,12 @@ UNITS = {
     "shallow_aquifer_resistivity_p95": "ohm m",
     "deep_gravel_probability": "1",
     "shallow_aquifer_probability": "1",
-}
+    # beside the contract's
+    **{f"{name}{part}": "m" for name in ("cover_thickness", "shallow_aquifer_thickness", "confining_unit_thickness")
+       for part in ("", "_standard_error", "_p05", "_p95")},
+    **{f"deep_gravel_top_depth{part}": "m" for part in ("", "_p05", "_p95")},
+    "support": "1",
+}  # fmt: skip
 COLUMNS = {
     "soundings": "sounding rms_percent n_layers bedrock_status",
     "model_layers": "sounding layer top_depth bottom_depth top_elevation resistivity resistivity_p05 resistivity_p95 "
