@@ -52,7 +52,8 @@ def stage(folder: Path) -> Iterator[Path]:
         try:
             yield workplace.staging
         except Exception as error:
-            fault = None if isinstance(error, GeovesError) else _find_disk_fault(workplace.staging)
+            elsewhere = isinstance(error, GeovesError) and not isinstance(error, DeliveryError)
+            fault = None if elsewhere else _find_disk_fault(workplace.staging)
             if fault is None:
                 raise
             raise DeliveryError(
