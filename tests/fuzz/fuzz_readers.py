@@ -2,8 +2,8 @@
 
 FILE is one of the region folder's files (readings.csv, region.toml, readings.xlsx, permits.geojson, boundary.gpkg,
 ground.tif …); its bytes are made up, beside clean other files. Whatever they are, reading ends with faults in words or
-without any: any other error, and any input that takes more than 2 GB or 20 s, is a finding. The corpus that found
-something is in tests/reading/found, and is a test there.
+without any: any other error, and any input that takes more than 2 GB or 20 s, is a finding.
+What is found becomes a test in tests/reading/test_hostile_files.py.
 """
 
 import logging
