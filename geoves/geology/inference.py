@@ -26,7 +26,9 @@ SEGMENT_DEVIATION = 0.05
 # Starts of the search at a place: how far the basal contact (ln m) lies from what is expected, and gravel's presence.
 STARTS = ((-0.5, -1.0), (0.0, 1.0), (0.6, -1.0), (0.6, 1.0))
 # A place that is drawn anew starts with gravel this much there, and this much not.
-PRESENT_AGAIN = 0.7
+PRESENT_AGAIN = 1.0
+# How far, in deviations of the field, presence may leave the start of a search that is to hold it.
+HELD = 0.5
 # How far a site moves toward what it should be, a round.
 DAMPING = 0.5
 # Rounds before covariances are refitted, from one refit to the next, and at the end without.
@@ -63,6 +65,19 @@ class State(NamedTuple):
     moved: tuple[float, ...] = ()
 
 
+class Start(NamedTuple):
+    """Where a search begins, unknowns (b, p), and whether it holds to presence as it is there.
+
+    Else all searches may end on the brink between gravel and none, and neither side be drawn from.
+    """
+
+    unknowns: FloatArray
+    held: bool
+
+    def take(self, rows: IntArray) -> "Start":
+        return self._replace(unknowns=self.unknowns[rows])
+
+
 class Heard(NamedTuple):
     """Each place at the end: what others say of it, its cloud weighed by that, and the trust it has (n,)."""
 
@@ -83,10 +98,10 @@ def infer(
     relief = np.zeros(n)
     posterior = _condition(task, priors, sites, relief)
     cavity = _complete(*latent_fields.cavities(*posterior.at_places(), sites), task)
-    starts = [cavity.mean.copy() for _ in STARTS]
+    starts = [Start(cavity.mean.copy(), held=True) for _ in STARTS]
     for start, (deeper, there) in zip(starts, STARTS, strict=True):
-        start[:, 0] += deeper
-        start[:, task.order.first_presence : task.order.first_deep] = there
+        start.unknowns[:, 0] += deeper
+        start.unknowns[:, task.order.first_presence : task.order.first_deep] = there
     cloud = _draw(task, np.arange(n), cavity, starts, options, 0, map)
     base = local_clouds.weigh(cloud, cavity).log_evidence
     state = State(tuple(priors), sites, relief, posterior, cloud, base)
@@ -232,7 +247,8 @@ def _redraw(
     there, gone = found.copy(), found.copy()
     there[:, presence] = np.maximum(found[:, presence], PRESENT_AGAIN)
     gone[:, presence] = np.minimum(found[:, presence], -PRESENT_AGAIN)
-    starts = [found, cavity.mean[rows], there, gone]
+    free = Start(found, held=False), Start(cavity.mean[rows], held=False)
+    starts = [*free, Start(there, held=True), Start(gone, held=True)]
     fresh = _draw(task, rows, cavity.take(rows), starts, options, sweep, map)
     renewed = Cloud(*(values.copy() for values in cloud))
     for values, new in zip(renewed, fresh, strict=True):
@@ -244,7 +260,7 @@ def _draw(
     task: Task,
     rows: IntArray,
     cavity: Normal,
-    starts: Sequence[FloatArray],
+    starts: Sequence[Start],
     options: GeologyOptions,
     sweep: int,
     map: Map,  # noqa: A002
@@ -255,22 +271,37 @@ def _draw(
     for i in range(0, len(rows), options.block):
         part = np.arange(i, min(i + options.block, len(rows)))
         places = task.places.take(rows[part])
-        parts.append((places, cavity.take(part), [start[part] for start in starts], [seeds[j] for j in part]))
+        parts.append((places, cavity.take(part), [start.take(part) for start in starts], [seeds[j] for j in part]))
     size = (options.draws_at_fit, options.rounds, options.draws_a_round)
     clouds = list(map(partial(_draw_block, order=task.order, size=size), parts))
     return Cloud(*(np.concatenate(values) for values in zip(*clouds, strict=True)))
 
 
 def _draw_block(
-    part: tuple[Places, Normal, list[FloatArray], list[tuple[int, int, int]]],
+    part: tuple[Places, Normal, list[Start], list[tuple[int, int, int]]],
     *,
     order: ColumnOrder,
     size: tuple[int, int, int],
 ) -> Cloud:
     places, prior, starts, seeds = part
-    fits = [local_clouds.fit_places(start, prior, places, order) for start in starts]
+    fits = [
+        local_clouds.fit_places(
+            start.unknowns, _hold_presence(prior, start.unknowns, order) if start.held else prior, places, order
+        )
+        for start in starts
+    ]
     generators = [np.random.default_rng(seed) for seed in seeds]
     return local_clouds.draw_clouds(fits, prior, places, order, generators, size)
+
+
+def _hold_presence(prior: Normal, at: FloatArray, order: ColumnOrder) -> Normal:
+    """A prior that keeps the presence of gravel near where it is at `at` (b, p)."""
+    presence = np.arange(order.first_presence, order.first_deep)
+    precision = prior.precision.copy()
+    precision[:, presence, presence] += HELD**-2
+    pull = np.zeros_like(at)
+    pull[:, presence] = HELD**-2 * (at - prior.mean)[:, presence]
+    return Normal(prior.mean + np.linalg.solve(precision, pull[..., None])[..., 0], precision)
 
 
 def all_priors(priors: Sequence[FieldPrior]) -> tuple[FloatArray, FloatArray]:

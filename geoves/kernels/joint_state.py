@@ -11,8 +11,9 @@ the natural logs of the factors that each change of MN brings (s,). Fields, in t
     resistivity  ln ohm m of each unit, from the top down
     grading      ln of how much more resistive the upper part of the filler is than its lower part
 
-The basal contact's depth is T = s(b + exp v), b the depth of the ceiling, s a smooth ramp that keeps T above 0; the
-filler (the lowest confining unit) takes what the other units leave of T. Inputs are trusted.
+The basal contact's depth is T = s(b + exp v), b the depth of the ceiling, s a smooth ramp that keeps T above 0. What
+the other units want is squeezed where T has no room for it, and the filler (the lowest confining unit) takes what they
+leave: so the units above the contact always add up to T. Inputs are trusted.
 """
 
 from typing import NamedTuple
@@ -33,6 +34,10 @@ THINNEST = 1e-3
 UPPER_SHARE = 1.0 / 3.0
 # Smoothness (m) of the ramps that keep thicknesses and depths above 0.
 RAMP = 1.0
+# How suddenly units are squeezed where they want more than there is room for: at half of the room by 5e-4.
+SQUEEZE = 8.0
+# Less thickness than this (m) is taken for this where its log is wanted.
+_LEAST = 1e-300
 # Latent presence over which a deep aquifer thins out at its edge; the field's own deviation is 1.
 PRESENCE_WIDTH = 0.2
 # Softness, in natural logs, of the template's limits of depth.
@@ -176,14 +181,35 @@ def _fade(depth: Floats, limits: tuple[float, float]) -> tuple[Floats, Floats]:
     return value, slope
 
 
+class _Squeeze(NamedTuple):
+    """How units fit into a room (m): what share of the thickness they want they get, what room is left (m), and how
+    far they are squeezed, 0 to 1: minus the slope of ln share by ln (wanted / room). (b,) each.
+    """
+
+    share: Floats
+    left: Floats
+    tightness: Floats
+
+
+def _squeeze(wanted: Floats, room: Floats) -> _Squeeze:
+    """A smooth min: share = (1 + r^p)^(-1/p), r = wanted / room."""
+    power = SQUEEZE * (np.log(np.maximum(wanted, _LEAST)) - np.log(np.maximum(room, _LEAST)))
+    share = np.exp(-np.logaddexp(0.0, power) / SQUEEZE)
+    # room - share wanted, without the loss of digits where nothing is left.
+    crowded = -room * np.expm1(-np.logaddexp(0.0, -np.maximum(power, 0.0)) / SQUEEZE)
+    return _Squeeze(share, np.where(power > 0.0, crowded, room - share * wanted), expit(power))
+
+
 def make_columns(fields: Floats, ceiling_depth: Floats, order: ColumnOrder) -> Columns:
     """Columns of fields (b, q) at ceilings (b,)."""
     basal = ramp(ceiling_depth + np.exp(fields[:, 0]))
     upper = np.empty((len(fields), len(order.upper)))
     for i, position in enumerate(order.thickness_fields, start=1):
         upper[:, position] = np.exp(fields[:, i]) if order.always[position] else ramp(fields[:, i])
-    others = sum((upper[:, i] for i in order.thickness_fields), np.zeros(len(fields)))
-    upper[:, order.filler] = ramp(basal - others)
+    upper[:, order.filler] = 0.0
+    squeeze = _squeeze(upper.sum(axis=1), basal)
+    upper *= squeeze.share[:, None]
+    upper[:, order.filler] = squeeze.left
     share, _ = _fade(basal, order.deep_limits)
     there = expit(fields[:, order.first_presence : order.first_deep] / PRESENCE_WIDTH)
     deep = np.exp(fields[:, order.first_deep : order.first_resistivity]) * there * share[:, None]
@@ -221,15 +247,7 @@ def differentiate(fields: Floats, ceiling_depth: Floats, order: ColumnOrder, col
     n, q, m = len(fields), order.n_fields, len(order.upper)
     depth_below = np.exp(fields[:, 0])
     by_basal = expit((ceiling_depth + depth_below) / RAMP) * depth_below
-    of_upper = np.zeros((n, m, q))
-    others = np.zeros(n)
-    for i, position in enumerate(order.thickness_fields, start=1):
-        slope = columns.upper[:, position] if order.always[position] else expit(fields[:, i] / RAMP)
-        of_upper[:, position, i] = slope
-        others = others + columns.upper[:, position]
-    left = expit((columns.basal_depth - others) / RAMP)
-    of_upper[:, order.filler] = -left[:, None] * sum((of_upper[:, i] for i in order.thickness_fields), np.zeros((n, q)))
-    of_upper[:, order.filler, 0] += left * by_basal
+    of_upper = _differentiate_upper(fields, order, columns, by_basal)
     _, slope = _fade(columns.basal_depth, order.deep_limits)
     of_deep = np.zeros((n, len(order.deep), q))
     for j in range(len(order.deep)):
@@ -264,6 +282,25 @@ def differentiate(fields: Floats, ceiling_depth: Floats, order: ColumnOrder, col
     return Derivatives(of_layers, of_quantities)
 
 
+def _differentiate_upper(fields: Floats, order: ColumnOrder, columns: Columns, by_basal: Floats) -> Floats:
+    """Derivative (b, m, q) of the thickness of each unit above the basal contact; `by_basal` (b,) of that by v."""
+    n, q, m = len(fields), order.n_fields, len(order.upper)
+    wanted, by_fields = np.zeros((n, m)), np.zeros((n, m, q))
+    for i, position in enumerate(order.thickness_fields, start=1):
+        wanted[:, position] = np.exp(fields[:, i]) if order.always[position] else ramp(fields[:, i])
+        by_fields[:, position, i] = wanted[:, position] if order.always[position] else expit(fields[:, i] / RAMP)
+    total, by_total = wanted.sum(axis=1), by_fields.sum(axis=1)
+    squeeze = _squeeze(total, columns.basal_depth)
+    by_log_ratio = by_total / np.maximum(total, _LEAST)[:, None]
+    by_log_ratio[:, 0] -= by_basal / np.maximum(columns.basal_depth, _LEAST)
+    got = squeeze.share[:, None] * wanted
+    found = squeeze.share[:, None, None] * by_fields
+    found -= got[:, :, None] * (squeeze.tightness[:, None] * by_log_ratio)[:, None, :]
+    found[:, order.filler] = -found.sum(axis=1)
+    found[:, order.filler, 0] += by_basal
+    return found
+
+
 def _observed(columns: Columns, observations: Observations) -> tuple[Floats, Floats]:
     """The quantities observed (b, o), and how far each lies from its value in errors."""
     values = np.take_along_axis(quantities(columns), observations.quantity, axis=1)
@@ -272,12 +309,12 @@ def _observed(columns: Columns, observations: Observations) -> tuple[Floats, Flo
 
 def _beyond(depth: Floats, limits: tuple[float, float]) -> tuple[Floats, Floats]:
     """How far a depth lies beyond soft limits, in their deviations, and its derivative by the depth (1/m)."""
-    log_depth = np.log(np.maximum(depth, 0.1))
+    log_depth = np.log(THINNEST + depth)
     low = np.log(max(limits[0], 1e-9)) - log_depth
     high = log_depth - np.log(limits[1]) if np.isfinite(limits[1]) else np.full_like(depth, -np.inf)
     beyond = np.maximum(np.maximum(low, high), 0.0) / LIMIT_DEVIATION
     sign = np.where(low > 0, -1.0, np.where(high > 0, 1.0, 0.0))
-    return beyond, sign / (LIMIT_DEVIATION * np.maximum(depth, 0.1))
+    return beyond, sign / (LIMIT_DEVIATION * (THINNEST + depth))
 
 
 def log_likelihood(unknowns: Floats, places: Places, order: ColumnOrder) -> Floats:

@@ -136,8 +136,10 @@ def draw_clouds(
 ) -> Cloud:
     """Clouds of b places; `size`: draws at each fit, rounds after it, draws of each round.
 
-    Each round adds a multivariate t at the draw that is heaviest under the mixture so far, with the curvature found
-    there: incremental mixture importance sampling (Raftery and Bao 2010, Biometrics 66, 1162-1173, from memory).
+    Each round adds a multivariate t, in turn of the moments of the draws so far (adaptive multiple importance sampling:
+    Cornuet, Marin, Mira and Robert 2012, Scandinavian J. of Statistics 39, 798-812) and at the draw that is heaviest
+    under the mixture so far (incremental mixture importance sampling: Raftery and Bao 2010, Biometrics 66, 1162-1173;
+    both from memory). Either alone leaves some half of the effective draws of both.
     """
     first, rounds, more = size
     p = fits[0].unknowns.shape[1]
@@ -147,11 +149,10 @@ def draw_clouds(
     log_l = _log_likelihoods(unknowns, places, order)
     log_prior = prior.log_density(unknowns)
     log_mixture = np.logaddexp.reduce([np.log(first) + part.log_density(unknowns) for part in parts])
-    for _ in range(rounds):
-        weight = log_l + log_prior - log_mixture
-        heaviest = np.take_along_axis(unknowns, np.argmax(weight, axis=1)[:, None, None], axis=1)[:, 0]
-        curvature = evaluate(heaviest, places, order).curvature + prior.precision
-        part = _Part(heaviest, np.asarray(np.linalg.cholesky(curvature)))
+    for turn in range(rounds):
+        log_weight = log_l + log_prior - log_mixture
+        make = _part_about_the_heaviest if turn % 2 else _part_of_the_moments
+        part = make(unknowns, log_weight, prior, places, order)
         drawn = part.draw(*_normal_numbers(generators, more, p))
         old = np.logaddexp(log_mixture, np.log(more) + part.log_density(unknowns))
         parts.append(part)
@@ -162,6 +163,34 @@ def draw_clouds(
         log_l = np.concatenate([log_l, _log_likelihoods(drawn, places, order)], axis=1)
         log_prior = np.concatenate([log_prior, prior.log_density(drawn)], axis=1)
     return Cloud(unknowns, log_l, log_mixture - np.log(sum(counts)))
+
+
+def _part_about_the_heaviest(
+    unknowns: Floats, log_weight: Floats, prior: Normal, places: Places, order: ColumnOrder
+) -> _Part:
+    """Where the mixture so far is thinnest for what lies there, with the curvature found there."""
+    heaviest = np.take_along_axis(unknowns, np.argmax(log_weight, axis=1)[:, None, None], axis=1)[:, 0]
+    curvature = evaluate(heaviest, places, order).curvature + prior.precision
+    return _Part(heaviest, np.asarray(np.linalg.cholesky(curvature)))
+
+
+def _part_of_the_moments(
+    unknowns: Floats, log_weight: Floats, prior: Normal, places: Places, order: ColumnOrder
+) -> _Part:
+    """The mean and covariance of the draws so far, weights truncated (Ionides 2008), so that it stands in the middle.
+
+    Few effective draws leave the covariance to the curvature at the mean.
+    """
+    p = unknowns.shape[2]
+    total = np.logaddexp.reduce(log_weight, axis=1, keepdims=True)
+    weight = np.exp(np.minimum(log_weight - total, -0.5 * np.log(log_weight.shape[1])))
+    weight /= weight.sum(axis=1, keepdims=True)
+    mean, covariance = moments(unknowns, weight)
+    mean = np.clip(mean, places.lowest, places.highest)
+    expected = np.linalg.inv(evaluate(mean, places, order).curvature + prior.precision)
+    size = 1.0 / np.sum(weight**2, axis=1)[:, None, None]
+    covariance = (size * covariance + p * expected) / (size + p)
+    return _Part(mean, np.asarray(np.linalg.cholesky(np.linalg.inv(covariance))))
 
 
 def _normal_numbers(generators: Sequence[np.random.Generator], count: int, p: int) -> tuple[Floats, Floats]:
