@@ -67,7 +67,7 @@ class LayerWords:
 
 @attrs.frozen
 class RasterWords:
-    """One surface as rasters: which of its parts are delivered, what its values are, which kriged surface judges it.
+    """One surface as rasters: which of its parts are delivered, what its values are, whose test judges it.
 
     codes : what each value of a raster of codes means
     """
@@ -128,7 +128,7 @@ RASTERS: Mapping[str, RasterWords] = MappingProxyType(
             RasterWords(
                 "shallow_aquifer_resistivity",
                 "Resistivity of the shallow aquifer",
-                "Resistivity of the shallow aquifer: the median, kriged in logarithms.",
+                "Resistivity of the shallow aquifer: the median of what the data allow.",
                 "resistivity",
                 ("estimate", "p05", "p95"),
             ),

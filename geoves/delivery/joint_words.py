@@ -88,14 +88,17 @@ def tell_range(quantiles: FloatArray, unit: LengthUnit) -> str:
     return f"{middle} {unit_label(unit)} ({low} to {high})"
 
 
-def tell_gravel(own: float, column: JointColumn, name: str) -> str:
-    """The chance of the deep aquifer by the place itself, by all others and by all; empty where it has none."""
+def tell_gravel(own: float, column: JointColumn, name: str, unit: LengthUnit) -> str:
+    """The chance of the deep aquifer by the place itself, by all others and by all, and where that puts rock.
+
+    Empty where the template has none.
+    """
     if not name or not np.isfinite(column.others_gravel_probability):
         return ""
     alone = f"alone {own:.2f}, " if np.isfinite(own) else ""
     return (
         f"Chance of at least 1 m of {name}: {alone}by the others {column.others_gravel_probability:.2f}, "
-        f"together {column.gravel_probability:.2f}."
+        f"together {column.gravel_probability:.2f}, which puts rock at {tell_range(column.rock_depth, unit)}."
     )
 
 

@@ -193,7 +193,7 @@ def tell_lineage(results: Results, record: Mapping[str, Any]) -> str:
     parts = [
         f"Made from the region {region.name}: {', '.join(places)}.",
         "Curves were tied and inverted as horizontal layers, which the resistivity template turned into units.",
-        f"Tops, bounds and thicknesses were kriged (method '{region.method}').",
+        _tell_method(results),
         f"Surfaces are blank outside the boundary and beyond {results.stack.reach:g} units of the CRS from data.",
         f"Random seed {region.random_seed}.",
     ]
@@ -207,6 +207,16 @@ def tell_lineage(results: Results, record: Mapping[str, Any]) -> str:
         parts.append("Inputs: " + ", ".join(f"{name} (SHA-256 {value})" for name, value in inputs.items()) + ".")
     parts.extend(results.stack.remarks)
     return " ".join(parts)
+
+
+def _tell_method(results: Results) -> str:
+    """How places became surfaces: by the method that was used, which need not be the one asked for."""
+    if results.geology is None:
+        return "Tops, bounds and thicknesses were kriged (method 'each')."
+    return (
+        "One geology was inferred from all readings, logs, bounds and picks together, and its fields were carried to "
+        "the cells (method 'together')."
+    )
 
 
 def tell_accuracy(results: Results) -> Iterator[str]:

@@ -117,8 +117,10 @@ def _deepest_rock(results: Results) -> tuple[str, str, str]:
 
 
 def _remarks_with(results: Results, words: str) -> list[str]:
-    """The surfaces' remarks that hold these words, each with a capital and without its full stop."""
-    return [f"{one[:1].upper()}{one[1:].rstrip('.')}" for one in results.stack.remarks if words in one]
+    """The surfaces' own remarks that hold these words, each with a capital and without its full stop."""
+    of_geology = () if results.geology is None else results.geology.remarks
+    remarks = [one for one in results.stack.remarks if one not in of_geology]
+    return [f"{one[:1].upper()}{one[1:].rstrip('.')}" for one in remarks if words in one]
 
 
 def tell_limits(results: Results) -> list[str]:
@@ -136,6 +138,10 @@ def _gravel_support(results: Results) -> list[str]:
     if not units:
         return []
     rows = [one for one in results.interpretation.thicknesses if one.role == Role.DEEP_AQUIFER]
+    curves = ""
+    if results.geology is not None:
+        rows = [one for one in rows if one.kind != "sounding"]
+        curves = f", and on what {len(results.inverted)} curves, which seldom tell it from rock, say of it together"
     measured = [one.kind for one in rows if one.thickness > 0 and not one.at_least]
     counted = [f"{measured.count(kind)} at {kind}s" for kind in ("well", "sounding", "pick") if kind in measured]
     by_kind = f" ({', '.join(counted)})" if counted else ""
@@ -143,7 +149,7 @@ def _gravel_support(results: Results) -> list[str]:
     bounds = len(rows) - len(measured)
     others = f"{bounds} absence or bound" if bounds == 1 else f"{bounds} absences or bounds"
     guess = "between them it is a guess" if len(measured) < FEW_THICKNESSES else "between them it is interpolated"
-    return [f"{units[0].name}: its thickness rests on {number} and on {others}; {guess}."]
+    return [f"{units[0].name}: its thickness rests on {number} and on {others}{curves}; {guess}."]
 
 
 def confidence_in_words(results: Results) -> list[str]:
@@ -171,8 +177,11 @@ def _confidence(results: Results, crossed: CrossValidation) -> str:
     else:
         verdict = "The bands are too narrow: treat every range on this page as too hopeful."
     title = crossed.title.removeprefix("Log ").capitalize()
+    how = f"each of {int(known.sum())} places was left out in turn and predicted from the others"
+    if results.geology is not None:
+        how = f"what each of {int(known.sum())} places says by itself was held against what all others expect there"
     return (
-        f"{title}: each of {int(known.sum())} places was left out in turn and predicted from the others. "
+        f"{title}: {how}. "
         f"Half were met within {half_said}, nine in ten within {most_said}. "
         f"The 90 % bands held {100 * share:.0f} % of them. {verdict}"
     )

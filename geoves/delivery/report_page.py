@@ -132,6 +132,12 @@ def _write_soundings(results: Results, strips: list[Markup]) -> Markup:
         "In the table S is a layer’s thickness over its resistivity, T their product, lengths in metres: a curve often "
         "knows one of them better than it knows either part."
     )
+    if results.geology is not None:
+        words += (
+            " Under the drawings the basal contact on one depth axis: as this curve alone has it, as all others "
+            "(neighbours, wells, template) expect it without this curve, and as both together have it, which is what "
+            "the surfaces are drawn from; a bar holds 90 %, its line is the median."
+        )
     names = [
         element("a", {"href": f"#sounding-{number}"}, place_name(sounding.name))
         for number, sounding in enumerate(results.survey.soundings)

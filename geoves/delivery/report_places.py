@@ -5,11 +5,16 @@ from collections.abc import Iterator, Mapping
 import attrs
 import numpy as np
 
+from geoves.delivery.joint_figures import draw_three
+from geoves.delivery.joint_words import gather_joint, hear_curve, tell_gravel, tell_moved, tell_state, tell_three
 from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import Markup, element, format_length, place_name, table, unit_label
 from geoves.delivery.sentences import (
     STATUS_WORDS,
+    capital,
     doubted_rows,
+    name_contact,
+    name_deep_aquifer,
     tell_beside,
     tell_doubt,
     tell_opinion,
@@ -21,6 +26,7 @@ from geoves.delivery.sentences import (
 from geoves.delivery.sounding_figures import NearWell, depth_shown, draw_columns, draw_curve, draw_models
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
+from geoves.domain.fields import JointColumn
 from geoves.domain.region import METRES, LengthUnit
 from geoves.domain.results import Results
 from geoves.domain.survey import Sounding
@@ -41,17 +47,21 @@ class StripJob:
     near_well: NearWell | None
     unit: LengthUnit
     doubted: Mapping[int, str] = attrs.field(factory=dict)  # checks that doubt a reading, by its row
+    joint: JointColumn | None = None  # what one geology says of this place
 
 
 def gather_strips(results: Results) -> Iterator[StripJob]:
     models = {one.sounding: one for one in results.inverted}
     columns = {one.sounding: one for one in results.interpretation.columns}
+    joint = gather_joint(results)
     doubted: dict[str, dict[int, str]] = {}
     for (place, row), checks in doubted_rows(results).items():
         doubted.setdefault(place, {})[row] = checks
     for number, sounding in enumerate(results.survey.soundings):
         near, unit, name = nearest_logged_well(results, sounding), results.region.length_unit, sounding.name
-        yield StripJob(number, sounding, models.get(name), columns.get(name), near, unit, doubted.get(name, {}))
+        yield StripJob(
+            number, sounding, models.get(name), columns.get(name), near, unit, doubted.get(name, {}), joint.get(name)
+        )
 
 
 def nearest_logged_well(results: Results, sounding: Sounding) -> NearWell | None:
@@ -83,13 +93,29 @@ def draw_strip(job: StripJob, *, template: Template) -> str:
         draw_columns(job.column, job.inverted, template, unit, job.near_well, deepest),
     )
     notes = _strip_notes(job, job.inverted, job.column)
-    sentence = element("p", {"class": "sentence"}, tell_sounding(job.column, template, unit))
+    alone = "By this curve alone: " if job.joint is not None and not job.column.picks else ""
+    sentence = element("p", {"class": "sentence"}, alone + tell_sounding(job.column, template, unit))
     doubts = [tell_trade_offs(job.inverted), *tell_doubt(job.column, template, unit)]
     doubt = element("p", {}, " ".join(words for words in doubts if words))
     facts = element("p", {"class": "under"}, _strip_facts(job, job.inverted, job.column))
     layers = _layer_table(job.inverted, job.column, template, unit)
-    parts = (heading, facts, sentence, doubt, drawings, layers, notes)
+    parts = (heading, facts, sentence, doubt, drawings, _joint_part(job, job.column, template), layers, notes)
     return element("article", {"class": "strip", "id": f"sounding-{job.number}"}, *parts)
+
+
+def _joint_part(job: StripJob, column: UnitColumn, template: Template) -> Markup:
+    """The basal contact alone, by all others and together, drawn and in words; nothing without one geology."""
+    joint, unit = job.joint, job.unit
+    if joint is None:
+        return Markup("")
+    own = hear_curve(column)
+    contact, deep = capital(name_contact(template)), name_deep_aquifer(template)
+    alone = column.gravel_probability if own.is_known else np.nan
+    said = (tell_three(own, joint, contact, unit), tell_gravel(alone, joint, deep, unit), tell_moved(joint))
+    words = element("p", {"class": "together"}, " ".join(one for one in said if one))
+    warning = tell_state(joint)
+    flag = element("p", {"class": "flag"}, warning) if warning else ""
+    return element("div", {"class": "three"}, flag, draw_three(own, joint, unit), words)
 
 
 def _layer_table(inverted: Inverted, column: UnitColumn, template: Template, unit: LengthUnit) -> Markup:

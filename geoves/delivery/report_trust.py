@@ -7,29 +7,33 @@ import attrs
 import numpy as np
 
 from geoves.delivery.figures import draw_cross_validation, draw_variogram, largest_misfits
+from geoves.delivery.joint_words import find_moved, gather_joint, tell_found, tell_range
 from geoves.delivery.markup import Markup, element, format_length, joined, place_name, table, unit_label
+from geoves.delivery.report_together import MODEL_WORDS, write_one_geology, write_pick_remarks
 from geoves.delivery.sentences import tell_opinion
+from geoves.domain.fields import JointColumn
 from geoves.domain.grids import CrossValidation, Variogram
+from geoves.domain.region import LengthUnit
 from geoves.domain.results import Results
-
-MODEL_WORDS = {"matern32": "Matérn 3/2"}
 
 
 def write_trust(results: Results) -> Markup:
-    """Chapter 5: variograms with their pairs, left-out places, the largest misfits by name, what fed the surfaces."""
-    region = results.region
+    """Chapter 5: the one geology, variograms with pairs, left-out places, misfits by name, what fed the surfaces."""
+    region, together = results.region, results.geology is not None
     crs_unit = "m" if region.crs_unit_metres == 1.0 else "ft"
     parts = [element("p", {}, remark) for remark in results.stack.remarks]
+    parts += write_one_geology(results)
+    drawn, left_out = ("Field", "By itself and by all others") if together else ("Variogram", "Left out in turn")
     for variogram in results.stack.variograms:
         shown = _variogram_in_unit(results, variogram)
-        parts.append(element("h3", {}, f"Variogram: {variogram.title}"))
+        parts.append(element("h3", {}, f"{drawn}: {variogram.title}"))
         caption = element("figcaption", {}, _variogram_words(shown, crs_unit))
         parts.append(element("figure", {}, draw_variogram(shown, crs_unit), caption))
     for crossed in results.stack.cross_validations:
         if not np.isfinite(crossed.measured - crossed.predicted).any():
             continue
         shown_crossed = _cross_validation_in_unit(results, crossed)
-        parts.append(element("h3", {}, f"Left out in turn: {shown_crossed.title}"))
+        parts.append(element("h3", {}, f"{left_out}: {shown_crossed.title}"))
         misfits = _misfit_table(shown_crossed)
         parts.append(element("div", {"class": "pair"}, draw_cross_validation(shown_crossed), misfits))
     return joined([*parts, _evidence_table(results)])
@@ -120,13 +124,16 @@ def _misfit_table(crossed: CrossValidation) -> Markup:
 
 
 def _evidence_table(results: Results) -> Markup:
-    """How many data of each kind fed each contact."""
+    """How many data of each kind there are of each contact."""
     counts: dict[tuple[str, str, str], int] = {}
     for top in results.interpretation.tops:
         key = (top.contact, top.kind, top.status)
         counts[key] = counts.get(key, 0) + 1
     rows = [(*key, count) for key, count in sorted(counts.items())]
-    return table(("contact", "kind of place", "status", "data"), rows, "What the surfaces rest on")
+    caption = "What the surfaces rest on"
+    if results.geology is not None:
+        caption = "What each place says by itself: wells and picks are heard so, of soundings the readings are"
+    return table(("contact", "kind of place", "status", "data"), rows, caption)
 
 
 def write_doubts(results: Results) -> Markup:
@@ -153,6 +160,7 @@ def write_decisions(results: Results) -> Markup:
         return element("p", {}, words)
     opinions = [one for column in results.interpretation.columns for one in column.pick_opinions]
     said = {(one.pick.place, one.pick.unit): tell_opinion(one, unit) for one in opinions}
+    joint, moved = gather_joint(results), find_moved(results)
     rows = [
         (
             place_name(pick.place),
@@ -163,12 +171,29 @@ def write_decisions(results: Results) -> Markup:
             pick.interpreter,
             pick.reason,
             said.get((pick.place, pick.unit), "–"),
+            *(_others_on_pick(joint.get(pick.place), pick.place, moved, unit) if joint else ()),
         )
         for pick in results.survey.picks
     ]
-    headings = ("place", "unit", "status", "depth", "error", "interpreter", "reason", "what the curve says")
+    headings = ["place", "unit", "status", "depth", "error", "interpreter", "reason", "what the curve says"]
     words = "A pick outranks what the program infers; what the curve by itself says of it stands beside it."
-    return joined([element("p", {}, words), table(headings, rows, f"Picks: {len(rows)}")])
+    if joint:
+        headings += ["where the others expect basal gravel or rock", "what it moved"]
+        words += (
+            " All picks are heard at once: a place that they moved counts at the decision nearest to it by the lengths "
+            "of the basal contact’s field."
+        )
+    told = write_pick_remarks(results)
+    return joined([element("p", {}, words), table(headings, rows, f"Picks: {len(rows)}"), *told])
+
+
+def _others_on_pick(
+    column: JointColumn | None, place: str, moved: Mapping[str, tuple[str, ...]], unit: LengthUnit
+) -> tuple[str, str]:
+    """What all other places expect where something was decided, and what the decision moved."""
+    if column is None:
+        return "–", "–"
+    return tell_range(column.others_basal_depth, unit), f"This decision {tell_found(place, moved)}."
 
 
 def write_making(results: Results, record: Mapping[str, Any]) -> Markup:

@@ -49,7 +49,7 @@ def tell_sounding(column: UnitColumn, template: Template, unit: LengthUnit) -> s
     """What is resolved under a sounding: the interpreter's decision where there is one, else what the curve knows."""
     if column.picks:
         return " ".join(tell_pick(pick, template, unit) for pick in column.picks)
-    contact = _name_contact(template)
+    contact = name_contact(template)
     if column.bedrock_status == "deeper_than":
         bound = format_length(column.bedrock_depth, unit)
         return f"No {contact} above {bound}, where the curve would have shown it; what lies deeper is not known."
@@ -59,14 +59,14 @@ def tell_sounding(column: UnitColumn, template: Template, unit: LengthUnit) -> s
         return f"The curve does not show where {contact} begins{guess}."
     if not known:
         return f"Bedrock begins at about {format_length(column.bedrock_depth, unit)}."
-    begins = f"{_capital(contact)} begins at {format_length(column.basal_depth[1], unit)}"
+    begins = f"{capital(contact)} begins at {format_length(column.basal_depth[1], unit)}"
     return (
         f"{begins}, {_range(column.basal_depth, unit)} with 90 % probability{_gravel_on_rock(column, template, unit)}."
     )
 
 
 def _gravel_on_rock(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
-    deep = _deep_aquifer(template)
+    deep = name_deep_aquifer(template)
     if not deep or not np.isfinite(column.gravel_probability):
         return ""
     chance, before = column.gravel_probability, column.gravel_prior
@@ -80,7 +80,7 @@ def _gravel_on_rock(column: UnitColumn, template: Template, unit: LengthUnit) ->
 
 def tell_hidden(column: UnitColumn, template: Template, unit: LengthUnit) -> str:
     """How much of the deep aquifer could lie on this rock and not show; empty where unknown or decided to be none."""
-    deep, limit = _deep_aquifer(template), column.gravel_limit
+    deep, limit = name_deep_aquifer(template), column.gravel_limit
     if not deep or not np.isfinite(limit) or any(pick.status == "absent" for pick in column.picks):
         return ""
     if limit < 1.0:
@@ -127,14 +127,14 @@ def tell_beside(column: UnitColumn, unit: LengthUnit) -> str:
     if not column.beside.agrees:
         return f"Hardly any column that fits this curve meets the log of {away}: what is shown is the curve's own."
     return (
-        f"Of the columns that fit this curve, those count for more that meet the log of {away}. The depth that is "
-        "kriged is the curve's own: the well is kriged beside it."
+        f"Of the columns that fit this curve, those count for more that meet the log of {away}. What counts in "
+        "the surfaces is the curve's own: the well counts beside it."
     )
 
 
 def tell_trade_offs(inverted: Inverted) -> str:
     """Which combinations the curve knows although it does not know their parts; empty where there are none."""
-    return " ".join(f"{_capital(words).rstrip('.')}." for words in inverted.trade_offs)
+    return " ".join(f"{capital(words).rstrip('.')}." for words in inverted.trade_offs)
 
 
 def tell_pick(pick: Pick, template: Template, unit: LengthUnit) -> str:
@@ -197,13 +197,13 @@ def readings_aside(curve: Curve, inverted: Inverted) -> np.ndarray:
     return np.asarray(~curve.used | (inverted.robust_weight < SET_ASIDE))
 
 
-def _name_contact(template: Template) -> str:
+def name_contact(template: Template) -> str:
     """The contact that a curve can see, by the names of what may begin there."""
-    deep = _deep_aquifer(template)
+    deep = name_deep_aquifer(template)
     return f"{deep} or rock" if deep else "rock"
 
 
-def _deep_aquifer(template: Template) -> str:
+def name_deep_aquifer(template: Template) -> str:
     """The deep aquifer's name within a sentence; empty where the template has none."""
     units = template.with_role(Role.DEEP_AQUIFER)
     return _small(units[0].name) if units else ""
@@ -218,7 +218,7 @@ def _depth(metres: float, unit: LengthUnit) -> str:
     return format_length(metres, unit)
 
 
-def _capital(words: str) -> str:
+def capital(words: str) -> str:
     return words[:1].upper() + words[1:]
 
 

@@ -88,8 +88,9 @@ def _tell_picks(columns: Sequence[JointColumn], interpretation: Interpretation, 
     moved = [c.place for c in columns if abs(c.moved_by_picks) > MOVED and c.place not in decided]
     remarks = []
     if moved:
+        others = f"{len(moved)} other place{'s' * (len(moved) != 1)}"
         many = f"{len(decided)} decided place{'s' * (len(decided) != 1)}"
-        remarks.append(f"the picks at {many} moved {len(moved)} others by more than their doubt: {list_names(moved)}")
+        remarks.append(f"the picks at {many} moved {others} by more than their doubt: {list_names(moved)}")
     for name, pick in picks:
         away = _away(by_name.get(name), pick, template)
         if abs(away) > CONTRADICTED:

@@ -96,9 +96,11 @@ def test_states_and_moves_are_said_where_they_matter(small_results):
 
 
 def test_the_chance_of_gravel_is_told_where_the_template_has_gravel():
-    assert tell_gravel(0.45, COLUMN, "basal gravel").endswith("alone 0.45, by the others 0.66, together 0.58.")
-    assert "alone" not in tell_gravel(np.nan, COLUMN, "basal gravel")
-    assert tell_gravel(0.45, COLUMN, "") == ""
+    assert tell_gravel(0.45, COLUMN, "basal gravel", "m").endswith(
+        "alone 0.45, by the others 0.66, together 0.58, which puts rock at 73 m (66 to 79)."
+    )
+    assert "alone" not in tell_gravel(np.nan, COLUMN, "basal gravel", "m")
+    assert tell_gravel(0.45, COLUMN, "", "m") == ""
 
 
 def test_a_moved_place_counts_at_the_decision_that_the_field_holds_nearest(small_results):

@@ -56,7 +56,7 @@ def test_a_log_beside_is_named_whether_it_agrees_or_not(small_results):
     column = small_results.interpretation.columns[0]
     agreeing = attrs.evolve(column, beside=WellBeside("W-1", 304.8, 0.6, agrees=True))
     against = attrs.evolve(column, beside=WellBeside("W-1", 304.8, 0.001, agrees=False))
-    assert "meet the log of W-1, 1,000 ft away. The depth that is kriged is the curve's own" in tell_beside(
+    assert "meet the log of W-1, 1,000 ft away. What counts in the surfaces is the curve's own" in tell_beside(
         agreeing, "ft"
     )
     assert "Hardly any column that fits this curve meets the log of W-1" in tell_beside(against, "ft")
