@@ -117,6 +117,7 @@ def work_out(
     results = Results(region, survey, inverted, interpretation, stack, layers, doubts, merit, geology)
     statuses = [column.bedrock_status for column in interpretation.columns]
     record |= {
+        "method": "each" if geology is None else "together",
         "reach": stack.reach,
         "remarks": [*interpretation.remarks, *stack.remarks],
         "geology": None if geology is None else dict(geology.diagnostics),

@@ -15,5 +15,5 @@ def write_eight_soundings(folder):
     readings = read_table(folder / "readings.csv")
     write_table(folder / "readings.csv", [row for row in readings if row["sounding"] in names])
     text = region.read_text(encoding="utf-8").replace("cell_size = 400.0", "cell_size = 900.0")
-    region.write_text(text.replace('method = "each"', 'method = "each"\ndraws = 100'), encoding="utf-8")
+    region.write_text(text.replace('method = "together"', 'method = "each"\ndraws = 100'), encoding="utf-8")
     return region
