@@ -3,7 +3,8 @@
 For each seed the county is built in a temporary folder and the surfaces made by both methods, `together` and `each`,
 from one inversion. Beside them stand the plain script and the survey's floor (every sounding's true rock, kriged);
 the climatology and a map of zeros are in the columns of the gravel. `--counties` takes those in which the demo's
-habits are false, `--ways` only some of the ways, `--delivery FOLDER` scores a delivery of the committed demo.
+habits are false, `--other` one drawn by other means, `--ways` only some of the ways, `--delivery FOLDER` scores a
+delivery of the committed demo.
 Lengths in m. Every cell inside the boundary counts; the valley is where rock lies 15 m or more below its surroundings.
 """
 
@@ -31,8 +32,9 @@ from geoves.project.engines import open_engine
 from geoves.project.inputs import read_inputs
 from geoves.surfaces import build_surfaces, build_surfaces_together
 from tests.benchmarks.counties import COUNTIES, make_county
+from tests.benchmarks.other_county import OTHER, PLAIN, OtherCounty, make_other_county
 from tests.benchmarks.scores import Estimate, score_surfaces
-from tests.reference.plain_script import run_plain_script
+from tests.reference.plain_script import Local, run_plain_script
 from tests.reference.survey_floor import krige_true_rock
 
 TABLES = {
@@ -144,7 +146,9 @@ def score_plain_script(region, county):
     x, y, transform = cell_centres(CELL)
     grid_x, grid_y = ORIGIN[0] + x[0], ORIGIN[1] + y[:, 0]
     started = time.perf_counter()
-    bedrock, error, gravel = run_plain_script(region, grid_x, grid_y)
+    bedrock, error, gravel = run_plain_script(
+        region, grid_x, grid_y, PLAIN if isinstance(county, OtherCounty) else Local()
+    )
     seconds = time.perf_counter() - started
     boundary = read_boundary(region)
     inside = geometry_mask([boundary], bedrock.shape, transform, invert=True)
@@ -175,11 +179,18 @@ def score_way(way, region, county):
 
 
 def score_county(name, seed, ways):
-    """Figures of each way in one county: the seed's own, or one of those whose habits are others."""
+    """Figures of each way in one county: the seed's own, or one of another name."""
     with tempfile.TemporaryDirectory() as folder:
         region = Path(folder)
-        county = make_county(region, name, seed) if name in COUNTIES else make_region(region, seed)
+        county = make_named(region, name, seed)
         return {way: score_way(way, region, county) for way in ways}
+
+
+def make_named(region, name, seed):
+    """Writes the county into the folder, and returns its truth."""
+    if name == OTHER:
+        return make_other_county(region, seed)
+    return make_county(region, name, seed) if name in COUNTIES else make_region(region, seed)
 
 
 def print_tables(title, rows):
@@ -218,13 +229,14 @@ def main():
     parser.add_argument("--seeds", type=int, nargs="+", default=list(range(41, 51)))
     parser.add_argument("--ways", nargs="+", choices=WAYS, default=list(WAYS))
     parser.add_argument("--counties", action="store_true", help="counties in which the demo's habits are false")
+    parser.add_argument("--other", action="store_true", help="a county drawn by other means than the demo's")
     parser.add_argument("--delivery", type=Path, help="score this delivery of the committed demo, and run nothing")
     arguments = parser.parse_args()
     if arguments.delivery:
         figures = score_delivery(HERE, arguments.delivery, draw_county(DEFAULT_SEED))
         print_tables(str(arguments.delivery), {DEFAULT_SEED: figures})
         return
-    names = list(COUNTIES) if arguments.counties else [""]
+    names = [OTHER] if arguments.other else list(COUNTIES) if arguments.counties else [""]
     scored = {}
     for name in names:
         for seed in arguments.seeds:

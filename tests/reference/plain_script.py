@@ -1,14 +1,15 @@
 """What a competent person would script in an afternoon: the line that geoves is held against.
 
 Least squares for each sounding alone with 2 to 5 layers, the number chosen by BIC; the deepest interface is the rock
-(a sounding whose resistivity falls there is left out), a layer of 38 to 55 ohm m on it is gravel; ordinary kriging of
-elevations with a fitted spherical variogram. Segments are tied at their shared spacings; the finite MN is ignored,
-and every depth is taken at its word.
+(a sounding whose resistivity falls there is left out), a layer on it in the gravel's range is gravel; ordinary kriging
+of elevations with a fitted spherical variogram. Segments are tied at their shared spacings; the finite MN is ignored,
+and every depth is taken at its word. Wenner soundings are left out. What differs from county to county is `Local`.
 """
 
 from itertools import pairwise
 from pathlib import Path
 
+import attrs
 import numpy as np
 import pandas as pd
 import rasterio
@@ -16,7 +17,6 @@ from pykrige.ok import OrdinaryKriging
 from scipy.optimize import least_squares
 
 FOOT = 0.3048  # m
-GRAVEL_RANGE = (38.0, 55.0)  # ohm m
 # Guptasarma 1982, Geophysical Prospecting 30, 501-514 (pages from memory): the 19-point Schlumberger filter.
 ABSCISSAE = -0.980685 + 0.20869 * np.arange(19)
 # fmt: off
@@ -28,6 +28,23 @@ WEIGHTS = np.array(
     ]
 )
 # fmt: on
+
+
+@attrs.frozen
+class Local:
+    """What the script's author knows of the county: the demo's, if nothing is said.
+
+    gravel : the range of the gravel on rock, ohm m    highest : the largest resistivity of a layer, ohm m
+    rock_word : in the drillers' words for rock    well_unit : m, the unit of the wells' tables
+    """
+
+    gravel: tuple[float, float] = (38.0, 55.0)
+    highest: float = 300.0
+    rock_word: str = "lime"
+    well_unit: float = FOOT
+
+
+HERE = Local()
 
 
 def apparent_resistivity(ab2, thickness, resistivity):
@@ -47,7 +64,7 @@ def log_response(parameters, ab2):
     return np.log(apparent_resistivity(ab2, np.exp(parameters[:, :layers]), np.exp(parameters[:, layers:])))
 
 
-def fit_layers(ab2, log_read, layers):
+def fit_layers(ab2, log_read, layers, highest):
     """The best of two starts: cost and ln parameters. Depths start log-spaced from AB/2, resistivities on the curve."""
     best_cost, best = np.inf, None
     step = 1e-4
@@ -65,7 +82,7 @@ def fit_layers(ab2, log_read, layers):
         resistivity = np.interp(np.geomspace(2.0, ab2.max(), layers), ab2, log_read)
         start = np.concatenate([np.log(np.diff(depth, prepend=0.0)), resistivity])
         low = np.concatenate([np.full(layers - 1, np.log(0.3)), np.full(layers, np.log(8.0))])
-        high = np.concatenate([np.full(layers - 1, np.log(0.4 * ab2.max())), np.full(layers, np.log(300.0))])
+        high = np.concatenate([np.full(layers - 1, np.log(0.4 * ab2.max())), np.full(layers, np.log(highest))])
         start = np.clip(start, low + 0.01, high - 0.01)
         found = least_squares(residual, start, jacobian, (low, high), loss="soft_l1", f_scale=0.05, max_nfev=80)
         if found.cost < best_cost:
@@ -73,7 +90,7 @@ def fit_layers(ab2, log_read, layers):
     return best_cost, best
 
 
-def interpret(ab2, read):
+def interpret(ab2, read, local=HERE):
     """Depth to the deepest interface (m) and the thickness of a gravel on it (m), from one sounding.
 
     NaN twice where resistivity falls across that interface: a spread that ends in clay shows no rock.
@@ -81,7 +98,7 @@ def interpret(ab2, read):
     log_read = np.log(read)
     choices = []
     for layers in range(2, 6):
-        cost, parameters = fit_layers(ab2, log_read, layers)
+        cost, parameters = fit_layers(ab2, log_read, layers, local.highest)
         criterion = len(ab2) * np.log(2.0 * cost / len(ab2)) + len(parameters) * np.log(len(ab2))
         choices.append((criterion, parameters))
     parameters = min(choices, key=lambda choice: choice[0])[1]
@@ -89,13 +106,13 @@ def interpret(ab2, read):
     thickness, resistivity = np.exp(parameters[:count]), np.exp(parameters[count:])
     if resistivity[-1] < resistivity[-2]:
         return np.nan, np.nan
-    is_gravel = count > 1 and GRAVEL_RANGE[0] <= resistivity[-2] <= GRAVEL_RANGE[1]
+    is_gravel = count > 1 and local.gravel[0] <= resistivity[-2] <= local.gravel[1]
     return thickness.sum(), thickness[-1] if is_gravel else 0.0
 
 
 def read_curves(folder):
     """AB/2 and apparent resistivity of each sounding, readings out of use dropped, repeats averaged."""
-    readings = pd.read_csv(folder / "readings.csv")
+    readings = pd.read_csv(folder / "readings.csv").dropna(subset="ab2")
     factor = np.pi * (readings["ab2"] ** 2 - readings["mn2"] ** 2) / (2.0 * readings["mn2"])
     metered = factor * readings["voltage_mv"] / readings["current_ma"]
     readings["apparent_resistivity"] = readings["apparent_resistivity"].fillna(metered)
@@ -120,13 +137,13 @@ def tie_segments(readings):
     return pd.concat(tied)
 
 
-def rock_in_wells(folder):
-    """x, y and rock elevation (m) of the wells whose log names limestone."""
+def rock_in_wells(folder, local):
+    """x, y and rock elevation (m) of the wells whose log names the rock."""
     wells = pd.read_csv(folder / "wells.csv").set_index("well")
     logs = pd.read_csv(folder / "well_logs.csv")
-    top = logs[logs["description"].str.contains("lime", case=False)].groupby("well")["top"].min()
+    top = logs[logs["description"].str.contains(local.rock_word, case=False)].groupby("well")["top"].min()
     wells = wells.loc[top.index]
-    return wells["x"].to_numpy(), wells["y"].to_numpy(), (wells["ground_elevation"] - top).to_numpy() * FOOT
+    return wells["x"].to_numpy(), wells["y"].to_numpy(), (wells["ground_elevation"] - top).to_numpy() * local.well_unit
 
 
 def fit_variogram(x, y, values):
@@ -160,19 +177,21 @@ def krige(x, y, values, grid_x, grid_y):
     return np.asarray(estimate), np.sqrt(np.maximum(np.asarray(variance), 0.0))
 
 
-def run_plain_script(folder, grid_x, grid_y):
+def run_plain_script(folder, grid_x, grid_y, local=HERE):
     """Rock elevation, its standard error and gravel thickness (rows, columns) m on a grid of easting and northing."""
     folder = Path(folder)
+    curves = read_curves(folder)
     soundings = pd.read_csv(folder / "soundings.csv").set_index("sounding")
+    soundings = soundings[soundings.index.isin(curves)]
     with rasterio.open(folder / "ground.tif") as raster:
         ground = np.array([value[0] for value in raster.sample(soundings[["x", "y"]].to_numpy())], dtype=float)
     elevation = soundings["ground_elevation"].fillna(pd.Series(ground, index=soundings.index))
-    found = {name: interpret(*curve) for name, curve in read_curves(folder).items()}
+    found = {name: interpret(*curve, local) for name, curve in curves.items()}
     depth, gravel = np.array([found[name] for name in soundings.index]).T
     shown = np.isfinite(depth)
     depth, gravel, soundings, elevation = depth[shown], gravel[shown], soundings[shown], elevation[shown]
     x, y = soundings["x"].to_numpy(), soundings["y"].to_numpy()
-    well_x, well_y, well_rock = rock_in_wells(folder)
+    well_x, well_y, well_rock = rock_in_wells(folder, local)
     rock = np.concatenate([elevation.to_numpy() - depth, well_rock])
     bedrock, error = krige(np.append(x, well_x), np.append(y, well_y), rock, grid_x, grid_y)
     thickness, _ = krige(x, y, gravel, grid_x, grid_y)
