@@ -6,11 +6,13 @@ import attrs
 import numpy as np
 
 from geoves.delivery.markup import format_length, unit_label
+from geoves.delivery.sentences import capital, name_contact, name_deep_aquifer
 from geoves.domain.arrays import FloatArray
 from geoves.domain.fields import MOVED, JointColumn
 from geoves.domain.region import METRES, LengthUnit
 from geoves.domain.results import Results
 from geoves.domain.tops import Top, UnitColumn
+from geoves.domain.units import Template
 from geoves.kernels.covariances import Covariance, scaled_distances
 
 # Central 90 % of a normal distribution, in its deviations.
@@ -61,6 +63,29 @@ def hear_log(tops: list[Top]) -> OwnSay:
             return OwnSay(top.depth + np.array([-spread, 0.0, spread]), np.nan, source)
     bounds = [top.depth for top in basal if top.status == "below"]
     return OwnSay(np.full(3, np.nan), max(bounds, default=np.nan), source)
+
+
+def tell_joint(column: UnitColumn, joint: JointColumn, template: Template, unit: LengthUnit) -> list[str]:
+    """All that one geology says of a sounding beside what its curve says by itself."""
+    own = hear_curve(column)
+    alone = column.gravel_probability if own.is_known else np.nan
+    said = (
+        tell_three(own, joint, capital(name_contact(template)), unit),
+        tell_gravel(alone, joint, name_deep_aquifer(template), unit),
+        tell_moved(joint),
+    )
+    return [words for words in said if words]
+
+
+def tell_others(joint: JointColumn, template: Template, unit: LengthUnit) -> str:
+    """What all other places expect at a well."""
+    expected = tell_range(joint.others_basal_depth, unit)
+    return f"All other places, without this well, expect {name_contact(template)} at {expected}."
+
+
+def name_voice(column: UnitColumn, joint: JointColumn | None) -> str:
+    """What stands before the sentence on a sounding where all together may say otherwise."""
+    return "By this curve alone: " if joint is not None and not column.picks else ""
 
 
 def tell_three(own: OwnSay, column: JointColumn, contact: str, unit: LengthUnit) -> str:

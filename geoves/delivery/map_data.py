@@ -2,7 +2,7 @@
 
 import base64
 import zlib
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from typing import Any
 
 import attrs
@@ -11,6 +11,7 @@ import pyproj
 
 from geoves.delivery.cautions import SHORT_CAUTION, list_cautions
 from geoves.delivery.dictionary import find_raster, list_rasters
+from geoves.delivery.joint_words import gather_joint, name_voice, tell_joint, tell_others, tell_state
 from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import unit_label
 from geoves.delivery.ramps import QUANTITY_RAMPS, band_width, doubt_range, ramp_colours, value_range
@@ -29,6 +30,7 @@ from geoves.delivery.sounding_figures import segment_factors
 from geoves.delivery.unit_look import ROLE_WORDS, unit_colours
 from geoves.domain.arrays import FloatArray
 from geoves.domain.earth import Inverted
+from geoves.domain.fields import JointColumn
 from geoves.domain.grids import Grid, Surface, SurfaceStack
 from geoves.domain.results import Results
 from geoves.domain.survey import Permit, Sounding, Well
@@ -56,6 +58,7 @@ def describe_region(results: Results) -> dict[str, Any]:
     delivered = [words.name for words in list_rasters(stack.surfaces)]
     shown = sorted(delivered, key=lambda name: SHOWN_SURFACES.index(name) if name in SHOWN_SURFACES else 99)
     to_degrees = pyproj.Transformer.from_crs(region.crs, "EPSG:4326", always_xy=True)
+    joint = gather_joint(results)
     return {
         "region": {
             "name": region.name,
@@ -87,8 +90,8 @@ def describe_region(results: Results) -> dict[str, Any]:
             }
             for u in region.template.units
         ],
-        "soundings": _describe_soundings(results, to_degrees),
-        "wells": [_describe_well(results, well, to_degrees) for well in results.survey.wells],
+        "soundings": _describe_soundings(results, joint, to_degrees),
+        "wells": [_describe_well(results, well, joint.get(well.name), to_degrees) for well in results.survey.wells],
         "permits": _describe_permits(results, to_degrees),
         "lines": _describe_lines(results, to_degrees),
     }
@@ -213,14 +216,16 @@ def _position(place: Sounding | Well | Permit, to_degrees: pyproj.Transformer) -
     }
 
 
-def _describe_soundings(results: Results, to_degrees: pyproj.Transformer) -> list[dict[str, Any]]:
+def _describe_soundings(
+    results: Results, joint: Mapping[str, JointColumn], to_degrees: pyproj.Transformer
+) -> list[dict[str, Any]]:
     models = {one.sounding: one for one in results.inverted}
     columns = {one.sounding: one for one in results.interpretation.columns}
     return [
         {
             **_position(sounding, to_degrees),
             **_describe_curve(sounding, models.get(sounding.name)),
-            **_describe_model(models.get(sounding.name), columns.get(sounding.name), results),
+            **_describe_model(models.get(sounding.name), columns.get(sounding.name), joint.get(sounding.name), results),
         }
         for sounding in results.survey.soundings
     ]
@@ -244,14 +249,19 @@ def _describe_curve(sounding: Sounding, inverted: Inverted | None) -> dict[str, 
     }
 
 
-def _describe_model(inverted: Inverted | None, column: UnitColumn | None, results: Results) -> dict[str, Any]:
+def _describe_model(
+    inverted: Inverted | None, column: UnitColumn | None, joint: JointColumn | None, results: Results
+) -> dict[str, Any]:
     if inverted is None or column is None:
         return {"status": None, "sentence": "No model was made of this sounding.", "model": None, "depth": None}
     low, high = find_layer_ranges(inverted).resistivity
     template, unit = results.region.template, results.region.length_unit
     return {
         "status": column.bedrock_status,
-        "sentence": tell_sounding(column, template, unit),
+        "sentence": name_voice(column, joint) + tell_sounding(column, template, unit),
+        "together": []
+        if joint is None
+        else [words for words in (tell_state(joint), *tell_joint(column, joint, template, unit)) if words],
         "doubts": [words for words in (*tell_doubt(column, template, unit), tell_trade_offs(inverted)) if words],
         "rms": _rounded(inverted.rms_percent),
         "depth": _rounded(column.bedrock_depth),
@@ -279,11 +289,14 @@ def _describe_profile(column: UnitColumn) -> dict[str, Any] | None:
     return {"edges": [round(float(edge), 1) for edge in column.profile_depth], "percent": percent.astype(int).tolist()}
 
 
-def _describe_well(results: Results, well: Well, to_degrees: pyproj.Transformer) -> dict[str, Any]:
+def _describe_well(
+    results: Results, well: Well, joint: JointColumn | None, to_degrees: pyproj.Transformer
+) -> dict[str, Any]:
     codes, rock = list(results.region.template.codes), results.region.template.units[-1].code
     readings = [one for one in results.interpretation.well_readings if one.well == well.name]
     return {
         **_position(well, to_degrees),
+        "together": [] if joint is None else [tell_others(joint, results.region.template, results.region.length_unit)],
         "total": _rounded(well.total_depth),
         "rock": min((one.top for one in readings if one.unit == rock), default=None),
         "water": well.water_level,

@@ -118,6 +118,11 @@ def _write_sections(results: Results) -> Markup:
         "far off the section they are: another depth there is no contradiction. An orange bar is an interpreter’s "
         "pick. Each section is dashed on the map above and marked where it begins."
     )
+    if results.geology is not None:
+        words += (
+            " A column is what its curve says alone: where the bedrock line leaves it, all others outweighed it, "
+            "and its strip says how."
+        )
     return joined([element("p", {}, words), unit_key(results.region.template), *figures])
 
 

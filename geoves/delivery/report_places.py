@@ -6,15 +6,12 @@ import attrs
 import numpy as np
 
 from geoves.delivery.joint_figures import draw_three
-from geoves.delivery.joint_words import gather_joint, hear_curve, tell_gravel, tell_moved, tell_state, tell_three
+from geoves.delivery.joint_words import gather_joint, hear_curve, name_voice, tell_joint, tell_state
 from geoves.delivery.layer_ranges import find_layer_ranges
 from geoves.delivery.markup import Markup, element, format_length, place_name, table, unit_label
 from geoves.delivery.sentences import (
     STATUS_WORDS,
-    capital,
     doubted_rows,
-    name_contact,
-    name_deep_aquifer,
     tell_beside,
     tell_doubt,
     tell_opinion,
@@ -93,8 +90,8 @@ def draw_strip(job: StripJob, *, template: Template) -> str:
         draw_columns(job.column, job.inverted, template, unit, job.near_well, deepest),
     )
     notes = _strip_notes(job, job.inverted, job.column)
-    alone = "By this curve alone: " if job.joint is not None and not job.column.picks else ""
-    sentence = element("p", {"class": "sentence"}, alone + tell_sounding(job.column, template, unit))
+    voice = name_voice(job.column, job.joint)
+    sentence = element("p", {"class": "sentence"}, voice + tell_sounding(job.column, template, unit))
     doubts = [tell_trade_offs(job.inverted), *tell_doubt(job.column, template, unit)]
     doubt = element("p", {}, " ".join(words for words in doubts if words))
     facts = element("p", {"class": "under"}, _strip_facts(job, job.inverted, job.column))
@@ -108,14 +105,10 @@ def _joint_part(job: StripJob, column: UnitColumn, template: Template) -> Markup
     joint, unit = job.joint, job.unit
     if joint is None:
         return Markup("")
-    own = hear_curve(column)
-    contact, deep = capital(name_contact(template)), name_deep_aquifer(template)
-    alone = column.gravel_probability if own.is_known else np.nan
-    said = (tell_three(own, joint, contact, unit), tell_gravel(alone, joint, deep, unit), tell_moved(joint))
-    words = element("p", {"class": "together"}, " ".join(one for one in said if one))
+    words = element("p", {"class": "together"}, " ".join(tell_joint(column, joint, template, unit)))
     warning = tell_state(joint)
     flag = element("p", {"class": "flag"}, warning) if warning else ""
-    return element("div", {"class": "three"}, flag, draw_three(own, joint, unit), words)
+    return element("div", {"class": "three"}, flag, draw_three(hear_curve(column), joint, unit), words)
 
 
 def _layer_table(inverted: Inverted, column: UnitColumn, template: Template, unit: LengthUnit) -> Markup:

@@ -277,7 +277,7 @@ function permitFacts(permit) {
 function soundingFacts(sounding) {
   const facts = [make("p", { class: "says" }, sounding.sentence)];
   if (!sounding.model) return facts;
-  facts.push(...[...sounding.opinions, ...sounding.doubts].map((words) => make("p", {}, words)));
+  facts.push(...[...sounding.together, ...sounding.opinions, ...sounding.doubts].map((words) => make("p", {}, words)));
   facts.push(make("p", { class: "soft" }, `${statusWords[sounding.status]}; `
     + `${sounding.model.rho.length} layers; misfit ${sounding.rms.toFixed(1)} %; `
     + `halving or doubling all resistivity below ${lengthWords(sounding.model.reach)} would go unnoticed`));
@@ -291,7 +291,7 @@ function wellFacts(well) {
   if (known(well.conductance)) facts.push(`${Math.round(well.conductance)} \u00b5S/cm at 25 \u00b0C`);
   const said = facts.join("; ");
   return [make("p", { class: "says" }, `${said[0].toUpperCase()}${said.slice(1)}.`),
-    ...well.picks.map((words) => make("p", {}, words))];
+    ...[...well.together, ...well.picks].map((words) => make("p", {}, words))];
 }
 
 function markKey() {
