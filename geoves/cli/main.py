@@ -74,7 +74,11 @@ def _build_parser() -> argparse.ArgumentParser:
         "check", help="only check the inputs, and write what was found to check/check.html and check.csv"
     )
     check.add_argument("region", type=Path, metavar="REGION.toml")
-    for command in (run, check):
+    plan = commands.add_parser("plan", help="say where the next sounding or test hole would lower the doubt most")
+    plan.add_argument("region", type=Path, metavar="REGION.toml")
+    plan.add_argument("--out", type=Path, metavar="FOLDER", help="default: plan, beside REGION.toml")
+    plan.add_argument("--places", type=_count, metavar="N", help="how many; default: as [plan] says, or 10")
+    for command in (run, check, plan):
         command.add_argument("--quiet", action="store_true", help="say nothing but what is wrong")
     new = commands.add_parser("new", help="write a region folder to begin with")
     new.add_argument("folder", type=Path, metavar="FOLDER")
@@ -111,6 +115,10 @@ def _call(parsed: argparse.Namespace) -> None:
 
         how = {"workers": parsed.workers, "scheduler": parsed.scheduler, "afresh": parsed.afresh}
         summary = run(parsed.region, parsed.out, progress, **how)
+    elif parsed.command == "plan":
+        from geoves.project.plan import plan  # noqa: PLC0415
+
+        summary = plan(parsed.region, parsed.out, parsed.places, progress)
     else:
         from geoves.project.check import check  # noqa: PLC0415
 

@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterable, Mapping, Sequence
 from contextlib import closing
 from pathlib import Path
 from types import MappingProxyType
-from typing import Any
+from typing import Any, NamedTuple
 
 import attrs
 import geopandas
@@ -60,6 +60,7 @@ CREATE TABLE gpkg_metadata_reference (reference_scope TEXT NOT NULL, table_name 
   CONSTRAINT crmr_mfi_fk FOREIGN KEY (md_file_id) REFERENCES gpkg_metadata(id),
   CONSTRAINT crmr_mpi_fk FOREIGN KEY (md_parent_id) REFERENCES gpkg_metadata(id));
 """
+_NO_METADATA = "DROP TABLE gpkg_metadata; DROP TABLE gpkg_metadata_reference;"
 
 
 def write_geopackage(results: Results, path: Path, tags: Mapping[str, str]) -> Path:
@@ -68,18 +69,40 @@ def write_geopackage(results: Results, path: Path, tags: Mapping[str, str]) -> P
     Columns are the dictionary's, then the extra columns of the tables less those withheld. `tags["date"]` dates it.
     The file stands under its name only once every layer was read back. Raises DeliveryError.
     """
+    layers = [LayerFrame(LAYERS[name], *built) for name, built in build_frames(results).items()]
+    record = render_geopackage_record(results, tags)
+    return write_database(layers, path, results, record, tags)
+
+
+class LayerFrame(NamedTuple):
+    """A layer to be written: its words, its rows, and what the tables called its further columns."""
+
+    words: LayerWords
+    frame: geopandas.GeoDataFrame
+    labels: Mapping[str, str]
+
+
+def write_database(
+    layers: Sequence[LayerFrame], path: Path, results: Results, record: str | None, tags: Mapping[str, str]
+) -> Path:
+    """`path`, a GeoPackage 1.3 with these layers and the metadata record, read back before it has its name."""
     unfinished = path.with_name(f".{path.name}.tmp.gpkg")
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
         unfinished.unlink(missing_ok=True)
-        written = _write_layers(results, unfinished)
+        _write_layers(layers, unfinished)
         with closing(sqlite3.connect(unfinished)) as database, database:
             database.executescript(_TABLES)
-            database.executemany("INSERT INTO gpkg_extensions VALUES (?, NULL, ?, ?, 'read-write')", _EXTENSIONS)
-            for name, (_, labels) in written.items():
-                _describe_columns(database, LAYERS[name], labels, results)
-            _attach_record(database, render_geopackage_record(results, tags), _timestamp(tags))
-        _verify(unfinished, {name: len(frame) for name, (frame, _) in written.items()})
+            used = [one for one in _EXTENSIONS if record is not None or one[1] != "gpkg_metadata"]
+            database.executemany("INSERT INTO gpkg_extensions VALUES (?, NULL, ?, ?, 'read-write')", used)
+            for layer in layers:
+                _describe_columns(database, layer.words, layer.labels, results)
+            _date_contents(database, _timestamp(tags))
+            if record is None:
+                database.executescript(_NO_METADATA)
+            else:
+                _attach_record(database, record, _timestamp(tags))
+        _verify(unfinished, {one.words.name: len(one.frame) for one in layers})
         unfinished.replace(path)
     except (OSError, sqlite3.Error, DataSourceError, DataLayerError) as error:
         if isinstance(error, DeliveryError):
@@ -88,6 +111,11 @@ def write_geopackage(results: Results, path: Path, tags: Mapping[str, str]) -> P
     finally:
         unfinished.unlink(missing_ok=True)
     return path
+
+
+def make_layer(words: LayerWords, rows: Sequence[Mapping[str, Any]], results: Results) -> LayerFrame:
+    """Rows with SI values and a place (`place_at`) as a layer in the region's CRS and length unit."""
+    return LayerFrame(words, *_finish_frame(words, pd.DataFrame(rows, dtype=object), (), results))
 
 
 def build_frames(results: Results) -> Mapping[str, tuple[geopandas.GeoDataFrame, Mapping[str, str]]]:
@@ -429,21 +457,18 @@ def _free_name(original: str, taken: Mapping[str, Any]) -> str:
     return name
 
 
-def _write_layers(results: Results, path: Path) -> Mapping[str, tuple[geopandas.GeoDataFrame, Mapping[str, str]]]:
-    frames = build_frames(results)
-    for name, (frame, _) in frames.items():
-        words = LAYERS[name]
+def _write_layers(layers: Sequence[LayerFrame], path: Path) -> None:
+    for words, frame, _ in layers:
         pyogrio.write_dataframe(
             frame,
             path,
-            layer=name,
+            layer=words.name,
             driver="GPKG",
             append=path.exists(),
             geometry_type=words.geometry,
             dataset_options={} if path.exists() else {"VERSION": "1.3"},
             layer_options={"IDENTIFIER": words.title, "DESCRIPTION": words.description, "GEOMETRY_NAME": GEOMETRY},
         )
-    return frames
 
 
 def _describe_columns(
@@ -478,13 +503,17 @@ def _describe_columns(
 
 
 def _attach_record(database: sqlite3.Connection, record: str, timestamp: str) -> None:
-    """The metadata record as a row of the metadata extension, and the same date on everything."""
+    """The metadata record as a row of the metadata extension."""
     database.execute(
         "INSERT INTO gpkg_metadata VALUES (1, 'dataset', 'http://www.isotc211.org/2005/gmd', 'text/xml', ?)", (record,)
     )
     database.execute(
         "INSERT INTO gpkg_metadata_reference VALUES ('geopackage', NULL, NULL, NULL, ?, 1, NULL)", (timestamp,)
     )
+
+
+def _date_contents(database: sqlite3.Connection, timestamp: str) -> None:
+    """The same date on everything."""
     database.execute("UPDATE gpkg_contents SET last_change = ?", (timestamp,))
 
 

@@ -272,7 +272,7 @@ def draw_overview(results: Results) -> Markup:
             at = float(frame.x.pixel(end[0])), float(frame.y.pixel(end[1]))
             parts += [_line(frame, section.line, "cut"), label(*at, section.mark, "halo", "middle")]
     parts += _overview_places(results, frame)
-    parts.append(_scale_bar(frame, region.crs_unit_metres, region.length_unit != "m"))
+    parts.append(draw_scale_bar(frame, region.crs_unit_metres, region.length_unit != "m"))
     if surface is not None:
         parts.append(_ramp_legend(results, 8 + wide + 24))
     title = f"{region.name}: bedrock elevation, soundings and wells"
@@ -308,7 +308,8 @@ def status_mark(status: str, x: float, y: float) -> str:
     }[status]
 
 
-def _scale_bar(frame: Frame, crs_metres: float, miles: bool) -> Markup:
+def draw_scale_bar(frame: Frame, crs_metres: float, miles: bool) -> Markup:
+    """A round length at the foot of a map's frame, and north at its top."""
     far, name = (1609.344, "mi") if miles else (1000.0, "km")
     length = even_ticks(0.0, (frame.x.high - frame.x.low) * crs_metres / far, 5)[1]
     pixels = length * far / crs_metres * (frame.x.end - frame.x.start) / (frame.x.high - frame.x.low)

@@ -12,6 +12,7 @@ from geoves.geology import GeologyOptions
 from geoves.interpretation import InterpretationOptions
 from geoves.inversion import InversionOptions
 from geoves.layers import LayerOptions
+from geoves.planning import PlanOptions
 from geoves.surfaces import SurfaceOptions
 
 
@@ -25,10 +26,11 @@ class Settings:
     geology: GeologyOptions
     surfaces: SurfaceOptions
     layers: LayerOptions
+    plan: PlanOptions
 
 
 def read_settings(region: Region) -> Settings:
-    """Options from the tables [curves], [inversion], [interpretation], [geology], [surfaces] and [layers].
+    """Options from the tables [curves], [inversion], [interpretation], [geology], [surfaces], [layers] and [plan].
 
     Raises InputError with every unknown key and every value of the wrong kind.
     """

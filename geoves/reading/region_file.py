@@ -20,7 +20,7 @@ from geoves.reading.template import read_template
 
 # Tables whose keys are options of a step: project checks them against the step's own options.
 METHODS = ("together", "each")
-STEP_TABLES = ("curves", "inversion", "interpretation", "geology", "surfaces", "layers")
+STEP_TABLES = ("curves", "inversion", "interpretation", "geology", "surfaces", "layers", "plan")
 _TABLES = ("region", "inputs", "input_length_unit", "unit", "section", "delivery", *STEP_TABLES)
 _REPEATED = ("unit", "section")  # written [[unit]], once for each
 _REGION_KEYS = ("name", "crs", "vertical_datum", "length_unit", "cell_size", "random_seed")

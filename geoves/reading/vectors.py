@@ -44,6 +44,14 @@ def read_boundary(source: Source, crs: str, findings: list[Finding]) -> Any:
     return boundary
 
 
+def read_shapes(source: Source, crs: str, findings: list[Finding]) -> list[Any]:
+    """All geometries of a layer as shapely has them, none where there is a fault."""
+    features = _read_features(source, crs, findings)
+    if features is None:
+        return []
+    return [shape for shape in features.geometry if shape is not None and not shape.is_empty]
+
+
 def read_point_table(source: Source, crs: str, columns: Columns, findings: list[Finding]) -> Table | None:
     """The points as a table with x and y in the CRS beside the attributes; row n is feature n, counted from 1."""
     features = _read_features(source, crs, findings)
