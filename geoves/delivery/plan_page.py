@@ -95,7 +95,7 @@ class _Writer:
         holes = len(plan.places) - soundings
         shown = (
             ("Standard error now", self.amount(plan.before), f"of {self.about}, root mean square {self.where}"),
-            ("With all of them measured", self.amount(plan.after), "expected, whatever they show"),
+            ("With all of them measured", self.amount(plan.after), "expected, on average"),
             ("Places", str(len(plan.places)), f"{soundings} soundings, {holes} test holes"),
         )
         numbers = [
@@ -172,10 +172,10 @@ class _Writer:
             f"{plan.n_allowed:,} places were weighed, spread evenly over where measuring is allowed, and the doubt was "
             f"counted at {plan.n_asked:,} places {self.where}. What a measurement takes from the doubt of a field with "
             "normal errors does not hang on what it will show: only on where it is, on how well such measurements "
-            "know, and on how far the ground is alike. The place that takes most for its cost comes first, and the next "
-            "is chosen as if it had been measured. How well a sounding knows is taken from this survey’s own soundings of "
-            "like depth and spread; a test hole knows the contact to about one per cent. The advised AB/2 is the "
-            "shortest of the survey’s own that promises nearly as much as the best."
+            "know, and on how far the ground is alike. The place that takes most for its cost comes first, and the "
+            "next is chosen as if it had been measured. How well a sounding knows is taken from this survey’s own "
+            "soundings of like depth and spread; a test hole knows the contact to about one per cent. The advised "
+            "AB/2 is the shortest of the survey’s own that promises nearly as much as the best."
         )
         limits = (
             "Expected lowering is an average: what is found may also raise the doubt, where it shows that the ground "

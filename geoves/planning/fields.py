@@ -20,6 +20,8 @@ from geoves.kernels.next_places import Carried, KnownField, carry, known_from_da
 BASAL_TITLE, GRAVEL_TITLE = "Log depth of the basal contact", "Thickness of the deep gravel"
 # A mean of which nothing is known beforehand: its variance over the sill.
 FREE_MEAN = 100.0
+# Fewer data than this carry no field.
+FEWEST = 3
 # A thickness counts as no better known than this, m.
 LEAST_THICKNESS_ERROR = 0.5
 
@@ -37,9 +39,10 @@ def know_depth(results: Results) -> KnownField:
     if results.geology is not None:
         return _from_ensemble(results.geology, 0)
     tops = [top for top in results.interpretation.tops if top.contact == "basal" and top.status == "at"]
+    found = _find_variogram(results, BASAL_TITLE, len(tops))
     values = np.log([max(top.depth, 0.1) for top in tops])
     error = np.array([top.standard_error / max(top.depth, 0.1) for top in tops])
-    return known_from_data(_as_free_prior(_variogram(results, BASAL_TITLE), values), _locate(tops), values, error**2)
+    return known_from_data(_as_free_prior(found, values), _locate(tops), values, error**2)
 
 
 def know_gravel(results: Results) -> KnownField:
@@ -51,9 +54,10 @@ def know_gravel(results: Results) -> KnownField:
         first = next(i for i, name in enumerate(names) if name.endswith("_presence"))
         return _from_ensemble(results.geology, first)
     rows = [one for one in results.interpretation.thicknesses if one.role == Role.DEEP_AQUIFER and not one.at_least]
+    found = _find_variogram(results, GRAVEL_TITLE, len(rows))
     values = np.array([one.thickness for one in rows])
     error = np.array([max(one.standard_error, LEAST_THICKNESS_ERROR) for one in rows])
-    return known_from_data(_as_free_prior(_variogram(results, GRAVEL_TITLE), values), _locate(rows), values, error**2)
+    return known_from_data(_as_free_prior(found, values), _locate(rows), values, error**2)
 
 
 def depths_at(known: KnownField, cells: FloatArray, ground: FloatArray, geology: FieldEnsemble | None) -> Depths:
@@ -91,9 +95,9 @@ def _as_free_prior(found: Variogram, values: FloatArray) -> FieldPrior:
     return FieldPrior(float(np.mean(values)), covariance, FREE_MEAN * sill, sill, 1.0, 1.0)
 
 
-def _variogram(results: Results, title: str) -> Variogram:
+def _find_variogram(results: Results, title: str, n_data: int) -> Variogram:
     found = [one for one in results.stack.variograms if one.title == title]
-    if not found:
+    if not found or n_data < FEWEST:
         raise EngineError(f"no plan can be made: too few places know the {title[0].lower()}{title[1:]} for a variogram")
     return found[0]
 

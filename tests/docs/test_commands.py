@@ -66,7 +66,10 @@ def test_synopsis_is_that_of_the_program():
     text = (ROOT / "docs/reference/command.md").read_text("utf-8")
     synopsis = re.search(r"```\n(.*?)```", text, re.DOTALL)[1].splitlines()
     options = {option for line in synopsis for option in re.findall(r"--[\w-]+", line)}
-    helps = [geoves("--help", cwd=ROOT), *(geoves(name, "--help", cwd=ROOT) for name in ("run", "check", "new"))]
+    helps = [
+        geoves("--help", cwd=ROOT),
+        *(geoves(name, "--help", cwd=ROOT) for name in ("run", "check", "plan", "new")),
+    ]
     assert all(done.returncode == 0 for done in helps)
     assert options == {option for done in helps for option in re.findall(r"--[\w-]+", done.stdout)}
 
