@@ -3,6 +3,8 @@
 import numpy as np
 from scipy.spatial import cKDTree
 
+from geoves.domain.arrays import BoolArray, FloatArray
+from geoves.domain.fields import FieldEnsemble
 from geoves.domain.grids import Surface
 from geoves.surfaces.canvas import Canvas
 from geoves.surfaces.evidence import Evidence
@@ -19,6 +21,18 @@ def map_support(basal: Evidence, canvas: Canvas, reach: float) -> Surface:
     """
     points = np.vstack([basal.points, basal.bounds.points])
     by_curve = np.array([kind == "sounding" for kind in (*basal.kind, *basal.bound_kind)], dtype=bool)
+    return _map_places(points, by_curve, canvas, reach)
+
+
+def map_support_together(ensemble: FieldEnsemble, canvas: Canvas, reach: float) -> Surface:
+    """The same by all places that were heard: each bears on the contact, and what was set aside on none."""
+    heard = np.array([not column.set_aside for column in ensemble.columns], dtype=bool)
+    by_curve = np.array([column.kind == "sounding" for column in ensemble.columns], dtype=bool)
+    return _map_places(ensemble.points[heard], by_curve[heard], canvas, reach)
+
+
+def _map_places(points: FloatArray, by_curve: BoolArray, canvas: Canvas, reach: float) -> Surface:
+    """The codes by places (n, 2), of which `by_curve` (n,) are soundings."""
     cells = canvas.cells
     number = _count_within(points, cells, reach)
     wells = _count_within(points[~by_curve], cells, reach)

@@ -26,6 +26,7 @@ from geoves.surfaces.canvas import Canvas, choose_reach, find_covered, find_grou
 from geoves.surfaces.interpolation import Map
 from geoves.surfaces.options import SurfaceOptions
 from geoves.surfaces.stack import CellValues, Columns, assemble_surfaces, cap_columns, summarise_columns
+from geoves.surfaces.support import map_support_together
 
 # Columns of a cell: a power of two of an even sequence.
 COLUMNS_POWER = 7
@@ -84,7 +85,7 @@ def build_surfaces_together(
         grid=grid,
         ground=ground,
         covered=covered,
-        surfaces=surfaces,
+        surfaces={**surfaces, "support": map_support_together(ensemble, canvas, reach)},
         variograms=tuple(_describe(ensemble, f) for f in carrier.varying),
         cross_validations=tuple(_cross_validate(ensemble, interpretation)),
         reach=reach,

@@ -4,7 +4,9 @@ import attrs
 import numpy as np
 
 from geoves.surfaces import SurfaceOptions
-from geoves.surfaces.support import NO_DATUM, ONE_DATUM, SOUNDINGS_ALONE, WITH_WELLS
+from geoves.surfaces.canvas import Canvas
+from geoves.surfaces.support import NO_DATUM, ONE_DATUM, SOUNDINGS_ALONE, WITH_WELLS, map_support_together
+from tests.delivery.joint_county import SET_ASIDE, join
 from tests.surfaces.invented_county import GRID, make_county
 
 
@@ -39,3 +41,21 @@ def test_thresholds_get_a_surface_each():
     thickness = stack.surfaces["deep_gravel_thickness"].estimate[stack.covered]
     assert (thick[thickness > 10.0] > 0.5).all()
     assert (thicker[thickness < 6.0] < 0.5).all()
+
+
+def test_by_one_geology_every_place_that_was_heard_supports_and_no_other(small_results):
+    geology, grid = join(small_results).geology, small_results.stack.grid
+    everywhere = np.ones(grid.shape, dtype=bool)
+    canvas = Canvas(grid, everywhere, np.full(everywhere.sum(), 400.0))
+    support = map_support_together(geology, canvas, 500.0).estimate
+    heard = [i for i, column in enumerate(geology.columns) if column.place != SET_ASIDE]
+    assert len(heard) == len(geology.columns) - 1
+    for row, column in np.argwhere(everywhere)[::11]:
+        away = np.hypot(*(geology.points[heard] - (grid.easting[column], grid.northing[row])).T)
+        near = [geology.columns[heard[i]].kind for i in np.flatnonzero(away <= 500.0)]
+        if len(near) < 2:
+            expected = (NO_DATUM, ONE_DATUM)[len(near)]
+        else:
+            expected = WITH_WELLS if set(near) != {"sounding"} else SOUNDINGS_ALONE
+        assert support[row, column] == expected
+    assert set(np.unique(support)) == {NO_DATUM, ONE_DATUM, SOUNDINGS_ALONE, WITH_WELLS}
