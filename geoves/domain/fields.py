@@ -87,6 +87,8 @@ class JointColumn:
     shift     how far the place's own evidence moved the basal contact from what the others said, in their deviations
     misfit    root mean square of the residuals over their errors, outliers down-weighted; NaN without a curve
     trust     probability that what the place says is of this ground; below a half it was set aside
+    flat_layer_bias  how far flat layers would misread the basal contact's depth here, resistivities known, as a share
+              of it: below 0 too shallow, above 0 too deep; NaN without a curve. What is inferred minds it.
     moved_by_picks  how far the interpreter's picks moved the basal contact here, in deviations before they were heard
     """
 
@@ -104,6 +106,7 @@ class JointColumn:
     misfit: float
     trust: float
     moved_by_picks: float = 0.0
+    flat_layer_bias: float = float("nan")
 
     @property
     def set_aside(self) -> bool:

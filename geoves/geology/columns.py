@@ -29,13 +29,13 @@ def read_columns(
         np.asarray(np.linalg.inv(heard.cavity.precision[:, :q, :q])),
     )
     n, m = heard.weighed.weight.shape
-    own = make_columns(
-        state.cloud.unknowns[:, :, :q].reshape(n * m, q), np.repeat(task.places.ceiling_depth, m), task.order
-    )
+    fields = _as_they_are(state, heard)[:, :, :q].reshape(n * m, q)
+    own = make_columns(fields, np.repeat(task.places.ceiling_depth, m), task.order)
     others = _columns_of_others(cavity_mean, cavity_covariance, task)
     misfit = _misfits(task, state, heard)
     mean, covariance = state.posterior.at_places()
     resistivity = slice(task.order.first_resistivity, task.order.grading)
+    bias = np.where(np.isfinite(task.spreads.largest), np.expm1(state.misreading.log_depth), np.nan)
     columns = []
     for i, (name, kind) in enumerate(zip(listed.names, listed.kinds, strict=True)):
         trusted = heard.trust[i] >= 0.5
@@ -63,10 +63,26 @@ def read_columns(
                 shift=float(moved),
                 misfit=float(misfit[i]),
                 trust=float(heard.trust[i]),
+                flat_layer_bias=float(bias[i]),
                 moved_by_picks=0.0 if before is None else _moved(before[i], basal),
             )
         )
     return tuple(columns)
+
+
+def _as_they_are(state: State, heard: Heard) -> FloatArray:
+    """Unknowns (n, m, p) of the clouds with the contact where it is, not where flat layers have it read.
+
+    What is read is the contact moved by a normal number; given what is read and what others say, that number is known
+    in part, and the rest of it is drawn.
+    """
+    unknowns = state.cloud.unknowns.copy()
+    step, variance = state.misreading.step[:, None], state.misreading.variance[:, None]
+    pulled = np.matmul(unknowns - heard.as_read.mean[:, None], heard.as_read.precision[:, :, :1])[..., 0]
+    left = variance - variance**2 * heard.as_read.precision[:, 0, 0][:, None]
+    normal = np.random.default_rng(0).standard_normal(unknowns.shape[1])
+    unknowns[:, :, 0] -= step + variance * pulled + np.sqrt(np.maximum(left, 0.0)) * normal
+    return unknowns
 
 
 def _take(columns: Columns, rows: slice) -> Columns:

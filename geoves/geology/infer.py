@@ -14,10 +14,21 @@ from geoves.domain.units import Template
 from geoves.errors import NotInferredError
 from geoves.geology.columns import read_columns
 from geoves.geology.evidence import PlaceList, gather_evidence, list_places, observe
-from geoves.geology.inference import Map, State, Task, all_priors, has_converged, infer, infer_again, listen
+from geoves.geology.flat_layers import list_spreads
+from geoves.geology.inference import (
+    Map,
+    State,
+    Task,
+    all_priors,
+    has_converged,
+    infer,
+    infer_again,
+    listen,
+    mind_flat_layers,
+)
 from geoves.geology.model import GeologyModel, build_model, plan_columns
 from geoves.geology.options import GeologyOptions
-from geoves.geology.remarks import make_remarks
+from geoves.geology.remarks import MISLEADING, make_remarks
 from geoves.kernels.joint_state import Places
 
 # Fewer soundings than this, or basal contacts known by themselves, and there is no geology to infer.
@@ -96,13 +107,15 @@ def _set_up(
     places = gather_evidence(survey, inverted, listed, model.ceiling, bounds)
     places = _with_observations(places, observe(listed, interpretation, plan, template, options, picks=False))
     steadfast = np.array([kind != "sounding" for kind in listed.kinds])
-    task = Task(listed.names, listed.points, places, model.order, model.ceiling.margin, steadfast)
+    spreads = list_spreads(survey, listed)
+    task = Task(listed.names, listed.points, places, model.order, model.ceiling, spreads, steadfast)
     return listed, Base(task, model, options)
 
 
 def infer_base(base: Base, *, map: Map = map) -> State:  # noqa: A002
-    """The inference without picks."""
-    return infer(base.task, base.model.priors, base.options, map)
+    """The inference without picks, first as if layers were flat."""
+    state = infer(base.task, base.model.priors, base.options, map)
+    return mind_flat_layers(base.task, state, base.options, map)
 
 
 def _with_observations(places: Places, observations: Any) -> Places:
@@ -149,6 +162,11 @@ def _pack(
             "moved_in_the_last_round": state.moved[-1],
             "converged": has_converged(state, options),
             "median_misfit": float(np.nanmedian(misfits)),
+            "misread_by_flat_layers": {
+                column.place: round(column.flat_layer_bias, 3)
+                for column in columns
+                if abs(column.flat_layer_bias) > MISLEADING
+            },
             "set_aside": [column.place for column in columns if column.set_aside],
         },
         remarks=remarks,

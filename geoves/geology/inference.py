@@ -12,9 +12,12 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from geoves.domain.arrays import BoolArray, FloatArray, IntArray
+from geoves.domain.fields import Ceiling
+from geoves.geology.flat_layers import Misreading, Spreads, find_misreading, no_misreading
 from geoves.geology.options import GeologyOptions
 from geoves.kernels import latent_fields, local_clouds
 from geoves.kernels.field_priors import FieldPrior, fit_prior, own_covariance
+from geoves.kernels.flat_layers import move_normals
 from geoves.kernels.joint_state import ColumnOrder, Places
 from geoves.kernels.latent_fields import Posterior, Sites
 from geoves.kernels.local_clouds import Cloud, Normal, Weighed
@@ -33,6 +36,8 @@ HELD = 0.5
 DAMPING = 0.5
 # Rounds before covariances are refitted, from one refit to the next, and at the end without.
 FIRST_REFIT, REFIT_EVERY, ROUNDS_WITHOUT = 3, 3, 5
+# The misreadings of flat layers are found anew every so manieth round.
+MISREAD_EVERY = 2
 # Places are drawn anew every so manieth round.
 REDRAW_EVERY = 2
 
@@ -44,7 +49,8 @@ class Task(NamedTuple):
     points: FloatArray
     places: Places
     order: ColumnOrder
-    margin: float
+    ceiling: Ceiling
+    spreads: Spreads
     steadfast: BoolArray
 
 
@@ -53,6 +59,8 @@ class State(NamedTuple):
 
     priors : of the fields    sites : what the places say    relief : (n,) m    posterior : of the fields at all places
     cloud : of each place    base : (n,) log evidence of each place under the priors alone
+    misreading : by how much flat layers misread each place's basal contact; its cloud and its readings speak of the
+    contact as read, sites and fields of the true one
     moved : root mean square movement of the basal contacts in the last rounds, in deviations, the latest last
     """
 
@@ -62,6 +70,7 @@ class State(NamedTuple):
     posterior: Posterior
     cloud: Cloud
     base: FloatArray
+    misreading: Misreading
     moved: tuple[float, ...] = ()
 
 
@@ -79,9 +88,12 @@ class Start(NamedTuple):
 
 
 class Heard(NamedTuple):
-    """Each place at the end: what others say of it, its cloud weighed by that, and the trust it has (n,)."""
+    """Each place at the end: what others say of it, the same as its spread would read it, its cloud weighed by that,
+    and the trust it has (n,).
+    """
 
     cavity: Normal
+    as_read: Normal
     weighed: Weighed
     trust: FloatArray
 
@@ -104,7 +116,7 @@ def infer(
         start.unknowns[:, task.order.first_presence : task.order.first_deep] = there
     cloud = _draw(task, np.arange(n), cavity, starts, options, 0, map)
     base = local_clouds.weigh(cloud, cavity).log_evidence
-    state = State(tuple(priors), sites, relief, posterior, cloud, base)
+    state = State(tuple(priors), sites, relief, posterior, cloud, base, no_misreading(n))
     for sweep in range(options.sweeps):
         state = _hear(task, state, sweep, options, map, refit=sweep < options.sweeps - ROUNDS_WITHOUT)
         if sweep >= options.sweeps // 2 and _has_settled(state, options):
@@ -120,7 +132,7 @@ def infer_again(
     map: Map = map,  # noqa: A002
 ) -> State:
     """The same after places in `changed` (n,) say something else: their clouds anew, all sites heard, priors kept."""
-    cavity = find_cavity(task, state)
+    cavity = read_flat(find_cavity(task, state), state.misreading)
     rows = np.flatnonzero(changed)
     cloud = _redraw(task, state.cloud, rows, cavity, options, options.sweeps, map)
     alone = _complete(*_marginal_priors(task, state.priors, state.relief), task)
@@ -134,8 +146,29 @@ def infer_again(
 def listen(task: Task, state: State, options: GeologyOptions) -> Heard:
     """How each place stands to the others at the end."""
     cavity = find_cavity(task, state)
-    weighed = local_clouds.weigh(state.cloud, cavity)
-    return Heard(cavity, weighed, _trust(task, state, weighed, options))
+    as_read = read_flat(cavity, state.misreading)
+    weighed = local_clouds.weigh(state.cloud, as_read)
+    return Heard(cavity, as_read, weighed, _trust(task, state, weighed, options))
+
+
+def mind_flat_layers(task: Task, state: State, options: GeologyOptions, map: Map = map) -> State:  # noqa: A002
+    """The inference gone on with, minding where flat layers mislead: what the contact's relief does to each reading.
+
+    The geology says how it is misread, and what is read anew says more of the geology: a few times over.
+    """
+    for sweep in range(options.flat_layer_sweeps):
+        if sweep % MISREAD_EVERY == 0:
+            found = find_misreading(state.posterior, state.priors[0], task.points, task.ceiling, task.spreads)
+            state = state._replace(misreading=found)
+        state = _hear(task, state, 2 * options.sweeps + sweep, options, map, refit=False)
+    return state
+
+
+def read_flat(cavity: Normal, misreading: Misreading) -> Normal:
+    """What others say of places, as spreads over flat layers would read it."""
+    pull = np.matmul(cavity.precision, cavity.mean[..., None])[..., 0]
+    precision, pull = move_normals(cavity.precision, pull, misreading.step, misreading.variance)
+    return Normal(np.asarray(np.linalg.solve(precision, pull[..., None])[..., 0]), precision)
 
 
 def find_cavity(task: Task, state: State) -> Normal:
@@ -155,8 +188,8 @@ def _has_settled(state: State, options: GeologyOptions) -> bool:
 def _hear(task: Task, state: State, sweep: int, options: GeologyOptions, map: Map, *, refit: bool) -> State:  # noqa: A002
     """One round: cavities, clouds weighed or drawn anew, sites, covariances."""
     q = task.order.n_fields
-    cavity_mean, cavity_precision = latent_fields.cavities(*state.posterior.at_places(), state.sites)
-    cavity = _complete(cavity_mean, cavity_precision, task)
+    cavity = read_flat(find_cavity(task, state), state.misreading)
+    cavity_mean, cavity_precision = cavity.mean[:, :q], cavity.precision[:, :q, :q]
     cloud = state.cloud
     weighed = local_clouds.weigh(cloud, cavity)
     poor = np.flatnonzero(weighed.effective_size < options.least_effective_size)
@@ -171,12 +204,13 @@ def _hear(task: Task, state: State, sweep: int, options: GeologyOptions, map: Ma
     away = mean - cavity_mean
     spread = (trust * (1.0 - trust) * away)[:, :, None] * away[:, None, :]
     covariance = trust[..., None] * covariance + (1.0 - trust[..., None]) * np.linalg.inv(cavity_precision) + spread
-    wanted = latent_fields.match(cavity_mean, cavity_precision, cavity_mean + trust * away, covariance)
+    read = latent_fields.match(cavity_mean, cavity_precision, cavity_mean + trust * away, covariance)
+    wanted = Sites(*move_normals(*read, -state.misreading.step, state.misreading.variance))
     sites = Sites(*(old + DAMPING * (new - old) for old, new in zip(state.sites, wanted, strict=True)))
     priors = state.priors
     if refit and sweep >= FIRST_REFIT and sweep % REFIT_EVERY == 0:
         priors = _refit(task, state)
-    relief = _relief(state.posterior, task.margin) if sweep >= FIRST_REFIT - 1 else state.relief
+    relief = _relief(state.posterior, task.ceiling.margin) if sweep >= FIRST_REFIT - 1 else state.relief
     posterior = _condition(task, priors, sites, relief)
     shift = (posterior.mean[0] - state.posterior.mean[0]) / posterior.deviation(0)
     moved = (*state.moved, float(np.sqrt(np.mean(shift**2))))

@@ -7,6 +7,7 @@ import attrs
 class GeologyOptions:
     """sweeps           most rounds in which every place hears all others; covariances are refitted in the first part
     pick_sweeps         rounds after the interpreter's picks are added
+    flat_layer_sweeps   rounds in which the misreadings of flat layers are minded; 0 takes layers for flat
     settled             the inference has converged when no round moves the basal contacts by more than this, root mean
                         square in deviations
     draws_at_fit        unknowns drawn about each most probable model of a place, one of each start
@@ -20,6 +21,7 @@ class GeologyOptions:
 
     sweeps: int = attrs.field(default=24, validator=attrs.validators.ge(8))
     pick_sweeps: int = attrs.field(default=8, validator=attrs.validators.ge(2))
+    flat_layer_sweeps: int = attrs.field(default=6, validator=attrs.validators.ge(0))
     settled: float = attrs.field(default=0.1, validator=attrs.validators.gt(0))
     draws_at_fit: int = attrs.field(default=100, validator=attrs.validators.ge(20))
     rounds: int = attrs.field(default=10, validator=attrs.validators.ge(1))

@@ -15,6 +15,8 @@ from geoves.geology.options import GeologyOptions
 CONTRADICTED = 3.0
 # A unit is off the template where the middle of what curves know of it lies so many deviations from its range's middle.
 OFF_TEMPLATE, FEWEST_KNOWN, KNOWN_SHARE = 1.3, 5, 0.8
+# Flat layers mislead where they misread the basal contact by more than this share of its depth.
+MISLEADING = 0.05
 # Names that a sentence lists before it counts the rest.
 LISTED = 6
 
@@ -45,6 +47,7 @@ def make_remarks(
         remarks.append(
             f"fitted worse than their errors allow by the one geology: {list_names(poor)}; look at their curves"
         )
+    remarks += _tell_misreadings(columns)
     remarks += _compare_template(columns, template)
     remarks += _tell_picks(columns, interpretation, template)
     return tuple(remarks)
@@ -58,6 +61,26 @@ def list_names(names: Sequence[str]) -> str:
     """
     more = len(names) - LISTED
     return ", ".join(names[:LISTED]) + (f" and {more} more" if more > 0 else "")
+
+
+def _tell_misreadings(columns: Sequence[JointColumn]) -> list[str]:
+    """Soundings at which flat layers mislead, worst first, each with its sign and size."""
+    misled = sorted((one for one in columns if abs(one.flat_layer_bias) > MISLEADING), key=_by_misreading)
+    remarks = []
+    for sign, words in ((-1.0, "too shallow (inside a valley)"), (1.0, "too deep (outside a valley's edge)")):
+        those = [one for one in misled if sign * one.flat_layer_bias > 0]
+        if those:
+            named = [f"{one.place} ({100.0 * one.flat_layer_bias:+.0f} %)" for one in those]
+            remarks.append(
+                f"layers are not flat under {len(those)} sounding{'s' * (len(those) != 1)}, where flat layers by "
+                f"themselves would put the basal contact {words} by more than {MISLEADING:.0%} of its depth: "
+                f"{list_names(named)}; this was taken into account, and their errors are wider"
+            )
+    return remarks
+
+
+def _by_misreading(column: JointColumn) -> float:
+    return -abs(column.flat_layer_bias)
 
 
 def _compare_template(columns: Sequence[JointColumn], template: Template) -> list[str]:
