@@ -5,7 +5,7 @@ from typing import NamedTuple
 import numpy as np
 from scipy.linalg import cho_factor, cho_solve
 
-from geoves.domain.arrays import FloatArray
+from geoves.domain.arrays import BoolArray, FloatArray
 from geoves.domain.fields import Ceiling
 from geoves.domain.survey import Survey
 from geoves.geology.evidence import PlaceList
@@ -46,6 +46,10 @@ class Misreading(NamedTuple):
     deviation: FloatArray
     step: FloatArray
     variance: FloatArray
+
+    def without(self, places: BoolArray) -> "Misreading":
+        """The same, where `places` (n,) are taken at their word; what flat layers would make of them is still told."""
+        return self._replace(step=np.where(places, 0.0, self.step), variance=np.where(places, 0.0, self.variance))
 
 
 def list_spreads(survey: Survey, listed: PlaceList) -> Spreads:

@@ -132,6 +132,8 @@ def infer_again(
     map: Map = map,  # noqa: A002
 ) -> State:
     """The same after places in `changed` (n,) say something else: their clouds anew, all sites heard, priors kept."""
+    # What was decided there speaks of the contact as it is, and is not moved by what flat layers would have made of it.
+    state = state._replace(misreading=state.misreading.without(changed))
     cavity = read_flat(find_cavity(task, state), state.misreading)
     rows = np.flatnonzero(changed)
     cloud = _redraw(task, state.cloud, rows, cavity, options, options.sweeps, map)

@@ -47,7 +47,7 @@ def make_remarks(
         remarks.append(
             f"fitted worse than their errors allow by the one geology: {list_names(poor)}; look at their curves"
         )
-    remarks += _tell_misreadings(columns)
+    remarks += tell_misreadings(columns)
     remarks += _compare_template(columns, template)
     remarks += _tell_picks(columns, interpretation, template)
     return tuple(remarks)
@@ -63,7 +63,7 @@ def list_names(names: Sequence[str]) -> str:
     return ", ".join(names[:LISTED]) + (f" and {more} more" if more > 0 else "")
 
 
-def _tell_misreadings(columns: Sequence[JointColumn]) -> list[str]:
+def tell_misreadings(columns: Sequence[JointColumn]) -> list[str]:
     """Soundings at which flat layers mislead, worst first, each with its sign and size."""
     misled = sorted((one for one in columns if abs(one.flat_layer_bias) > MISLEADING), key=_by_misreading)
     remarks = []

@@ -3,7 +3,7 @@
 A spread reads a mean of the contact around it: shallower ground beside a valley's floor draws the reading up, the
 valley beside its shoulder draws it down. The mean is of powers of depth, over a footprint as wide as some depths, along
 one line through the place at a time. Shapes of footprints were fitted to a 2.5-dimensional response, see
-docs/explanation/flat-layers.md. Inputs are trusted.
+docs/explanation/one-geology.md. Inputs are trusted.
 """
 
 from typing import NamedTuple
