@@ -21,7 +21,7 @@ class GeologyOptions:
 
     sweeps: int = attrs.field(default=24, validator=attrs.validators.ge(8))
     pick_sweeps: int = attrs.field(default=8, validator=attrs.validators.ge(2))
-    flat_layer_sweeps: int = attrs.field(default=6, validator=attrs.validators.ge(0))
+    flat_layer_sweeps: int = attrs.field(default=8, validator=attrs.validators.ge(0))
     settled: float = attrs.field(default=0.1, validator=attrs.validators.gt(0))
     draws_at_fit: int = attrs.field(default=100, validator=attrs.validators.ge(20))
     rounds: int = attrs.field(default=10, validator=attrs.validators.ge(1))
