@@ -211,6 +211,7 @@ def _joint_row(column: JointColumn | None) -> dict[str, Any]:
         "others_gravel_probability": column.others_gravel_probability,
         "together_state": column.state,
         "together_misfit": column.misfit,
+        "flat_layer_bias": column.flat_layer_bias,
         "together_shift": column.shift,
         "moved_by_picks": column.moved_by_picks,
     }

@@ -133,6 +133,13 @@ _TOGETHER_MISFIT = Column(
     "Root mean square of the curve's residuals over their errors under the one geology; about 1 is as it should be.",
     "ratio",
 )
+_FLAT_LAYER_BIAS = Column(
+    "flat_layer_bias",
+    "Misreading by flat layers",
+    "How far flat layers by themselves would misread the depth of the basal contact here, resistivities known, as a "
+    "share of it: below 0 too shallow, above 0 too deep. What the method together says minds it already.",
+    "ratio",
+)
 
 _SOUNDING = Column("sounding", "Sounding", "Name of the sounding.")
 _WELL = Column("well", "Well", "Name of the well.")
@@ -202,6 +209,7 @@ LAYERS: Mapping[str, LayerWords] = MappingProxyType(
                     Column("water_level_error", "Water level error", "Standard error of that depth.", "length"),
                     *_TOGETHER,
                     _TOGETHER_MISFIT,
+                    _FLAT_LAYER_BIAS,
                     _GROUND,
                     Column(
                         "investigated_depth",

@@ -27,7 +27,12 @@ def join(results):
     columns = [
         joint_column(one.name, "sounding", (59.0, 66.0, 72.0), (60.0, 71.0, 83.0)) for one in results.survey.soundings
     ]
-    changes = {SET_ASIDE: {"trust": 0.07}, POOR: {"misfit": 2.34}, MOVED: {"moved_by_picks": 1.43}}
+    changes = {
+        SET_ASIDE: {"trust": 0.07},
+        POOR: {"misfit": 2.34},
+        MOVED: {"moved_by_picks": 1.43},
+        "Larch 1": {"flat_layer_bias": -0.08},
+    }
     columns = [attrs.evolve(one, **changes.get(one.place, {})) for one in columns]
     columns += [joint_column(one.name, "well", (69.0, 70.0, 71.0), (58.0, 68.0, 80.0)) for one in results.survey.wells]
     places = [*results.survey.soundings, *results.survey.wells]

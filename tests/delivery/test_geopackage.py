@@ -301,6 +301,8 @@ def test_one_geology_stands_beside_what_each_place_says(small_results, small_res
     assert soundings["together_state"].value_counts().to_dict() == {"heard": 6, "set_aside": 1, "poor_fit": 1}
     assert soundings.loc[POOR, "together_misfit"] == 2.34
     assert soundings.loc[MOVED, "moved_by_picks"] == 1.43
+    assert row["flat_layer_bias"] == -0.08
+    assert np.isnan(soundings.loc[POOR, "flat_layer_bias"])
     well = geopandas.read_file(path, layer="wells").iloc[0]
     assert well["others_basal_depth"] == pytest.approx(68.0 / unit, abs=1e-3)
     domain = query(
