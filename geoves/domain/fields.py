@@ -6,7 +6,7 @@ from typing import Any, Literal
 import attrs
 import numpy as np
 
-from geoves.domain.arrays import FloatArray, by_value, floats, shape
+from geoves.domain.arrays import FloatArray, IntArray, by_value, floats, integers, shape
 from geoves.domain.tops import PlaceKind
 
 # Residuals this many times their errors: the inference fits a curve worse than its errors allow.
@@ -124,6 +124,10 @@ class JointColumn:
 class FieldEnsemble:
     """All fields at all places: mean (q, n) and covariance (q n, q n), field-major, of a normal approximation.
 
+    Of many places only each one's own covariance is kept, (n, q, q), and what each says, as sites: precision (n, q, q)
+    and shift (n, q), precision times value; `everywhere` are rows of places that all others hear, `near` how many of
+    the nearest do a cell.
+
     points (n, 2) in the unit of the CRS; ground (n,) m; relief (n,) m, how far the basal contact lies below the plain;
     members (m, q, n) drawn from the whole; diagnostics  what the inference says of itself, for people and run.json.
     """
@@ -140,3 +144,14 @@ class FieldEnsemble:
     members: FloatArray = attrs.field(converter=floats, eq=by_value, repr=shape)
     diagnostics: Mapping[str, Any] = attrs.field(factory=dict)
     remarks: tuple[str, ...] = ()
+    site_precision: FloatArray = attrs.field(
+        factory=lambda: np.empty((0, 0, 0)), converter=floats, eq=by_value, repr=shape
+    )
+    site_shift: FloatArray = attrs.field(factory=lambda: np.empty((0, 0)), converter=floats, eq=by_value, repr=shape)
+    everywhere: IntArray = attrs.field(default=(), converter=integers, eq=by_value, repr=shape)
+    near: int = 0
+
+    @property
+    def is_by_windows(self) -> bool:
+        """Whether the places were too many to be solved at once."""
+        return self.covariance.ndim == 3

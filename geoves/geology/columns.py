@@ -1,6 +1,7 @@
 """Clouds and cavities as what a person reads of a place: itself, the others, both together."""
 
 from collections.abc import Sequence
+from typing import NamedTuple
 
 import numpy as np
 from scipy.special import ndtri
@@ -8,9 +9,12 @@ from scipy.stats import qmc
 
 from geoves.domain.arrays import FloatArray
 from geoves.domain.fields import JointColumn
+from geoves.domain.tops import PlaceKind
 from geoves.geology.evidence import PlaceList
-from geoves.geology.inference import Heard, State, Task
+from geoves.geology.flat_layers import Misreading
+from geoves.geology.inference import Heard, State, Task, split_rows
 from geoves.kernels.joint_state import Columns, make_columns, standard_residuals
+from geoves.kernels.local_clouds import Cloud
 
 # Present means at least this thick, m.
 PRESENT = 1.0
@@ -23,21 +27,51 @@ def read_columns(
     task: Task, listed: PlaceList, state: State, heard: Heard, before: Sequence[JointColumn] | None = None
 ) -> tuple[JointColumn, ...]:
     """A column for every place; `before` are those without picks, if they were heard since."""
+    mean, covariance = state.posterior.at_places()
+    columns: list[JointColumn] = []
+    for rows in split_rows(len(task.names)):
+        part = _Part(
+            task._replace(places=task.places.take(rows), spreads=task.spreads.take(rows)),
+            Cloud(*(values[rows] for values in state.cloud)),
+            state.misreading.take(rows),
+            heard.take(rows),
+            mean[rows],
+            covariance[rows],
+        )
+        those = slice(rows[0], rows[-1] + 1)
+        columns += _read_part(part, listed.names[those], listed.kinds[those], before and before[those])
+    return tuple(columns)
+
+
+class _Part(NamedTuple):
+    """Some of the places: what is known of them, and their fields' mean (b, q) and covariance (b, q, q)."""
+
+    task: Task
+    cloud: Cloud
+    misreading: Misreading
+    heard: Heard
+    mean: FloatArray
+    covariance: FloatArray
+
+
+def _read_part(
+    part: _Part, names: Sequence[str], kinds: Sequence[PlaceKind], before: Sequence[JointColumn] | None
+) -> list[JointColumn]:
+    task, cloud, _, heard, mean, covariance = part
     q = task.order.n_fields
     cavity_mean, cavity_covariance = (
         heard.cavity.mean[:, :q],
         np.asarray(np.linalg.inv(heard.cavity.precision[:, :q, :q])),
     )
     n, m = heard.weighed.weight.shape
-    fields = _as_they_are(state, heard)[:, :, :q].reshape(n * m, q)
+    fields = _as_they_are(cloud, part.misreading, heard)[:, :, :q].reshape(n * m, q)
     own = make_columns(fields, np.repeat(task.places.ceiling_depth, m), task.order)
     others = _columns_of_others(cavity_mean, cavity_covariance, task)
-    misfit = _misfits(task, state, heard)
-    mean, covariance = state.posterior.at_places()
+    misfit = _misfits(task, cloud, heard)
     resistivity = slice(task.order.first_resistivity, task.order.grading)
-    bias = np.where(np.isfinite(task.spreads.largest), np.expm1(state.misreading.log_depth), np.nan)
+    bias = np.where(np.isfinite(task.spreads.largest), np.expm1(part.misreading.log_depth), np.nan)
     columns = []
-    for i, (name, kind) in enumerate(zip(listed.names, listed.kinds, strict=True)):
+    for i, (name, kind) in enumerate(zip(names, kinds, strict=True)):
         trusted = heard.trust[i] >= 0.5
         rows = slice(i * m, (i + 1) * m)
         weight = heard.weighed.weight[i]
@@ -67,17 +101,17 @@ def read_columns(
                 moved_by_picks=0.0 if before is None else _moved(before[i], basal),
             )
         )
-    return tuple(columns)
+    return columns
 
 
-def _as_they_are(state: State, heard: Heard) -> FloatArray:
+def _as_they_are(cloud: Cloud, misreading: Misreading, heard: Heard) -> FloatArray:
     """Unknowns (n, m, p) of the clouds with the contact where it is, not where flat layers have it read.
 
     What is read is the contact moved by a normal number; given what is read and what others say, that number is known
     in part, and the rest of it is drawn.
     """
-    unknowns = state.cloud.unknowns.copy()
-    step, variance = state.misreading.step[:, None], state.misreading.variance[:, None]
+    unknowns = cloud.unknowns.copy()
+    step, variance = misreading.step[:, None], misreading.variance[:, None]
     pulled = np.matmul(unknowns - heard.as_read.mean[:, None], heard.as_read.precision[:, :, :1])[..., 0]
     left = variance - variance**2 * heard.as_read.precision[:, 0, 0][:, None]
     normal = np.random.default_rng(0).standard_normal(unknowns.shape[1])
@@ -113,10 +147,10 @@ def weighted_quantiles(values: FloatArray, weight: FloatArray) -> FloatArray:
     return np.interp(QUANTILES, share, values[order])
 
 
-def _misfits(task: Task, state: State, heard: Heard) -> FloatArray:
+def _misfits(task: Task, cloud: Cloud, heard: Heard) -> FloatArray:
     """Root mean square (n,) of the residuals over their errors at the heaviest unknowns; NaN without a curve."""
-    rows = np.arange(len(task.names))
-    heaviest = state.cloud.unknowns[rows, np.argmax(heard.weighed.weight, axis=1)]
+    rows = np.arange(len(cloud.unknowns))
+    heaviest = cloud.unknowns[rows, np.argmax(heard.weighed.weight, axis=1)]
     residual, weight = standard_residuals(heaviest, task.places, task.order)
     total = weight.sum(axis=1)
     return np.where(total > 0, np.sqrt(np.sum(weight * residual**2, axis=1) / np.maximum(total, 1e-12)), np.nan)

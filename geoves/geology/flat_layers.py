@@ -5,11 +5,12 @@ from typing import NamedTuple
 import numpy as np
 from scipy.linalg import cho_factor, cho_solve
 
-from geoves.domain.arrays import BoolArray, FloatArray
+from geoves.domain.arrays import BoolArray, FloatArray, IntArray
 from geoves.domain.fields import Ceiling
 from geoves.domain.survey import Survey
 from geoves.geology.evidence import PlaceList
 from geoves.kernels.field_priors import FieldPrior, own_covariance, prior_covariance
+from geoves.kernels.field_windows import Told, condition_told
 from geoves.kernels.flat_layers import IN_LINE, OFFSETS, SQUARE, read_contact
 from geoves.kernels.latent_fields import Posterior
 
@@ -35,6 +36,9 @@ class Spreads(NamedTuple):
     ground: FloatArray
     crs_unit_metres: float
 
+    def take(self, rows: IntArray) -> "Spreads":
+        return Spreads(self.azimuth[rows], self.largest[rows], self.ground[rows], self.crs_unit_metres)
+
 
 class Misreading(NamedTuple):
     """By how much flat layers misread the basal contact at n places: natural log of the depth read over the true one.
@@ -46,6 +50,9 @@ class Misreading(NamedTuple):
     deviation: FloatArray
     step: FloatArray
     variance: FloatArray
+
+    def take(self, rows: IntArray) -> "Misreading":
+        return Misreading(*(values[rows] for values in self))
 
     def without(self, places: BoolArray) -> "Misreading":
         """The same, where `places` (n,) are taken at their word; what flat layers would make of them is still told."""
@@ -89,6 +96,16 @@ def find_misreading(
     # A depth is the ceiling's and what lies below it: only that is the field's.
     moved = np.log(np.maximum(1.0 + step * np.expm1(shift), LEAST_LEFT))
     return Misreading(shift, np.sqrt(variance), moved, step**2 * variance)
+
+
+def misread_window(said: tuple[Told, Spreads], *, priors: tuple[FieldPrior, ...], ceiling: Ceiling) -> Misreading:
+    """The same of a window's own places, from all that it hears."""
+    told, spreads = said
+    own = np.arange(told.n_own)
+    asked = np.full(len(spreads.largest), np.nan)
+    asked[own] = spreads.largest[own]
+    posterior = condition_told(told, priors=priors)
+    return find_misreading(posterior, priors[0], told.points, ceiling, spreads._replace(largest=asked)).take(own)
 
 
 class _Known(NamedTuple):

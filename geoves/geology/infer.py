@@ -29,6 +29,14 @@ from geoves.geology.inference import (
 from geoves.geology.model import GeologyModel, build_model, plan_columns
 from geoves.geology.options import GeologyOptions
 from geoves.geology.remarks import MISLEADING, make_remarks
+from geoves.kernels.field_windows import (
+    NearbyPosterior,
+    WindowSizes,
+    choose_by_name,
+    cut_windows,
+    draw_windows,
+    tell,
+)
 from geoves.kernels.joint_state import Places
 
 # Fewer soundings than this, or basal contacts known by themselves, and there is no geology to infer.
@@ -81,7 +89,7 @@ def infer_geology(
             "the joint inference lost its footing in rounding; each place speaks for itself"
         ) from error
     remarks = make_remarks(columns, state, template, interpretation, options)
-    return _pack(listed, model, state, columns, options, remarks)
+    return _pack(listed, Base(task, model, options), state, columns, remarks)
 
 
 def _set_up(
@@ -109,6 +117,12 @@ def _set_up(
     steadfast = np.array([kind != "sounding" for kind in listed.kinds])
     spreads = list_spreads(survey, listed)
     task = Task(listed.names, listed.points, places, model.order, model.ceiling, spreads, steadfast)
+    if len(listed.names) > options.all_at_once:
+        sizes = WindowSizes(options.window, options.halo, options.everywhere)
+        task = task._replace(
+            windows=cut_windows(listed.points, listed.names, sizes),
+            sample=choose_by_name(listed.names, options.refit_places),
+        )
     return listed, Base(task, model, options)
 
 
@@ -131,12 +145,12 @@ def _places_with_picks(listed: PlaceList, interpretation: Interpretation) -> Boo
 
 def _pack(
     listed: PlaceList,
-    model: GeologyModel,
+    base: Base,
     state: State,
     columns: tuple[JointColumn, ...],
-    options: GeologyOptions,
     remarks: tuple[str, ...],
 ) -> FieldEnsemble:
+    task, model, options = base
     fields = tuple(
         Field(
             name.name, name.title, name.unit, prior.mean, prior.covariance.model, prior.covariance.nugget,
@@ -156,7 +170,7 @@ def _pack(
         relief=state.relief,
         mean=state.posterior.mean,
         covariance=state.posterior.covariance,
-        members=_draw_members(state, options),
+        members=_draw_members(task, state, options),
         diagnostics={
             "rounds": len(state.moved),
             "moved_in_the_last_round": state.moved[-1],
@@ -170,11 +184,27 @@ def _pack(
             "set_aside": [column.place for column in columns if column.set_aside],
         },
         remarks=remarks,
+        **_keep_sites(task, state, options),
     )
 
 
-def _draw_members(state: State, options: GeologyOptions) -> FloatArray:
+def _keep_sites(task: Task, state: State, options: GeologyOptions) -> dict[str, Any]:
+    """What the surfaces need of places that were solved window by window."""
+    if not task.windows:
+        return {}
+    return {
+        "site_precision": state.sites.precision,
+        "site_shift": state.sites.shift,
+        "everywhere": choose_by_name(task.names, options.everywhere),
+        "near": options.window + options.halo,
+    }
+
+
+def _draw_members(task: Task, state: State, options: GeologyOptions) -> FloatArray:
     """Realisations (m, q, n) of all fields at all places."""
+    if isinstance(state.posterior, NearbyPosterior):
+        told = (tell(one.heard, task.points, state.relief, state.sites, len(one.own)) for one in task.windows)
+        return draw_windows(task.windows, told, state.priors, options.members, (options.random_seed, 1))
     q, n = state.posterior.mean.shape
     covariance = state.posterior.covariance
     scale = 1e-10 * np.mean(np.diag(covariance))

@@ -13,10 +13,18 @@ import numpy as np
 
 from geoves.domain.arrays import BoolArray, FloatArray, IntArray
 from geoves.domain.fields import Ceiling
-from geoves.geology.flat_layers import Misreading, Spreads, find_misreading, no_misreading
+from geoves.geology.flat_layers import Misreading, Spreads, find_misreading, misread_window, no_misreading
 from geoves.geology.options import GeologyOptions
 from geoves.kernels import latent_fields, local_clouds
-from geoves.kernels.field_priors import FieldPrior, fit_prior, own_covariance
+from geoves.kernels.field_priors import FieldPrior, fit_prior, own_covariance, own_variance
+from geoves.kernels.field_windows import (
+    NearbyPosterior,
+    Window,
+    condition_told,
+    condition_window,
+    join_windows,
+    tell,
+)
 from geoves.kernels.flat_layers import move_normals
 from geoves.kernels.joint_state import ColumnOrder, Places
 from geoves.kernels.latent_fields import Posterior, Sites
@@ -38,12 +46,17 @@ DAMPING = 0.5
 FIRST_REFIT, REFIT_EVERY, ROUNDS_WITHOUT = 3, 3, 5
 # The misreadings of flat layers are found anew every so manieth round.
 MISREAD_EVERY = 2
+# Places whose clouds are weighed at a time: bounds the memory.
+TOGETHER = 300
 # Places are drawn anew every so manieth round.
 REDRAW_EVERY = 2
 
 
 class Task(NamedTuple):
-    """What is to be inferred: n places and the order of their columns; `steadfast` (n,) are never set aside."""
+    """What is to be inferred: n places and the order of their columns; `steadfast` (n,) are never set aside.
+
+    windows : of the places, none where all are solved at once    sample : (s,) rows that covariances are fitted to then
+    """
 
     names: tuple[str, ...]
     points: FloatArray
@@ -52,6 +65,8 @@ class Task(NamedTuple):
     ceiling: Ceiling
     spreads: Spreads
     steadfast: BoolArray
+    windows: tuple[Window, ...] = ()
+    sample: IntArray | None = None
 
 
 class State(NamedTuple):
@@ -67,7 +82,7 @@ class State(NamedTuple):
     priors: tuple[FieldPrior, ...]
     sites: Sites
     relief: FloatArray
-    posterior: Posterior
+    posterior: Posterior | NearbyPosterior
     cloud: Cloud
     base: FloatArray
     misreading: Misreading
@@ -97,6 +112,10 @@ class Heard(NamedTuple):
     weighed: Weighed
     trust: FloatArray
 
+    def take(self, rows: IntArray) -> "Heard":
+        weighed = Weighed(*(values[rows] for values in self.weighed))
+        return Heard(self.cavity.take(rows), self.as_read.take(rows), weighed, self.trust[rows])
+
 
 def infer(
     task: Task,
@@ -108,14 +127,14 @@ def infer(
     n, q = len(task.names), task.order.n_fields
     sites = Sites(np.zeros((n, q, q)), np.zeros((n, q)))
     relief = np.zeros(n)
-    posterior = _condition(task, priors, sites, relief)
+    posterior = _condition(task, priors, sites, relief, map)
     cavity = _complete(*latent_fields.cavities(*posterior.at_places(), sites), task)
     starts = [Start(cavity.mean.copy(), held=True) for _ in STARTS]
     for start, (deeper, there) in zip(starts, STARTS, strict=True):
         start.unknowns[:, 0] += deeper
         start.unknowns[:, task.order.first_presence : task.order.first_deep] = there
     cloud = _draw(task, np.arange(n), cavity, starts, options, 0, map)
-    base = local_clouds.weigh(cloud, cavity).log_evidence
+    base = weigh_clouds(cloud, cavity).log_evidence
     state = State(tuple(priors), sites, relief, posterior, cloud, base, no_misreading(n))
     for sweep in range(options.sweeps):
         state = _hear(task, state, sweep, options, map, refit=sweep < options.sweeps - ROUNDS_WITHOUT)
@@ -137,8 +156,8 @@ def infer_again(
     cavity = read_flat(find_cavity(task, state), state.misreading)
     rows = np.flatnonzero(changed)
     cloud = _redraw(task, state.cloud, rows, cavity, options, options.sweeps, map)
-    alone = _complete(*_marginal_priors(task, state.priors, state.relief), task)
-    base = np.where(changed, local_clouds.weigh(cloud, alone).log_evidence, state.base)
+    alone = _complete(*_marginal_priors(task, state.priors), task)
+    base = np.where(changed, weigh_clouds(cloud, alone).log_evidence, state.base)
     state = state._replace(cloud=cloud, base=base, moved=())
     for sweep in range(options.pick_sweeps):
         state = _hear(task, state, options.sweeps + 1 + sweep, options, map, refit=False)
@@ -149,7 +168,7 @@ def listen(task: Task, state: State, options: GeologyOptions) -> Heard:
     """How each place stands to the others at the end."""
     cavity = find_cavity(task, state)
     as_read = read_flat(cavity, state.misreading)
-    weighed = local_clouds.weigh(state.cloud, as_read)
+    weighed = weigh_clouds(state.cloud, as_read)
     return Heard(cavity, as_read, weighed, _trust(task, state, weighed, options))
 
 
@@ -160,10 +179,22 @@ def mind_flat_layers(task: Task, state: State, options: GeologyOptions, map: Map
     """
     for sweep in range(options.flat_layer_sweeps):
         if sweep % MISREAD_EVERY == 0:
-            found = find_misreading(state.posterior, state.priors[0], task.points, task.ceiling, task.spreads)
-            state = state._replace(misreading=found)
+            state = state._replace(misreading=_find_misreading(task, state, map))
         state = _hear(task, state, 2 * options.sweeps + sweep, options, map, refit=False)
     return state
+
+
+def _find_misreading(task: Task, state: State, map: Map) -> Misreading:  # noqa: A002
+    """At all places at once, or window by window."""
+    if not isinstance(state.posterior, NearbyPosterior):
+        return find_misreading(state.posterior, state.priors[0], task.points, task.ceiling, task.spreads)
+    told = (
+        (tell(one.heard, task.points, state.relief, state.sites, len(one.own)), task.spreads.take(one.heard))
+        for one in task.windows
+    )
+    found = list(map(partial(misread_window, priors=state.priors, ceiling=task.ceiling), told))
+    back = np.argsort(np.concatenate([one.own for one in task.windows]))
+    return Misreading(*(np.concatenate(values)[back] for values in zip(*found, strict=True)))
 
 
 def read_flat(cavity: Normal, misreading: Misreading) -> Normal:
@@ -193,12 +224,12 @@ def _hear(task: Task, state: State, sweep: int, options: GeologyOptions, map: Ma
     cavity = read_flat(find_cavity(task, state), state.misreading)
     cavity_mean, cavity_precision = cavity.mean[:, :q], cavity.precision[:, :q, :q]
     cloud = state.cloud
-    weighed = local_clouds.weigh(cloud, cavity)
+    weighed = weigh_clouds(cloud, cavity)
     poor = np.flatnonzero(weighed.effective_size < options.least_effective_size)
     if poor.size and sweep and sweep % REDRAW_EVERY == 0:
         cloud = _redraw(task, cloud, poor, cavity, options, sweep, map)
-        weighed = local_clouds.weigh(cloud, cavity)
-    mean, covariance = local_clouds.moments(cloud.unknowns[:, :, :q], weighed.weight)
+        weighed = weigh_clouds(cloud, cavity)
+    mean, covariance = _find_moments(cloud, weighed, q)
     # A covariance from few effective draws is inverted too large.
     size = weighed.effective_size[:, None, None]
     covariance = covariance * size / np.maximum(size - 1.0 - q, 0.2 * size)
@@ -213,7 +244,7 @@ def _hear(task: Task, state: State, sweep: int, options: GeologyOptions, map: Ma
     if refit and sweep >= FIRST_REFIT and sweep % REFIT_EVERY == 0:
         priors = _refit(task, state)
     relief = _relief(state.posterior, task.ceiling.margin) if sweep >= FIRST_REFIT - 1 else state.relief
-    posterior = _condition(task, priors, sites, relief)
+    posterior = _condition(task, priors, sites, relief, map)
     shift = (posterior.mean[0] - state.posterior.mean[0]) / posterior.deviation(0)
     moved = (*state.moved, float(np.sqrt(np.mean(shift**2))))
     return state._replace(priors=priors, sites=sites, relief=relief, posterior=posterior, cloud=cloud, moved=moved)
@@ -225,31 +256,69 @@ def _trust(task: Task, state: State, weighed: Weighed, options: GeologyOptions) 
     return np.where(task.steadfast, 1.0, 1.0 / (1.0 + np.exp(np.clip(against, -50.0, 50.0))))
 
 
-def _condition(task: Task, priors: Sequence[FieldPrior], sites: Sites, relief: FloatArray) -> Posterior:
+def weigh_clouds(cloud: Cloud, prior: Normal) -> Weighed:
+    """`local_clouds.weigh`, some places at a time."""
+    parts = [
+        local_clouds.weigh(Cloud(*(values[rows] for values in cloud)), prior.take(rows))
+        for rows in split_rows(len(cloud.unknowns))
+    ]
+    return Weighed(*(np.concatenate(values) for values in zip(*parts, strict=True)))
+
+
+def _find_moments(cloud: Cloud, weighed: Weighed, q: int) -> tuple[FloatArray, FloatArray]:
+    """Mean (n, q) and covariance (n, q, q) of the fields in each cloud, some places at a time."""
+    parts = [
+        local_clouds.moments(cloud.unknowns[rows][:, :, :q], weighed.weight[rows])
+        for rows in split_rows(len(cloud.unknowns))
+    ]
+    mean, covariance = (np.concatenate(values) for values in zip(*parts, strict=True))
+    return mean, covariance
+
+
+def split_rows(n: int) -> list[IntArray]:
+    """Rows of n places, some at a time."""
+    return [np.arange(i, min(i + TOGETHER, n)) for i in range(0, n, TOGETHER)]
+
+
+def _condition(
+    task: Task,
+    priors: Sequence[FieldPrior],
+    sites: Sites,
+    relief: FloatArray,
+    map: Map,  # noqa: A002
+) -> Posterior | NearbyPosterior:
+    """Fields given the sites: all at once, or window by window through the map."""
+    if task.windows:
+        told = (tell(one.heard, task.points, relief, sites, len(one.own)) for one in task.windows)
+        return join_windows(task.windows, list(map(partial(condition_window, priors=tuple(priors)), told)))
     mean = np.array([prior.mean for prior in priors])
     return latent_fields.condition(
         mean, np.array([own_covariance(prior, task.points, relief) for prior in priors]), sites
     )
 
 
-def _marginal_priors(task: Task, priors: Sequence[FieldPrior], relief: FloatArray) -> tuple[FloatArray, FloatArray]:
+def _marginal_priors(task: Task, priors: Sequence[FieldPrior]) -> tuple[FloatArray, FloatArray]:
     """Mean (n, q) and precision (n, q, q) of each place's fields before anything is heard."""
-    variance = np.array([own_covariance(prior, task.points, relief).diagonal() for prior in priors]).T
-    mean = np.tile([prior.mean for prior in priors], (len(task.names), 1))
-    return mean, np.eye(len(priors)) / variance[:, None, :]
+    n = len(task.names)
+    variance = np.array([own_variance(prior) for prior in priors])
+    return np.tile([prior.mean for prior in priors], (n, 1)), np.tile(np.eye(len(priors)) / variance, (n, 1, 1))
 
 
 def _refit(task: Task, state: State) -> tuple[FieldPrior, ...]:
-    """Every field's covariance from its posterior moments."""
+    """Every field's covariance from its posterior moments: at all places, or at the sample given the sample alone."""
+    posterior, rows = state.posterior, np.arange(len(task.names))
+    if isinstance(posterior, NearbyPosterior):
+        rows = rows if task.sample is None else task.sample
+        posterior = condition_told(tell(rows, task.points, state.relief, state.sites, len(rows)), priors=state.priors)
     fitted = []
     for f, prior in enumerate(state.priors):
-        away = state.posterior.mean[f] - prior.mean
-        moment = state.posterior.block(f) + np.outer(away, away)
-        fitted.append(fit_prior(prior, task.points, state.relief, moment))
+        away = posterior.mean[f] - prior.mean
+        moment = posterior.block(f) + np.outer(away, away)
+        fitted.append(fit_prior(prior, task.points[rows], state.relief[rows], moment))
     return tuple(fitted)
 
 
-def _relief(posterior: Posterior, margin: float) -> FloatArray:
+def _relief(posterior: Posterior | NearbyPosterior, margin: float) -> FloatArray:
     """How far (n,) m the basal contact is expected below the plain."""
     return np.asarray(np.exp(posterior.mean[0] + 0.5 * posterior.deviation(0) ** 2) - margin)
 
@@ -310,7 +379,8 @@ def _draw(
         parts.append((places, cavity.take(part), [start.take(part) for start in starts], [seeds[j] for j in part]))
     size = (options.draws_at_fit, options.rounds, options.draws_a_round)
     clouds = list(map(partial(_draw_block, order=task.order, size=size), parts))
-    return Cloud(*(np.concatenate(values) for values in zip(*clouds, strict=True)))
+    # In one layout wherever they were drawn: sums over another may differ in the last bit.
+    return Cloud(*(np.ascontiguousarray(np.concatenate(values)) for values in zip(*clouds, strict=True)))
 
 
 def _draw_block(

@@ -17,6 +17,11 @@ class GeologyOptions:
     contradiction       probability, beforehand, that a place's evidence is not of this ground
     bound_error         m: softness of a bound from a log
     members             realisations of all fields that are kept
+    all_at_once         up to so many places all are solved at once, beyond window by window
+    window              most places of a window
+    halo                nearest places about it that it hears too
+    everywhere          places spread over the whole that every window hears
+    refit_places        beyond all_at_once: places that the fields' covariances are fitted to
     """
 
     sweeps: int = attrs.field(default=24, validator=attrs.validators.ge(8))
@@ -30,5 +35,10 @@ class GeologyOptions:
     contradiction: float = attrs.field(default=0.02, validator=[attrs.validators.gt(0), attrs.validators.lt(0.5)])
     bound_error: float = attrs.field(default=0.5, validator=attrs.validators.gt(0))
     members: int = attrs.field(default=200, validator=attrs.validators.ge(20))
+    all_at_once: int = attrs.field(default=300, validator=attrs.validators.ge(2))
+    window: int = attrs.field(default=60, validator=attrs.validators.ge(2))
+    halo: int = attrs.field(default=60, validator=attrs.validators.ge(1))
+    everywhere: int = attrs.field(default=40, validator=attrs.validators.ge(0))
+    refit_places: int = attrs.field(default=200, validator=attrs.validators.ge(10))
     block: int = attrs.field(default=16, validator=attrs.validators.ge(1))
     random_seed: int = 0

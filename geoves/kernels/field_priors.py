@@ -69,6 +69,14 @@ def own_covariance(prior: FieldPrior, points: FloatArray, relief: FloatArray) ->
     return total
 
 
+def own_variance(prior: FieldPrior) -> float:
+    """The diagonal of `own_covariance`, the same everywhere."""
+    total = prior.covariance.partial_sill + prior.drift_variance
+    if prior.relief_variance:
+        total += prior.relief_variance
+    return total + (prior.covariance.nugget + 1e-9 * total)
+
+
 class _Moments(NamedTuple):
     """A fit's problem in units of the prior's variance and the region's extent."""
 

@@ -30,10 +30,14 @@ class KnownField(NamedTuple):
 
 
 def known_from_data(
-    prior: FieldPrior, points: FloatArray, values: FloatArray, error_variance: FloatArray
+    prior: FieldPrior,
+    points: FloatArray,
+    values: FloatArray,
+    error_variance: FloatArray,
+    relief: FloatArray | None = None,
 ) -> KnownField:
-    """The field at places where it was measured with an error."""
-    relief = np.zeros(len(values))
+    """The field at places where it was measured with an error; without `relief` (n,) none is followed."""
+    relief = np.zeros(len(values)) if relief is None else relief
     own = own_covariance(prior, points, relief)
     factor = cho_factor(own + np.diag(error_variance), lower=True)
     mean = prior.mean + own @ cho_solve(factor, values - prior.mean)

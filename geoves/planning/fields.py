@@ -14,6 +14,7 @@ from geoves.domain.units import Role
 from geoves.errors import EngineError
 from geoves.kernels.covariances import Covariance
 from geoves.kernels.field_priors import FieldPrior
+from geoves.kernels.latent_fields import Sites, cavities
 from geoves.kernels.next_places import Carried, KnownField, carry, known_from_data, variance_at
 
 # Titles under which the method `each` has its variograms.
@@ -22,6 +23,8 @@ BASAL_TITLE, GRAVEL_TITLE = "Log depth of the basal contact", "Thickness of the 
 FREE_MEAN = 100.0
 # Fewer data than this carry no field.
 FEWEST = 3
+# A place that adds less than this share to what others say of a field says nothing of it.
+LEAST_GAIN = 1e-3
 # A thickness counts as no better known than this, m.
 LEAST_THICKNESS_ERROR = 0.5
 
@@ -80,8 +83,23 @@ def relief_at(depths: Depths, known: KnownField, geology: FieldEnsemble | None) 
 
 def _from_ensemble(geology: FieldEnsemble, f: int) -> KnownField:
     q, n = geology.mean.shape
+    prior = _as_prior(geology.fields[f])
+    if geology.is_by_windows:
+        return _from_sites(geology, f, prior)
     covariance = geology.covariance.reshape(q, n, q, n)[f, :, f]
-    return KnownField(_as_prior(geology.fields[f]), geology.points, geology.relief, geology.mean[f], covariance)
+    return KnownField(prior, geology.points, geology.relief, geology.mean[f], covariance)
+
+
+def _from_sites(geology: FieldEnsemble, f: int, prior: FieldPrior) -> KnownField:
+    """One field from what each place adds to what all others say of it: its value, and its error's variance."""
+    sites = Sites(geology.site_precision, geology.site_shift)
+    cavity_mean, cavity_precision = cavities(geology.mean.T, geology.covariance, sites)
+    before = np.linalg.inv(cavity_precision)[:, f, f]
+    after = geology.covariance[:, f, f]
+    gained = 1.0 / after - 1.0 / before
+    telling = gained > LEAST_GAIN / before
+    values = (geology.mean[f] / after - cavity_mean[:, f] / before)[telling] / gained[telling]
+    return known_from_data(prior, geology.points[telling], values, 1.0 / gained[telling], geology.relief[telling])
 
 
 def _as_prior(field: Field) -> FieldPrior:

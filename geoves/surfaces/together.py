@@ -4,15 +4,17 @@ Every cell gets the normal distribution of its fields given all places, fields c
 from that an even set of columns, the same normal numbers everywhere, so that surfaces are as smooth as the fields are.
 """
 
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from functools import partial
 from typing import NamedTuple
 
 import numpy as np
+from scipy.spatial import cKDTree
 from scipy.special import ndtri
 from scipy.stats import qmc
 
-from geoves.domain.arrays import FloatArray
-from geoves.domain.fields import Field, FieldEnsemble
+from geoves.domain.arrays import FloatArray, IntArray
+from geoves.domain.fields import Ceiling, Field, FieldEnsemble
 from geoves.domain.grids import CrossValidation, Grid, SurfaceStack, Variogram
 from geoves.domain.survey import Survey
 from geoves.domain.tops import Interpretation
@@ -21,8 +23,12 @@ from geoves.errors import EngineError
 from geoves.kernels import joint_state
 from geoves.kernels.covariances import Covariance, experimental_variogram
 from geoves.kernels.field_priors import FieldPrior, weights_at
+from geoves.kernels.field_windows import Told, condition_told, hear_about, tell
 from geoves.kernels.joint_state import ColumnOrder, make_columns
+from geoves.kernels.latent_fields import Posterior, Sites
+from geoves.kernels.tiled_kriging import group_by_tile
 from geoves.surfaces.canvas import Canvas, choose_reach, find_covered, find_ground
+from geoves.surfaces.engines import TILE_CELLS
 from geoves.surfaces.interpolation import Map
 from geoves.surfaces.options import SurfaceOptions
 from geoves.surfaces.stack import CellValues, Columns, assemble_surfaces, cap_columns, summarise_columns
@@ -32,6 +38,8 @@ from geoves.surfaces.support import map_support_together
 COLUMNS_POWER = 7
 # Cells whose columns are made at a time: their fields stay in some tens of megabytes.
 CELLS = 1024
+# A tile holds one place for each so many that it hears, on average.
+PLACES_HEARD_PER_TILE = 8
 # Fields are not followed further than this from what is expected, in deviations.
 REACH = 6.0
 
@@ -77,10 +85,9 @@ def build_surfaces_together(
         if not template.with_role(role):
             remarks.append(f"the template has no {role.replace('_', ' ')}: no surface of its {what}")
     carrier = _make_carrier(ensemble, template)
-    work = partial(_summarise_block, carrier=carrier, ensemble=ensemble, template=template, options=options)
-    cells = canvas.cells
-    blocks = [(cells[i : i + CELLS], canvas.ground[i : i + CELLS]) for i in range(0, len(cells), CELLS)]
-    surfaces = assemble_surfaces(map(work, blocks), canvas)
+    work = partial(_summarise_block, carrier=carrier, ceiling=ensemble.ceiling, template=template, options=options)
+    rows, blocks = _cut_tiles(canvas, ensemble) if ensemble.is_by_windows else _cut_blocks(canvas)
+    surfaces = assemble_surfaces(_restore_order(map(work, blocks), rows), canvas)
     return SurfaceStack(
         grid=grid,
         ground=ground,
@@ -101,21 +108,93 @@ def _make_carrier(ensemble: FieldEnsemble, template: Template) -> _Carrier:
     shallow = [i for i, unit in enumerate(template.units) if unit.role is Role.SHALLOW_AQUIFER]
     resistivity = order.first_resistivity + shallow[0] if shallow else None
     varying = (*range(order.first_resistivity), *(() if resistivity is None else (resistivity,)))
-    q, n = ensemble.mean.shape
-    rows = np.array(varying)
     normal = ndtri(qmc.Sobol(len(varying), scramble=True, rng=np.random.default_rng(0)).random_base2(COLUMNS_POWER))
-    return _Carrier(
+    nowhere = _Carrier(
         order=order,
         priors=tuple(_as_prior(field) for field in ensemble.fields),
         varying=varying,
         resistivity=resistivity,
-        points=np.asarray(ensemble.points),
-        relief=np.asarray(ensemble.relief),
-        known=ensemble.mean[rows],
-        covariance=ensemble.covariance.reshape(q, n, q, n)[np.ix_(rows, np.arange(n), rows, np.arange(n))],
+        points=np.empty((0, 2)),
+        relief=np.empty(0),
+        known=np.empty((len(varying), 0)),
+        covariance=np.empty((len(varying), 0, len(varying), 0)),
         normal=np.clip(normal, -REACH, REACH),
         margin=ensemble.ceiling.margin,
     )
+    if ensemble.is_by_windows:
+        return nowhere
+    return _know(nowhere, ensemble.points, ensemble.relief, Posterior(ensemble.mean, ensemble.covariance))
+
+
+def _know(carrier: _Carrier, points: FloatArray, relief: FloatArray, posterior: Posterior) -> _Carrier:
+    """The carrier with what is known at places."""
+    q, n = posterior.mean.shape
+    rows = np.array(carrier.varying)
+    return carrier._replace(
+        points=np.asarray(points),
+        relief=np.asarray(relief),
+        known=posterior.mean[rows],
+        covariance=posterior.covariance.reshape(q, n, q, n)[np.ix_(rows, np.arange(n), rows, np.arange(n))],
+    )
+
+
+class _Block(NamedTuple):
+    """Cells (c, 2) with their ground (c,), and the places they hear where those are not the same for all."""
+
+    cells: FloatArray
+    ground: FloatArray
+    told: Told | None = None
+
+
+def _cut_blocks(canvas: Canvas) -> tuple[IntArray, Iterator[_Block]]:
+    """Rows of the cells in the order of the blocks, and blocks of cells that all hear all places."""
+    cells, ground = canvas.cells, canvas.ground
+    starts = range(0, len(cells), CELLS)
+    return np.arange(len(cells)), (_Block(cells[i : i + CELLS], ground[i : i + CELLS]) for i in starts)
+
+
+def _cut_tiles(canvas: Canvas, ensemble: FieldEnsemble) -> tuple[IntArray, Iterator[_Block]]:
+    """The same for tiles of cells that each hear the places nearest to their centre.
+
+    A tile spans no more than a few of the places that it hears; it hangs on the coordinates alone.
+    """
+    cells, points = canvas.cells, np.asarray(ensemble.points)
+    spacing = float(np.sqrt(np.prod(np.ptp(points, axis=0)) / len(points)))
+    cell = canvas.grid.cell_size
+    side = min(TILE_CELLS * cell, max(cell, np.sqrt(ensemble.near / PLACES_HEARD_PER_TILE) * spacing))
+    tiles = [
+        (part, centre)
+        for rows, centre in group_by_tile(cells, side)
+        for part in np.split(rows, range(CELLS, len(rows), CELLS))
+    ]
+    tree = cKDTree(points)
+    sites = Sites(ensemble.site_precision, ensemble.site_shift)
+
+    def cut() -> Iterator[_Block]:
+        for rows, centre in tiles:
+            near = hear_about(centre, tree, ensemble.near, ensemble.everywhere)
+            yield _Block(cells[rows], canvas.ground[rows], tell(near, points, ensemble.relief, sites, 0))
+
+    return np.concatenate([rows for rows, _ in tiles]), cut()
+
+
+def _restore_order(blocks: Iterable[Mapping[str, CellValues]], rows: IntArray) -> list[dict[str, CellValues]]:
+    """All blocks as one, its cells as they lie on the canvas; `rows` are theirs in the order of the blocks."""
+    parts: dict[str, list[CellValues]] = {}
+    for block in blocks:
+        for name, values in block.items():
+            parts.setdefault(name, []).append(values)
+    back = np.argsort(rows)
+
+    def join(values: Sequence[FloatArray | None]) -> FloatArray | None:
+        known = [one for one in values if one is not None]
+        return np.concatenate(known)[back] if known else None
+
+    whole = {}
+    for name, found in parts.items():
+        estimate, *doubt = (join(one) for one in zip(*found, strict=True))
+        whole[name] = CellValues(np.empty(0) if estimate is None else estimate, *doubt)
+    return [whole]
 
 
 def _as_prior(field: Field) -> FieldPrior:
@@ -124,22 +203,19 @@ def _as_prior(field: Field) -> FieldPrior:
 
 
 def _summarise_block(
-    block: tuple[FloatArray, FloatArray],
-    *,
-    carrier: _Carrier,
-    ensemble: FieldEnsemble,
-    template: Template,
-    options: SurfaceOptions,
+    block: _Block, *, carrier: _Carrier, ceiling: Ceiling, template: Template, options: SurfaceOptions
 ) -> dict[str, CellValues]:
     """What is known of each cell of a block, by surface."""
-    cells, ground = block
+    cells, ground, told = block
+    if told is not None:
+        carrier = _know(carrier, told.points, told.relief, condition_told(told, priors=carrier.priors))
     mean, covariance = _carry(carrier, cells)
     count, c = len(carrier.normal), len(cells)
     factor = np.linalg.cholesky(covariance)
     fields = np.empty((count, c, len(carrier.priors)))
     fields[:] = [prior.mean for prior in carrier.priors]
     fields[:, :, carrier.varying] = mean + np.einsum("cfg,mg->mcf", factor, carrier.normal)
-    ceiling_depth = ground - ensemble.ceiling.elevation(cells)
+    ceiling_depth = ground - ceiling.elevation(cells)
     columns = make_columns(fields.reshape(count * c, -1), np.tile(ceiling_depth, count), carrier.order)
     return summarise_columns(_as_stack(columns, fields, carrier, template), ground, options)
 
