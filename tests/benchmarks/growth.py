@@ -4,7 +4,8 @@
 
 The small invented county (tests/geology/county.py) is laid side by side as often as it takes, one sounding a square
 kilometre. Clouds are small: what is measured is growth, not the time of a real run, whose clouds cost ten times as
-much for every place alike. Each size runs in a process of its own, on one core.
+much for every place alike. Each size runs in a process of its own, on one core; seconds are the
+processor's, which other work on the machine alters less.
 """
 
 import resource
@@ -86,12 +87,12 @@ def measure(n_soundings):
     """Places, seconds of the inference and of the surfaces, peak memory in MB, and how far off the depths are."""
     arguments, grid = make_wide_county(n_soundings)
     before = _peak()
-    start = time.perf_counter()
+    start = time.process_time()
     ensemble = infer_geology(*arguments, OPTIONS)
-    inferred = time.perf_counter()
+    inferred = time.process_time()
     survey, _, said, template = arguments
     build_surfaces_together(ensemble, said, survey, template, grid, SurfaceOptions())
-    end = time.perf_counter()
+    end = time.process_time()
     return len(ensemble.columns), inferred - start, end - inferred, _peak() - before, grid.n_rows * grid.n_columns
 
 
