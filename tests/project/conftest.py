@@ -1,7 +1,5 @@
 """A job on a corner of the demo region, computed once for all tests of this room."""
 
-from functools import partial
-
 import pytest
 
 from geoves.project import run as job
@@ -20,7 +18,7 @@ def fixed_day():
     """Runs of this session are dated alike, and done in this process."""
     with pytest.MonkeyPatch.context() as patch:
         patch.setenv("SOURCE_DATE_EPOCH", EPOCH)
-        patch.setattr(job, "open_engine", partial(open_engine, 1))
+        patch.setattr(job, "open_engine", lambda *_: open_engine(1))
         yield DAY
 
 

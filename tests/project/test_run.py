@@ -155,17 +155,14 @@ def test_what_an_earlier_run_wrote_and_this_one_does_not_is_taken_away(deliver, 
 def test_another_process_with_two_workers_delivers_the_same_bytes(small_county, delivered, tmp_path):
     """The whole delivery, GeoPackage and run.json among it."""
     code = (
-        "import sys\nfrom functools import partial\nfrom pathlib import Path\n"
-        "from geoves.project import run as job\nfrom geoves.project.engines import open_engine\n"
-        "if __name__ == '__main__':\n"
-        "    job.open_engine = partial(open_engine, 2)\n"
-        "    job.run(Path(sys.argv[1]), Path(sys.argv[2]))\n"
+        "import sys\nfrom pathlib import Path\nfrom geoves.project import run as job\n"
+        "if __name__ == '__main__':\n    job.run(Path(sys.argv[1]), Path(sys.argv[2]), workers=2)\n"
     )
     script, out = tmp_path / "again.py", tmp_path / "out"
     script.write_text(code, encoding="utf-8")
     environment = os.environ | {"SOURCE_DATE_EPOCH": EPOCH, "PYTHONPATH": str(Path(__file__).parents[2])}
     call = [sys.executable, str(script), str(small_county), str(out)]
-    done = subprocess.run(call, env=environment, capture_output=True, text=True, check=False, timeout=300)
+    done = subprocess.run(call, env=environment, capture_output=True, text=True, check=False, timeout=600)
     assert done.returncode == 0, done.stderr
     first, second = read_all(delivered), read_all(out)
     assert first.keys() == second.keys()
