@@ -216,7 +216,7 @@ def test_a_region_in_feet_has_the_geology_of_the_same_in_metres(delivered, in_fe
     for name in names:
         metres, feet = read_cells(delivered / "surfaces" / name), read_cells(in_feet / "surfaces" / name)
         assert np.array_equal(np.isnan(metres), np.isnan(feet)), name
-        is_length = not any(word in name for word in ("probability", "resistivity"))
+        is_length = not any(word in name for word in ("probability", "resistivity", "support"))
         with rasterio.open(in_feet / "surfaces" / name) as raster:
             assert raster.units == (("ft",) if is_length else ("ohm m",) if "resistivity" in name else ("1",)), name
         told = feet * FEET if is_length else feet
