@@ -230,9 +230,14 @@ def _hear(task: Task, state: State, sweep: int, options: GeologyOptions, map: Ma
         cloud = _redraw(task, cloud, poor, cavity, options, sweep, map)
         weighed = weigh_clouds(cloud, cavity)
     mean, covariance = _find_moments(cloud, weighed, q)
-    # A covariance from few effective draws is inverted too large.
-    size = weighed.effective_size[:, None, None]
-    covariance = covariance * size / np.maximum(size - 1.0 - q, 0.2 * size)
+    covariance = latent_fields.denoise(cavity_precision, covariance, weighed.effective_size)
+    by_curve = np.flatnonzero(~task.steadfast)
+    gravel = np.arange(task.order.first_presence, task.order.first_resistivity)
+    if gravel.size and not options.curves_tell_gravel:
+        cut = latent_fields.cut(
+            cavity_mean[by_curve], cavity_precision[by_curve], mean[by_curve], covariance[by_curve], gravel
+        )
+        mean[by_curve], covariance[by_curve] = cut
     trust = _trust(task, state._replace(cloud=cloud), weighed, options)[:, None]
     away = mean - cavity_mean
     spread = (trust * (1.0 - trust) * away)[:, :, None] * away[:, None, :]

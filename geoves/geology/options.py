@@ -15,6 +15,7 @@ class GeologyOptions:
     draws_a_round       unknowns drawn each time
     least_effective_size  fewer effective draws than this, and a place is drawn anew
     contradiction       probability, beforehand, that a place's evidence is not of this ground
+    curves_tell_gravel  whether curves may say where gravel lies on the rock; else wells, picks and relief alone
     bound_error         m: softness of a bound from a log
     members             realisations of all fields that are kept
     all_at_once         up to so many places all are solved at once, beyond window by window
@@ -33,6 +34,7 @@ class GeologyOptions:
     draws_a_round: int = attrs.field(default=60, validator=attrs.validators.ge(10))
     least_effective_size: float = attrs.field(default=120.0, validator=attrs.validators.gt(20))
     contradiction: float = attrs.field(default=0.02, validator=[attrs.validators.gt(0), attrs.validators.lt(0.5)])
+    curves_tell_gravel: bool = False
     bound_error: float = attrs.field(default=0.5, validator=attrs.validators.gt(0))
     members: int = attrs.field(default=200, validator=attrs.validators.ge(20))
     all_at_once: int = attrs.field(default=300, validator=attrs.validators.ge(2))

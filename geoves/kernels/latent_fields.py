@@ -14,6 +14,10 @@ from scipy.linalg import cho_factor, cho_solve, lapack
 Floats = NDArray[np.float64]
 
 
+# Fewer effective draws than make this ratio of fields to draws say nothing of which is which.
+MOST_RATIO = 0.5
+
+
 class Sites(NamedTuple):
     """What places say: precision (n, q, q) and shift (n, q), the precision times the value."""
 
@@ -80,6 +84,45 @@ def _whiten(precision: Floats, covariance: Floats) -> Floats:
     """`precision` in the coordinates in which the marginal is standard."""
     root = np.linalg.inv(np.linalg.cholesky(np.linalg.inv(covariance)))
     return root @ precision @ root.transpose(0, 2, 1)
+
+
+def denoise(cavity_precision: Floats, covariance: Floats, size: Floats) -> Floats:
+    """Covariances (n, q, q) from few effective draws, `size` (n,), with what chance alone makes of them taken out.
+
+    Where draws say no more than the cavity, chance still makes some directions narrower and others wider; a site knows
+    only narrower ones, and chance would pass for knowledge, at every place anew. In the cavity's own coordinates what
+    is not known has variance 1: what lies within the spread of chance about it (Marchenko and Pastur 1967) is taken
+    for that, what lies outside is corrected for its bias (spiked covariances: Donoho, Gavish and Johnstone 2018,
+    Annals of Statistics 46, 1742-1778; both from memory).
+    """
+    q = covariance.shape[1]
+    root = np.linalg.cholesky(cavity_precision)
+    seen = root.transpose(0, 2, 1) @ covariance @ root
+    values, vectors = np.linalg.eigh(0.5 * (seen + seen.transpose(0, 2, 1)))
+    ratio = np.minimum(q / size, MOST_RATIO)[:, None]
+    half = 0.5 * (1.0 + values - ratio)
+    bend = np.sqrt(np.maximum(half**2 - values, 0.0))
+    spread = 2.0 * np.sqrt(ratio)
+    true = np.select(
+        [values < 1.0 + ratio - spread, values > 1.0 + ratio + spread], [half - bend, half + bend], np.ones_like(values)
+    )
+    back = np.linalg.inv(root).transpose(0, 2, 1) @ vectors
+    return np.asarray((back * true[:, None]) @ back.transpose(0, 2, 1))
+
+
+def cut(
+    cavity_mean: Floats, cavity_precision: Floats, mean: Floats, covariance: Floats, fields: NDArray[np.int64]
+) -> tuple[Floats, Floats]:
+    """Moments (n, q), (n, q, q) by which a place says nothing of some `fields`, and of the others what follows.
+
+    The fields keep the cavity's own distribution, the others theirs given these: a cut, for what a likelihood would
+    say of them only by its faults (Liu, Bayarri and Berger 2009, Bayesian Analysis 4, 119-150, from memory).
+    """
+    expected = np.linalg.inv(cavity_precision)[:, fields[:, None], fields]
+    found = covariance[:, fields[:, None], fields]
+    slope = np.linalg.solve(found, covariance[:, fields]).transpose(0, 2, 1)
+    new_mean = mean + np.matmul(slope, (cavity_mean - mean)[:, fields, None])[..., 0]
+    return new_mean, covariance + slope @ (expected - found) @ slope.transpose(0, 2, 1)
 
 
 def match(
