@@ -19,8 +19,8 @@ from geoves.kernels.local_clouds import Cloud
 # Present means at least this thick, m.
 PRESENT = 1.0
 QUANTILES = (0.05, 0.5, 0.95)
-# Normal numbers by which the others' say is turned into columns: a power of two of a Sobol sequence.
-OTHERS_POWER = 8
+# Normal numbers by which fields are turned into columns: a power of two of a Sobol sequence.
+NORMALS_POWER = 8
 
 
 def read_columns(
@@ -31,7 +31,9 @@ def read_columns(
     columns: list[JointColumn] = []
     for rows in split_rows(len(task.names)):
         part = _Part(
-            task._replace(places=task.places.take(rows), spreads=task.spreads.take(rows)),
+            task._replace(
+                places=task.places.take(rows), spreads=task.spreads.take(rows), steadfast=task.steadfast[rows]
+            ),
             Cloud(*(values[rows] for values in state.cloud)),
             state.misreading.take(rows),
             heard.take(rows),
@@ -66,18 +68,19 @@ def _read_part(
     n, m = heard.weighed.weight.shape
     fields = _as_they_are(cloud, part.misreading, heard)[:, :, :q].reshape(n * m, q)
     own = make_columns(fields, np.repeat(task.places.ceiling_depth, m), task.order)
-    others = _columns_of_others(cavity_mean, cavity_covariance, task)
+    others = _columns_of_normals(cavity_mean, cavity_covariance, task)
+    together = _columns_of_normals(mean, covariance, task)
     misfit = _misfits(task, cloud, heard)
     resistivity = slice(task.order.first_resistivity, task.order.grading)
     bias = np.where(np.isfinite(task.spreads.largest), np.expm1(part.misreading.log_depth), np.nan)
     columns = []
     for i, (name, kind) in enumerate(zip(names, kinds, strict=True)):
-        trusted = heard.trust[i] >= 0.5
-        rows = slice(i * m, (i + 1) * m)
-        weight = heard.weighed.weight[i]
-        others_here = _take(others, slice(i * 2**OTHERS_POWER, (i + 1) * 2**OTHERS_POWER))
-        here = _take(own, rows) if trusted else others_here
-        share = weight if trusted else np.full(2**OTHERS_POWER, 2.0**-OTHERS_POWER)
+        even = slice(i * 2**NORMALS_POWER, (i + 1) * 2**NORMALS_POWER)
+        others_here = _take(others, even)
+        # A log or a pick is sharp: its cloud tells it. Of a curve the fields took what it is heard for.
+        here, share = _take(together, even), np.full(2**NORMALS_POWER, 2.0**-NORMALS_POWER)
+        if task.steadfast[i]:
+            here, share = _take(own, slice(i * m, (i + 1) * m)), heard.weighed.weight[i]
         gravel, others_gravel = here.deep.sum(axis=1), others_here.deep.sum(axis=1)
         basal = weighted_quantiles(here.basal_depth, share)
         deviation = np.sqrt(cavity_covariance[i, 0, 0])
@@ -123,10 +126,10 @@ def _take(columns: Columns, rows: slice) -> Columns:
     return Columns(*(values[rows] for values in columns))
 
 
-def _columns_of_others(mean: FloatArray, covariance: FloatArray, task: Task) -> Columns:
-    """Columns (n 2^k) that the others expect at each place, from one even set of normal numbers."""
+def _columns_of_normals(mean: FloatArray, covariance: FloatArray, task: Task) -> Columns:
+    """Columns (n 2^k) of normal fields (n, q) at each place, from one even set of normal numbers."""
     n, q = mean.shape
-    normal = even_normals(q, OTHERS_POWER)
+    normal = even_normals(q, NORMALS_POWER)
     factor = np.linalg.cholesky(covariance)
     fields = mean[:, None] + np.matmul(normal, factor.transpose(0, 2, 1))
     fields = np.clip(fields, task.places.lowest[:q], task.places.highest[:q])

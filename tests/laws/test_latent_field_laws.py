@@ -13,7 +13,7 @@ from scipy.optimize import check_grad
 from geoves.kernels import field_priors
 from geoves.kernels.covariances import Covariance, covariance_matrix
 from geoves.kernels.field_priors import FieldPrior, fit_prior, own_covariance, weights_at
-from geoves.kernels.latent_fields import Sites, cavities, condition, match
+from geoves.kernels.latent_fields import Sites, cavities, condition, cut, denoise, match
 
 quick = settings(max_examples=20, deadline=None, derandomize=True)
 seeds = st.integers(0, 2**32 - 1)
@@ -253,3 +253,38 @@ def test_weights_to_cells_are_the_dense_ones():
     expected = np.linalg.solve(own, between)
     np.testing.assert_allclose(weights, expected, atol=1e-6)
     np.testing.assert_allclose(left, 0.2 + 0.8 + 0.3 + 0.7 - np.sum(between * expected, axis=0), atol=1e-6)
+
+
+def test_chance_alone_is_not_taken_for_knowledge():
+    """Draws of the cavity itself know nothing; draws of a sharp field are known as sharp as they are."""
+    generator = np.random.default_rng(4)
+    root = generator.normal(size=(12, 12))
+    precision = (root @ root.T + np.eye(12))[None]
+    draws = generator.multivariate_normal(np.zeros(12), np.linalg.inv(precision[0]), (20, 150))
+    seen = np.array([np.cov(one.T, bias=True) for one in draws])
+    nothing, cavity = np.zeros((20, 12)), np.repeat(precision, 20, axis=0)
+    kept = match(nothing, cavity, nothing, denoise(cavity, seen, np.full(20, 150.0))).precision
+    raw = match(nothing, cavity, nothing, seen).precision
+    share = np.trace(np.linalg.solve(cavity, kept), axis1=1, axis2=2).mean()
+    assert share < 0.1 * np.trace(np.linalg.solve(cavity, raw), axis1=1, axis2=2).mean()
+
+    known = np.diag([0.01] + [1.0] * 11)
+    draws = generator.multivariate_normal(np.zeros(12), known, 150)
+    found = denoise(np.eye(12)[None], np.cov(draws.T, bias=True)[None], np.array([150.0]))
+    np.testing.assert_allclose(found[0], known, atol=0.15)
+    assert found[0, 0, 0] == pytest.approx(0.01, rel=0.5)
+
+
+def test_cut_fields_keep_what_others_say_of_them():
+    """The joint normal of the cavity's marginal and the moments' conditional, written out."""
+    generator = np.random.default_rng(5)
+    one, two = (np.cov(generator.normal(size=(3, 40)) * [[1], [2], [0.5]]) for _ in range(2))
+    mean, cavity_mean = generator.normal(size=3), generator.normal(size=3)
+    new_mean, new = cut(cavity_mean[None], np.linalg.inv(one)[None], mean[None], two[None], np.array([1]))
+    slope = two[[0, 2], 1] / two[1, 1]
+    assert new_mean[0, 1] == pytest.approx(cavity_mean[1])
+    assert new[0, 1, 1] == pytest.approx(one[1, 1])
+    np.testing.assert_allclose(new_mean[0, [0, 2]], mean[[0, 2]] + slope * (cavity_mean[1] - mean[1]))
+    np.testing.assert_allclose(new[0, [0, 2], 1], slope * one[1, 1])
+    left = two[np.ix_([0, 2], [0, 2])] - np.outer(slope, slope) * two[1, 1]
+    np.testing.assert_allclose(new[0][np.ix_([0, 2], [0, 2])], left + np.outer(slope, slope) * one[1, 1])
