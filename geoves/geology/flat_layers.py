@@ -18,8 +18,11 @@ from geoves.kernels.latent_fields import Posterior
 RULE_ERROR, RULE_SHARE = 0.015, 0.25
 # Nothing is moved by more than this, in natural logs of depth.
 MOST = 0.5
-# Azimuths tried where a spread's is not known.
-TRIED = 4
+# Directions in which the contact's relief is looked for, and how far (in depths) most of what is seen lies.
+DIRECTIONS = np.linspace(0.0, np.pi, 8, endpoint=False)
+SEEN_WIDTH = 1.0
+# Variance of the square of a sine over all angles: what an unknown azimuth leaves open.
+SINE_SQUARED_VARIANCE = 0.125
 # Depths (m) below this are not told apart.
 LEAST_DEPTH = 1.0
 # Of the depth below the ceiling no less than this share is left.
@@ -86,13 +89,12 @@ def find_misreading(
     n = len(points)
     shift, variance, step = np.zeros((3, n))
     factor = cho_factor(own_covariance(prior, points, np.zeros(n)), lower=True)
-    known = _Known(points, posterior.mean[0] - prior.mean, posterior.block(0), factor, prior, ceiling)
+    away = posterior.mean[0] - prior.mean
+    known = _Known(points, away, cho_solve(factor, away), posterior.block(0), factor, prior, ceiling)
     for i in np.flatnonzero(np.isfinite(spreads.largest)):
-        azimuth = spreads.azimuth[i]
-        azimuths = [azimuth] if np.isfinite(azimuth) else np.arange(TRIED) * np.pi / TRIED
-        found = np.array([_misread(known, spreads, int(i), float(one)) for one in azimuths])
-        shift[i], step[i] = np.clip(found[:, 0].mean(), -MOST, MOST), found[:, 2].mean()
-        variance[i] = found[:, 1].mean() + found[:, 0].var() + RULE_ERROR**2 + (RULE_SHARE * shift[i]) ** 2
+        found, variance[i], step[i] = _misread(known, spreads, int(i))
+        shift[i] = np.clip(found, -MOST, MOST)
+        variance[i] += RULE_ERROR**2 + (RULE_SHARE * shift[i]) ** 2
     # A depth is the ceiling's and what lies below it: only that is the field's.
     moved = np.log(np.maximum(1.0 + step * np.expm1(shift), LEAST_LEFT))
     return Misreading(shift, np.sqrt(variance), moved, step**2 * variance)
@@ -111,54 +113,75 @@ def misread_window(said: tuple[Told, Spreads], *, priors: tuple[FieldPrior, ...]
 class _Known(NamedTuple):
     """What is known of the basal contact's field at the places: away from its mean (n,), covariance (n, n).
 
-    factor : of its prior covariance there
+    factor : of its prior covariance there    carrier : (n,) that covariance's inverse times `away`
     """
 
     points: FloatArray
     away: FloatArray
+    carrier: FloatArray
     covariance: FloatArray
     factor: tuple[FloatArray, bool]
     prior: FieldPrior
     ceiling: Ceiling
 
 
-def _misread(known: _Known, spreads: Spreads, i: int, azimuth: float) -> tuple[float, float, float]:
-    """At place i: the misreading, the part of its variance that the contact's doubt brings, and d field / d ln depth.
-
-    The lines on which the spread lies and square to it are looked at one after the other, and what they say is added.
+class _Lines(NamedTuple):
+    """Cells on lines through a place, (l u, 2), l u in that order; prior covariances of all places with them (n, l u);
+    the contact's depth below the place's ground, and below the ceiling, m (l, u).
     """
-    ground, centre, cells = spreads.ground[i], OFFSETS.size // 2, []
-    own = ground - known.ceiling.elevation(known.points[i : i + 1])[0]
-    scale = max(own + np.exp(known.prior.mean + known.away[i]), LEAST_DEPTH) / spreads.crs_unit_metres
-    for direction in (azimuth, azimuth + 0.5 * np.pi):
-        away = scale * OFFSETS[:, None] * np.array([np.sin(direction), np.cos(direction)])
-        cells.append(known.points[i] + away)
-    both = np.concatenate(cells)
-    nowhere = np.zeros(len(known.points)), np.zeros(len(both))
-    between = prior_covariance(known.prior, known.points, both, nowhere)
-    weights = np.asarray(cho_solve(known.factor, between))
-    below = np.exp(known.prior.mean + known.away @ weights).reshape(2, -1)
-    depth = np.maximum(below + ground - known.ceiling.elevation(both).reshape(2, -1), LEAST_DEPTH)
-    reach = np.array([spreads.largest[i] / depth[0, centre]])
-    read = [read_contact(line[None] / line[centre], reach, print_)
-            for line, print_ in zip(depth, (IN_LINE, SQUARE), strict=True)]  # fmt: skip
-    slope = np.concatenate([one.slope[0] for one in read]) * (below / depth).ravel()
-    return (
-        float(sum(one.shift[0] for one in read)),
-        _variance(known, (both, between, weights), slope),
-        float(depth[0, centre] / below[0, centre]),
-    )
+
+    cells: FloatArray
+    between: FloatArray
+    depth: FloatArray
+    below: FloatArray
 
 
-def _variance(known: _Known, line: tuple[FloatArray, FloatArray, FloatArray], slope: FloatArray) -> float:
-    """Variance of `slope` (c,) times the fields at cells (c, 2), given what is known at the places.
+def _look_along(known: _Known, spreads: Spreads, i: int, directions: FloatArray) -> _Lines:
+    """The expected contact on lines in some directions (radians from north) through place i."""
+    ground = spreads.ground[i]
+    own = ground - known.ceiling.elevation(known.points[i : i + 1])[0] + np.exp(known.prior.mean + known.away[i])
+    scale = max(own, LEAST_DEPTH) / spreads.crs_unit_metres
+    compass = np.column_stack([np.sin(directions), np.cos(directions)])
+    cells = (known.points[i] + scale * OFFSETS[:, None] * compass[:, None]).reshape(-1, 2)
+    nowhere = np.zeros(len(known.points)), np.zeros(len(cells))
+    between = prior_covariance(known.prior, known.points, cells, nowhere)
+    below = np.exp(known.prior.mean + known.carrier @ between)
+    depth = np.maximum(below + ground - known.ceiling.elevation(cells), LEAST_DEPTH)
+    lines = len(directions), OFFSETS.size
+    return _Lines(cells, between, depth.reshape(lines), below.reshape(lines))
 
-    line : the cells, prior covariances of places with them (n, c), and weights that carry the field to them (n, c)
+
+def _misread(known: _Known, spreads: Spreads, i: int) -> tuple[float, float, float]:
+    """At place i: the misreading, the variance that doubt of contact and azimuth bring, and d field / d ln depth.
+
+    Two lines are looked along, across the contact's strike and with it, and what they say is added. A spread at an
+    angle to a line reads it as one in it by the square of the cosine, as one square to it by that of the sine.
     """
-    cells, between, weights = line
-    nowhere = np.zeros(len(cells))
-    own = prior_covariance(known.prior, cells, cells, (nowhere, nowhere))
-    carried = weights @ slope
+    around = np.log(_look_along(known, spreads, i, DIRECTIONS).depth)
+    centre = OFFSETS.size // 2
+    weight = np.gradient(OFFSETS) / (1.0 + (OFFSETS / SEEN_WIDTH) ** 2)
+    across = DIRECTIONS[np.argmax((around - around[:, [centre]]) ** 2 @ weight)]
+    lines = _look_along(known, spreads, i, np.array([across, across + 0.5 * np.pi]))
+    relative = lines.depth / lines.depth[:, [centre]]
+    reach = spreads.largest[i] / lines.depth[:, centre]
+    in_line, square = read_contact(relative, reach, IN_LINE), read_contact(relative, reach, SQUARE)
+    azimuth = spreads.azimuth[i]
+    share = np.cos(azimuth - across) ** 2 if np.isfinite(azimuth) else 0.5
+    shares = np.array([share, 1.0 - share])
+    shift = float(shares @ in_line.shift + (1.0 - shares) @ square.shift)
+    slope = shares[:, None] * in_line.slope + (1.0 - shares)[:, None] * square.slope
+    variance = _variance(known, lines, (slope * lines.below / lines.depth).ravel())
+    if not np.isfinite(azimuth):
+        variance += SINE_SQUARED_VARIANCE * float((in_line.shift - square.shift) @ (1.0, -1.0)) ** 2
+    return shift, variance, float(lines.depth[0, centre] / lines.below[0, centre])
+
+
+def _variance(known: _Known, lines: _Lines, slope: FloatArray) -> float:
+    """Variance of `slope` (c,) times the contact's field at the cells of lines, given what is known at the places."""
+    nowhere = np.zeros(len(lines.cells))
+    own = prior_covariance(known.prior, lines.cells, lines.cells, (nowhere, nowhere))
+    between = lines.between @ slope
+    carried = np.asarray(cho_solve(known.factor, between))
     # What simple kriging leaves, and what the places' own doubt adds to it.
-    left = slope @ own @ slope - carried @ (between @ slope)
+    left = slope @ own @ slope - carried @ between
     return max(float(left + carried @ known.covariance @ carried), 0.0)

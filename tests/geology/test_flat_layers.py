@@ -75,6 +75,15 @@ def test_an_azimuth_not_known_lies_between_and_is_less_sure():
     assert found["nan"][1] > found["0.0"][1]
 
 
+@pytest.mark.parametrize(("size", "x", "read"), [(600.0, 0.0, -0.12), (300.0, 0.0, -0.26), (300.0, 225.0, 0.075)])
+def test_a_spread_at_45_degrees_reads_half_of_either(size, x, read):
+    """`read` is what `misread` of tests/reference/flat_layer_readings.py finds at an azimuth of 45 degrees."""
+    posterior, prior, points, ceiling = known_valley(table_row(size))
+    place, spreads = spreads_of(points, (x, 0.0), 45.0)
+    found = find_misreading(posterior, prior, points, ceiling, spreads)
+    assert found.log_depth[place] == pytest.approx(read, abs=0.03 + 0.1 * abs(read))
+
+
 def test_feet_are_turned_into_metres():
     foot = 0.3048
     answers = []
