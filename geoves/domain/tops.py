@@ -240,7 +240,10 @@ class PairCalibration:
 
 @attrs.frozen
 class Interpretation:
-    """Every place read through the template: what is handed to the surfaces."""
+    """Every place read through the template: what is handed to the surfaces.
+
+    `undecided` is the same read without the interpreter's picks, None where there are none, or nobody asks for it.
+    """
 
     columns: tuple[UnitColumn, ...]
     well_readings: tuple[WellReading, ...]
@@ -253,3 +256,4 @@ class Interpretation:
     well_waters: tuple[WellWater, ...] = ()
     water_shifts: tuple[WaterShift, ...] = ()
     pair_calibration: PairCalibration | None = None
+    undecided: "Interpretation | None" = None

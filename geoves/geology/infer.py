@@ -68,7 +68,8 @@ def infer_geology(
 ) -> FieldEnsemble:
     """All places of a survey inferred together.
 
-    `map` takes blocks of places; `remember` may know the inference without picks, so that a new pick costs little.
+    `map` takes blocks of places; `remember` may know the inference without picks, so that a new pick costs little: for
+    that the interpretation must hold what places say without them (`undecided`), else a pick changes its priors too.
     Raises NotInferredError where there is too little to infer from, with the reason.
     """
     options = options or GeologyOptions()
@@ -100,7 +101,8 @@ def _set_up(
     options: GeologyOptions,
 ) -> tuple[PlaceList, Base]:
     plan = plan_columns(template)
-    contacts = sum(top.contact == "basal" and top.status == "at" for top in interpretation.tops)
+    undecided = interpretation.undecided or interpretation
+    contacts = sum(top.contact == "basal" and top.status == "at" for top in undecided.tops)
     if plan is None:
         raise NotInferredError("the template has no unit above gravel and rock for a curve to measure")
     if len(inverted) < FEWEST_SOUNDINGS or contacts < FEWEST_CONTACTS:
@@ -109,11 +111,11 @@ def _set_up(
             f"geology from; at least {FEWEST_SOUNDINGS} and {FEWEST_CONTACTS} are needed"
         )
     listed = list_places(survey, inverted, interpretation)
-    model = build_model(template, plan, interpretation, listed.points)
+    model = build_model(template, plan, undecided, listed.points)
     mean, deviation = all_priors(model.priors)
     bounds = (mean - REACH * deviation, mean + REACH * deviation)
     places = gather_evidence(survey, inverted, listed, model.ceiling, bounds)
-    places = _with_observations(places, observe(listed, interpretation, plan, template, options, picks=False))
+    places = _with_observations(places, observe(listed, undecided, plan, template, options, picks=False))
     steadfast = np.array([kind != "sounding" for kind in listed.kinds])
     spreads = list_spreads(survey, listed)
     task = Task(listed.names, listed.points, places, model.order, model.ceiling, spreads, steadfast)

@@ -229,7 +229,7 @@ def _hear(task: Task, state: State, sweep: int, options: GeologyOptions, map: Ma
     if poor.size and sweep and sweep % REDRAW_EVERY == 0:
         cloud = _redraw(task, cloud, poor, cavity, options, sweep, map)
         weighed = weigh_clouds(cloud, cavity)
-    mean, covariance = _find_moments(cloud, weighed, q)
+    mean, covariance = _find_moments(cloud, weighed, cavity, q)
     covariance = latent_fields.denoise(cavity_precision, covariance, weighed.effective_size)
     by_curve = np.flatnonzero(~task.steadfast)
     gravel = np.arange(task.order.first_presence, task.order.first_resistivity)
@@ -270,12 +270,17 @@ def weigh_clouds(cloud: Cloud, prior: Normal) -> Weighed:
     return Weighed(*(np.concatenate(values) for values in zip(*parts, strict=True)))
 
 
-def _find_moments(cloud: Cloud, weighed: Weighed, q: int) -> tuple[FloatArray, FloatArray]:
-    """Mean (n, q) and covariance (n, q, q) of the fields in each cloud, some places at a time."""
-    parts = [
-        local_clouds.moments(cloud.unknowns[rows][:, :, :q], weighed.weight[rows])
-        for rows in split_rows(len(cloud.unknowns))
-    ]
+def _find_moments(cloud: Cloud, weighed: Weighed, prior: Normal, q: int) -> tuple[FloatArray, FloatArray]:
+    """Mean (n, q) and covariance (n, q, q) of the fields in each cloud, some places at a time.
+
+    The mean without chance; the covariance is the plain one, for what chance does to it is taken out afterwards.
+    """
+    parts = []
+    for rows in split_rows(len(cloud.unknowns)):
+        some, weights = Cloud(*(values[rows] for values in cloud)), Weighed(*(values[rows] for values in weighed))
+        mean, _ = local_clouds.sharp_moments(some, weights, prior.take(rows))
+        _, covariance = local_clouds.moments(some.unknowns, weights.weight)
+        parts.append((mean[:, :q], covariance[:, :q, :q]))
     mean, covariance = (np.concatenate(values) for values in zip(*parts, strict=True))
     return mean, covariance
 

@@ -28,6 +28,10 @@ FIRST_LENGTH = 0.2
 PLAIN_EXPECTILE, CEILING_DEVIATIONS, LEAST_MARGIN = 0.9, 3.0, 8.0
 # Errors (m) below this do not set a datum apart when the plane is drawn.
 PLANE_ERROR = 5.0
+# Beyond so many deviations above the plane a datum pulls it no harder; and not at all (Tukey's, for 95 % efficiency).
+HUBER, TUKEY = 1.5, 4.685
+# With fewer contacts under the ceiling those above it are asked too.
+FEWEST_UNDER = 3
 # Deviation, in natural logs, of the filler's grading from its upper to its lower part.
 GRADING_DEVIATION = 0.15
 # Variances of the presence of gravel beside the field's own 1: of its mean, and of what follows the relief.
@@ -81,7 +85,9 @@ def fit_ceiling(tops: Sequence[Top]) -> Ceiling:
     """A plane through the upper part of the basal contacts, raised above them.
 
     An expectile regression (Newey and Powell 1987, Econometrica 55, 819-847, from memory) leans on the plain and not on
-    the valleys cut into it, however many soundings were put there.
+    the valleys cut into it, however many soundings were put there. What lies far above it is not heard: Huber's weights
+    first, then Tukey's, which fall to 0 (M-quantiles, Breckling and Chambers 1988, Biometrika 75, 761-771, from
+    memory). So a lone wild reading cannot tilt it.
     """
     points = np.array([[top.easting, top.northing] for top in tops])
     elevation = np.array([top.elevation for top in tops])
@@ -92,20 +98,26 @@ def fit_ceiling(tops: Sequence[Top]) -> Ceiling:
     if len(tops) < 6:
         design = design[:, :1]  # too few for slopes
     asymmetric = weight
-    for _ in range(100):
+    for turn in range(100):
         root = np.sqrt(asymmetric)
         coefficients = np.linalg.lstsq(design * root[:, None], elevation * root, rcond=None)[0]
         residual = elevation - design @ coefficients
-        asymmetric = weight * np.where(residual > 0, PLAIN_EXPECTILE, 1.0 - PLAIN_EXPECTILE)
-    above = residual[residual > 0]
-    spread = 1.4826 * float(np.median(above)) if above.size else 0.0
+        far = np.maximum(residual, 0.0) / max(_spread_above(residual), PLANE_ERROR)
+        pull = HUBER / np.maximum(far, HUBER) if turn < 50 else np.maximum(1.0 - (far / TUKEY) ** 2, 0.0) ** 2
+        asymmetric = weight * np.where(residual > 0, PLAIN_EXPECTILE * pull, 1.0 - PLAIN_EXPECTILE)
     slopes = tuple(float(one) / scale for one in coefficients[1:]) or (0.0, 0.0)
     return Ceiling(
         origin=(float(origin[0]), float(origin[1])),
         constant=float(coefficients[0]),
         slopes=(slopes[0], slopes[1]),
-        margin=max(CEILING_DEVIATIONS * spread, LEAST_MARGIN),
+        margin=max(CEILING_DEVIATIONS * _spread_above(residual), LEAST_MARGIN),
     )
+
+
+def _spread_above(residual: FloatArray) -> float:
+    """A robust deviation of what lies above the plane, 0 where nothing does."""
+    above = residual[residual > 0]
+    return 1.4826 * float(np.median(above)) if above.size else 0.0
 
 
 def build_model(
@@ -179,7 +191,12 @@ def _prior(mean: float, variance: float, length: float, shape: tuple[float, floa
 
 
 def _basal_prior(contacts: Sequence[Top], ceiling: Ceiling) -> FieldPrior:
-    """From what each place says by itself: a mean, and a first covariance by restricted likelihood."""
+    """From what each place says by itself: a mean, and a first covariance by restricted likelihood.
+
+    What lies above the ceiling is not asked: in the log of its depth below it would outweigh all others.
+    """
+    under = [top for top in contacts if ceiling.elevation(np.array([[top.easting, top.northing]]))[0] > top.elevation]
+    contacts = under if len(under) >= FEWEST_UNDER else contacts
     points = np.array([[top.easting, top.northing] for top in contacts])
     below = np.maximum(ceiling.elevation(points) - np.array([top.elevation for top in contacts]), 1.0)
     error = np.array([top.standard_error for top in contacts]) / below

@@ -49,11 +49,15 @@ class LocalFit(NamedTuple):
 
 
 class Cloud(NamedTuple):
-    """Unknowns (b, m, p) with their log likelihood and the log density they were drawn from (b, m)."""
+    """Unknowns (b, m, p) with their log likelihood and the log density they were drawn from (b, m).
+
+    gradient : (b, m, p) of the log likelihood
+    """
 
     unknowns: Floats
     log_likelihood: Floats
     log_proposal: Floats
+    gradient: Floats
 
 
 def _objective(state: LocalState, unknowns: Floats, prior: Normal) -> tuple[Floats, Floats, Floats]:
@@ -162,7 +166,7 @@ def draw_clouds(
         unknowns = np.concatenate([unknowns, drawn], axis=1)
         log_l = np.concatenate([log_l, _log_likelihoods(drawn, places, order)], axis=1)
         log_prior = np.concatenate([log_prior, prior.log_density(drawn)], axis=1)
-    return Cloud(unknowns, log_l, log_mixture - np.log(sum(counts)))
+    return Cloud(unknowns, log_l, log_mixture - np.log(sum(counts)), _gradients(unknowns, places, order))
 
 
 def _part_about_the_heaviest(
@@ -206,6 +210,16 @@ def _log_likelihoods(unknowns: Floats, places: Places, order: ColumnOrder) -> Fl
     return np.concatenate([log_likelihood(unknowns[rows], places.take(rows), order) for rows in parts])
 
 
+def _gradients(unknowns: Floats, places: Places, order: ColumnOrder) -> Floats:
+    """(b, m, p) at unknowns (b, m, p), those beyond the bounds taken at the bounds: they have no weight anyway."""
+    b, m, p = unknowns.shape
+    inside = np.clip(unknowns, places.lowest, places.highest).reshape(b * m, p)
+    place = np.repeat(np.arange(b), m)
+    rows = [np.arange(i, min(i + BLOCK, b * m)) for i in range(0, b * m, BLOCK)]
+    parts = [evaluate(inside[some], places.take(place[some]), order).gradient for some in rows]
+    return np.concatenate(parts).reshape(b, m, p)
+
+
 class Weighed(NamedTuple):
     """A cloud under a prior: normalised weights (b, m), log evidence (b,), effective size (b,)."""
 
@@ -227,3 +241,46 @@ def moments(unknowns: Floats, weight: Floats) -> tuple[Floats, Floats]:
     mean = np.einsum("bm,bmp->bp", weight, unknowns)
     away = unknowns - mean[:, None]
     return mean, np.matmul((away * weight[..., None]).transpose(0, 2, 1), away)
+
+
+def sharp_moments(cloud: Cloud, weighed: Weighed, prior: Normal) -> tuple[Floats, Floats]:
+    """Mean (b, p) and covariance (b, p, p) of a weighed cloud, with the chance of the draws taken out by the slope.
+
+    Minus the slope of the log posterior, h, has mean 0 and covariance 1 with the unknowns whatever their distribution
+    (Stein). So their regression on h, x = a + B h + r, gives the mean a and the covariance B + cov r: exact where the
+    posterior is normal, however few the draws, and no worse than the plain moments where it is anything else. Control
+    variates of zero variance: Mira, Solgi and Imparato 2013, Statistics and Computing 23, 653-662 (from memory).
+    """
+    weight, p = weighed.weight, cloud.unknowns.shape[2]
+    plain, covariance = moments(cloud.unknowns, weight)
+    away = cloud.unknowns - plain[:, None]
+    slope = np.matmul(cloud.unknowns - prior.mean[:, None], prior.precision) - cloud.gradient
+    middle = np.einsum("bm,bmp->bp", weight, slope)
+    slope = slope - middle[:, None]
+    weighted = (slope * weight[..., None]).transpose(0, 2, 1)
+    of_slope, of_both = np.matmul(weighted, slope), np.matmul(weighted, away)
+    # A trace of the identity keeps what has no slope, and what a few draws cannot tell, solvable.
+    diagonal = np.arange(p)
+    of_slope[:, diagonal, diagonal] *= 1.0 + 1e-6
+    by_slope = np.linalg.solve(of_slope, of_both)  # (b, p, p), B transposed
+    mean = plain - np.matmul(middle[:, None], by_slope)[:, 0]
+    rest = away - np.matmul(slope, by_slope)
+    left = np.matmul((rest * weight[..., None]).transpose(0, 2, 1), rest)
+    # What is left was made smaller by the regression; few draws, inverted, are also too sure.
+    size = weighed.effective_size[:, None, None]
+    left *= size / np.maximum(size - 1.0 - p, 0.2 * size)
+    found = 0.5 * (by_slope + by_slope.transpose(0, 2, 1)) + left
+    return mean, _keep_near(found, covariance)
+
+
+# How far a covariance may differ from the plain one, as a factor on variances: a few draws may mislead a regression.
+FARTHEST = 4.0
+
+
+def _keep_near(found: Floats, plain: Floats) -> Floats:
+    """Covariances (b, p, p) held to within FARTHEST of the plain ones in every direction."""
+    root = np.linalg.cholesky(plain + 1e-9 * plain.diagonal(axis1=1, axis2=2)[:, :, None] * np.eye(plain.shape[1]))
+    half = np.linalg.solve(root, found)
+    values, vectors = np.linalg.eigh(np.linalg.solve(root, half.transpose(0, 2, 1)))
+    turned = np.matmul(root, vectors)
+    return np.matmul(turned * np.clip(values, 1.0 / FARTHEST, FARTHEST)[:, None], turned.transpose(0, 2, 1))

@@ -107,6 +107,12 @@ def work_out(
         inverted = invert(survey, settings.inversion, map=watched(recalling, step))
     with progress.step("Reading columns from them", (1 + settings.interpretation.calibrate) * n_places) as step:
         interpretation = interpret(survey, inverted, template, settings.interpretation, map=watched(recalling, step))
+    if survey.picks and region.method == "together":
+        with _step(progress, "Reading columns without the picks"):
+            undecided = interpret(
+                attrs.evolve(survey, picks=()), inverted, template, settings.interpretation, map=recalling
+            )
+        interpretation = attrs.evolve(interpretation, undecided=undecided)
     work = Worked(inputs, survey, inverted, interpretation)
     geology, stack = _map_surfaces(work, progress, engine, memory)
     with _step(progress, "Drawing contours, valley and permits"):

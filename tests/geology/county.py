@@ -24,7 +24,7 @@ POTENTIAL = np.array([0.5, 0.5, 0.5, 0.5, 4.0, 4.0, 4.0, 4.0, 4.0, 4.0])
 SEGMENT = np.array([0, 0, 0, 0, 1, 1, 1, 1, 1, 1])
 NOISE = 0.03
 # Small clouds: a test asks for the behaviour, not for the last digit.
-QUICK = GeologyOptions(sweeps=12, draws_at_fit=60, rounds=6, draws_a_round=40, least_effective_size=50.0, members=20)
+QUICK = GeologyOptions(sweeps=12, draws_at_fit=40, rounds=4, draws_a_round=30, least_effective_size=35.0, members=20)
 
 TILL = Unit("till", "Till", Role.COVER, 25.0, 70.0)
 UPPER = Unit("upper_gravel", "Upper gravel", Role.SHALLOW_AQUIFER, 70.0, 200.0)
@@ -133,16 +133,17 @@ class County:
         return attrs.evolve(self, template=template)
 
     def with_pick(self, name, depth, error=2.0):
-        """An interpreter's decision that rock begins at a depth, with no gravel on it."""
+        """An interpreter's decision that gravel begins at a depth, as the interpretation hands it on."""
         place = next(s for s in self.survey.soundings if s.name == name)
-        pick = Pick(name, self.template.units[-1].code, "at", depth, error, "A. Reader", "a quarry nearby")
-        top = say_contact(place, "pick", depth, error, self.template.units[-1].code)
-        picked = UnitColumn(name, (), [], np.empty((0, 0)), "seen", depth, error, picks=(pick,))
+        pick = Pick(name, "deep_gravel", "at", depth, error, "A. Reader", "a pit nearby")
         said = self.interpretation
-        columns = (*(column for column in said.columns if column.sounding != name), picked)
-        # A decision stands in the place of what the curve had said.
-        tops = (*(one for one in said.tops if one.place != name), top, attrs.evolve(top, contact="bedrock"))
-        return attrs.evolve(self, interpretation=attrs.evolve(said, columns=columns, tops=tops))
+        picked = UnitColumn(name, (), [], np.empty((0, 0)), "seen", depth, error, picks=(pick,))
+        tops = (
+            *(one for one in said.tops if one.place != name),
+            say_contact(place, "pick", depth, error, "deep_gravel"),
+        )
+        said = attrs.evolve(said, columns=(picked,), tops=tops, undecided=said)
+        return attrs.evolve(self, interpretation=said)
 
 
 def say_contact(place, kind, depth, error, unit, status="at", contact="basal"):

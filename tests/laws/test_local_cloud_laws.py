@@ -7,7 +7,16 @@ from scipy.stats import multivariate_normal, norm
 
 from geoves.geology.inference import _hold_presence
 from geoves.kernels.joint_state import ABOVE, AT, FIRST_UPPER, ROCK_DEPTH, Observations
-from geoves.kernels.local_clouds import Cloud, Normal, draw_clouds, fit_places, keep_better, moments, weigh
+from geoves.kernels.local_clouds import (
+    Cloud,
+    Normal,
+    draw_clouds,
+    fit_places,
+    keep_better,
+    moments,
+    sharp_moments,
+    weigh,
+)
 from tests.laws.column_plans import FACTORS, HALF_SPACING, PLANS, draw_fields, make_places
 from tests.laws.test_joint_column_laws import place_of
 
@@ -85,6 +94,13 @@ def test_a_normal_likelihood_is_recovered():
     assert np.max(np.abs(mean[0] - expected) / error) < 4.0
     np.testing.assert_allclose(np.sqrt(np.diag(spread[0])) / deviation, 1.0, atol=0.12)
     assert spread[0, SHALLOW, 7] == pytest.approx(after[SHALLOW, 7], abs=0.15 * deviation[SHALLOW] * deviation[7])
+    # With the slope of the likelihood chance is taken out: exact, however few the draws.
+    few = draw(silent_places(say(AT, FIRST_UPPER + 1, 24.0, 2.0)), prior, size=(60, 2, 40))
+    mean, spread = sharp_moments(few, weigh(few, prior), prior)
+    np.testing.assert_allclose((mean[0] - expected) / deviation, 0.0, atol=2e-3)
+    np.testing.assert_allclose(
+        spread[0] / np.outer(deviation, deviation), after / np.outer(deviation, deviation), atol=5e-3
+    )
     evidence = norm.logpdf(24.0, 20.0, np.sqrt(13.0)) + np.log(2.0 * np.sqrt(2.0 * np.pi))
     assert weighed.log_evidence[0] == pytest.approx(evidence, abs=0.05)
 
@@ -103,7 +119,7 @@ def test_a_cloud_weighed_anew_is_one_drawn_anew():
 
 def test_effective_size():
     unknowns = np.zeros((1, 4, P))
-    even = Cloud(unknowns, np.zeros((1, 4)), np.zeros((1, 4)))
+    even = Cloud(unknowns, np.zeros((1, 4)), np.zeros((1, 4)), unknowns)
     prior = broad_prior()
     assert weigh(even, prior).effective_size[0] == pytest.approx(4.0)
     lone = even._replace(log_likelihood=np.array([[0.0, -90.0, -90.0, -90.0]]))
@@ -156,6 +172,21 @@ def test_a_bound_moves_what_it_excludes():
     order = np.argsort(depth)
     median = np.log(depth[order][np.searchsorted(np.cumsum(weighed.weight[0][order]), 0.5)])
     assert median == pytest.approx(norm.isf(0.5 * beyond, np.log(50.0), 0.3), abs=0.05)
+
+
+def test_sharp_moments_are_no_worse_than_plain_ones_where_nothing_is_normal():
+    # The bound above: half a normal. Over many clouds both are off by chance; the sharp ones not by more.
+    count, beyond = 12, norm.sf(np.log(60.0), np.log(50.0), 0.3)
+    prior = broad_prior(count=count, f0=(np.log(50.0), 0.3), **{f"f{PRESENCE}": (-4.0, 0.1)})
+    cloud = draw(silent_places(say(ABOVE, ROCK_DEPTH, 60.0, 0.5, count=count)), prior)
+    weighed = weigh(cloud, prior)
+    expected = np.log(50.0) + 0.3 * norm.pdf(norm.isf(beyond)) / beyond
+    plain, sharp = moments(cloud.unknowns, weighed.weight), sharp_moments(cloud, weighed, prior)
+    off = [np.sqrt(np.mean((mean[:, 0] - expected) ** 2)) for mean, _ in (plain, sharp)]
+    assert off[1] < 1.1 * off[0]
+    silent = np.arange(5, 12)  # fields that nothing is said of keep what was expected of them, to the last digits
+    assert np.abs((sharp[0] - prior.mean)[:, silent]).max() < 0.25 * np.abs((plain[0] - prior.mean)[:, silent]).max()
+    assert np.all(np.linalg.eigvalsh(sharp[1]) > 0)
 
 
 def test_a_fit_is_where_nothing_near_is_better():
