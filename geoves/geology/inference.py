@@ -46,6 +46,8 @@ DAMPING = 0.5
 FIRST_REFIT, REFIT_EVERY, ROUNDS_WITHOUT = 3, 3, 5
 # The misreadings of flat layers are found anew every so manieth round.
 MISREAD_EVERY = 2
+# They are the same where none differs by more than this, in natural logs of the depth below the ceiling.
+SAME_MISREADING = 0.005
 # Places whose clouds are weighed at a time: bounds the memory.
 TOGETHER = 300
 # Places are drawn anew every so manieth round.
