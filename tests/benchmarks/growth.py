@@ -1,6 +1,7 @@
 """How the joint inference grows with soundings: time, memory, and the exponent of both.
 
     python -m tests.benchmarks.growth [150 600 1500 ...]
+    python -m tests.benchmarks.growth --fields [150 1500 5000 ...]
 
 The small invented county (tests/geology/county.py) is laid side by side as often as it takes, one sounding a square
 kilometre. Clouds are small: what is measured is growth, not the time of a real run, whose clouds cost ten times as
@@ -21,10 +22,15 @@ from geoves.domain.survey import Sounding, Survey, Well
 from geoves.domain.tops import Interpretation, Thickness
 from geoves.domain.units import Role
 from geoves.geology import GeologyOptions, infer_geology
+from geoves.kernels.covariances import Covariance
+from geoves.kernels.field_priors import FieldPrior
+from geoves.kernels.field_windows import WindowSizes, condition_window, cut_windows, join_windows, tell
+from geoves.kernels.latent_fields import Sites
 from geoves.surfaces import SurfaceOptions, build_surfaces_together
 from tests.geology import county
 
 SIZES = (150, 600, 1500)
+FIELD_SIZES = (150, 600, 1500, 5000)
 SPACING = 1000.0
 OPTIONS = GeologyOptions(
     sweeps=8, draws_at_fit=24, rounds=4, draws_a_round=16, least_effective_size=25.0, members=20, all_at_once=100
@@ -100,6 +106,34 @@ def _peak():
     return resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024.0
 
 
+def measure_fields(n_places):
+    """Seconds of a round of six fields' posterior at places that each say something of all, and added memory, MB."""
+    generator = np.random.default_rng(4)
+    points = generator.uniform(0.0, SPACING * np.sqrt(n_places), (n_places, 2))
+    prior = FieldPrior(0.0, Covariance("matern32", 0.05, 0.95, 8000.0), 1.0, 1.0, 1.0, 0.05)
+    looks = generator.standard_normal((n_places, 3, 6))
+    sites = Sites(looks.transpose(0, 2, 1) @ looks, generator.standard_normal((n_places, 6)))
+    sizes = WindowSizes(OPTIONS.window, OPTIONS.halo, OPTIONS.everywhere)
+    before, start = _peak(), time.process_time()
+    windows = cut_windows(points, [str(i) for i in range(n_places)], sizes)
+    relief = np.zeros(n_places)
+    told = (tell(one.heard, points, relief, sites, len(one.own)) for one in windows)
+    join_windows(windows, [condition_window(one, priors=(prior,) * 6) for one in told])
+    return n_places, time.process_time() - start, _peak() - before
+
+
+def print_fields(sizes):
+    """A table of `measure_fields`, and the exponent."""
+    rows = []
+    for size in sizes:
+        with get_context("spawn").Pool(1) as pool:
+            rows.append(pool.apply(measure_fields, (size,)))
+        print("{:6d} places: {:8.2f} s a round, {:6.0f} MB added".format(*rows[-1]), flush=True)
+    if len(rows) > 1:
+        places, seconds, _ = zip(*rows, strict=True)
+        print(f"exponent {exponent(places, seconds):.2f}")
+
+
 def exponent(sizes, costs):
     """Slope of log cost over log size."""
     return float(np.polyfit(np.log(sizes), np.log(costs), 1)[0])
@@ -122,4 +156,8 @@ def main(sizes):
 
 
 if __name__ == "__main__":
-    main([int(one) for one in sys.argv[1:]] or SIZES)
+    given = [int(one) for one in sys.argv[1:] if one.isdecimal()]
+    if "--fields" in sys.argv:
+        print_fields(given or FIELD_SIZES)
+    else:
+        main(given or SIZES)
