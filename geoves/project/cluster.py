@@ -13,8 +13,8 @@ from typing import Any
 from threadpoolctl import threadpool_limits
 
 from geoves.errors import EngineError
-from geoves.project.engines import Map
 from geoves.project.memory import describe_machine
+from geoves.project.seam import Map
 
 try:
     from distributed import Client, WorkerPlugin

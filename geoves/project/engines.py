@@ -16,8 +16,7 @@ from threadpoolctl import threadpool_limits
 
 from geoves.errors import EngineError
 from geoves.project.progress import Step
-
-Map = Callable[[Callable[[Any], Any], Iterable[Any]], Iterable[Any]]
+from geoves.project.seam import Map
 
 MOST_WORKERS = 4  # where none are asked for
 MOST_LOSSES = 3  # worker processes that may be lost in one run

@@ -24,8 +24,8 @@ from typing import Any
 from threadpoolctl import threadpool_info
 
 from geoves.project.encoding import decode, encode, fingerprint
-from geoves.project.engines import Map
 from geoves.project.provenance import LIBRARIES
+from geoves.project.seam import Map
 
 NAME = ".geoves_memory"
 MOST_BYTES = 2 * 2**30

@@ -33,11 +33,12 @@ from geoves.inversion import invert
 from geoves.kernels.blocks import cut_blocks
 from geoves.layers import derive_layers
 from geoves.project import provenance
-from geoves.project.engines import Map, open_engine, watched
+from geoves.project.engines import open_engine, watched
 from geoves.project.findings import name_inputs
 from geoves.project.inputs import Inputs, read_inputs
 from geoves.project.memory import Memory, open_memory, remembered, remembering
 from geoves.project.progress import Progress, SilentProgress, Summary
+from geoves.project.seam import Map
 from geoves.project.settings import Settings
 from geoves.project.units_of_logs import claim_unit
 from geoves.reading import fingerprint_files
