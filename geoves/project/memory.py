@@ -43,7 +43,8 @@ class Memory:
     def __init__(self, folder: Path, most_bytes: int = MOST_BYTES) -> None:
         self.folder, self._most_bytes = folder, most_bytes
         self._base = describe_machine()
-        self.asked, self.recalled = 0, 0
+        self.asked, self.recalled = 0, 0  # of what earlier runs kept
+        self._own: set[str] = set()
 
     def fingerprint(self, *things: Any) -> str | None:
         """The name of an entry, None where something in it has no bytes of its own, or the folder is not ours."""
@@ -55,7 +56,8 @@ class Memory:
 
     def recall(self, name: str) -> bytes | None:
         """The bytes of an entry, None where there is none that is whole."""
-        self.asked += 1
+        earlier = name not in self._own
+        self.asked += earlier
         path = self._place(name)
         try:
             content = path.read_bytes()
@@ -67,12 +69,13 @@ class Memory:
             return None
         with contextlib.suppress(OSError):
             os.utime(path)  # what is asked for stays longest
-        self.recalled += 1
+        self.recalled += earlier
         return content[head:]
 
     def keep(self, name: str, content: bytes) -> None:
         """Write an entry whole or not at all; a disk that is full costs the memory, not the run."""
         path = self._place(name)
+        self._own.add(name)
         try:
             self._make_folder(path.parent)
             handle, temporary = tempfile.mkstemp(dir=path.parent, suffix=_UNFINISHED)

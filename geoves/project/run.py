@@ -74,7 +74,7 @@ def run(
         write_all(results, record, staging, progress, engine)
         with _step(progress, "Moving the delivery into place"):
             publish(staging, folder, record)
-    return Summary((*_tell(results, folder), *_tell_recalled(memory)))
+    return Summary((*_tell_recalled(memory), *_tell(results, folder)))
 
 
 def compute(region_path: Path, progress: Progress) -> tuple[Results, dict[str, Any]]:

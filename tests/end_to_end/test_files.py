@@ -88,7 +88,7 @@ def test_every_file_of_the_contract_is_there_and_nothing_is_left_over(delivery):
     expected |= {f"surfaces/{name}.tif" for name in UNITS} | {f"metadata/{name}.xml" for name in UNITS}
     expected |= {f"styles/{name}.sld" for name in (*UNITS, *COLUMNS)}
     assert names == expected
-    assert [path.name for path in delivery.parent.iterdir()] == ["delivery"]
+    assert {path.name for path in delivery.parent.iterdir()} == {"delivery", ".geoves_memory"}
 
 
 def test_run_json_is_right_about_inputs_and_files(delivery):
