@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.interpolate import BSpline, make_interp_spline
 from scipy.sparse import csr_array
+from threadpoolctl import threadpool_limits
 
 Floats = NDArray[np.float64]
 
@@ -88,6 +89,7 @@ def response_weights(half_spacing: Floats, potential_half_spacing: Floats, waven
 
 
 @lru_cache(maxsize=1024)
+@threadpool_limits.wrap(limits=1)  # what is remembered must not hang on how many threads first asked for it
 def _weights(half_spacing: bytes, potential_half_spacing: bytes, wavenumber_bytes: bytes) -> Floats:
     """`response_weights`, remembered: crews keep to a few electrode layouts. Some 30 kB each."""
     a, b = np.frombuffer(half_spacing)[:, None], np.frombuffer(potential_half_spacing)[:, None]

@@ -85,7 +85,8 @@ def test_thicknesses_add_up(order, seed, ceiling):
     assert np.all(columns.deep >= 0)
     np.testing.assert_allclose(columns.upper.sum(axis=1), columns.basal_depth, rtol=1e-12)
     layers = np.exp(columns.log_thickness) - joint_state.THINNEST
-    np.testing.assert_allclose(layers.sum(axis=1), columns.rock_depth, rtol=1e-9)
+    # The least thickness taken off again leaves its own rounding.
+    np.testing.assert_allclose(layers.sum(axis=1), columns.rock_depth, rtol=1e-9, atol=1e-15)
     found = quantities(columns)
     np.testing.assert_allclose(found[:, ROCK_DEPTH], found[:, BASAL_DEPTH] + found[:, DEEP_THICKNESS], rtol=1e-12)
     m = len(order.upper)
