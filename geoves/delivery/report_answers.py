@@ -141,7 +141,11 @@ def _gravel_support(results: Results) -> list[str]:
     curves = ""
     if results.geology is not None:
         rows = [one for one in rows if one.kind != "sounding"]
-        curves = f", and on what {len(results.inverted)} curves, which seldom tell it from rock, say of it together"
+        curves = (
+            ", and on how it follows the relief of the rock; curves, which seldom tell it from rock, were not asked"
+        )
+        if results.geology.diagnostics.get("curves_tell_gravel"):
+            curves = f", and on what {len(results.inverted)} curves, which seldom tell it from rock, say of it together"
     measured = [one.kind for one in rows if one.thickness > 0 and not one.at_least]
     counted = [f"{measured.count(kind)} at {kind}s" for kind in ("well", "sounding", "pick") if kind in measured]
     by_kind = f" ({', '.join(counted)})" if counted else ""

@@ -177,6 +177,7 @@ def _pack(
             "rounds": len(state.moved),
             "moved_in_the_last_round": state.moved[-1],
             "converged": has_converged(state, options),
+            "curves_tell_gravel": options.curves_tell_gravel,
             "median_misfit": float(np.nanmedian(misfits)),
             "misread_by_flat_layers": {
                 column.place: round(column.flat_layer_bias, 3)
