@@ -1,6 +1,8 @@
 """The resistivity template: which lithology shows which ohm metres here, from the top of the column down."""
 
+from collections.abc import Mapping
 from enum import StrEnum
+from types import MappingProxyType
 
 import attrs
 import numpy as np
@@ -23,6 +25,17 @@ class Role(StrEnum):
     CONFINING = "confining"
     DEEP_AQUIFER = "deep_aquifer"
     BEDROCK = "bedrock"
+
+
+# Thickness (m) that a unit of a role shows, central 90 %, where it is present: broad, outwash plains (common practice).
+THICKNESS_BY_ROLE: Mapping[str, tuple[float, float]] = MappingProxyType(
+    {
+        Role.COVER: (0.8, 20.0),
+        Role.SHALLOW_AQUIFER: (2.0, 25.0),
+        Role.CONFINING: (3.0, 120.0),
+        Role.DEEP_AQUIFER: (2.0, 30.0),
+    }
+)
 
 
 @attrs.frozen

@@ -9,19 +9,12 @@ from scipy.special import ndtri
 from geoves.domain.arrays import FloatArray
 from geoves.domain.fields import Ceiling, ColumnPlan
 from geoves.domain.tops import Interpretation, Top
-from geoves.domain.units import Z_95, Role, Template
+from geoves.domain.units import THICKNESS_BY_ROLE, Z_95, Role, Template
 from geoves.kernels.covariances import Covariance, fit_covariance
 from geoves.kernels.field_priors import FieldPrior
 from geoves.kernels.inequality import latent_moments
 from geoves.kernels.joint_state import ColumnOrder
 
-# Thickness (m), central 90 %, of a unit that is there: broad, outwash plains (common practice).
-THICKNESS = {
-    Role.COVER: (0.8, 20.0),
-    Role.SHALLOW_AQUIFER: (2.0, 25.0),
-    Role.CONFINING: (3.0, 120.0),
-    Role.DEEP_AQUIFER: (2.0, 30.0),
-}
 # Where no data speak, fields reach this far: a share of the region's extent.
 FIRST_LENGTH = 0.2
 # Share of places above the plain's plane, by expectile; and how far above it (in deviations of those) the ceiling is.
@@ -139,7 +132,7 @@ def build_model(
         if plan.always[position]:
             named.append((FieldName(unit.code, title, "ln m"), _cover_prior(template, index, length)))
         else:
-            low, high = THICKNESS[unit.role]
+            low, high = THICKNESS_BY_ROLE[unit.role]
             mean, deviation = latent_moments(0.5, float(np.sqrt(low * high)))
             named.append((FieldName(unit.code, title, "m"), _prior(mean, deviation**2, length, (0.5, 0.3, 1.0))))
     share = _gravel_share(interpretation)
@@ -157,7 +150,7 @@ def build_model(
         )
         named.append((FieldName(f"{code}_presence", f"Presence of {template.units[index].name or code}", "-"), prior))
     for index in plan.deep:
-        mean, variance = _log_range(THICKNESS[Role.DEEP_AQUIFER])
+        mean, variance = _log_range(THICKNESS_BY_ROLE[Role.DEEP_AQUIFER])
         code = template.units[index].code
         title = f"Thickness of {template.units[index].name or code} where it is"
         named.append((FieldName(code, title, "ln m"), _prior(mean, 0.6 * variance, length, (0.25, 0.3, 2.0 / 3.0))))
@@ -207,7 +200,7 @@ def _basal_prior(contacts: Sequence[Top], ceiling: Ceiling) -> FieldPrior:
 
 def _cover_prior(template: Template, index: int, length: float) -> FieldPrior:
     """Of log thickness: broad, or where the next unit's top has limits and this one begins the column, those."""
-    limits = THICKNESS[Role.COVER]
+    limits = THICKNESS_BY_ROLE[Role.COVER]
     following = template.units[index + 1]
     if index == 0 and following.depth_to_top:
         limits = max(following.depth_to_top[0], 0.3), following.depth_to_top[1]

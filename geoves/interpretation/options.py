@@ -1,22 +1,10 @@
 """What an interpretation may be told, and its defaults."""
 
-from collections.abc import Mapping
-from types import MappingProxyType
-
 import attrs
 import numpy as np
 
 from geoves.domain.units import Role
 
-# Thickness (m) that a unit of a role shows, central 90 %, where it is present: broad, outwash plains (common practice).
-THICKNESS_BY_ROLE: Mapping[str, tuple[float, float]] = MappingProxyType(
-    {
-        Role.COVER: (0.8, 20.0),
-        Role.SHALLOW_AQUIFER: (2.0, 25.0),
-        Role.CONFINING: (3.0, 120.0),
-        Role.DEEP_AQUIFER: (2.0, 30.0),
-    }
-)
 # Roles whose thickness is asked for at every place beside the deep aquifer's: what lies on the confining unit.
 ABOVE_CONFINING = (Role.COVER, Role.SHALLOW_AQUIFER)
 

@@ -7,8 +7,8 @@ import attrs
 import numpy as np
 
 from geoves.domain.arrays import BoolArray, FloatArray, IntArray
-from geoves.domain.units import Z_95, Role, Template
-from geoves.interpretation.options import THICKNESS_BY_ROLE, InterpretationOptions
+from geoves.domain.units import THICKNESS_BY_ROLE, Z_95, Role, Template
+from geoves.interpretation.options import InterpretationOptions
 from geoves.interpretation.water import (
     DRY_LOG_DEVIATION,
     DRY_LOG_MEAN,

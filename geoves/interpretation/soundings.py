@@ -19,8 +19,8 @@ from geoves.domain.tops import (
     TopStatus,
     UnitColumn,
 )
-from geoves.domain.units import Z_95, Role, Template
-from geoves.interpretation.options import THICKNESS_BY_ROLE, InterpretationOptions
+from geoves.domain.units import THICKNESS_BY_ROLE, Z_95, Role, Template
+from geoves.interpretation.options import InterpretationOptions
 from geoves.interpretation.sequences import ColumnDraws, HalfSpace
 from geoves.kernels import layered_earth, unit_sequence
 from geoves.kernels.damped_steps import Curves

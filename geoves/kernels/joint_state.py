@@ -164,11 +164,6 @@ def ramp(x: Floats, scale: float = RAMP) -> Floats:
     return np.asarray(scale * np.logaddexp(0.0, x / scale))
 
 
-def inverse_ramp(y: Floats, scale: float = RAMP) -> Floats:
-    """The x of which `ramp` makes y > 0."""
-    return np.asarray(y + scale * np.log(-np.expm1(-y / scale)))
-
-
 def _fade(depth: Floats, limits: tuple[float, float]) -> tuple[Floats, Floats]:
     """0 to 1, how far a unit may begin at a depth (m), and its derivative by the depth."""
     value, slope = np.ones_like(depth), np.zeros_like(depth)

@@ -100,14 +100,6 @@ def fit_places(start: Floats, prior: Normal, places: Places, order: ColumnOrder,
     return LocalFit(unknowns, value, curvature, robust)
 
 
-def keep_better(first: LocalFit, second: LocalFit) -> LocalFit:
-    """For each place the fit of the lower objective."""
-    better = second.objective < first.objective
-    return LocalFit(
-        *(np.where(better.reshape(-1, *[1] * (a.ndim - 1)), b, a) for a, b in zip(first, second, strict=True))
-    )
-
-
 class _Part(NamedTuple):
     """One multivariate t of each place's mixture: centre (b, p), Cholesky factor of its precision (b, p, p)."""
 

@@ -7,9 +7,8 @@ from scipy.stats import norm
 
 from geoves.domain.survey import Well
 from geoves.domain.tops import WellReading
-from geoves.domain.units import Role, Template, Unit
+from geoves.domain.units import THICKNESS_BY_ROLE, Role, Template, Unit
 from geoves.interpretation import InterpretationOptions, sequences
-from geoves.interpretation.options import THICKNESS_BY_ROLE
 from geoves.interpretation.water import DRY_FACTORS, carry_water_level, find_water_wells
 from geoves.kernels.damped_steps import Readings, stack_curves
 from geoves.kernels.layered_earth import shared_wavenumbers

@@ -164,12 +164,6 @@ def test_rock_beyond_its_limits_is_unlikely_and_within_them_free():
     np.testing.assert_allclose(found, -0.5 * off**2, rtol=0.05, atol=1e-6)
 
 
-@quick
-@given(st.floats(1e-6, 80.0))
-def test_ramp_and_its_inverse(thickness):
-    assert joint_state.ramp(joint_state.inverse_ramp(np.array(thickness))) == pytest.approx(thickness, rel=1e-6)
-
-
 # What a place says
 
 
